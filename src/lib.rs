@@ -1,1 +1,11 @@
-//! x
+//! Reads step-test logs, fits and tunes each control loop, and typesets its loop-tuning record.
+
+pub mod design;
+pub mod identify;
+pub mod model;
+pub mod notice;
+pub mod predict;
+pub mod quantity;
+pub mod settings;
+pub mod steps;
+pub mod trace;

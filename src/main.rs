@@ -1,2 +1,3 @@
-//! x
+//! The program.
+
 fn main() {}

@@ -1,0 +1,1 @@
+//! Frequency response of the loop and its margins.

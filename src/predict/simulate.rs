@@ -1,0 +1,1 @@
+//! The sampled controller on the exact process.

@@ -1,0 +1,1 @@
+//! The closed-loop trial held against the prediction.
