@@ -136,7 +136,7 @@ def fit(kind, t, op, pv, seed):
     if p[-2] > 0.0:
         piece = edges[max(0, np.searchsorted(edges, p[-2]) - 1) :][:2]
         clearance = np.min(np.abs(p[-2] - piece)) / np.diff(piece)[0]
-        assert clearance > 0.02, f"optimum in a corner ({clearance}): choose another seed"
+        assert clearance > 0.01, f"optimum in a corner ({clearance}): choose another seed"
     basins = sum(result.cost < best.cost * 1.01 for result in found)
     return p, rss, np.sqrt(np.diag(covariance)), np.linalg.norm(j.T @ residual), basins
 
@@ -176,7 +176,7 @@ def simulate(case, rng):
         kept = [0]
         for i in range(1, len(t)):
             reported = abs(pv[i] - pv[kept[-1]]) > case["sd"]
-            if reported or op[i] != op[i - 1] or t[i] - t[kept[-1]] > 12 * interval:
+            if reported or op[i] != op[i - 1] or t[i] - t[kept[-1]] > 4 * interval:
                 kept.append(i)
         t, op, pv = t[kept], op[kept], pv[kept]
     return t, op, pv
