@@ -4,6 +4,7 @@ use crate::quantity::Span;
 use chrono::{NaiveDateTime, TimeDelta};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+use std::cmp::Ordering;
 use std::fmt;
 use thiserror::Error;
 
@@ -127,7 +128,11 @@ impl Trace {
                 return Err(TraceError::Lengths(format!("{n} times, {len} of {name}")));
             }
         }
-        if let Some(k) = samples.t_s.windows(2).position(|w| !(w[1] > w[0])) {
+        if let Some(k) = samples
+            .t_s
+            .windows(2)
+            .position(|w| w[0].partial_cmp(&w[1]) != Some(Ordering::Less))
+        {
             return Err(TraceError::Time(k + 1));
         }
         let mut trace = Trace {
