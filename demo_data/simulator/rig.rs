@@ -203,7 +203,10 @@ pub fn run(
     let mut sp = (spec.start_pv() * 10.0).round() / 10.0;
     let (mut load, mut slow, mut measured) = (0.0, 0.0, spec.start_pv());
     let mut controller: Option<Controller> = None;
-    let mut position = process.valve.follow(op);
+    let mut position = match inner {
+        Some(_) => op,
+        None => process.valve.follow(op),
+    };
     let mut events = script.events.into_iter().peekable();
     let mut result = Run {
         samples: Vec::new(),
