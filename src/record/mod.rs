@@ -1,5 +1,8 @@
 //! The record of one loop: everything that its pages print, gathered; its JSON is its serde form.
 
+pub mod cautions;
+pub mod open_items;
+
 use crate::design::{Aim, Design, DesignBounds};
 use crate::identify::{Advice, Model, Step, Valve, VerdictBounds};
 use crate::predict::trial::Trial;
