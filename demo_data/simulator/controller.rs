@@ -125,6 +125,11 @@ impl Controller {
         }
     }
 
+    /// Integral gain, % of OP per second for each % of error.
+    pub fn integral_gain_per_s(&self) -> f64 {
+        self.integral_gain_per_s
+    }
+
     /// One execution: the new output, %. `op` is the present output, from which the first one starts without a bump.
     pub fn execute(&mut self, sp: f64, pv: f64, op: f64) -> f64 {
         let slope = self.slope(pv);

@@ -134,12 +134,12 @@ impl Process {
                 })
                 .collect(),
             integrating: spec.integrating,
-            level,
+            level: if spec.integrating { level } else { value },
             tick_s,
         }
     }
 
-    /// The position or flow that the curve was last given is `position`; advances one tick.
+    /// Advances one tick with the controller output at `op`, in %.
     ///
     /// `load` is a disturbance in % of OP at the process input.
     pub fn advance(&mut self, op: f64, load: f64) {
@@ -147,9 +147,10 @@ impl Process {
         self.advance_from(position, load);
     }
 
-    /// As `advance`, past the valve: `position` is what the curve is given.
+    /// As `advance`, past the valve: `position` is the position, or the flow, that the curve is given.
     pub fn advance_from(&mut self, position: f64, load: f64) {
-        self.pipe.push_back(self.curve.at(position) + self.curve.gain * load);
+        self.pipe
+            .push_back(self.curve.at(position) + self.curve.gain * load);
         let mut value = self
             .pipe
             .pop_front()

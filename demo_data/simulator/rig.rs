@@ -80,11 +80,7 @@ impl Inner {
         }
         Self {
             process: Process::at_rest(&spec.process, low, 0.0, tick_s),
-            transmitter: Transmitter::new(
-                spec.noise,
-                spec.resolution,
-                Random::new(spec.tag, 7),
-            ),
+            transmitter: Transmitter::new(spec.noise, spec.resolution, Random::new(spec.tag, 7)),
             controller: Controller::new(controller, settings, spec.pv_high - spec.pv_low),
             scan_s: controller.scan_s,
             op: low,

@@ -195,7 +195,9 @@ fn ods_cell(cell: &Cell) -> String {
         Cell::Empty => "<table:table-cell/>".to_owned(),
         Cell::Text(text) => {
             let text = text.replace('&', "&amp;").replace('<', "&lt;");
-            format!("<table:table-cell office:value-type=\"string\"><text:p>{text}</text:p></table:table-cell>")
+            format!(
+                "<table:table-cell office:value-type=\"string\"><text:p>{text}</text:p></table:table-cell>"
+            )
         }
         Cell::Number(value, decimals) => {
             let value = rounded(*value, *decimals);

@@ -64,31 +64,31 @@ pub const TUNINGS: [Tuning; 12] = {
             "FIC-201",
             controller(Reverse, Standard, Gain, PerMinute, 0.5),
             settings(0.25, 4.0, 0.0),
-            Some(settings(0.74, 11.0, 0.0)),
+            Some(settings(0.85, 11.0, 0.0)),
         ),
         row(
             "TIC-202",
             controller(Reverse, Standard, Gain, Minutes, 1.0),
             settings(0.9, 20.0, 0.0),
-            Some(settings(3.1, 7.5, 0.0)),
+            Some(settings(3.2, 7.8, 0.0)),
         ),
         row(
             "FIC-203",
             controller(Reverse, Series, Band, PerMinute, 0.5),
             settings(110.0, 26.0, 0.0),
-            Some(settings(190.0, 20.0, 0.0)),
+            Some(settings(170.0, 19.0, 0.0)),
         ),
         row(
             "LIC-204",
             controller(Direct, Standard, Band, Minutes, 1.0),
             settings(12.0, 0.6, 0.0),
-            Some(settings(24.0, 2.7, 0.0)),
+            Some(settings(24.4, 2.7, 0.0)),
         ),
         row(
             "LIC-205",
             controller(Direct, Standard, Gain, Minutes, 1.0),
             settings(3.0, 8.0, 0.0),
-            Some(settings(0.92, 40.0, 0.0)),
+            Some(settings(0.88, 42.0, 0.0)),
         ),
         Tuning {
             controller: ControllerSpec {
@@ -100,14 +100,14 @@ pub const TUNINGS: [Tuning; 12] = {
                 "PIC-206",
                 controller(Direct, Standard, Gain, Minutes, 0.5),
                 settings(1.2, 0.5, 0.0),
-                Some(settings(4.2, 0.95, 0.2)),
+                Some(settings(4.8, 0.97, 0.22)),
             )
         },
         row(
             "TIC-207",
             controller(Reverse, Parallel, GainPerUnit, PerMinute, 1.0),
             settings(2.6, 1.6, 0.0),
-            Some(settings(1.2, 0.37, 0.0)),
+            Some(settings(1.4, 0.4, 0.0)),
         ),
         row(
             "AIC-208",
@@ -140,7 +140,7 @@ pub const TUNINGS: [Tuning; 12] = {
             "TIC-212",
             controller(Direct, Standard, Gain, Seconds, 1.0),
             settings(0.6, 240.0, 0.0),
-            Some(settings(2.6, 70.0, 0.0)),
+            Some(settings(1.9, 80.0, 0.0)),
         ),
     ]
 };
