@@ -102,10 +102,7 @@ def fit(kind, t, op, pv, seed):
         basis = np.column_stack([unit_response(kind, tuple(lags), theta, t, op), np.ones(len(t))])
         gain, bias = np.linalg.lstsq(basis, pv)[0]
         start = np.array([gain, *lags, theta, bias])
-        try:
-            found.append(descend(kind, start, (lower, upper), t, op, pv))
-        except ValueError:
-            continue  # the two lags met exactly: a singular start
+        found.append(descend(kind, start, (lower, upper), t, op, pv))
     best = min(found, key=lambda result: result.cost)
 
     # The dead time makes corners where it passes a sample. Each smooth piece near the best is searched

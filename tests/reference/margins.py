@@ -42,29 +42,30 @@ class Loop:
         self.inputs = (kind, k, tau, tau2, theta, form, p, i, d, n, scan, pv_filter)
         d = d or 0.0
         self.delay = theta + scan / 2.0
-        lags = [lag for lag in (tau, tau2, pv_filter) if lag]
+        lags = [value for value in (tau, tau2, pv_filter) if value]
         poles_at_origin = (1 if kind.startswith("integrating") else 0) + (1 if i else 0)
         s = np.polynomial.Polynomial([0.0, 1.0])
         one = np.polynomial.Polynomial([1.0])
 
         # C = numerator / (denominator s^[integral action]), written out from the equations above.
         if form == "standard":
-            lag = d / n if n else 0.0
-            top = p * ((1 + lag * s) * (s + (1.0 / i)) + d * s * s) if i else p * ((1 + lag * s) + d * s)
+            derivative_lag = d / n if n else 0.0
+            filtered = 1 + derivative_lag * s
+            top = p * (filtered * (s + 1.0 / i) + d * s * s) if i else p * (filtered + d * s)
         elif form == "series":
-            lag = d / n if n else 0.0
+            derivative_lag = d / n if n else 0.0
             top = p * (s + (1.0 / i)) * (1 + d * s) if i else p * (1 + d * s) * one
         else:
-            lag = d / (p * n) if n else 0.0
-            top = (p * s + i) * (1 + lag * s) + d * s * s if i else p * (1 + lag * s) + d * s
-        bottom = one * (1 + lag * s)
-        for tau_i in lags:
-            bottom = bottom * (1 + tau_i * s)
+            derivative_lag = d / (p * n) if n else 0.0
+            top = (p * s + i) * (1 + derivative_lag * s) + d * s * s if i else p * (1 + derivative_lag * s) + d * s
+        bottom = one * (1 + derivative_lag * s)
+        for lag in lags:
+            bottom = bottom * (1 + lag * s)
         self.numerator = k * top * one
         self.denominator = bottom
         self.poles_at_origin = poles_at_origin
         self.zeros = self.numerator.trim().roots()
-        self.lags = [lag for lag in lags + [lag] if lag]
+        self.lags = lags + ([derivative_lag] if derivative_lag else [])
         self.excess = self.denominator.trim().degree() + poles_at_origin - self.numerator.trim().degree()
         assert self.excess >= 0 and np.all(self.zeros.real < 0.0)
         self.limit = 0.0  # |L| as w -> infinity
@@ -98,17 +99,18 @@ class Loop:
         if self.delay:
             corners.append(1.0 / self.delay)
         low, high = 1e-5 * min(corners), 100.0 * max(corners)
-        while self.excess and self.magnitude(high) > 1e-4:
+        while self.excess and self.magnitude(high) > 1e-3:
             high *= 2.0
         if self.excess and self.delay:
             high = max(high, 60.0 / self.delay)
         if not self.excess:
-            high = max(high, 2000.0 / self.delay) if self.delay else high
-        grid = np.geomspace(low, high, int(6000 * np.log10(high / low)))
+            high = max(high, 200.0 / self.delay) if self.delay else high
+        grid = np.geomspace(low, high, int(3000 * np.log10(high / low)))
         if self.delay:
-            # Above 1e-5 in magnitude the delay's turns are resolved; below that they decide nothing.
-            decided = grid[(self.magnitude(grid) > 1e-5) if self.excess else slice(None)][-1]
-            turns = min(decided, high)
+            # The delay's turns are resolved where |L| > 0.01, and the first ten of them always: what lies beyond
+            # can neither encircle -1 nor hold the peaks or the largest crossing.
+            decided = grid[self.magnitude(grid) > 0.01][-1] if self.excess else high
+            turns = min(max(decided, 60.0 / self.delay), high)
             grid = np.union1d(grid, np.linspace(low, turns, int(turns * self.delay / 0.02) + 2))
         return grid
 
@@ -123,8 +125,16 @@ class Loop:
         """
         if self.limit and self.delay and self.limit >= 1.0:
             return np.inf
+        while True:
+            turned = np.abs(np.angle((1.0 + response[1:]) / (1.0 + response[:-1])))
+            coarse = np.flatnonzero((turned > 0.3) & (np.diff(grid) > 1e-9 * grid[1:]))
+            if not len(coarse):
+                break
+            # Near the edge of stability 1 + L passes close to 0 and turns fast: halve until it is followed.
+            middle = (grid[coarse] + grid[coarse + 1]) / 2.0
+            grid = np.insert(grid, coarse + 1, middle)
+            response = np.insert(response, coarse + 1, self.response(middle))
         angle = np.unwrap(np.angle(1.0 + response))
-        assert np.max(np.abs(np.diff(angle))) < 1.0
         n = self.poles_at_origin
         start = -n * np.pi / 2.0
         angle = angle + 2.0 * np.pi * np.round((start - angle[0]) / (2.0 * np.pi))
@@ -255,11 +265,11 @@ def rows():
     for model in models():
         kc, ti, td = base_settings(*model)
         kind, k, tau, tau2, theta = model
-        for (form, letters, n), _ in itertools.product(forms, range(2)):
+        for (form, letters, n), turn in itertools.product(forms, range(2)):
             gain, time = kc * next(factors), ti * next(integral_shares)
             unit = theta if theta else td
             scan, pv_filter = next(scans) * unit, next(filters) * unit
-            if theta == 0.0 and _ == 0:
+            if theta == 0.0 and turn == 0:
                 scan = 0.0  # rows that a rational transfer function describes exactly
             derivative = td if letters == "PID" else None
             one_lag = kind in ("first-order", "integrating")
@@ -286,7 +296,13 @@ def hand_picked():
     yield (*first, "standard", 1.5, 10.0, 4.0, 0, 0.5, 0.0)
     yield (*first, "series", 2.0, 10.0, 6.0, 0, 0.0, 0.0)  # |L| -> 1.2: unstable by the fast modes alone
     yield ("integrating", 0.05, None, None, 4.0, "standard", 2.0, 40.0, 2.0, 0, 0.0, 0.0)
-    yield ("first-order", 1.5, 30.0, None, 0.0, "standard", 4.0, 20.0, 5.0, 0, 0.0, 0.0)
+    yield ("first-order", 1.5, 30.0, None, 0.0, "standard", 4.0, 20.0, 4.0, 0, 0.0, 0.0)
+    yield (*first, "standard", 0.3, 60.0, 25.0, 0, 0.0, 0.0)  # |L| rises to 0.75: Ms and gain margin at infinity
+    # |L| crosses 1 three times; in the last of these the least phase to spare is at the first crossing and the
+    # least delay to spare at the third.
+    yield ("first-order", 1.5, 30.0, None, 0.0, "standard", 0.5, 200.0, 100.0, 10, 1.0, 0.0)
+    yield ("first-order", 1.5, 30.0, None, 1.0, "standard", 0.5, 300.0, 80.0, 5, 0.5, 0.0)
+    yield ("first-order", 1.5, 30.0, None, 1.0, "standard", 0.3, 10.0, 100.0, 10, 0.5, 0.0)
     # Without integral action, and too weak to cross |L| = 1.
     yield (*first, "standard", 3.0, None, None, 0, 0.0, 0.0)
     yield (*first, "standard", 0.6, None, None, 0, 0.0, 0.0)
@@ -305,7 +321,9 @@ def hand_picked():
 
 
 def cell(value):
-    return "" if value is None else value if isinstance(value, str) else repr(value if isinstance(value, int) else float(value))
+    if value is None or isinstance(value, str):
+        return value or ""
+    return repr(value if isinstance(value, int) else float(value))
 
 
 def cross_check(loop, found):
@@ -318,8 +336,11 @@ def cross_check(loop, found):
         return 0.0
     gm, pm, sm, wpc, wgc, wms = control.stability_margins(transfer)
     differences = [abs(1.0 / sm / found[0] - 1.0)] if np.isfinite(sm) and sm < 1 - 1e-9 else [abs(found[0] - 1.0)]
-    complementary = control.feedback(transfer, 1)
-    differences.append(abs(control.linfnorm(control.ss(complementary), 1e-12)[0] / found[1] - 1.0))
+    # A disk margin of skew -1 is the reciprocal of the peak of |T|, on the frequencies it is given.
+    grid = loop.grid()
+    around = grid[np.argmax(np.abs(loop.rational(grid) / (1.0 + loop.rational(grid))))]
+    fine = np.union1d(np.geomspace(grid[0], grid[-1], 2000), np.geomspace(around / 1.01, around * 1.01, 20001))
+    differences.append(abs(1.0 / control.disk_margins(transfer, fine, skew=-1.0)[0] / found[1] - 1.0))
     rising, _, _, _, _, _ = control.stability_margins(transfer, returnall=True)
     rising = [g for g in np.atleast_1d(rising) if g > 1.0 and np.isfinite(g)]
     assert bool(rising) == (found[2] is not None), (loop.inputs, rising, found)
@@ -370,6 +391,7 @@ def main():
         writer = csv.writer(file, lineterminator="\n")
         writer.writerow(COLUMNS)
         writer.writerows(table)
+    assert checked >= 20 and worst < 1e-7 and pade_misses == 0
     print(len(table), "rows;", tally)
     print(f"python-control on {checked} rows without delay: largest relative difference {worst:.1e}")
     print(f"stability by closed-loop poles with a Pade delay of order 8: {pade_rows} rows, {pade_misses} differ")
