@@ -1,5 +1,6 @@
 //! Reads step-test logs, fits and tunes each control loop, and typesets its loop-tuning record.
 
+pub mod archive;
 pub mod design;
 pub mod display;
 pub mod identify;
@@ -8,6 +9,7 @@ pub mod notice;
 pub mod predict;
 pub mod quantity;
 pub mod record;
+pub mod register;
 pub mod settings;
 pub mod steps;
 pub mod trace;
