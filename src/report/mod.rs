@@ -1,21 +1,12 @@
 //! What a run has to say: to the person at the terminal as text, to other programs as JSON.
 
+mod page;
+
 use crate::notice::{Problem, Severity};
 use crate::record::Status;
+use page::Page;
 use serde::{Serialize, Serializer};
-use std::fmt::{self, Display, Write};
-
-/// Width of the text, signs.
-const WIDTH: usize = 100;
-
-/// Width of the column that says what a line is: "warning" and two spaces.
-const LABEL_WIDTH: usize = 9;
-
-/// Width of the column of the status: "for signature" and two spaces.
-const STATUS_WIDTH: usize = 15;
-
-/// How far advice stands in from the problem it belongs to.
-const HINT_INDENT: usize = 4;
+use std::fmt::{self, Display};
 
 /// Done: every loop got its record.
 pub const DONE: u8 = 0;
@@ -276,7 +267,7 @@ impl Display for CheckReport {
         page.blank();
         page.line(0, &format!("Would give {}.", Tally::of(&self.loops)));
         page.line(0, "Nothing was written.");
-        f.write_str(&page.text)
+        f.write_str(page.text())
     }
 }
 
@@ -314,7 +305,7 @@ impl Display for RunReport {
                 "Nothing was written.".to_owned()
             },
         );
-        f.write_str(&page.text)
+        f.write_str(page.text())
     }
 }
 
@@ -322,7 +313,7 @@ impl Display for Stopped {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         let mut page = Page::new(&[]);
         page.problems(0, &self.problems);
-        f.write_str(&page.text)
+        f.write_str(page.text())
     }
 }
 
@@ -341,7 +332,7 @@ impl Display for NewReport {
                 self.folder
             ),
         );
-        f.write_str(&page.text)
+        f.write_str(page.text())
     }
 }
 
@@ -355,182 +346,7 @@ fn failures(loops: &[LoopReport], dossier: Option<&DossierOutcome>) -> Option<St
     if let Some(dossier @ DossierOutcome::Failed { .. }) = dossier {
         page.dossier(dossier);
     }
-    (!page.text.is_empty()).then_some(page.text)
-}
-
-/// Text as it grows, wrapped to [`WIDTH`].
-struct Page {
-    text: String,
-    tag_width: usize,
-}
-
-impl Page {
-    fn new(loops: &[LoopReport]) -> Self {
-        let longest = loops
-            .iter()
-            .map(|report| report.tag.chars().count())
-            .chain(["register".len()])
-            .max();
-        Page {
-            text: String::new(),
-            tag_width: longest.unwrap_or(0) + 2,
-        }
-    }
-
-    /// One empty line, none at the top.
-    fn blank(&mut self) {
-        if !self.text.is_empty() && !self.text.ends_with("\n\n") {
-            self.text.push('\n');
-        }
-    }
-
-    fn line(&mut self, indent: usize, text: &str) {
-        self.labelled(&" ".repeat(indent), indent, text);
-    }
-
-    /// A paragraph whose first line begins with `label` and whose others stand in by `indent`.
-    fn labelled(&mut self, label: &str, indent: usize, text: &str) {
-        let mut lead = label.to_owned();
-        for part in text.split('\n') {
-            // An entry of a list keeps its own further indent.
-            let indent = indent + if part.starts_with("- ") { 2 } else { 0 };
-            let mut line = lead;
-            let mut bare = true;
-            for word in part.split(' ') {
-                let word = printable(word);
-                let fits = line.chars().count() + 1 + word.chars().count() <= WIDTH;
-                if !bare && !fits {
-                    self.push(&line);
-                    line = " ".repeat(indent);
-                    bare = true;
-                }
-                if !bare {
-                    line.push(' ');
-                }
-                line.push_str(&word);
-                bare = false;
-            }
-            self.push(&line);
-            lead = " ".repeat(indent.min(label.chars().count()));
-        }
-    }
-
-    fn push(&mut self, line: &str) {
-        let _ = writeln!(self.text, "{}", line.trim_end());
-    }
-
-    /// A line of the list of loops: tag, status, file.
-    fn row(&mut self, tag: &str, status: &str, rest: &str) {
-        let label = format!("{tag:<0$}{status:<STATUS_WIDTH$}", self.tag_width);
-        let indent = label.chars().count();
-        self.labelled(&label, indent, rest);
-    }
-
-    fn problems(&mut self, indent: usize, problems: &[Problem]) {
-        for problem in problems {
-            let name = match problem.severity {
-                Severity::Error => "error",
-                Severity::Warning => "warning",
-            };
-            let what = match &problem.place {
-                Some(place) => format!("{place}: {}", problem.message),
-                None => problem.message.clone(),
-            };
-            self.entry(indent, name, &what);
-            if let Some(hint) = &problem.hint {
-                self.line(indent + LABEL_WIDTH + HINT_INDENT, hint);
-            }
-        }
-    }
-
-    fn entry(&mut self, indent: usize, name: &str, what: &str) {
-        let label = format!("{:indent$}{name:<LABEL_WIDTH$}", "");
-        self.labelled(&label, indent + LABEL_WIDTH, what);
-    }
-
-    fn loops(&mut self, loops: &[LoopReport]) {
-        self.blank();
-        for report in loops {
-            self.one_loop(report);
-        }
-    }
-
-    fn one_loop(&mut self, report: &LoopReport) {
-        let indent = self.tag_width;
-        match &report.outcome {
-            LoopOutcome::Ready { status, open_items } => {
-                self.row(&report.tag, in_words(*status), "");
-                self.open_items(indent, open_items);
-            }
-            LoopOutcome::Written {
-                status,
-                open_items,
-                pdf,
-                kept,
-                ..
-            } => {
-                self.row(&report.tag, in_words(*status), &file(pdf, *kept));
-                self.open_items(indent, open_items);
-            }
-            LoopOutcome::Failed { problems } => {
-                self.row(&report.tag, "failed", "");
-                self.problems(indent, problems);
-            }
-        }
-        self.problems(indent, &report.notices);
-    }
-
-    fn open_items(&mut self, indent: usize, open_items: &[String]) {
-        for item in open_items {
-            self.entry(indent, "open", item);
-        }
-    }
-
-    fn dossier(&mut self, dossier: &DossierOutcome) {
-        match dossier {
-            DossierOutcome::Written {
-                status,
-                pdf,
-                kept,
-                notices,
-                ..
-            } => {
-                self.row("dossier", in_words(*status), &file(pdf, *kept));
-                self.problems(self.tag_width, notices);
-            }
-            DossierOutcome::Failed { problems } => {
-                self.row("dossier", "failed", "");
-                self.problems(self.tag_width, problems);
-            }
-        }
-    }
-}
-
-fn file(pdf: &str, kept: bool) -> String {
-    if kept {
-        format!("{pdf} (issued before)")
-    } else {
-        pdf.to_owned()
-    }
-}
-
-fn in_words(status: Status) -> &'static str {
-    match status {
-        Status::Draft => "draft",
-        Status::ForSignature => "for signature",
-        Status::Withheld => "withheld",
-    }
-}
-
-/// A word with its control signs shown, so that no cell of a log steers the terminal.
-fn printable(word: &str) -> String {
-    word.chars()
-        .flat_map(|sign| {
-            let escaped = sign.is_control().then(|| sign.escape_default());
-            let plain = (!sign.is_control()).then_some(sign);
-            escaped.into_iter().flatten().chain(plain)
-        })
-        .collect()
+    (!page.text().is_empty()).then(|| page.text().to_owned())
 }
 
 /// A problem as JSON: its place in parts and as a person reads it.
@@ -663,7 +479,7 @@ The records are in job/records
             report
                 .to_string()
                 .lines()
-                .all(|line| line.chars().count() <= WIDTH)
+                .all(|line| line.chars().count() <= page::WIDTH)
         );
         let failures = report.failures().expect("a loop failed");
         assert!(failures.starts_with("PIC-211   failed\n"), "{failures}");
