@@ -2,6 +2,7 @@
 
 use crate::identify::Model;
 use crate::predict::Margins;
+pub use crate::predict::PvFilter;
 use crate::settings::{ActsOn, Controller, Native, Standard};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
@@ -167,16 +168,6 @@ impl Default for DesignBounds {
             op_move_percent: 5.0,
         }
     }
-}
-
-/// The PV filter as the margins see it.
-#[derive(Debug, Clone, Copy, PartialEq, Default)]
-pub struct PvFilter {
-    /// Filter time constant while the log was taken and seen in it, s; 0 where the log was taken
-    /// before the filter (or there is none).
-    pub in_log_s: f64,
-    /// Filter time constant that the controller has, s.
-    pub in_controller_s: f64,
 }
 
 /// What the inner loop of a cascade brings.

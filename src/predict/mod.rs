@@ -4,8 +4,11 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 pub mod frequency;
+pub mod open_loop;
 pub mod simulate;
 pub mod trial;
+
+pub use frequency::margins;
 
 /// Stability margins of one loop. An unstable loop has no margin: all `None`.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize, JsonSchema)]
@@ -22,6 +25,33 @@ pub struct Margins {
     pub phase_margin_deg: Option<f64>,
     /// Delay margin, s; `None` where the loop gain never crosses 1.
     pub delay_margin_s: Option<f64>,
+}
+
+impl Margins {
+    /// An unstable loop: no margin.
+    pub fn unstable() -> Self {
+        Margins {
+            stable: false,
+            ms: None,
+            mt: None,
+            gain_margin: None,
+            phase_margin_deg: None,
+            delay_margin_s: None,
+        }
+    }
+}
+
+/// The PV filter as the margins see it.
+///
+/// Where the log was taken after the filter and the filter was not changed since, both times are the
+/// same and the fitted model holds the filter's lag.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct PvFilter {
+    /// Filter time constant while the log was taken and seen in it, s; 0 where the log was taken
+    /// before the filter (or there is none).
+    pub in_log_s: f64,
+    /// Filter time constant that the controller has, s.
+    pub in_controller_s: f64,
 }
 
 /// A line of a predicted or measured response, thinned for printing.
