@@ -4,6 +4,7 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 pub mod frequency;
+pub mod measure;
 pub mod open_loop;
 pub mod simulate;
 pub mod trial;
