@@ -277,7 +277,7 @@ impl Loop {
             return None;
         }
         let mut found = Found {
-            sensitivity: 1.0,
+            sensitivity: if limit == 0.0 { 1.0 } else { 0.0 },
             ..Found::default()
         };
         if self.integrators > 0 {

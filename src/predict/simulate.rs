@@ -35,12 +35,8 @@ pub struct OperatingPoint {
 /// range, the integral takes no step that would drive it further.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct SampledController {
-    // In the direction of the OP: the action's sign is in the gains.
-    proportional: f64,
-    integral_step: f64,
-    derivative_step: f64,
-    derivative_decay: f64,
-    series: bool,
+    /// The action's sign is in the gains.
+    terms: SampledTerms,
     p_on: ActsOn,
     d_on: ActsOn,
     filter: SampledFilter,
@@ -49,6 +45,94 @@ pub struct SampledController {
     integral: f64,
     derivative: f64,
     derivative_input: f64,
+}
+
+/// The terms of a controller as it executes, % OP per %; formulas at [`SampledController`].
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct SampledTerms {
+    /// OP moved by 1 % of what the proportional term acts on.
+    pub proportional: f64,
+    /// OP moved each scan by 1 % of error.
+    pub integral_per_scan: f64,
+    /// OP moved at once by the derivative term where what it acts on moves by 1 %.
+    pub derivative_step: f64,
+    /// Part of that which is left one scan later.
+    pub derivative_decay: f64,
+    /// Error that 1 % of the derivative term's OP stands for in the integral; 0 but for the series form.
+    pub derivative_to_integral: f64,
+}
+
+impl SampledTerms {
+    /// The terms at the controller's scan and with its derivative filter.
+    pub fn new(terms: &Terms, controller: &Controller) -> Self {
+        let h = controller.scan_s;
+        let n = controller.d_filter_n;
+        let filtered = |td: f64| if n > 0.0 { td / n } else { 0.0 };
+        let (proportional, integral_per_s, derivative, tf, series) = match *terms {
+            Terms::Standard { kc, ti_s, td_s } => {
+                let ki = ti_s.map_or(0.0, |ti| kc / ti);
+                (kc, ki, kc * td_s, filtered(td_s), false)
+            }
+            Terms::Series { kc, ti_s, td_s } => {
+                // (1 + Td′ s)/(1 + Tf s) = 1 + (Td′ − Tf) s/(1 + Tf s).
+                let (ki, tf) = (ti_s.map_or(0.0, |ti| kc / ti), filtered(td_s));
+                (kc, ki, kc * (td_s - tf), tf, true)
+            }
+            // Without proportional gain the derivative's filter would be infinitely slow.
+            Terms::Parallel {
+                kp: 0.0, ki_per_s, ..
+            } => (0.0, ki_per_s, 0.0, 0.0, false),
+            Terms::Parallel { kp, ki_per_s, kd_s } => {
+                (kp, ki_per_s, kd_s, filtered(kd_s / kp), false)
+            }
+        };
+        SampledTerms {
+            proportional,
+            integral_per_scan: integral_per_s * h,
+            derivative_step: derivative / (tf + h),
+            derivative_decay: tf / (tf + h),
+            derivative_to_integral: if series && proportional != 0.0 {
+                1.0 / proportional
+            } else {
+                0.0
+            },
+        }
+    }
+
+    /// The same with all gains times +1 or −1.
+    fn times(self, sign: f64) -> Self {
+        SampledTerms {
+            proportional: sign * self.proportional,
+            integral_per_scan: sign * self.integral_per_scan,
+            derivative_step: sign * self.derivative_step,
+            derivative_decay: self.derivative_decay,
+            derivative_to_integral: sign * self.derivative_to_integral,
+        }
+    }
+
+    /// OP moved at once by a set-point step of 1 %, without the integral's part, %.
+    pub fn set_point_kick(&self, controller: &Controller) -> f64 {
+        let on_error = |acts_on, size| {
+            if acts_on == ActsOn::Error { size } else { 0.0 }
+        };
+        on_error(controller.p_on, self.proportional)
+            + on_error(controller.d_on, self.derivative_step)
+    }
+
+    /// Standard deviation of the OP for white noise of standard deviation 1 that reaches proportional
+    /// and derivative terms through a lag of `decay` per scan (0 for none).
+    ///
+    /// The variance of (b₀ + b₁z⁻¹)/(1 + a₁z⁻¹ + a₂z⁻²) driven by white noise (K.J. Åström, Introduction
+    /// to Stochastic Control Theory, 1970, ch. 5): ((b₀² + b₁²)(1 + a₂) − 2b₀b₁a₁)/((1 − a₂)((1 + a₂)² − a₁²)).
+    pub fn noise_gain(&self, decay: f64) -> f64 {
+        let r = self.derivative_decay;
+        let b0 = (1.0 - decay) * (self.proportional + self.derivative_step);
+        let b1 = -(1.0 - decay) * (self.proportional * r + self.derivative_step);
+        let (a1, a2) = (-(decay + r), decay * r);
+        let variance = ((b0 * b0 + b1 * b1) * (1.0 + a2) - 2.0 * b0 * b1 * a1)
+            / ((1.0 - a2) * ((1.0 + a2) * (1.0 + a2) - a1 * a1));
+        libm::sqrt(variance)
+    }
 }
 
 /// (1 + T1 s)/(1 + T2 s) on samples: a constant part and a lag, the lag exact for an input that
@@ -101,37 +185,12 @@ impl SampledController {
         action: Action,
         start: OperatingPoint,
     ) -> Self {
-        let h = controller.scan_s;
-        let n = controller.d_filter_n;
-        let filtered = |td: f64| if n > 0.0 { td / n } else { 0.0 };
-        // (gain, integral gain per s, derivative gain times s, Tf, series)
-        let (p, i, d, tf, series) = match *terms {
-            Terms::Standard { kc, ti_s, td_s } => {
-                let ki = ti_s.map_or(0.0, |ti| kc / ti);
-                (kc, ki, kc * td_s, filtered(td_s), false)
-            }
-            Terms::Series { kc, ti_s, td_s } => {
-                let tf = filtered(td_s);
-                (kc, ti_s.map_or(0.0, |ti| kc / ti), td_s - tf, tf, true)
-            }
-            // Without proportional gain the derivative's filter would be infinitely slow.
-            Terms::Parallel {
-                kp: 0.0, ki_per_s, ..
-            } => (0.0, ki_per_s, 0.0, 0.0, false),
-            Terms::Parallel { kp, ki_per_s, kd_s } => {
-                (kp, ki_per_s, kd_s, filtered(kd_s / kp), false)
-            }
-        };
-        let sign = action.sign();
+        let sampled = SampledTerms::new(terms, controller);
         SampledController {
-            proportional: sign * p,
-            integral_step: sign * i * h,
-            derivative_step: if series { 1.0 } else { sign } * d / (tf + h),
-            derivative_decay: tf / (tf + h),
-            series,
+            terms: sampled.times(action.sign()),
             p_on: controller.p_on,
             d_on: controller.d_on,
-            filter: SampledFilter::new(filter, h),
+            filter: SampledFilter::new(filter, controller.scan_s),
             op_low: -start.op_percent,
             op_high: 100.0 - start.op_percent,
             integral: 0.0,
@@ -149,20 +208,13 @@ impl SampledController {
             ActsOn::Pv => -pv,
         };
         let derivative_input = input(self.d_on);
-        self.derivative = self.derivative_decay * self.derivative
-            + self.derivative_step * (derivative_input - self.derivative_input);
+        let terms = &self.terms;
+        self.derivative = terms.derivative_decay * self.derivative
+            + terms.derivative_step * (derivative_input - self.derivative_input);
         self.derivative_input = derivative_input;
-        let (fast, integral_step) = if self.series {
-            (
-                self.proportional * (input(self.p_on) + self.derivative),
-                self.integral_step * (error + self.derivative),
-            )
-        } else {
-            (
-                self.proportional * input(self.p_on) + self.derivative,
-                self.integral_step * error,
-            )
-        };
+        let fast = terms.proportional * input(self.p_on) + self.derivative;
+        let integral_step =
+            terms.integral_per_scan * (error + terms.derivative_to_integral * self.derivative);
         let op = fast + self.integral + integral_step;
         let drives_on =
             (op > self.op_high && integral_step > 0.0) || (op < self.op_low && integral_step < 0.0);
