@@ -45,8 +45,8 @@ pub struct Meter {
     at_10: Option<f64>,
     at_90: Option<f64>,
     at_63: Option<f64>,
-    /// Since when the PV has stayed in the band.
-    settled_since: Option<f64>,
+    /// Last sample outside the band; 0 before any.
+    last_outside: f64,
     iae: f64,
     peak: f64,
     travel: f64,
@@ -64,7 +64,7 @@ impl Meter {
             at_10: None,
             at_90: None,
             at_63: None,
-            settled_since: None,
+            last_outside: 0.0,
             iae: 0.0,
             peak: 0.0,
             travel: 0.0,
@@ -107,16 +107,7 @@ impl Meter {
             }
         }
         if error.abs() > self.band {
-            self.settled_since = None;
-        } else if self.settled_since.is_none() {
-            // Where the straight line between the samples enters the band.
-            let (outer, inner) = (error_before.abs(), error.abs());
-            let into = if outer > self.band {
-                (outer - self.band) / (outer - inner)
-            } else {
-                1.0
-            };
-            self.settled_since = Some(before.t_s + into.clamp(0.0, 1.0) * elapsed);
+            self.last_outside = now.t_s;
         }
         self.last = Some(now);
     }
@@ -133,9 +124,8 @@ impl Meter {
         Metrics {
             overshoot_percent: set_point.then(|| (100.0 * (self.highest - 1.0)).max(0.0)),
             rise_time_s: self.at_90.zip(self.at_10).map(|(to, from)| to - from),
-            settling_time_s: self
-                .settled_since
-                .filter(|since| end - since >= STAYED_PART * end),
+            settling_time_s: (end - self.last_outside >= STAYED_PART * end)
+                .then_some(self.last_outside),
             iae_percent_s: self.iae,
             peak_deviation_percent: self.peak,
             op_travel_percent: self.travel,

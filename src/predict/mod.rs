@@ -69,7 +69,7 @@ pub struct Curve {
 /// Figures of one closed-loop response.
 ///
 /// Definitions: overshoot past the new set point in percent of the step; rise time from 10 to
-/// 90 % of the step; settling time to stay within ±2 % of the step (at least ±0.1 % of span);
+/// 90 % of the step; settling time the last sample outside ±2 % of the step (at least ±0.1 % of span);
 /// IAE the integral of |SP − PV|; OP travel the sum of all OP moves (K.J. Åström, T. Hägglund, PID
 /// Controllers, 2nd ed. 1995, sec. 4.2).
 #[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize, JsonSchema)]

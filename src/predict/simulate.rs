@@ -177,13 +177,13 @@ impl SampledFilter {
 }
 
 impl SampledController {
-    /// The controller at rest, its OP where `start` says.
+    /// The controller at rest; `op_range` holds the ends of the OP's range as deviations from there, %.
     pub fn new(
         terms: &Terms,
         controller: &Controller,
         filter: PvFilter,
         action: Action,
-        start: OperatingPoint,
+        op_range: [f64; 2],
     ) -> Self {
         let sampled = SampledTerms::new(terms, controller);
         SampledController {
@@ -191,8 +191,8 @@ impl SampledController {
             p_on: controller.p_on,
             d_on: controller.d_on,
             filter: SampledFilter::new(filter, controller.scan_s),
-            op_low: -start.op_percent,
-            op_high: 100.0 - start.op_percent,
+            op_low: op_range[0],
+            op_high: op_range[1],
             integral: 0.0,
             derivative: 0.0,
             derivative_input: 0.0,
@@ -332,7 +332,7 @@ impl LoopCase<'_> {
             self.controller,
             self.filter,
             self.action,
-            self.start,
+            [-self.start.op_percent, 100.0 - self.start.op_percent],
         );
         let scan_s = self.controller.scan_s;
         run(
