@@ -393,3 +393,81 @@ pub fn own_form(settings: Standard, form: EquationForm) -> Terms {
         }
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    // K = 2, τ = 10, θ = 2 (r = 0.2, a = 0.4); integrating K′ = 0.05, θ = 4. Each vector was recomputed
+    // independently from the formula at the function; eight figures are quoted.
+    #[test]
+    fn every_rule_gives_its_vector() {
+        let (k, tau, theta) = (2.0, 10.0, 2.0);
+        let (level, wait) = (0.05, 4.0);
+        let a = 0.4;
+        let lambda = imc_pid(k, tau, theta, 1.6);
+        let itae = itae_set_point_pi(k, tau, theta).expect("r is small");
+        #[rustfmt::skip]
+        let vectors = [
+            ("SIMC", simc_pi(k, tau, theta, theta), 1.25, 10.0, 0.0),
+            ("SIMC, integrating", simc_pi_integrating(level, wait, wait), 2.5, 32.0, 0.0),
+            ("improved SIMC", improved_simc_pi(k, tau, theta, theta), 1.3333333, 10.666667, 0.0),
+            ("improved SIMC, long dead time", improved_simc_pi(1.0, 5.0, 120.0, 120.0), 0.1875, 45.0, 0.0),
+            ("SIMC PID", simc_pid(1.0, 20.0, 2.0, 1.0, 1.0), 12.5, 10.0, 1.6),
+            ("lambda", lambda_pi(k, tau, theta, tau), 0.4166667, 10.0, 0.0),
+            ("lambda, integrating", lambda_pi_integrating(level, wait, 12.0), 2.1875, 28.0, 0.0),
+            ("IMC PID", lambda, 2.1153846, 11.0, 0.90909091),
+            ("Ziegler-Nichols PI", ziegler_nichols_pi(a, theta), 2.25, 6.6666667, 0.0),
+            ("Ziegler-Nichols PID", ziegler_nichols_pid(a, theta), 3.0, 4.0, 1.0),
+            ("Ziegler-Nichols PI, integrating", ziegler_nichols_pi(level * wait, wait), 4.5, 13.333333, 0.0),
+            ("Ziegler-Nichols PID, integrating", ziegler_nichols_pid(level * wait, wait), 6.0, 8.0, 2.0),
+            ("Cohen-Coon PI", cohen_coon_pi(k, tau, theta), 2.2916667, 4.7076923, 0.0),
+            ("Cohen-Coon PID", cohen_coon_pid(k, tau, theta), 3.4583333, 4.5479452, 0.70175439),
+            // From memory: the tabulation of Åström and Hägglund; prints differ in the third digit.
+            ("Chien-Hrones-Reswick PI", chien_hrones_reswick_pi(a, theta), 1.5, 8.0, 0.0),
+            ("Chien-Hrones-Reswick PID", chien_hrones_reswick_pid(a, theta), 2.375, 4.8, 0.84),
+            ("AMIGO PI", amigo_pi(k, tau, theta), 0.60277778, 7.7652174, 0.0),
+            ("AMIGO PID", amigo_pid(k, tau, theta), 1.225, 5.8666667, 0.94339623),
+            ("AMIGO PI, integrating", amigo_pi_integrating(level, wait), 1.75, 53.6, 0.0),
+            ("AMIGO PID, integrating", amigo_pid_integrating(level, wait), 2.25, 32.0, 2.0),
+            ("ITAE set point", itae, 1.2797471, 10.03009, 0.0),
+            ("ITAE load PI", itae_load_pi(k, tau, theta), 2.0694592, 4.9663863, 0.0),
+            ("ITAE load PID", itae_load_pid(k, tau, theta), 3.1151176, 3.6211628, 0.7681567),
+            ("averaging", averaging_level_pi(level, 12.0), 3.3333333, 24.0, 0.0),
+        ];
+        for (rule, found, kc, ti, td) in vectors {
+            let ti_found = found.ti_s.expect("every rule has integral action");
+            for (found, expected) in [(found.kc, kc), (ti_found, ti), (found.td_s, td)] {
+                assert!(
+                    (found - expected).abs() <= 1e-7 * expected,
+                    "{rule}: {found}, expected {expected}"
+                );
+            }
+        }
+        assert_eq!(itae_set_point_pi(1.0, 1.0, 7.0), None);
+    }
+
+    // Validation points of the Modelica Buildings library for AMIGO, printed to three digits.
+    #[test]
+    fn amigo_meets_the_validation_points_of_a_published_library() {
+        let third_digit = |found: f64, expected: f64| assert!((found - expected).abs() < 6e-4);
+        for (k, tau, theta, kc, ti) in [
+            (1.0, 0.5, 0.3, 0.343, 0.469),
+            (1.5, 0.75, 0.45, 0.228, 0.703),
+            (2.0, 1.0, 0.6, 0.171, 0.938),
+        ] {
+            let found = amigo_pi(k, tau, theta);
+            third_digit(found.kc, kc);
+            third_digit(found.ti_s.expect("integral action"), ti);
+        }
+        for (k, tau, theta, kc, ti, td) in [
+            (1.0, 0.5, 0.3, 0.950, 0.446, 0.127),
+            (1.5, 0.75, 0.45, 0.633, 0.669, 0.191),
+        ] {
+            let found = amigo_pid(k, tau, theta);
+            third_digit(found.kc, kc);
+            third_digit(found.ti_s.expect("integral action"), ti);
+            third_digit(found.td_s, td);
+        }
+    }
+}

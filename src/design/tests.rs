@@ -1,0 +1,1 @@
+//! Design held against published values and its own promises.
