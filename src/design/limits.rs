@@ -55,10 +55,10 @@ pub struct Basis<'a> {
 
 /// Robustness is searched from this many times the other limits' need downwards.
 const SLOW_SIDE: f64 = 100.0;
-/// Ratio of neighbouring τc in that search; Ms changes by a few hundredths from one to the next.
-const SEARCH_RATIO: f64 = 1.12;
+/// Ratio of neighbouring τc in that search; near its bounds Ms changes by a tenth from one to the next.
+const SEARCH_RATIO: f64 = 1.25;
 /// τc below this part of θe is not searched: SIMC's loops are past Ms 3 there.
-const SEARCH_END: f64 = 0.02;
+const SEARCH_END: f64 = 0.05;
 
 impl Basis<'_> {
     /// The settings for τc as they would be typed if faceplates took every digit.
@@ -85,9 +85,12 @@ impl Basis<'_> {
     }
 }
 
+/// Relative width to which an edge is narrowed; typed settings have four digits.
+const EDGE: f64 = 1e-6;
+
 /// The edge between a τc that does not hold and a larger one that does, from the side that holds.
 fn halve(mut fails: f64, mut holds: f64, test: impl Fn(f64) -> bool) -> f64 {
-    while holds - fails > 1e-7 * holds {
+    while holds - fails > EDGE * holds {
         let middle = 0.5 * (fails + holds);
         if test(middle) {
             holds = middle;
@@ -245,7 +248,7 @@ pub fn level_deviation(basis: &Basis, allowed_percent: f64, load_percent: f64) -
         return Some(slowest);
     }
     let (mut held, mut fails) = (0.0, slowest);
-    while fails - held > 1e-5 * fails {
+    while fails - held > EDGE * fails {
         let middle = 0.5 * (held + fails);
         if holds(middle) {
             held = middle;

@@ -2,6 +2,7 @@
 
 use crate::identify::Model;
 use crate::model::ProcessModel;
+use crate::predict::open_loop::{Loop, open_loop};
 use crate::predict::{Margins, PvFilter, margins};
 use crate::settings::{Action, Controller, Terms};
 use schemars::JsonSchema;
@@ -129,16 +130,19 @@ impl RobustnessLimit {
     }
 
     fn ms(&self, process: &ProcessModel, terms: &Terms) -> f64 {
-        margins(process, terms, &self.controller, self.filter, self.action)
-            .ms
-            .unwrap_or(f64::INFINITY)
+        let margins = self.open_loop(process, terms).margins();
+        margins.ms.unwrap_or(f64::INFINITY)
+    }
+
+    fn open_loop(&self, process: &ProcessModel, terms: &Terms) -> Loop {
+        open_loop(process, terms, &self.controller, self.filter, self.action)
     }
 
     /// Whether every model keeps its bound.
     pub fn holds(&self, terms: &Terms) -> bool {
         self.members
             .iter()
-            .all(|(_, process, bound)| self.ms(process, terms) <= *bound)
+            .all(|(_, process, bound)| self.open_loop(process, terms).keeps_ms(*bound))
     }
 
     /// The model that comes nearest to its bound, or exceeds it by most.

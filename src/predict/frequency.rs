@@ -260,12 +260,12 @@ impl Loop {
     }
 
     /// Follows the loop from low frequencies to where nothing above can decide any more.
-    /// `None`: the closed loop is unstable.
+    /// `None`: the closed loop is unstable, or Ms lies above `most_ms`.
     ///
     /// Stability is Nyquist's count (H. Nyquist, Bell System Tech. J. 11 (1932) 126-147): without
     /// open-loop poles to the right, and with the poles at the origin passed on the right, the
     /// closed loop has two poles to the right for each net downward crossing of the real axis left of −1.
-    fn sweep(&self) -> Option<Found> {
+    fn sweep(&self, most_ms: f64) -> Option<Found> {
         let limit = self.limit();
         let delayed = self.dead_time_s > 0.0;
         let static_gain = self.gain;
@@ -349,7 +349,8 @@ impl Loop {
                 self.take(&here, &point, &mut found);
                 here = point;
             }
-            if found.turns_around > 0 && self.phase_falls_from(here.omega()) {
+            let lost = found.turns_around > 0 && self.phase_falls_from(here.omega());
+            if lost || found.sensitivity > most_ms {
                 return None;
             }
             if here.log_gain >= 0.0 {
@@ -372,43 +373,31 @@ impl Loop {
                 && (!delayed || decided(found.sensitivity, 1.0 / (1.0 - bound)))
                 && (!delayed || decided(found.complementary, bound / (1.0 - bound)))
             {
-                self.refine(&mut found);
+                found
+                    .points
+                    .sort_by(|a, b| a.log_omega.total_cmp(&b.log_omega));
                 return Some(found);
             }
         }
         None
     }
 
-    /// The peaks of |S| and |T| between the points of the sweep.
-    fn refine(&self, found: &mut Found) {
-        found
-            .points
-            .sort_by(|a, b| a.log_omega.total_cmp(&b.log_omega));
-        for (best, value) in [
-            (
-                &mut found.sensitivity,
-                Point::sensitivity as fn(&Point) -> f64,
-            ),
-            (
-                &mut found.complementary,
-                Point::complementary as fn(&Point) -> f64,
-            ),
-        ] {
-            let sizes: Vec<f64> = found.points.iter().map(value).collect();
-            let top = sizes.iter().copied().fold(*best, f64::max);
-            *best = top;
-            for k in 1..sizes.len().saturating_sub(1) {
-                // Points of the sweep lie so near that a peak stands less than a tenth above them.
-                if sizes[k] >= sizes[k - 1] && sizes[k] >= sizes[k + 1] && sizes[k] > 0.9 * top {
-                    let peak = self.peak(
-                        found.points[k - 1].log_omega,
-                        found.points[k + 1].log_omega,
-                        value,
-                    );
-                    *best = best.max(peak);
-                }
+    /// Largest `value` at and between the points of the sweep, given what the ends of the frequency
+    /// range give. Peaks that stand below `least` by more than the sweep can miss are not looked at.
+    fn largest(&self, found: &Found, ends: f64, least: f64, value: fn(&Point) -> f64) -> f64 {
+        /// Points of the sweep lie so near each other that a peak stands above the highest of them
+        /// by less than this factor tells.
+        const MISSED: f64 = 0.8;
+        let sizes: Vec<f64> = found.points.iter().map(value).collect();
+        let mut best = sizes.iter().copied().fold(ends, f64::max);
+        let worth = MISSED * best.max(least);
+        for k in 1..sizes.len().saturating_sub(1) {
+            if sizes[k] >= sizes[k - 1] && sizes[k] >= sizes[k + 1] && sizes[k] > worth {
+                let (from, to) = (&found.points[k - 1], &found.points[k + 1]);
+                best = best.max(self.peak(from.log_omega, to.log_omega, value));
             }
         }
+        best
     }
 
     /// Largest `value` between two frequencies, by golden section.
@@ -443,6 +432,16 @@ impl Loop {
         self.margins_and_crossover().0
     }
 
+    /// Whether the closed loop is stable with Ms ≤ `most_ms`: the answer of [`Loop::margins`], sooner.
+    pub fn keeps_ms(&self, most_ms: f64) -> bool {
+        if self.gain == 0.0 {
+            return self.integrators == 0;
+        }
+        self.sweep(most_ms).is_some_and(|found| {
+            self.largest(&found, found.sensitivity, most_ms, Point::sensitivity) <= most_ms
+        })
+    }
+
     /// Margins, and the highest frequency where |L| = 1, rad/s.
     pub fn margins_and_crossover(&self) -> (Margins, Option<f64>) {
         if self.gain == 0.0 {
@@ -455,13 +454,15 @@ impl Loop {
             };
             return (margins, None);
         }
-        let Some(found) = self.sweep() else {
+        let Some(found) = self.sweep(f64::INFINITY) else {
             return (Margins::unstable(), None);
         };
+        let ms = self.largest(&found, found.sensitivity, 0.0, Point::sensitivity);
+        let mt = self.largest(&found, found.complementary, 0.0, Point::complementary);
         let margins = Margins {
             stable: true,
-            ms: Some(found.sensitivity),
-            mt: Some(found.complementary),
+            ms: Some(ms),
+            mt: Some(mt),
             gain_margin: (found.nearest_crossing > 0.0).then(|| 1.0 / found.nearest_crossing),
             phase_margin_deg: found.phase_margin_rad.map(f64::to_degrees),
             delay_margin_s: found.delay_margin_s,
