@@ -1,5 +1,10 @@
 //! Identification: from the steps of a trace to a process model with its intervals.
 
+pub mod covariance;
+pub mod least_squares;
+mod response;
+mod search;
+
 use crate::model::{Kind, ProcessModel};
 use crate::quantity::Estimate;
 use crate::steps::OpStep;
