@@ -84,7 +84,11 @@ pub fn find(trace: &Trace, scan_s: f64) -> Result<Vec<OpStep>, StepsError> {
             return Err(StepsError::ClosedLoop);
         }
         for (k, this) in moves.iter().enumerate() {
-            let before_s = if k == 0 { from_s } else { times[moves[k - 1].last] };
+            let before_s = if k == 0 {
+                from_s
+            } else {
+                times[moves[k - 1].last]
+            };
             let end_s = moves.get(k + 1).map(|next| times[next.first]);
             let at_s = times[this.first];
             let quiet = quiet_stretch(trace, refreshes.as_deref(), before_s, at_s);
@@ -203,7 +207,11 @@ fn moves(times: &[f64], values: &[f64], jitter: f64, apart_s: f64) -> Vec<Move> 
             .copied()
             .chain([to])
             .fold(from, |peak, op| {
-                if (op - from).abs() > (peak - from).abs() { op } else { peak }
+                if (op - from).abs() > (peak - from).abs() {
+                    op
+                } else {
+                    peak
+                }
             });
         let net = (to - from).abs();
         let returned = net < PULSE_REMAINDER * (peak - from).abs();
@@ -227,15 +235,19 @@ fn merge_pulses(moves: &[Move], times: &[f64]) -> Vec<Move> {
     let mut merged: Vec<Move> = Vec::new();
     let mut k = 0;
     while k < moves.len() {
-        let run = [3, 2]
-            .into_iter()
-            .find(|&n| k + n <= moves.len() && nets_out(&moves[k..k + n], moves.get(k + n), times, end_s));
+        let run = [3, 2].into_iter().find(|&n| {
+            k + n <= moves.len() && nets_out(&moves[k..k + n], moves.get(k + n), times, end_s)
+        });
         match run {
             Some(n) => {
                 let part = &moves[k..k + n];
                 let from = part[0].from;
                 let peak = part.iter().fold(from, |peak, m| {
-                    if (m.to - from).abs() > (peak - from).abs() { m.to } else { peak }
+                    if (m.to - from).abs() > (peak - from).abs() {
+                        m.to
+                    } else {
+                        peak
+                    }
                 });
                 merged.push(Move {
                     last: part[n - 1].last,
@@ -261,7 +273,10 @@ fn nets_out(part: &[Move], next: Option<&Move>, times: &[f64], end_s: f64) -> bo
     }
     let last = part[part.len() - 1];
     let hold_s = next.map_or(end_s, |n| times[n.first]) - times[last.last];
-    let largest = part.iter().map(|m| (m.to - m.from).abs()).fold(0.0, f64::max);
+    let largest = part
+        .iter()
+        .map(|m| (m.to - m.from).abs())
+        .fold(0.0, f64::max);
     let alternate = part
         .windows(2)
         .all(|w| (w[0].to - w[0].from) * (w[1].to - w[1].from) < 0.0);
@@ -311,7 +326,10 @@ fn moves_all_the_time(times: &[f64], values: &[f64], moves: &[Move], jitter: f64
             about_level += hold.iter().map(|v| (v - level) * (v - level)).sum::<f64>();
             count += hold.len() as f64;
         }
-        from = moves.iter().find(|m| m.first == end).map_or(end, |m| m.last + 1);
+        from = moves
+            .iter()
+            .find(|m| m.first == end)
+            .map_or(end, |m| m.last + 1);
     }
     count > 0.0 && about_level / count > 4.0 * jitter * jitter + 1e-6
 }

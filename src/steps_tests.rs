@@ -6,7 +6,9 @@ fn trace_with(op: &[f64], manual: &[bool]) -> Trace {
     let full = Span::new(0.0, 100.0).expect("a range");
     let samples = Samples {
         t_s: (0..op.len()).map(|k| k as f64).collect(),
-        pv: (0..op.len()).map(|k| 50.0 + 0.001 * (k % 7) as f64).collect(),
+        pv: (0..op.len())
+            .map(|k| 50.0 + 0.001 * (k % 7) as f64)
+            .collect(),
         good: vec![true; op.len()],
         op: op.to_vec(),
         manual: manual.to_vec(),

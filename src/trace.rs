@@ -285,7 +285,10 @@ impl Trace {
                 multiple >= 1.0 && multiple <= 4.0 && (*c - multiple * cycle).abs() <= slack
             })
             .count();
-        let once = cycles.iter().filter(|c| (*c - cycle).abs() <= slack).count();
+        let once = cycles
+            .iter()
+            .filter(|c| (*c - cycle).abs() <= slack)
+            .count();
         let mut sizes: Vec<f64> = changes
             .iter()
             .map(|&k| (self.pv[k] - self.pv[k - 1]).abs())

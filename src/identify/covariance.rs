@@ -69,7 +69,11 @@ fn products(residual: &[f64], windows: &[usize], lag: usize) -> f64 {
     for &rows in windows {
         let part = &residual[start..start + rows];
         if rows > lag {
-            sum += part.iter().zip(&part[lag..]).map(|(a, b)| a * b).sum::<f64>();
+            sum += part
+                .iter()
+                .zip(&part[lag..])
+                .map(|(a, b)| a * b)
+                .sum::<f64>();
         }
         start += rows;
     }
@@ -167,7 +171,12 @@ pub(crate) fn parameter_names(kind: Kind) -> Vec<String> {
 
 /// Covariance in logarithms. `repeated` is how often the windows use a sample on average: windows
 /// share the quiet stretch between two moves, which must not count twice.
-pub(crate) fn logarithmic(fit: &Fit, memory: &Memory, repeated: f64, interval_s: f64) -> LogCovariance {
+pub(crate) fn logarithmic(
+    fit: &Fit,
+    memory: &Memory,
+    repeated: f64,
+    interval_s: f64,
+) -> LogCovariance {
     let count = fit.rows as f64 / memory.factor / repeated;
     let quantile = student_95(count - fit.parameters as f64) / TWO_SIDED_95;
     let factor = memory.variance * memory.factor * repeated * quantile * quantile;
@@ -196,7 +205,11 @@ pub(crate) fn logarithmic(fit: &Fit, memory: &Memory, repeated: f64, interval_s:
             let root = libm::sqrt(w);
             let up = libm::sqrt(w + reach) - root;
             let down = root - libm::sqrt((w - reach).max(0.0));
-            let chord = if reach > 0.0 { up.max(down) / reach } else { 0.0 };
+            let chord = if reach > 0.0 {
+                up.max(down) / reach
+            } else {
+                0.0
+            };
             for sign in [1.0, -1.0] {
                 let mut row = unit(size, 2, 1.0);
                 row[3] = sign * chord;
@@ -221,7 +234,11 @@ pub(crate) fn logarithmic(fit: &Fit, memory: &Memory, repeated: f64, interval_s:
     let cuts: Vec<f64> = (0..matrix.len())
         .map(|k| {
             let sd = libm::sqrt(matrix[k][k]);
-            if sd > MOST_LOG_SD { MOST_LOG_SD / sd } else { 1.0 }
+            if sd > MOST_LOG_SD {
+                MOST_LOG_SD / sd
+            } else {
+                1.0
+            }
         })
         .collect();
     stretch(&mut matrix, &cuts);

@@ -139,10 +139,7 @@ impl Point {
     pub fn lags(&self, kind: Kind) -> (f64, f64) {
         if kind == Kind::SecondOrder {
             let half = libm::sqrt(self.spread.max(0.0));
-            (
-                libm::exp(self.ln_lag + half),
-                libm::exp(self.ln_lag - half),
-            )
+            (libm::exp(self.ln_lag + half), libm::exp(self.ln_lag - half))
         } else {
             (libm::exp(self.ln_lag), 0.0)
         }
@@ -495,8 +492,7 @@ impl Prepared {
     /// JᵀJ over relative gain and the searched parameters, from the columns of the latest evaluation.
     fn information(&self, evaluation: &Evaluation, fixed_dead_time: bool) -> Vec<Vec<f64>> {
         let gain = evaluation.factors[0][0];
-        let mut columns: Vec<Vec<f64>> =
-            vec![self.columns[0].iter().map(|g| g * gain).collect()];
+        let mut columns: Vec<Vec<f64>> = vec![self.columns[0].iter().map(|g| g * gain).collect()];
         for k in usize::from(fixed_dead_time)..self.searched {
             columns.push(self.columns[1 + k].clone());
         }

@@ -56,8 +56,16 @@ fn assert_certified(data: &[(f64, f64)], certified: [f64; 5]) {
     assert_relative(fit.rss, certified[4], 1e-8);
     let covariance = super::super::covariance::ordinary(&fit);
     // sd of ln b is the relative sd of b; both to four figures.
-    assert_relative(libm::sqrt(covariance[0][0]), certified[1] / certified[0], 1e-4);
-    assert_relative(libm::sqrt(covariance[1][1]), certified[3] / certified[2], 1e-4);
+    assert_relative(
+        libm::sqrt(covariance[0][0]),
+        certified[1] / certified[0],
+        1e-4,
+    );
+    assert_relative(
+        libm::sqrt(covariance[1][1]),
+        certified[3] / certified[2],
+        1e-4,
+    );
 }
 
 /// Values: NIST Statistical Reference Datasets, nonlinear regression, Misra1a (certified values).

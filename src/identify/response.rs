@@ -190,8 +190,7 @@ fn two_lags(h_s: f64, tau: f64, tau2: f64) -> Coefficients {
         let middle = libm::exp(-(h_s / tau + h_s / tau2) / 2.0);
         let z2 = z * z;
         // sinh(z)/z, and (cosh z − sinh(z)/z)/z²: their power series.
-        let sinhc =
-            1.0 + z2 / 6.0 * (1.0 + z2 / 20.0 * (1.0 + z2 / 42.0 * (1.0 + z2 / 72.0)));
+        let sinhc = 1.0 + z2 / 6.0 * (1.0 + z2 / 20.0 * (1.0 + z2 / 42.0 * (1.0 + z2 / 72.0)));
         let rest =
             (1.0 + z2 / 10.0 * (1.0 + z2 / 28.0 * (1.0 + z2 / 54.0 * (1.0 + z2 / 88.0)))) / 3.0;
         Coefficients {

@@ -1,9 +1,7 @@
 //! The search for the best fit: starts from a coarse grid on few samples, then more samples, then
 //! all, then the pieces between which the dead time makes corners.
 
-use super::least_squares::{
-    Bounds, Fit, FitError, Point, Prepared, Problem, Window,
-};
+use super::least_squares::{Bounds, Fit, FitError, Point, Prepared, Problem, Window};
 use crate::model::Kind;
 
 /// Samples of the coarse grid: enough to tell starts apart.
@@ -179,8 +177,16 @@ fn split_lags(single: &[Point]) -> Vec<Point> {
         let (tau, _) = point.lags(Kind::FirstOrder);
         let theta = point.dead_time_s;
         let sum = tau + theta;
-        points.push(Point::new(theta / 2.0, tau, Some((theta / 2.0).max(tau / 20.0))));
-        points.push(Point::new(theta * 0.1, tau, Some((theta * 0.9).max(tau / 10.0).min(tau))));
+        points.push(Point::new(
+            theta / 2.0,
+            tau,
+            Some((theta / 2.0).max(tau / 20.0)),
+        ));
+        points.push(Point::new(
+            theta * 0.1,
+            tau,
+            Some((theta * 0.9).max(tau / 10.0).min(tau)),
+        ));
         points.push(Point::new(theta / 2.0, sum * 0.45, Some(sum * 0.4)));
         points.push(Point::new(theta, tau * 0.8, Some(tau * 0.2)));
         points.push(Point::new(theta, tau * 0.98, Some(tau * 0.02)));
@@ -283,9 +289,10 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
             within.low[0] = piece.0.max(bounds.low[0]);
             within.high[0] = piece.1.min(bounds.high[0]);
             let mut start = found.0;
-            start.dead_time_s = start
-                .dead_time_s
-                .clamp(piece.0 + 0.05 * (piece.1 - piece.0), piece.1 - 0.05 * (piece.1 - piece.0));
+            start.dead_time_s = start.dead_time_s.clamp(
+                piece.0 + 0.05 * (piece.1 - piece.0),
+                piece.1 - 0.05 * (piece.1 - piece.0),
+            );
             let there = all.descend(start, &within, 12);
             if there.1 < found.1 {
                 found = all.descend(there.0, &within, 100);

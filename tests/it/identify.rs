@@ -78,10 +78,16 @@ fn fits_are_those_of_an_independent_optimiser() {
             let covariance = covariance::ordinary(&fit);
             let expected = number("se_gain").expect("a standard error") / fit.gains[0].abs();
             let found = covariance[0][0].sqrt();
-            assert!((found / expected - 1.0).abs() < 1e-2, "{file}: {found} {expected}");
+            assert!(
+                (found / expected - 1.0).abs() < 1e-2,
+                "{file}: {found} {expected}"
+            );
             let expected = number("se_theta_s").expect("a standard error");
             let found = covariance[1][1].sqrt();
-            assert!((found / expected - 1.0).abs() < 1e-2, "{file}: {found} {expected}");
+            assert!(
+                (found / expected - 1.0).abs() < 1e-2,
+                "{file}: {found} {expected}"
+            );
         }
     }
 }
