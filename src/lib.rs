@@ -6,6 +6,7 @@ pub mod model;
 pub mod notice;
 pub mod predict;
 pub mod quantity;
+pub mod read;
 pub mod settings;
 pub mod steps;
 pub mod trace;
