@@ -11,6 +11,10 @@ use chrono_tz::Tz;
 /// Microseconds of a day.
 pub const DAY_US: i64 = 86_400 * MICROSECONDS;
 
+/// No log reaches farther from its clock's zero than 2,800 years; differences of moments within it
+/// cannot overflow.
+const FARTHEST_US: i64 = 1_000_000 * DAY_US;
+
 /// Where the time of a row stands.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub enum TimeColumns {
@@ -219,15 +223,19 @@ pub fn read(
         )
         .hint("export again without opening the file in a spreadsheet program"));
     }
-    if most == cells {
-        Ok(real_dates(&times))
+    let mut moments = if most == cells {
+        real_dates(&times)
     } else if most == dated {
-        dates_as_text(table, &times, rules, place)
+        dates_as_text(table, &times, rules, place)?
     } else if most == undated {
-        Ok(times_of_day(&times, rules))
+        times_of_day(&times, rules)
     } else {
         plain_numbers(table, column, &times, rules)
+    };
+    for t_us in &mut moments.t_us {
+        *t_us = t_us.filter(|t| t.abs() <= FARTHEST_US);
     }
+    Ok(moments)
 }
 
 /// A log without a clock.
@@ -499,12 +507,7 @@ fn what_it_counts(values: &[f64], unit: Option<TimeUnit>) -> Count {
     }
 }
 
-fn plain_numbers(
-    table: &Table,
-    column: usize,
-    times: &[RowTime],
-    rules: &ClockRules,
-) -> Result<Moments, Problem> {
+fn plain_numbers(table: &Table, column: usize, times: &[RowTime], rules: &ClockRules) -> Moments {
     let values: Vec<f64> = times
         .iter()
         .filter_map(|time| match time {
@@ -556,7 +559,7 @@ fn plain_numbers(
         Count::Elapsed(unit) => libm::round(number * unit.seconds() * 1e6) as i64,
         Count::Bare => libm::round(number * 1e6) as i64,
     };
-    Ok(Moments {
+    Moments {
         t_us: times
             .iter()
             .map(|time| match time {
@@ -567,7 +570,7 @@ fn plain_numbers(
         scale,
         format,
         warnings,
-    })
+    }
 }
 
 /// Universal time of a local time in a zone; of the two moments that share a local time when

@@ -75,7 +75,10 @@ pub fn order(
             // The clock goes on as it began: times after the change read as those before it.
             let offset = *first_offset.get_or_insert(raw - universal);
             t = universal + offset;
-            if raw < latest_raw - SORTED_BACK_US && t > latest && ordered.fold.is_none() {
+            if raw < latest_raw.saturating_sub(SORTED_BACK_US)
+                && t > latest
+                && ordered.fold.is_none()
+            {
                 ordered.fold = Some(format!(
                     "summer time of {zone} ends within the log, at {}",
                     moment_text(latest_raw, true)
