@@ -8,6 +8,7 @@ pub mod model;
 pub mod notice;
 pub mod predict;
 pub mod quantity;
+pub mod read;
 pub mod record;
 pub mod register;
 pub mod report;

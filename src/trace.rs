@@ -60,8 +60,9 @@ pub struct Gap {
 /// The columns of a log for one loop, in engineering units as exported, on one clock.
 ///
 /// All columns have one value per time; times increase strictly. A PV that is missing or was
-/// marked bad is not good; its value is kept where it was a number, else it is NaN. OP and SP are
-/// NaN where the export left them out before their first value.
+/// marked bad is not good; its value is kept where it was a number, else it is NaN. A good PV that
+/// is NaN was not sampled at that time, which belongs to the OP alone (signals written at times of
+/// their own). OP and SP are NaN where the export left them out before their first value.
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Samples {
     /// Seconds on the log's clock.
@@ -160,8 +161,11 @@ impl Trace {
             }
             trace.op_t_s.push(samples.t_s[k]);
             trace.op_all.push(op_held);
-            if !samples.good[k] || !samples.pv[k].is_finite() {
+            if !samples.good[k] {
                 trace.bad_t_s.push(samples.t_s[k]);
+                continue;
+            }
+            if !samples.pv[k].is_finite() {
                 continue;
             }
             trace.t_s.push(samples.t_s[k]);
