@@ -3,6 +3,8 @@
 pub mod archive;
 pub mod design;
 pub mod display;
+pub mod document;
+pub mod figures;
 pub mod identify;
 pub mod model;
 pub mod notice;

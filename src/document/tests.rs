@@ -1,0 +1,1 @@
+//! The pages of each kind of record, by their text.
