@@ -2,6 +2,7 @@
 
 pub mod design;
 pub mod display;
+pub mod figures;
 pub mod identify;
 pub mod model;
 pub mod notice;
