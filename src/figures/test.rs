@@ -1,0 +1,325 @@
+//! The whole step test as logged: PV above, OP below, steps numbered in place, rejected ones hatched.
+
+use super::canvas::{Anchor, Canvas, Ink, Label, Stroke};
+use super::geometry::{Point, Rect};
+use super::place::{Block, LINE_PT, Taken, end_labels, rows, wrapped};
+use super::trend::{self, Lines, Outline, Trend};
+use super::{Figure, narrate};
+use crate::display::{fixed, with_unit};
+use crate::identify::{Reason, ReasonCode, Step, Verdict};
+use crate::record::{Log, Record};
+
+/// Move of the OP.
+pub const MOVE: Stroke = Stroke::dashed(0.6, 1.4, 1.8);
+/// PV as logged.
+pub const PV_PT: f64 = 0.7;
+/// SP as logged.
+const SP: Stroke = Stroke::solid(0.5, Ink::Black);
+/// OP as logged.
+pub const OP: Stroke = Stroke::solid(1.0, Ink::Black);
+/// Size of the steps' numbers, pt.
+const NUMBER_PT: f64 = 9.5;
+/// Room for labels at the line ends, pt.
+pub const RIGHT_PT: f64 = 36.0;
+const WIDTH_MM: f64 = 170.0;
+const HEIGHT_MM: f64 = 110.0;
+
+/// Draws the test; `None` where its log holds nothing to draw.
+pub fn draw(record: &Record) -> Option<Figure> {
+    let log = record.test_log()?;
+    let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
+    let lines = trend::lines(&log.data, canvas.width())?;
+    let marks = Marks::new(&record.steps, &lines, canvas.width(), |_| String::new());
+    let sp = trend::set_point_in_reach(&lines);
+    let outline = Outline {
+        log,
+        control_loop: &record.control_loop,
+        lines: &lines,
+        also_pv: sp,
+        also_op: None,
+        top: 28.0 + marks.height(),
+        between: 30.0,
+        op_height: 70.0,
+        right: RIGHT_PT,
+        most_ticks: [8, 5],
+    };
+    let trend = Trend::new(&canvas, &outline)?;
+    hatch(&mut canvas, &trend, &record.steps);
+    trend.draw_axes(&mut canvas);
+    let mut taken = Taken::default();
+    taken.add_paths(&trend.draw_pv(&mut canvas, &lines, PV_PT));
+    taken.add_paths(&trend.op.curve(&mut canvas, &lines.op, OP));
+    let mut ends = vec![(trend.pv_end(&lines), "PV")];
+    if sp.is_some() {
+        taken.add_paths(&trend.pv.curve(&mut canvas, &lines.sp, SP));
+        ends.extend(lines.sp.last().map(|p| (trend.pv.at_y(p.1), "SP")));
+    }
+    end_labels(
+        &mut canvas,
+        trend.pv.frame.x1 + 4.0,
+        &ends,
+        (trend.pv.frame.y0, trend.pv.frame.y1),
+    );
+    label_op_end(&mut canvas, &trend, &lines);
+    marks.draw(&mut canvas, &trend, &record.steps);
+    for area in canvas.label_areas() {
+        taken.add_box(area);
+    }
+    name_rejected(&mut canvas, &trend, &record.steps, &mut taken);
+
+    let mut caption = "The test as logged.".to_owned();
+    if !record.steps.is_empty() {
+        caption.push_str(" Dotted lines: moves of OP, numbered as in the table.");
+    }
+    if record.steps.iter().any(|s| s.verdict == Verdict::Rejected) {
+        caption.push_str(" Hatched: not used.");
+    }
+    if !lines.sp.is_empty() && sp.is_none() {
+        caption.push_str(" SP was logged far from PV and is not drawn.");
+    }
+    Some(Figure::new("test.svg", &canvas, caption, alt(record, log)))
+}
+
+/// Labels the OP's end.
+pub fn label_op_end(canvas: &mut Canvas, trend: &Trend, lines: &Lines) {
+    if let Some(last) = lines.op.last() {
+        let end = [(trend.op.at_y(last.1), "OP")];
+        let within = (trend.op.frame.y0, trend.op.frame.y1);
+        end_labels(canvas, trend.op.frame.x1 + 4.0, &end, within);
+    }
+}
+
+/// Hatches the stretch of each rejected step, from its move to the end of its window.
+pub fn hatch(canvas: &mut Canvas, trend: &Trend, steps: &[Step]) {
+    for step in steps.iter().filter(|s| s.verdict == Verdict::Rejected) {
+        if let Some(area) = stretch(trend, step) {
+            canvas.hatch(area);
+        }
+    }
+}
+
+/// The stretch of a step over both windows.
+fn stretch(trend: &Trend, step: &Step) -> Option<Rect> {
+    let frame = trend.pv.frame;
+    let from = trend.pv.at_x(step.at_s).clamp(frame.x0, frame.x1);
+    let to = trend.pv.at_x(step.window_s[1]).clamp(frame.x0, frame.x1);
+    (to > from).then(|| Rect::new(from, frame.y0, to, trend.op.frame.y1))
+}
+
+/// The steps' numbers above the windows, each beside the line of its move, in as many rows as they
+/// need; behind a number the words that go with it.
+pub struct Marks {
+    rows: Vec<usize>,
+    words: Vec<String>,
+}
+
+impl Marks {
+    /// Works out the rows. Places are those of a window over the whole width less the margins.
+    pub fn new(steps: &[Step], lines: &Lines, width: f64, words: impl Fn(&Step) -> String) -> Self {
+        let words: Vec<String> = steps.iter().map(words).collect();
+        let scale = (width - 30.0 - RIGHT_PT) / (lines.time.1 - lines.time.0);
+        let places: Vec<(f64, f64)> = steps
+            .iter()
+            .zip(&words)
+            .map(|(step, words)| {
+                let x = 30.0 + (step.at_s - lines.time.0) * scale;
+                (x, 3.0 + number(step).width() + words_width(words))
+            })
+            .collect();
+        Marks {
+            rows: rows(&places),
+            words,
+        }
+    }
+
+    /// Room that rows above the first need, pt.
+    pub fn height(&self) -> f64 {
+        self.rows.iter().copied().max().unwrap_or(0) as f64 * LINE_PT
+    }
+
+    /// Draws lines, numbers and words.
+    pub fn draw(&self, canvas: &mut Canvas, trend: &Trend, steps: &[Step]) {
+        let top = trend.pv.frame.y0;
+        for ((step, &row), words) in steps.iter().zip(&self.rows).zip(&self.words) {
+            let x = trend.pv.at_x(step.at_s);
+            if !(trend.pv.frame.x0..=trend.pv.frame.x1).contains(&x) {
+                continue;
+            }
+            let base = top - 1.0 - LINE_PT * row as f64;
+            canvas.line((x, base - 2.0), (x, trend.op.frame.y1), MOVE);
+            let mut number = number(step);
+            (number.x, number.y) = (x + 3.0, base);
+            let after = number.area().x1 + 4.0;
+            canvas.words(number);
+            if words.is_empty() {
+                continue;
+            }
+            let label = Label::new(after, base - 0.5, words.clone());
+            let room = canvas.width() - after;
+            let shown = if label.width() <= room {
+                words.clone()
+            } else {
+                wrapped(words, room).into_iter().next().unwrap_or_default()
+            };
+            let shown = Label::new(after, base - 0.5, shown);
+            if shown.width() <= room {
+                canvas.words(shown);
+            }
+        }
+    }
+}
+
+fn number(step: &Step) -> Label {
+    Label::new(0.0, 0.0, step.number.to_string())
+        .bold()
+        .size(NUMBER_PT)
+}
+
+fn words_width(words: &str) -> f64 {
+    if words.is_empty() {
+        0.0
+    } else {
+        4.0 + Label::new(0.0, 0.0, words).width()
+    }
+}
+
+/// Sets "3 rejected: PV was drifting" into each hatched stretch where it covers nothing.
+fn name_rejected(canvas: &mut Canvas, trend: &Trend, steps: &[Step], taken: &mut Taken) {
+    let sheet = Rect::new(
+        trend.pv.frame.x0,
+        trend.pv.frame.y0 + 2.0,
+        trend.pv.frame.x1,
+        trend.op.frame.y1 - 2.0,
+    );
+    for step in steps.iter().filter(|s| s.verdict == Verdict::Rejected) {
+        let Some(area) = stretch(trend, step) else {
+            continue;
+        };
+        let head = format!("{}\u{a0}rejected", step.number);
+        let mut blocks = Vec::new();
+        if let Some(reason) = step.reasons.first() {
+            for width in [area.x1 - area.x0 - 8.0, 60.0, 45.0] {
+                let mut lines = vec![(format!("{head}:"), true)];
+                lines.extend(
+                    wrapped(reason_words(reason), width)
+                        .into_iter()
+                        .map(|l| (l, false)),
+                );
+                blocks.push(Block {
+                    lines,
+                    anchor: Anchor::Middle,
+                });
+            }
+        }
+        blocks.push(Block {
+            lines: vec![(head, true)],
+            anchor: Anchor::Middle,
+        });
+        for block in blocks {
+            let spots = spots(area, sheet, block.size());
+            if let Some(spot) = taken.first_free(sheet, spots) {
+                block.set(canvas, spot, true);
+                taken.add_box(spot.grown(1.5));
+                break;
+            }
+        }
+    }
+}
+
+/// Places for a block in a stretch: its middle column from below upwards, then nearer its edges.
+fn spots(stretch: Rect, sheet: Rect, size: Point) -> Vec<Rect> {
+    let (width, height) = size;
+    let middle = (stretch.x0 + stretch.x1) / 2.0;
+    let slack = ((stretch.x1 - stretch.x0 - width) / 2.0 - 3.0).max(0.0);
+    let mut spots = Vec::new();
+    for shift in [0.0, slack * 0.5, -slack * 0.5, slack, -slack] {
+        let x0 = (middle + shift - width / 2.0).clamp(sheet.x0, (sheet.x1 - width).max(sheet.x0));
+        let mut y1 = sheet.y1;
+        while y1 - height >= sheet.y0 {
+            spots.push(Rect::new(x0, y1 - height, x0 + width, y1));
+            y1 -= 3.0;
+        }
+    }
+    spots
+}
+
+/// A reason in a few plain words.
+pub fn reason_words(reason: &Reason) -> &'static str {
+    match reason.code {
+        ReasonCode::Change => "PV changed too little",
+        ReasonCode::Drift => "PV was drifting",
+        ReasonCode::Watched => "watched too short",
+        ReasonCode::Samples => "too few samples",
+        ReasonCode::Saturated => "at the end of the range",
+        ReasonCode::BadSamples => "bad samples",
+        ReasonCode::Misfit => "no fit to the samples",
+        ReasonCode::Sign => "PV went the other way",
+        ReasonCode::Mode => "not in manual",
+        ReasonCode::NoFit => "no model fits",
+        ReasonCode::InnerLoop => "inner loop changed since",
+    }
+}
+
+/// The test as a sentence for those who cannot see the plot.
+pub fn alt(record: &Record, log: &Log) -> String {
+    const MOST: usize = 8;
+    let mut text = format!(
+        "Two line charts on one time axis, PV above OP, {}.",
+        narrate::when(log)
+    );
+    for step in record.steps.iter().take(MOST) {
+        text.push(' ');
+        text.push_str(&step_sentence(record, step));
+    }
+    if record.steps.len() > MOST {
+        text.push_str(&format!(
+            " {} more steps follow.",
+            record.steps.len() - MOST
+        ));
+    }
+    if record.steps.is_empty() {
+        let pv = &record.control_loop.pv;
+        let decimals = narrate::decimals(pv);
+        let [low, high] = record.test.pv_tested;
+        text.push_str(&format!(
+            " PV lay between {} and {}; no step of OP was found.",
+            fixed(low, decimals),
+            with_unit(&fixed(high, decimals), &pv.unit)
+        ));
+    }
+    text
+}
+
+fn step_sentence(record: &Record, step: &Step) -> String {
+    let (pv, op) = (&record.control_loop.pv, &record.control_loop.op);
+    let decimals = narrate::decimals(pv);
+    let (from, to) = (fixed(step.pv_from, decimals), fixed(step.pv_to, decimals));
+    let change = if from == to {
+        format!("PV stayed at {}", with_unit(&to, &pv.unit))
+    } else {
+        let word = if step.pv_to > step.pv_from {
+            "rose"
+        } else {
+            "fell"
+        };
+        format!("PV {word} from {from} to {}", with_unit(&to, &pv.unit))
+    };
+    let (from, to) = (
+        narrate::op(step.op_from),
+        with_unit(&narrate::op(step.op_to), &op.unit),
+    );
+    let moved = if step.pulse { "pulsed" } else { "moved" };
+    let mut text = format!(
+        "Step {}: {change} after OP was {moved} from {from} to {to}",
+        step.number
+    );
+    if step.verdict == Verdict::Rejected {
+        let why = step
+            .reasons
+            .first()
+            .map_or_else(String::new, |r| format!(": {}", r.text));
+        text.push_str(&format!(", hatched as rejected{why}"));
+    }
+    text.push('.');
+    text
+}
