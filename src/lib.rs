@@ -1,6 +1,7 @@
 //! Reads step-test logs, fits and tunes each control loop, and typesets its loop-tuning record.
 
 pub mod archive;
+pub mod assemble;
 pub mod design;
 pub mod display;
 pub mod document;
