@@ -120,25 +120,54 @@ impl Source {
     }
 }
 
+/// Every source file that goes into the program.
 fn sources() -> Vec<Source> {
     let src = root().join("src");
-    let found: Vec<Source> = files_below(&src, ".rs")
-        .into_iter()
-        .filter(|path| {
-            let name = path.file_name().expect("a file").to_string_lossy();
-            name != "tests.rs" && !name.ends_with("_tests.rs")
-        })
-        .map(|path| Source {
-            path: path
-                .strip_prefix(&src)
-                .expect("below src")
-                .to_string_lossy()
-                .replace('\\', "/"),
-            code: code_of(&fs::read_to_string(&path).expect("a source is text")),
-        })
-        .collect();
+    let mut found = Vec::new();
+    let mut test_modules = Vec::new();
+    for file in files_below(&src, ".rs") {
+        let path = file.strip_prefix(&src).expect("below src");
+        let text = fs::read_to_string(&file).expect("a source is text");
+        let source = Source {
+            path: path.to_string_lossy().replace('\\', "/"),
+            code: code_of(&text),
+        };
+        let folder = source
+            .path
+            .rsplit_once('/')
+            .map_or("", |(folder, _)| folder);
+        test_modules.extend(declared_for_tests(&text).into_iter().map(|name| {
+            match name.strip_suffix(".rs") {
+                // Named by `#[path]`, from the folder of the file.
+                Some(name) => format!("{folder}/{name}")
+                    .trim_start_matches('/')
+                    .to_owned(),
+                None => [source.module(), vec![name]].concat().join("/"),
+            }
+        }));
+        found.push(source);
+    }
+    found.retain(|source| !test_modules.contains(&source.module().join("/")));
     assert!(found.len() > 10, "the sources were found");
     found
+}
+
+/// The modules that a file declares for tests alone and keeps in files of their own: names, or file
+/// names where `#[path]` gives them.
+fn declared_for_tests(text: &str) -> Vec<&str> {
+    text.split("#[cfg(test)]\n")
+        .skip(1)
+        .filter_map(|after| after.lines().next())
+        .filter_map(|line| {
+            let name = line
+                .strip_prefix("mod ")
+                .and_then(|rest| rest.strip_suffix(';'));
+            let path = line
+                .strip_prefix("#[path = \"")
+                .and_then(|rest| rest.strip_suffix("\"]"));
+            name.or(path)
+        })
+        .collect()
 }
 
 /// A source without comments and without the test modules at its end.
@@ -338,6 +367,9 @@ fn the_reader_of_sources_finds_what_it_should() {
     let code =
         "#[cfg(test)]\nmod tests;\nuse crate::a;\n#[cfg(test)]\nmod more {\nuse crate::b;\n}";
     assert_eq!(paths("x.rs", code), ["a"]);
+    assert_eq!(declared_for_tests(code), ["tests"]);
+    let code = "#[cfg(test)]\n#[path = \"x_tests.rs\"]\nmod tests;\nmod y;";
+    assert_eq!(declared_for_tests(code), ["x_tests.rs"]);
 
     assert!(fault("steps", "design::design").is_some());
     assert!(fault("quantity", "notice::Problem").is_some());
