@@ -2,6 +2,7 @@
 
 pub mod design;
 pub mod identify;
+pub mod job;
 pub mod model;
 pub mod notice;
 pub mod predict;
