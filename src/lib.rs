@@ -7,6 +7,7 @@ pub mod display;
 pub mod document;
 pub mod figures;
 pub mod identify;
+pub mod job;
 pub mod model;
 pub mod notice;
 pub mod predict;
