@@ -81,6 +81,11 @@ pub fn imc_pid(k: f64, tau_s: f64, theta_s: f64, lambda_s: f64) -> Standard {
     )
 }
 
+/// The smallest λ that [`imc_pid`]'s source recommends: max(0.8 θ, 0.1 τ).
+pub fn imc_lambda_s(tau_s: f64, theta_s: f64) -> f64 {
+    (0.8 * theta_s).max(0.1 * tau_s)
+}
+
 /// Ziegler-Nichols reaction curve, PI: 0.9/a, 3.333θ. `a` = Kθ/τ, or K′θ for integrating processes.
 ///
 /// J.G. Ziegler, N.B. Nichols, Trans. ASME 64 (1942) 759-768.
@@ -243,7 +248,7 @@ fn self_regulating(k: f64, tau: f64, theta: f64, derivative: bool) -> Vec<Row> {
         true,
     )];
     if derivative {
-        let lambda = (0.8 * theta).max(0.1 * tau);
+        let lambda = imc_lambda_s(tau, theta);
         rows.push(row("IMC PID", RIVERA, imc_pid(k, tau, theta, lambda), true));
     }
     rows.push(row(
