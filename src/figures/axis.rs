@@ -108,8 +108,13 @@ pub fn values(range: (f64, f64), least: f64, most: usize) -> Values {
 
 /// An axis from `low` to `high` exactly, with at most `most` ticks.
 pub fn ticked(low: f64, high: f64, most: usize) -> Values {
-    let step = nice_step((high - low) / most.max(1) as f64);
-    let (first, last) = (libm::ceil(low / step.size), libm::floor(high / step.size));
+    let most = most.max(2);
+    let mut step = nice_step((high - low) / (most + 1) as f64);
+    let (mut first, mut last) = step.ends(low, high);
+    while last - first >= most as f64 {
+        step = nice_step(step.size * 1.01);
+        (first, last) = step.ends(low, high);
+    }
     let largest = low.abs().max(high.abs());
     // Labels of more than six figures before the point, or of none for three places behind it, are
     // written in thousands of thousands.
@@ -123,7 +128,7 @@ pub fn ticked(low: f64, high: f64, most: usize) -> Values {
     let scale = exact_power(-third);
     let mut ticks = Vec::new();
     let mut k = first;
-    while k <= last && ticks.len() <= most {
+    while k <= last && ticks.len() < most {
         let at = k * step.size;
         ticks.push(Tick::new(at, fixed(at * scale, decimals)));
         k += 1.0;
@@ -145,6 +150,13 @@ pub fn ticked(low: f64, high: f64, most: usize) -> Values {
 struct Step {
     size: f64,
     exponent: i32,
+}
+
+impl Step {
+    /// The first and the last multiple of the step between two values.
+    fn ends(&self, low: f64, high: f64) -> (f64, f64) {
+        (libm::ceil(low / self.size), libm::floor(high / self.size))
+    }
 }
 
 /// The smallest nice step that is not below `least`.
@@ -391,7 +403,7 @@ mod tests {
     fn values_read_as_on_a_ruler() {
         assert_eq!(labels(&ticked(36.0, 52.0, 5).ticks), ["40", "45", "50"]);
         assert_eq!(labels(&ticked(-0.3, 0.3, 3).ticks), ["−0.2", "0.0", "0.2"]);
-        let pascal = ticked(1.0e6, 1.3e6, 3);
+        let pascal = ticked(1.0e6, 1.3e6, 4);
         assert_eq!(labels(&pascal.ticks), ["1.0", "1.1", "1.2", "1.3"]);
         assert_eq!(pascal.title("PV", "Pa"), "PV, 10⁶\u{a0}Pa");
         let small = ticked(0.0, 0.00005, 5);
@@ -436,7 +448,7 @@ mod tests {
         ) {
             let axis = values((low, low + 10f64.powi(power)), 0.0, most);
             prop_assert!(axis.low <= low && axis.high >= low + 10f64.powi(power));
-            prop_assert!(axis.ticks.len() <= most + 1);
+            prop_assert!(axis.ticks.len() <= most);
             prop_assert!(axis.ticks.iter().all(|t| axis.low <= t.at && t.at <= axis.high));
             prop_assert!(axis.ticks.windows(2).all(|w| w[0].label != w[1].label));
             // 1, 2, 5: the next larger step is at most 2.5 times as large.

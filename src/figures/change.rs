@@ -47,7 +47,14 @@ pub fn draw(record: &Record) -> Option<Figure> {
     panel.curve(&mut canvas, &edge, SET_POINT);
     let drawn = window.draw(&mut canvas, &panel);
     let others = [(panel.at_y(step), "set point")];
-    name_both(&mut canvas, &panel, &window, &drawn, &pair, &others);
+    name_both(
+        &mut canvas,
+        (&panel, &axis),
+        &window,
+        &drawn,
+        &pair,
+        &others,
+    );
 
     let moved = moved(step, range);
     let caption = format!("Predicted PV after the set point is {moved}.");

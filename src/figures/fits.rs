@@ -116,7 +116,7 @@ fn chart<'a>(
     // The fit was made from the OP as measured, so it is drawn from that.
     let mut moves: Vec<Point> = Vec::new();
     for (&t, &op) in data.t_s.iter().zip(&data.op) {
-        if t < from || t > to || !op.is_finite() {
+        if t < from || t >= to || !op.is_finite() {
             continue;
         }
         let deviation = op_span.percent(op) - op_from;

@@ -95,9 +95,8 @@ impl Panel {
 
     /// Draws the vertical axis: a hairline at each tick, its label on the left where `labelled`.
     pub fn value_axis(&self, canvas: &mut Canvas, axis: &Values, labelled: bool) {
-        for tick in &axis.ticks {
-            let y = self.at_y(tick.at);
-            canvas.line((self.frame.x0, y), (self.frame.x1, y), GRID);
+        for (from, to) in self.grid(axis) {
+            canvas.line(from, to, GRID);
         }
         if labelled {
             for tick in self.spread_ticks(axis) {
@@ -106,6 +105,15 @@ impl Panel {
                 canvas.words(label.anchor(Anchor::End));
             }
         }
+    }
+
+    /// The lines of the grid.
+    pub fn grid(&self, axis: &Values) -> Vec<(Point, Point)> {
+        axis.ticks
+            .iter()
+            .map(|tick| self.at_y(tick.at))
+            .map(|y| ((self.frame.x0, y), (self.frame.x1, y)))
+            .collect()
     }
 
     /// The ticks whose labels have room above each other.

@@ -80,7 +80,7 @@ fn half(
         Of::Load => &[0.0],
     };
     let pv_axis = upper.axis(also, pv_width / 2000.0, 5);
-    let op_axis = lower.axis(&[0.0], op_width / 1000.0, 4);
+    let op_axis = lower.axis(&[0.0], op_width / 1000.0, 5);
     let left = (from + 27.0).max(from + pv_axis.label_width().max(op_axis.label_width()) + 6.0);
     let right = (from + HALVES_PT).min(canvas.width() + 14.0) - NAMES_PT + 8.0;
     let bottom = canvas.height() - BELOW_PT;
@@ -110,10 +110,10 @@ fn half(
         pv_panel.curve(canvas, &edge, SET_POINT);
         others.push((pv_panel.at_y(step), "set point"));
     }
-    for (window, panel, others) in [(&upper, &pv_panel, &others[..]), (&lower, &op_panel, &[])] {
-        let drawn = window.draw(canvas, panel);
-        name_both(canvas, panel, window, &drawn, pair, others);
-    }
+    let drawn = upper.draw(canvas, &pv_panel);
+    name_both(canvas, (&pv_panel, &pv_axis), &upper, &drawn, pair, &others);
+    let drawn = lower.draw(canvas, &op_panel);
+    name_both(canvas, (&op_panel, &op_axis), &lower, &drawn, pair, &[]);
     upper.found_leaves(&pv_panel) || lower.found_leaves(&op_panel)
 }
 

@@ -68,18 +68,18 @@ pub fn draw(record: &Record) -> Option<Figure> {
         end: span.engineering(reading.end_percent),
         time,
     };
-    let panel = window(&mut canvas, record, &ruler)?;
-    let drawn: Vec<Vec<Point>> = ruler
-        .runs
-        .iter()
-        .flat_map(|run| panel.samples(&mut canvas, run, Ink::Black))
-        .collect();
+    let (panel, axis) = window(&mut canvas, record, &ruler)?;
+    let mut taken = Taken::default();
+    taken.add_grid(panel.grid(&axis));
+    for run in &ruler.runs {
+        taken.add_paths(&panel.samples(&mut canvas, run, Ink::Black));
+    }
     let alt = match (reading.time_constant_s, reading.slopes_percent_per_s) {
         (_, Some(slopes)) => {
             let slopes = slopes.map(|s| span.engineering_change(s));
-            two_slopes(&mut canvas, record, &ruler, &panel, slopes, drawn)
+            two_slopes(&mut canvas, record, &ruler, &panel, slopes, taken)
         }
-        (Some(tau), None) => part_of_change(&mut canvas, record, &ruler, &panel, tau, drawn),
+        (Some(tau), None) => part_of_change(&mut canvas, record, &ruler, &panel, tau, taken),
         (None, None) => return None,
     };
     let caption = format!("Step {} read with a ruler.", step.number);
@@ -87,7 +87,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
 }
 
 /// Draws axes, title and the move of the OP.
-fn window(canvas: &mut Canvas, record: &Record, ruler: &Ruler) -> Option<Panel> {
+fn window(canvas: &mut Canvas, record: &Record, ruler: &Ruler) -> Option<(Panel, Values)> {
     let samples = axis::range(ruler.runs.iter().flatten().map(|p| p.1))?;
     let levels = axis::joined(samples, axis::range([ruler.base, ruler.end]));
     // The dimensions stand on the side that the PV leaves.
@@ -121,7 +121,7 @@ fn window(canvas: &mut Canvas, record: &Record, ruler: &Ruler) -> Option<Panel> 
         with_unit(&to, &record.control_loop.op.unit)
     );
     canvas.words(Label::new(panel.at_x(0.0) + 3.0, frame.y0 - 3.0, moved));
-    Some(panel)
+    Some((panel, axis))
 }
 
 /// A level's figure at the right end of its line.
@@ -183,7 +183,7 @@ fn part_of_change(
     ruler: &Ruler,
     panel: &Panel,
     tau: f64,
-    drawn: Vec<Vec<Point>>,
+    mut taken: Taken,
 ) -> String {
     let pv = &record.control_loop.pv;
     let theta = ruler.reading.dead_time_s;
@@ -205,8 +205,7 @@ fn part_of_change(
     canvas.line((first, base_y - side * 6.0), (first, beyond), RULER);
     canvas.line((covered, part_y - side * 6.0), (covered, beyond), RULER);
     dimension(canvas, y, &[zero, first, covered]);
-    let mut taken = Taken::words_of(canvas);
-    taken.add_paths(&drawn);
+    taken.add_words(canvas);
     for at in [base_y, panel.at_y(ruler.end)] {
         taken.add_paths(&[vec![(panel.frame.x0, at), (panel.frame.x1, at)]]);
     }
@@ -246,7 +245,7 @@ fn two_slopes(
     ruler: &Ruler,
     panel: &Panel,
     slopes: [f64; 2],
-    drawn: Vec<Vec<Point>>,
+    mut taken: Taken,
 ) -> String {
     let theta = ruler.reading.dead_time_s;
     let quiet = (ruler.step.quiet_s[0] + ruler.step.quiet_s[1]) / 2.0 - ruler.step.at_s;
@@ -267,8 +266,8 @@ fn two_slopes(
     let beyond = y + if rising { 4.0 } else { -4.0 };
     canvas.line((first, base_y), (first, beyond), RULER);
     dimension(canvas, y, &[zero, first]);
-    let mut taken = Taken::words_of(canvas);
-    for paths in [&drawn, &drawn_before, &drawn_after] {
+    taken.add_words(canvas);
+    for paths in [&drawn_before, &drawn_after] {
         taken.add_paths(paths);
     }
     let unit = crate::display::unit(&record.control_loop.pv.unit);

@@ -193,7 +193,7 @@ impl Window {
 /// Names both curves in a window: as found beside it, the new one at its end.
 pub fn name_both(
     canvas: &mut Canvas,
-    panel: &Panel,
+    (panel, axis): (&Panel, &Values),
     window: &Window,
     drawn: &[Vec<Vec<Point>>; 2],
     pair: &Pair,
@@ -217,6 +217,7 @@ pub fn name_both(
     }
     let mut taken = Taken::words_of(canvas);
     taken.add_paths(new);
+    taken.add_grid(panel.grid(axis));
     let frame = panel.frame;
     let sheet = Rect::new(frame.x0, frame.y0 - 9.0, frame.x1, frame.y1 - 1.0);
     let block = Block::line(pair.found_name(), false);

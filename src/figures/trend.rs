@@ -186,6 +186,13 @@ impl Trend {
         canvas.words(Label::new(0.0, op_title, op).bold());
     }
 
+    /// The lines of both grids.
+    pub fn grid(&self) -> Vec<(Point, Point)> {
+        let mut lines = self.pv.grid(&self.pv_axis);
+        lines.extend(self.op.grid(&self.op_axis));
+        lines
+    }
+
     /// Draws the PV; returns it as drawn.
     pub fn draw_pv(&self, canvas: &mut Canvas, lines: &Lines, width_pt: f64) -> Vec<Vec<Point>> {
         let mut drawn = Vec::new();
