@@ -3,6 +3,7 @@
 //! Ticks are whole multiples of 1, 2 or 5 times a power of ten, on clock axes of the units of the
 //! clock; their labels never touch.
 
+use super::narrate::grouped;
 use super::widths::width_pt;
 use crate::display::fixed;
 use chrono::{Days, NaiveDateTime, Timelike};
@@ -115,34 +116,67 @@ pub fn ticked(low: f64, high: f64, most: usize) -> Values {
         step = nice_step(step.size * 1.01);
         (first, last) = step.ends(low, high);
     }
-    let largest = low.abs().max(high.abs());
-    // Labels of more than six figures before the point, or of none for three places behind it, are
-    // written in thousands of thousands.
-    let exponent = power_of_ten(largest);
-    let third = if (-3..6).contains(&exponent) {
-        0
+    let multiples = (0..most).map(|k| first + k as f64);
+    let at = multiples.take_while(|k| *k <= last).map(|k| k * step.size);
+    labelled(low, high, at, step.exponent)
+}
+
+/// An axis of -`half` to `half`, with a tick at 0 and one on either side of it at three fifths of
+/// the way or farther out.
+pub fn symmetric(half: f64) -> Values {
+    let half = if half > 0.0 && half.is_finite() {
+        half
     } else {
-        exponent.div_euclid(3) * 3
+        1.0
     };
-    let decimals = (third - step.exponent).max(0) as usize;
-    let scale = exact_power(-third);
-    let mut ticks = Vec::new();
-    let mut k = first;
-    while k <= last && ticks.len() < most {
-        let at = k * step.size;
-        ticks.push(Tick::new(at, fixed(at * scale, decimals)));
-        k += 1.0;
-    }
-    let factor = if third == 0 {
-        String::new()
+    let power = power_of_ten(half);
+    // Nearer to each other than 1, 2 and 5, so that the outer labels stand clear of the 0.
+    const FIGURES: [u8; 9] = [8, 10, 15, 20, 30, 40, 50, 60, 80];
+    let outer = [power - 2, power - 1]
+        .into_iter()
+        .flat_map(|exponent| FIGURES.map(|figure| (figure, exponent)))
+        .rfind(|&(figure, exponent)| exact(figure, exponent) <= half);
+    let (figure, exponent) = outer.unwrap_or((8, power - 2));
+    let size = exact(figure, exponent);
+    let last_figure = if figure % 10 == 0 {
+        exponent + 1
     } else {
-        format!("10{}", superscript(third))
+        exponent
     };
+    labelled(-half, half, [-size, 0.0, size], last_figure)
+}
+
+/// An axis with ticks at these values, whose last figure stands for ten to `last_figure`.
+fn labelled(low: f64, high: f64, at: impl IntoIterator<Item = f64>, last_figure: i32) -> Values {
+    let power = counted_in(low.abs().max(high.abs()));
+    let decimals = (power - last_figure).max(0) as usize;
+    let scale = power_of(-power);
+    let label = |at: f64| grouped(&fixed(at * scale, decimals));
     Values {
         low,
         high,
-        ticks,
-        factor,
+        ticks: at.into_iter().map(|at| Tick::new(at, label(at))).collect(),
+        factor: factor(power),
+    }
+}
+
+/// Power of ten, a multiple of three, that values up to `largest` are counted in: 0 unless they have
+/// more than six figures before the point, or none for three places behind it.
+pub fn counted_in(largest: f64) -> i32 {
+    let exponent = power_of_ten(largest);
+    if (-3..6).contains(&exponent) {
+        0
+    } else {
+        exponent.div_euclid(3) * 3
+    }
+}
+
+/// "10⁶" for 6, nothing for 0.
+pub fn factor(power: i32) -> String {
+    if power == 0 {
+        String::new()
+    } else {
+        format!("10{}", superscript(power))
     }
 }
 
@@ -190,7 +224,8 @@ fn exact(figure: u8, exponent: i32) -> f64 {
         .expect("a figure with an exponent is a number")
 }
 
-fn exact_power(exponent: i32) -> f64 {
+/// Ten to a whole power, exact.
+pub fn power_of(exponent: i32) -> f64 {
     exact(1, exponent)
 }
 
@@ -408,7 +443,16 @@ mod tests {
         assert_eq!(pascal.title("PV", "Pa"), "PV, 10⁶\u{a0}Pa");
         let small = ticked(0.0, 0.00005, 5);
         assert_eq!(small.factor, "10⁻⁶");
-        assert_eq!(labels(&small.ticks)[1], "10");
+        assert_eq!(labels(&small.ticks), ["0", "20", "40"]);
+    }
+
+    #[test]
+    fn a_symmetric_axis_has_three_ticks() {
+        assert_eq!(labels(&symmetric(0.336).ticks), ["−0.3", "0.0", "0.3"]);
+        assert_eq!(labels(&symmetric(0.19).ticks), ["−0.15", "0.00", "0.15"]);
+        assert_eq!(labels(&symmetric(1.0).ticks), ["−1", "0", "1"]);
+        assert_eq!(labels(&symmetric(120_000.0).ticks)[2], "100\u{202f}000");
+        assert_eq!(symmetric(f64::NAN).ticks.len(), 3);
     }
 
     #[test]
@@ -453,6 +497,12 @@ mod tests {
             prop_assert!(axis.ticks.windows(2).all(|w| w[0].label != w[1].label));
             // 1, 2, 5: the next larger step is at most 2.5 times as large.
             prop_assert!(axis.ticks.len() as f64 >= most as f64 / 2.5 - 1.0);
+        }
+
+        #[test]
+        fn symmetric_ticks_stand_well_outside(half in 1e-9..1e9_f64) {
+            let ticks = symmetric(half).ticks;
+            prop_assert!(ticks[2].at <= half && ticks[2].at >= 0.6 * half);
         }
 
         #[test]

@@ -88,7 +88,9 @@ impl Panel {
                 .map(|&(x, y)| (self.at_x(x), self.at_y(y)))
                 .filter(|p| self.frame.grown(1e-6).holds(Rect::new(p.0, p.1, p.0, p.1)))
                 .collect();
-            canvas.dots(&placed, 0.65, ink);
+            // The sparser, the larger: a lone small dot is taken for dirt.
+            let apart = (to - from).abs() / samples.len().max(1) as f64;
+            canvas.dots(&placed, (0.3 * apart).clamp(0.6, 1.3), ink);
         }
         parts
     }

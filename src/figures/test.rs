@@ -70,7 +70,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         caption.push_str(" Dotted lines: moves of OP, numbered as in the table.");
     }
     if record.steps.iter().any(|s| s.verdict == Verdict::Rejected) {
-        caption.push_str(" Hatched: not used.");
+        caption.push_str(" Hatched: not used, for the reason in the table.");
     }
     if !lines.sp.is_empty() && sp.is_none() {
         caption.push_str(" SP was logged far from PV and is not drawn.");
