@@ -3,6 +3,7 @@
 //! Ticks are whole multiples of 1, 2 or 5 times a power of ten, on clock axes of the units of the
 //! clock; their labels never touch.
 
+use super::narrate::grouped;
 use super::widths::width_pt;
 use crate::display::fixed;
 use chrono::{Days, NaiveDateTime, Timelike};
@@ -108,36 +109,74 @@ pub fn values(range: (f64, f64), least: f64, most: usize) -> Values {
 
 /// An axis from `low` to `high` exactly, with at most `most` ticks.
 pub fn ticked(low: f64, high: f64, most: usize) -> Values {
-    let step = nice_step((high - low) / most.max(1) as f64);
-    let (first, last) = (libm::ceil(low / step.size), libm::floor(high / step.size));
-    let largest = low.abs().max(high.abs());
-    // Labels of more than six figures before the point, or of none for three places behind it, are
-    // written in thousands of thousands.
-    let exponent = power_of_ten(largest);
-    let third = if (-3..6).contains(&exponent) {
-        0
-    } else {
-        exponent.div_euclid(3) * 3
-    };
-    let decimals = (third - step.exponent).max(0) as usize;
-    let scale = exact_power(-third);
-    let mut ticks = Vec::new();
-    let mut k = first;
-    while k <= last && ticks.len() <= most {
-        let at = k * step.size;
-        ticks.push(Tick::new(at, fixed(at * scale, decimals)));
-        k += 1.0;
+    let most = most.max(2);
+    let mut step = nice_step((high - low) / (most + 1) as f64);
+    let (mut first, mut last) = step.ends(low, high);
+    while last - first >= most as f64 {
+        step = nice_step(step.size * 1.01);
+        (first, last) = step.ends(low, high);
     }
-    let factor = if third == 0 {
-        String::new()
+    let multiples = (0..most).map(|k| first + k as f64);
+    let at = multiples.take_while(|k| *k <= last).map(|k| k * step.size);
+    labelled(low, high, at, step.exponent)
+}
+
+/// An axis of -`half` to `half`, with a tick at 0 and one on either side of it at three fifths of
+/// the way or farther out.
+pub fn symmetric(half: f64) -> Values {
+    let half = if half > 0.0 && half.is_finite() {
+        half
     } else {
-        format!("10{}", superscript(third))
+        1.0
     };
+    let power = power_of_ten(half);
+    // Nearer to each other than 1, 2 and 5, so that the outer labels stand clear of the 0.
+    const FIGURES: [u8; 9] = [8, 10, 15, 20, 30, 40, 50, 60, 80];
+    let outer = [power - 2, power - 1]
+        .into_iter()
+        .flat_map(|exponent| FIGURES.map(|figure| (figure, exponent)))
+        .rfind(|&(figure, exponent)| exact(figure, exponent) <= half);
+    let (figure, exponent) = outer.unwrap_or((8, power - 2));
+    let size = exact(figure, exponent);
+    let last_figure = if figure % 10 == 0 {
+        exponent + 1
+    } else {
+        exponent
+    };
+    labelled(-half, half, [-size, 0.0, size], last_figure)
+}
+
+/// An axis with ticks at these values, whose last figure stands for ten to `last_figure`.
+fn labelled(low: f64, high: f64, at: impl IntoIterator<Item = f64>, last_figure: i32) -> Values {
+    let power = counted_in(low.abs().max(high.abs()));
+    let decimals = (power - last_figure).max(0) as usize;
+    let scale = power_of(-power);
+    let label = |at: f64| grouped(&fixed(at * scale, decimals));
     Values {
         low,
         high,
-        ticks,
-        factor,
+        ticks: at.into_iter().map(|at| Tick::new(at, label(at))).collect(),
+        factor: factor(power),
+    }
+}
+
+/// Power of ten, a multiple of three, that values up to `largest` are counted in: 0 unless they have
+/// more than six figures before the point, or none for three places behind it.
+pub fn counted_in(largest: f64) -> i32 {
+    let exponent = power_of_ten(largest);
+    if (-3..6).contains(&exponent) {
+        0
+    } else {
+        exponent.div_euclid(3) * 3
+    }
+}
+
+/// "10⁶" for 6, nothing for 0.
+pub fn factor(power: i32) -> String {
+    if power == 0 {
+        String::new()
+    } else {
+        format!("10{}", superscript(power))
     }
 }
 
@@ -145,6 +184,13 @@ pub fn ticked(low: f64, high: f64, most: usize) -> Values {
 struct Step {
     size: f64,
     exponent: i32,
+}
+
+impl Step {
+    /// The first and the last multiple of the step between two values.
+    fn ends(&self, low: f64, high: f64) -> (f64, f64) {
+        (libm::ceil(low / self.size), libm::floor(high / self.size))
+    }
 }
 
 /// The smallest nice step that is not below `least`.
@@ -178,7 +224,8 @@ fn exact(figure: u8, exponent: i32) -> f64 {
         .expect("a figure with an exponent is a number")
 }
 
-fn exact_power(exponent: i32) -> f64 {
+/// Ten to a whole power, exact.
+pub fn power_of(exponent: i32) -> f64 {
     exact(1, exponent)
 }
 
@@ -391,12 +438,21 @@ mod tests {
     fn values_read_as_on_a_ruler() {
         assert_eq!(labels(&ticked(36.0, 52.0, 5).ticks), ["40", "45", "50"]);
         assert_eq!(labels(&ticked(-0.3, 0.3, 3).ticks), ["−0.2", "0.0", "0.2"]);
-        let pascal = ticked(1.0e6, 1.3e6, 3);
+        let pascal = ticked(1.0e6, 1.3e6, 4);
         assert_eq!(labels(&pascal.ticks), ["1.0", "1.1", "1.2", "1.3"]);
         assert_eq!(pascal.title("PV", "Pa"), "PV, 10⁶\u{a0}Pa");
         let small = ticked(0.0, 0.00005, 5);
         assert_eq!(small.factor, "10⁻⁶");
-        assert_eq!(labels(&small.ticks)[1], "10");
+        assert_eq!(labels(&small.ticks), ["0", "20", "40"]);
+    }
+
+    #[test]
+    fn a_symmetric_axis_has_three_ticks() {
+        assert_eq!(labels(&symmetric(0.336).ticks), ["−0.3", "0.0", "0.3"]);
+        assert_eq!(labels(&symmetric(0.19).ticks), ["−0.15", "0.00", "0.15"]);
+        assert_eq!(labels(&symmetric(1.0).ticks), ["−1", "0", "1"]);
+        assert_eq!(labels(&symmetric(120_000.0).ticks)[2], "100\u{202f}000");
+        assert_eq!(symmetric(f64::NAN).ticks.len(), 3);
     }
 
     #[test]
@@ -436,11 +492,17 @@ mod tests {
         ) {
             let axis = values((low, low + 10f64.powi(power)), 0.0, most);
             prop_assert!(axis.low <= low && axis.high >= low + 10f64.powi(power));
-            prop_assert!(axis.ticks.len() <= most + 1);
+            prop_assert!(axis.ticks.len() <= most);
             prop_assert!(axis.ticks.iter().all(|t| axis.low <= t.at && t.at <= axis.high));
             prop_assert!(axis.ticks.windows(2).all(|w| w[0].label != w[1].label));
             // 1, 2, 5: the next larger step is at most 2.5 times as large.
             prop_assert!(axis.ticks.len() as f64 >= most as f64 / 2.5 - 1.0);
+        }
+
+        #[test]
+        fn symmetric_ticks_stand_well_outside(half in 1e-9..1e9_f64) {
+            let ticks = symmetric(half).ticks;
+            prop_assert!(ticks[2].at <= half && ticks[2].at >= 0.6 * half);
         }
 
         #[test]

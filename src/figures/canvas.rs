@@ -17,8 +17,9 @@ use plotters::style::{FontDesc, FontFamily, FontStyle, TextStyle};
 pub const PIXELS_PER_PT: f64 = 20.0;
 /// Points in a millimetre.
 pub const PT_PER_MM: f64 = 72.0 / 25.4;
-/// Family of every label, that of the page's text.
-pub const FAMILY: &str = "Source Sans 3";
+/// Family of every label, that of the page's text; in quotes, since a bare name of a family may
+/// hold no figure (CSS Fonts Level 3, 3.1).
+const FAMILY: &str = "'Source Sans 3'";
 /// Size of plot labels, pt: the smallest size of the page.
 pub const LABEL_PT: f64 = 8.5;
 
@@ -387,7 +388,10 @@ mod tests {
         let svg = canvas.svg();
         // 8.5 pt at 20 pixels to the pt.
         assert!(svg.contains("font-size=\"170\""), "{svg}");
-        assert!(svg.contains("font-family=\"Source Sans 3\""), "{svg}");
+        assert!(
+            svg.contains("font-family=\"&apos;Source Sans 3&apos;\""),
+            "{svg}"
+        );
         // Baseline at 20 pt less 0.76 of 8.5 pt; the backend adds the 0.76 em again.
         assert!(svg.contains("y=\"271\" dy=\"0.76em\""), "{svg}");
         assert!(svg.contains("PV, °C &lt;&amp;&gt;\n"), "{svg}");

@@ -19,13 +19,10 @@ pub const SET_POINT: Stroke = Stroke::solid(0.5, Ink::Black);
 pub fn draw(record: &Record) -> Option<Figure> {
     let pair = Pair::of(record)?;
     let new = pair.new_response(Of::SetPoint)?;
-    let found = pair.found_response(Of::SetPoint);
     let range = &record.control_loop.pv;
     let width = range.high - range.low;
     let step = step_size(new, width);
-    let window = Window::new(found, new, pair.shown_s(Of::SetPoint), width / 100.0, |r| {
-        &r.curve.pv
-    });
+    let window = Window::new(&pair, Of::SetPoint, width / 100.0, |r| &r.curve.pv)?;
     let axis = window.axis(&[0.0, step], step.abs() / 10.0, 5);
 
     let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
@@ -46,13 +43,19 @@ pub fn draw(record: &Record) -> Option<Figure> {
     let edge = [(zero, 0.0), (0.0, 0.0), (0.0, step), (window.time.1, step)];
     panel.curve(&mut canvas, &edge, SET_POINT);
     let drawn = window.draw(&mut canvas, &panel);
-    let others = [(panel.at_y(step), "set point")];
-    name_both(&mut canvas, &panel, &window, &drawn, &pair, &others);
+    name_both(
+        &mut canvas,
+        (&panel, &axis),
+        (&window, &drawn),
+        &pair,
+        Some(step),
+        3.0,
+    );
 
     let moved = moved(step, range);
     let caption = format!("Predicted PV after the set point is {moved}.");
     let mut alt = format!("Line chart. After the set point is {moved}, ");
-    if let (Some(block), Some(found)) = (pair.found, found) {
+    if let (Some(block), Some(found)) = (pair.found, pair.found_response(Of::SetPoint)) {
         alt.push_str(&format!("{}; ", behaviour("as found", block, found)));
     }
     alt.push_str(&behaviour(pair.name, pair.new, new));

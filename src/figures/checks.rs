@@ -1,5 +1,7 @@
 //! What holds for every figure of every record, however odd its data.
 
+use super::canvas::{Anchor, Label, PIXELS_PER_PT, PT_PER_MM};
+use super::geometry::Rect;
 use super::sample::{Plan, morning, range};
 use super::{Figure, draw};
 use crate::identify::ReasonCode;
@@ -187,7 +189,7 @@ fn well_formed(svg: &str) -> Result<(), String> {
     Ok(())
 }
 
-fn check(record: &Record, figure: &Figure) {
+fn check(figure: &Figure) {
     let name = figure.name;
     well_formed(&figure.svg).unwrap_or_else(|why| panic!("{name}: {why}"));
     for word in ["NaN", "inf", "Infinity"] {
@@ -204,19 +206,85 @@ fn check(record: &Record, figure: &Figure) {
         "{name}: {}",
         figure.alt
     );
-    for p in coordinates(&figure.svg) {
-        // 260 mm at 20 pixels to the pt.
-        assert!((-400.0..16_000.0).contains(&p), "{name}: coordinate {p}");
+    let page = Rect::new(
+        0.0,
+        0.0,
+        figure.width_mm * PT_PER_MM,
+        figure.height_mm * PT_PER_MM,
+    );
+    for (x, y) in points(&figure.svg) {
+        let at = Rect::new(x, y, x, y);
+        assert!(
+            page.grown(0.6).holds(at),
+            "{name}: ({x}, {y}) is off the page"
+        );
     }
-    assert!(record.schema.starts_with("asleft"));
+    let labels = labels(&figure.svg);
+    for (k, (words, area)) in labels.iter().enumerate() {
+        assert!(
+            page.grown(2.0).holds(*area),
+            "{name}: \"{words}\" is off the page: {area:?}"
+        );
+        for (other, taken) in &labels[..k] {
+            // Ascenders may reach into the air below descenders, words not into words.
+            let apart = !area.grown(-0.6).meets(taken.grown(-0.6));
+            assert!(apart, "{name}: \"{words}\" on \"{other}\"");
+        }
+    }
 }
 
-fn coordinates(svg: &str) -> Vec<f64> {
+/// The value of an attribute of a tag.
+fn attribute<'a>(tag: &'a str, name: &str) -> &'a str {
+    let rest = tag
+        .split(&format!(" {name}=\""))
+        .nth(1)
+        .expect("the attribute is there");
+    rest.split('"').next().unwrap_or_default()
+}
+
+/// The words of an SVG with the boxes they fill, pt.
+fn labels(svg: &str) -> Vec<(String, Rect)> {
+    let number = |tag: &str, name: &str| -> f64 { attribute(tag, name).parse().expect("a number") };
+    svg.split("<text")
+        .skip(1)
+        .map(|part| {
+            let (tag, rest) = part.split_once('>').expect("the tag ends");
+            let words = rest.split("</text>").next().unwrap_or_default().trim();
+            let words = words.replace("&lt;", "<").replace("&gt;", ">");
+            let words = words
+                .replace("&quot;", "\"")
+                .replace("&apos;", "'")
+                .replace("&amp;", "&");
+            let size_pt = number(tag, "font-size") / PIXELS_PER_PT;
+            let (x, top) = (
+                number(tag, "x") / PIXELS_PER_PT,
+                number(tag, "y") / PIXELS_PER_PT,
+            );
+            let mut label = Label::new(x, top + 0.76 * size_pt, words.clone()).size(size_pt);
+            label.bold = tag.contains("font-weight=\"bold\"");
+            label.anchor = match attribute(tag, "text-anchor") {
+                "start" => Anchor::Start,
+                "middle" => Anchor::Middle,
+                _ => Anchor::End,
+            };
+            (words, label.area())
+        })
+        .collect()
+}
+
+/// The points of all paths, pt.
+fn points(svg: &str) -> Vec<(f64, f64)> {
     let mut found = Vec::new();
     for part in svg.split("points=\"").skip(1) {
-        let points = part.split('"').next().unwrap_or_default();
-        for number in points.split([',', ' ']).filter(|n| !n.is_empty()) {
-            found.push(number.parse().expect("a coordinate"));
+        for pair in part
+            .split('"')
+            .next()
+            .unwrap_or_default()
+            .split_whitespace()
+        {
+            let (x, y) = pair.split_once(',').expect("a pair");
+            let number = |text: &str| text.parse::<f64>().expect("a number") / PIXELS_PER_PT;
+            found.push((number(x), number(y)));
         }
     }
     found
@@ -229,7 +297,7 @@ fn every_figure_of_every_plan_is_sound() {
         let figures = draw(&record);
         assert!(!figures.is_empty(), "{name}");
         for figure in &figures {
-            check(&record, figure);
+            check(figure);
         }
         if let Some(folder) = std::env::var_os(LOOK) {
             for figure in &figures {
@@ -336,7 +404,7 @@ proptest! {
             }
         }
         for figure in draw(&record) {
-            check(&record, &figure);
+            check(&figure);
         }
     }
 }

@@ -25,6 +25,8 @@ const MOST: usize = 4 * ACROSS;
 const CURVE_POINTS: usize = 300;
 /// White between two charts, pt.
 const BETWEEN_PT: f64 = 7.0;
+/// How far a tick's label may reach over the edge of its chart, pt.
+const EDGE_PT: f64 = 2.0;
 /// How long after the move is shown, in time constants of the pooled model.
 const SHOWN_TAU: f64 = 8.0;
 
@@ -116,7 +118,7 @@ fn chart<'a>(
     // The fit was made from the OP as measured, so it is drawn from that.
     let mut moves: Vec<Point> = Vec::new();
     for (&t, &op) in data.t_s.iter().zip(&data.op) {
-        if t < from || t > to || !op.is_finite() {
+        if t < from || t >= to || !op.is_finite() {
             continue;
         }
         let deviation = op_span.percent(op) - op_from;
@@ -238,32 +240,31 @@ impl GainFigure {
         let range = &record.control_loop.pv;
         let integrates = charts.iter().any(|c| c.fit.kind.integrates());
         let each = if integrates { 60.0 } else { 1.0 };
-        let factor = (range.high - range.low) / 100.0 * each;
-        let largest = charts
-            .iter()
-            .map(|c| (c.fit.gain.value * factor).abs())
-            .fold(0.0, f64::max);
+        let change = (range.high - range.low) / 100.0 * each;
+        let gains = charts.iter().map(|c| (c.fit.gain.value * change).abs());
+        let largest = gains.fold(0.0, f64::max);
+        let power = axis::counted_in(largest);
+        // Three figures of the largest.
         let first = if largest > 0.0 {
-            libm::floor(libm::log10(largest))
+            libm::floor(libm::log10(largest)) as i32
         } else {
-            0.0
+            0
         };
-        let decimals = (2.0 - first).clamp(0.0, 8.0) as usize;
-        let pv = unit(&range.unit);
-        let unit = if integrates {
-            format!("{pv} per min for 1\u{a0}% of OP")
+        let counted = format!("{} {}", axis::factor(power), unit(&range.unit));
+        let per = if integrates {
+            "per min for 1\u{a0}% of OP"
         } else {
-            format!("{pv} per %")
+            "per %"
         };
         GainFigure {
-            factor,
-            decimals,
-            unit,
+            factor: change * axis::power_of(-power),
+            decimals: (2 - first + power).max(0) as usize,
+            unit: format!("{} {per}", counted.trim()),
         }
     }
 
     fn print(&self, gain: f64) -> String {
-        fixed(gain * self.factor, self.decimals)
+        narrate::grouped(&fixed(gain * self.factor, self.decimals))
     }
 }
 
@@ -298,7 +299,7 @@ fn sheet(
         .filter(|r| r.is_finite())
         .fold(0.0, f64::max);
     let upper_axis = axis::values(seen, least, if rows > 2 { 3 } else { 5 });
-    let lower_axis = axis::values((-largest, largest), trend::least(pv) / 5.0, 3);
+    let lower_axis = axis::symmetric(largest.max(trend::least(pv) / 10.0) * 1.12);
 
     let left = 27.0_f64
         .max(upper_axis.label_width() + 6.0)
@@ -340,7 +341,15 @@ fn sheet(
         let lower = Panel::new(lower, time, &lower_axis);
         upper.value_axis(&mut canvas, &upper_axis, column == 0);
         lower.value_axis(&mut canvas, &lower_axis, column == 0);
-        let ticks = axis::elapsed(time.0, time.1, width, false);
+        let mut ticks = axis::elapsed(time.0, time.1, width, false);
+        for tick in &mut ticks {
+            // A label over the edge would reach into the next chart's.
+            let half = Label::new(0.0, 0.0, tick.label.clone()).width() / 2.0;
+            let at = lower.at_x(tick.at);
+            if at - half < x - EDGE_PT || at + half > x + width + EDGE_PT {
+                tick.label.clear();
+            }
+        }
         lower.time_axis(&mut canvas, &ticks);
         if column == 0 {
             let title = lower_axis.title("Residual of the step’s own fit", &pv_unit);
@@ -352,7 +361,8 @@ fn sheet(
             let at = y + row.lower + row.lower_height + 12.0 + LINE_PT;
             canvas.words(Label::new(x + width, at, words).anchor(Anchor::End));
         }
-        head(&mut canvas, record, chart.step, x, y + row.head, two_lines);
+        let two = two_lines.then_some(width);
+        head(&mut canvas, record, chart.step, (x, y + row.head), two);
         let names = (k == names_pooled)
             .then_some(record)
             .and_then(|r| r.model.as_ref());
@@ -385,16 +395,23 @@ fn moved(record: &Record, step: &Step) -> String {
     format!("{from} → {}", with_unit(&to, &record.control_loop.op.unit))
 }
 
-fn head(canvas: &mut Canvas, record: &Record, step: &Step, x: f64, y: f64, two_lines: bool) {
+/// Number and move of a step; the move on a line of its own, `width` wide, where given.
+fn head(canvas: &mut Canvas, record: &Record, step: &Step, at: Point, width: Option<f64>) {
     let mut name = step_name(step);
-    (name.x, name.y) = (x, y);
+    (name.x, name.y) = at;
     canvas.words(name);
-    let at = if two_lines {
-        (x, y + LINE_PT)
-    } else {
-        (x + head_width(step), y)
+    let words = moved(record, step);
+    let Some(width) = width else {
+        canvas.words(Label::new(at.0 + head_width(step), at.1, words));
+        return;
     };
-    canvas.words(Label::new(at.0, at.1, moved(record, step)));
+    let label = Label::new(at.0, at.1 + LINE_PT, words);
+    canvas.words(if label.width() <= width {
+        label
+    } else {
+        let (from, to) = (narrate::op(step.op_from), narrate::op(step.op_to));
+        Label::new(at.0, at.1 + LINE_PT, format!("{from} → {to}"))
+    });
 }
 
 /// The chart in which the pooled model stands clearest of the step's own fit.

@@ -21,7 +21,34 @@ pub fn op(value: f64) -> String {
 
 /// A change of the PV with its unit, to three figures.
 pub fn pv_change(value: f64, range: &Range) -> String {
-    with_unit(&plain(value, 3), &range.unit)
+    with_unit(&grouped(&plain(value, 3)), &range.unit)
+}
+
+/// A PV with its unit.
+pub fn pv(value: f64, range: &Range) -> String {
+    with_unit(&grouped(&fixed(value, decimals(range))), &range.unit)
+}
+
+/// A printed figure with its thousands parted, where it has five figures or more before the point.
+pub fn grouped(figure: &str) -> String {
+    const THIN: char = '\u{202f}';
+    let whole = figure.split('.').next().unwrap_or_default();
+    let digits = whole.chars().filter(char::is_ascii_digit).count();
+    if digits < 5 {
+        return figure.to_owned();
+    }
+    let mut left = digits;
+    let mut text = String::new();
+    for c in whole.chars() {
+        text.push(c);
+        if c.is_ascii_digit() {
+            left -= 1;
+            if left > 0 && left.is_multiple_of(3) {
+                text.push(THIN);
+            }
+        }
+    }
+    text + &figure[whole.len()..]
 }
 
 /// When a log was taken: "2026-03-11 from 09:05 to 11:14", or how long it is where it bears no date.
@@ -81,6 +108,13 @@ mod tests {
         assert_eq!(decimals(&range(0.0, 4.0)), 3);
         assert_eq!(decimals(&range(1.0, 1.0)), 1);
         assert_eq!(pv_change(4.0, &range(0.0, 1.0)), "4\u{a0}°C");
+    }
+
+    #[test]
+    fn thousands_are_parted() {
+        assert_eq!(grouped("−1234567.25"), "−1\u{202f}234\u{202f}567.25");
+        assert_eq!(grouped("1234.5"), "1234.5");
+        assert_eq!(grouped("0.000012"), "0.000012");
     }
 
     #[test]

@@ -88,16 +88,17 @@ impl Panel {
                 .map(|&(x, y)| (self.at_x(x), self.at_y(y)))
                 .filter(|p| self.frame.grown(1e-6).holds(Rect::new(p.0, p.1, p.0, p.1)))
                 .collect();
-            canvas.dots(&placed, 0.65, ink);
+            // The sparser, the larger: a lone small dot is taken for dirt.
+            let apart = (to - from).abs() / samples.len().max(1) as f64;
+            canvas.dots(&placed, (0.3 * apart).clamp(0.6, 1.3), ink);
         }
         parts
     }
 
     /// Draws the vertical axis: a hairline at each tick, its label on the left where `labelled`.
     pub fn value_axis(&self, canvas: &mut Canvas, axis: &Values, labelled: bool) {
-        for tick in &axis.ticks {
-            let y = self.at_y(tick.at);
-            canvas.line((self.frame.x0, y), (self.frame.x1, y), GRID);
+        for (from, to) in self.grid(axis) {
+            canvas.line(from, to, GRID);
         }
         if labelled {
             for tick in self.spread_ticks(axis) {
@@ -106,6 +107,15 @@ impl Panel {
                 canvas.words(label.anchor(Anchor::End));
             }
         }
+    }
+
+    /// The lines of the grid.
+    pub fn grid(&self, axis: &Values) -> Vec<(Point, Point)> {
+        axis.ticks
+            .iter()
+            .map(|tick| self.at_y(tick.at))
+            .map(|y| ((self.frame.x0, y), (self.frame.x1, y)))
+            .collect()
     }
 
     /// The ticks whose labels have room above each other.

@@ -17,20 +17,30 @@ const ANCHORS: usize = 80;
 pub struct Taken {
     paths: Vec<Vec<Point>>,
     boxes: Vec<Rect>,
+    grid: Vec<(Point, Point)>,
 }
 
 impl Taken {
     /// Everything set in words so far.
     pub fn words_of(canvas: &Canvas) -> Self {
-        Taken {
-            paths: Vec::new(),
-            boxes: canvas.label_areas(),
-        }
+        let mut taken = Taken::default();
+        taken.add_words(canvas);
+        taken
+    }
+
+    /// Adds everything set in words so far.
+    pub fn add_words(&mut self, canvas: &Canvas) {
+        self.boxes.extend(canvas.label_areas());
     }
 
     /// Adds curves as drawn on the sheet.
     pub fn add_paths(&mut self, paths: &[Vec<Point>]) {
         self.paths.extend_from_slice(paths);
+    }
+
+    /// Adds the grid of a window: words keep clear of it where there is room beside it.
+    pub fn add_grid(&mut self, lines: Vec<(Point, Point)>) {
+        self.grid.extend(lines);
     }
 
     /// Adds a box.
@@ -52,11 +62,22 @@ impl Taken {
         boxes as f64 * 1000.0 + curves
     }
 
-    /// The first of the boxes that covers nothing and lies on `sheet`.
+    /// Whether a grid line runs through a box.
+    fn on_grid(&self, area: Rect) -> bool {
+        self.grid
+            .iter()
+            .any(|&(a, b)| clip_segment(a, b, area.grown(-0.5)).is_some())
+    }
+
+    /// The first of the boxes that covers nothing and lies on `sheet`; one clear of the grid is
+    /// preferred.
     pub fn first_free(&self, sheet: Rect, boxes: impl IntoIterator<Item = Rect>) -> Option<Rect> {
-        boxes
+        let free: Vec<Rect> = boxes
             .into_iter()
-            .find(|&area| sheet.holds(area) && self.covered(area) == 0.0)
+            .filter(|&area| sheet.holds(area) && self.covered(area) == 0.0)
+            .collect();
+        let clear = free.iter().find(|&&area| !self.on_grid(area));
+        clear.or(free.first()).copied()
     }
 
     /// Distance of a point from the nearest curve.
@@ -161,7 +182,15 @@ pub fn name_curve(
     let mut all = taken.clone();
     all.add_paths(curve);
     let (width, height) = block.size();
-    for reach in [5.0, 10.0, 16.0, 24.0] {
+    // Near to the curve and clear of the grid; else near; else farther off, with a line to it.
+    for (reach, off_grid) in [
+        (5.0, true),
+        (9.0, true),
+        (5.0, false),
+        (9.0, false),
+        (16.0, false),
+        (24.0, false),
+    ] {
         for &(_, (x, y)) in &anchors {
             let beside = [
                 (x + reach, y - height / 2.0),
@@ -177,8 +206,11 @@ pub fn name_curve(
             let Some(area) = all.first_free(within, boxes) else {
                 continue;
             };
+            if off_grid && all.on_grid(area) {
+                continue;
+            }
             block.set(canvas, area, false);
-            if reach > 5.0 {
+            if reach > 9.0 {
                 let near = (x.clamp(area.x0, area.x1), y.clamp(area.y0, area.y1));
                 canvas.line((x, y), near, LEADER);
             }

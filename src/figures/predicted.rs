@@ -34,7 +34,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
                 plain_percent(new.step_percent)
             ),
         };
-        leaves |= half(&mut canvas, record, &pair, of, new, from);
+        leaves |= half(&mut canvas, record, &pair, of, new, from)?;
         canvas.words(Label::new(from, 10.0, title.clone()).bold().size(9.0));
         alt.push_str(&format!(" {title}: "));
         if let (Some(block), Some(found)) = (pair.found, pair.found_response(of)) {
@@ -59,7 +59,8 @@ pub fn draw(record: &Record) -> Option<Figure> {
     Some(Figure::new("predicted.svg", &canvas, caption, alt))
 }
 
-/// Draws one response; returns whether the line as found leaves a window.
+/// Draws one response; returns whether the line as found leaves a window, `None` where there is
+/// no new response to draw.
 fn half(
     canvas: &mut Canvas,
     record: &Record,
@@ -67,20 +68,18 @@ fn half(
     of: Of,
     new: &Response,
     from: f64,
-) -> bool {
+) -> Option<bool> {
     let (pv, op) = (&record.control_loop.pv, &record.control_loop.op);
     let (pv_width, op_width) = (pv.high - pv.low, op.high - op.low);
-    let found = pair.found_response(of);
-    let shown_s = pair.shown_s(of);
-    let upper = Window::new(found, new, shown_s, pv_width / 100.0, |r| &r.curve.pv);
-    let lower = Window::new(found, new, shown_s, op_width / 100.0, |r| &r.curve.op);
+    let upper = Window::new(pair, of, pv_width / 100.0, |r| &r.curve.pv)?;
+    let lower = Window::new(pair, of, op_width / 100.0, |r| &r.curve.op)?;
     let step = step_size(new, pv_width);
     let also: &[f64] = match of {
         Of::SetPoint => &[0.0, step],
         Of::Load => &[0.0],
     };
     let pv_axis = upper.axis(also, pv_width / 2000.0, 5);
-    let op_axis = lower.axis(&[0.0], op_width / 1000.0, 4);
+    let op_axis = lower.axis(&[0.0], op_width / 1000.0, 5);
     let left = (from + 27.0).max(from + pv_axis.label_width().max(op_axis.label_width()) + 6.0);
     let right = (from + HALVES_PT).min(canvas.width() + 14.0) - NAMES_PT + 8.0;
     let bottom = canvas.height() - BELOW_PT;
@@ -90,7 +89,7 @@ fn half(
     let op_panel = Panel::new(op_frame, lower.time, &op_axis);
     pv_panel.value_axis(canvas, &pv_axis, true);
     op_panel.value_axis(canvas, &op_axis, true);
-    let ticks = axis::elapsed(0.0, shown_s, right - op_panel.at_x(0.0), true);
+    let ticks = axis::elapsed(0.0, upper.time.1, right - op_panel.at_x(0.0), true);
     op_panel.time_axis(canvas, &ticks);
     let titles = [
         pv_axis.title("PV change", &display::unit(&pv.unit)),
@@ -99,22 +98,19 @@ fn half(
     let [pv_title, op_title] = titles;
     canvas.words(Label::new(from, 26.0, pv_title));
     canvas.words(Label::new(from, op_frame.y0 - 9.5, op_title));
-    let mut others = Vec::new();
-    if of == Of::SetPoint {
-        let edge = [
-            (upper.time.0, 0.0),
-            (0.0, 0.0),
-            (0.0, step),
-            (upper.time.1, step),
-        ];
+    let set_point = (of == Of::SetPoint).then_some(step);
+    if set_point.is_some() {
+        let (begin, end) = upper.time;
+        let edge = [(begin, 0.0), (0.0, 0.0), (0.0, step), (end, step)];
         pv_panel.curve(canvas, &edge, SET_POINT);
-        others.push((pv_panel.at_y(step), "set point"));
     }
-    for (window, panel, others) in [(&upper, &pv_panel, &others[..]), (&lower, &op_panel, &[])] {
-        let drawn = window.draw(canvas, panel);
-        name_both(canvas, panel, window, &drawn, pair, others);
-    }
-    upper.found_leaves(&pv_panel) || lower.found_leaves(&op_panel)
+    let drawn = upper.draw(canvas, &pv_panel);
+    let named = (&pv_panel, &pv_axis);
+    name_both(canvas, named, (&upper, &drawn), pair, set_point, 9.5);
+    let drawn = lower.draw(canvas, &op_panel);
+    let named = (&op_panel, &op_axis);
+    name_both(canvas, named, (&lower, &drawn), pair, None, 9.5);
+    Some(upper.found_leaves(&pv_panel) || lower.found_leaves(&op_panel))
 }
 
 fn narrated(

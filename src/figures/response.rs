@@ -1,10 +1,10 @@
 //! Predicted responses as found beside as left: what page 1 and the settings' section share.
 
 use super::axis::{self, Values};
-use super::canvas::{Canvas, Ink, Label, Stroke};
+use super::canvas::{Anchor, Canvas, Ink, Label, Stroke};
 use super::geometry::{Point, Rect};
-use super::panel::Panel;
-use super::place::{Block, Taken, end_labels, name_curve};
+use super::panel::{HALF_FIGURE_PT, Panel};
+use super::place::{Block, LINE_PT, Taken, end_labels, name_curve};
 use crate::predict::Response;
 use crate::record::{Record, SettingsBlock};
 
@@ -14,8 +14,11 @@ pub const FOUND: Stroke = Stroke::dashed(0.7, 3.6, 2.0);
 pub const NEW: Stroke = Stroke::solid(1.2, Ink::Black);
 /// Part of the time axis that lies before the step.
 const BEFORE: f64 = 0.05;
-/// How far beyond the new response the one as found is followed, in heights of the new one.
+/// How far beyond the new response the one as found is followed, in heights of the new one: far
+/// enough to see it swing, not so far that the new one is pressed flat.
 const BEYOND: f64 = 0.9;
+/// The same where the loop as found is unstable: its line leaves the window anyway.
+const BEYOND_UNSTABLE: f64 = 0.4;
 
 /// Which of the two responses.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -118,6 +121,7 @@ pub fn unstable(block: &SettingsBlock) -> bool {
 pub struct Window {
     found: Vec<Point>,
     new: Vec<Point>,
+    beyond: f64,
     /// Time axis, s.
     pub time: (f64, f64),
 }
@@ -125,12 +129,13 @@ pub struct Window {
 impl Window {
     /// Lines of one column of the curves, each value times `factor`, as far as `shown_s`.
     pub fn new(
-        found: Option<&Response>,
-        new: &Response,
-        shown_s: f64,
+        pair: &Pair,
+        of: Of,
         factor: f64,
         column: impl Fn(&Response) -> &[f64],
-    ) -> Self {
+    ) -> Option<Self> {
+        let (found, new) = (pair.found_response(of), pair.new_response(of)?);
+        let shown_s = pair.shown_s(of);
         let before = -BEFORE * shown_s;
         let line = |response: &Response| {
             let mut line = vec![(before, 0.0), (0.0, 0.0)];
@@ -144,11 +149,16 @@ impl Window {
             );
             line
         };
-        Window {
+        Some(Window {
             found: found.map(line).unwrap_or_default(),
             new: line(new),
+            beyond: if pair.found_unstable() {
+                BEYOND_UNSTABLE
+            } else {
+                BEYOND
+            },
             time: (before, shown_s),
-        }
+        })
     }
 
     /// The vertical axis: the new line whole, the one as found as far as it does not press the new
@@ -160,7 +170,7 @@ impl Window {
             shown(&self.new).unwrap_or((0.0, 0.0)),
             axis::range(also.iter().copied()),
         );
-        let reach = (new.1 - new.0) * BEYOND;
+        let reach = (new.1 - new.0) * self.beyond;
         let limits = (new.0 - reach, new.1 + reach);
         let found = shown(&self.found)
             .map(|(low, high)| (low.max(limits.0), high.min(limits.1)))
@@ -190,40 +200,46 @@ impl Window {
     }
 }
 
-/// Names both curves in a window: as found beside it, the new one at its end.
+/// Names both curves in a window: as found beside it, the new one at its end. Where there is no
+/// room beside the curve as found its name stands above the window, `above` pt from its edge.
 pub fn name_both(
     canvas: &mut Canvas,
-    panel: &Panel,
-    window: &Window,
-    drawn: &[Vec<Vec<Point>>; 2],
+    (panel, axis): (&Panel, &Values),
+    (window, drawn): (&Window, &[Vec<Vec<Point>>; 2]),
     pair: &Pair,
-    others_at_end: &[(f64, &str)],
+    set_point: Option<f64>,
+    above: f64,
 ) {
     let [found, new] = drawn;
-    let x = panel.frame.x1 + 4.0;
+    let frame = panel.frame;
+    let x = frame.x1 + 4.0;
     let end = window.new_end(panel);
-    end_labels(
-        canvas,
-        x,
-        &[(end, pair.name)],
-        (panel.frame.y0, panel.frame.y1),
-    );
-    for &(y, words) in others_at_end {
-        let clear = if (y - end).abs() < 9.5 { end + 9.5 } else { y };
-        canvas.words(Label::new(x, clear + 3.0, words));
+    end_labels(canvas, x, &[(end, pair.name)], (frame.y0, frame.y1));
+    if let Some(step) = set_point {
+        let y = panel.at_y(step);
+        let clear = if (y - end).abs() < LINE_PT {
+            end + LINE_PT
+        } else {
+            y
+        };
+        canvas.words(Label::new(x, clear + HALF_FIGURE_PT, "set point"));
     }
     if found.is_empty() {
         return;
     }
     let mut taken = Taken::words_of(canvas);
     taken.add_paths(new);
-    let frame = panel.frame;
+    taken.add_grid(panel.grid(axis));
     let sheet = Rect::new(frame.x0, frame.y0 - 9.0, frame.x1, frame.y1 - 1.0);
     let block = Block::line(pair.found_name(), false);
-    name_curve(canvas, &mut taken, found, &block, sheet);
+    if !name_curve(canvas, &mut taken, found, &block, sheet) {
+        let words = format!("dashed: {}", pair.found_name());
+        let label = Label::new(frame.x1, frame.y0 - above, words);
+        canvas.words(label.anchor(Anchor::End));
+    }
 }
 
-/// The larger of two numbers of percent, written as a step of engineering units.
+/// Size of the step in engineering units of a range of this width.
 pub fn step_size(response: &Response, width: f64) -> f64 {
     response.step_percent / 100.0 * width
 }

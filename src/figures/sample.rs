@@ -175,11 +175,25 @@ impl Plan {
             values.iter().sum::<f64>() / values.len().max(1) as f64
         };
         let pv_from = mean(quiet_from, at_s);
-        let pv_to = mean(end_s - (end_s - at_s) / 5.0, end_s);
+        let integrates = self.process.kind().integrates();
+        let value_at = |t: f64| mean(t - 2.0 * self.interval_s, t + 2.0 * self.interval_s);
+        let pv_to = if integrates {
+            value_at(end_s)
+        } else {
+            mean(end_s - (end_s - at_s) / 5.0, end_s)
+        };
         let rejected = self.rejected.iter().find(|r| r.0 == number);
         let tau = self.process.time_constant_s().unwrap_or(0.0);
-        let integrates = self.process.kind().integrates();
         let gain = self.process.gain() * (1.0 + 0.02 * number as f64);
+        // Where an integrating process starts off balance the PV has a slope before the move.
+        let slope = |op: f64| {
+            if integrates {
+                gain * (op - self.moves[0].1)
+            } else {
+                0.0
+            }
+        };
+        let settled = if integrates { value_at(at_s) } else { pv_from };
         Step {
             number,
             at: self.clock().at(at_s),
@@ -208,7 +222,7 @@ impl Plan {
                 time_constant_s: (!integrates).then_some(tau),
                 base_percent: pv_span.percent(pv_from),
                 end_percent: pv_span.percent(pv_to),
-                slopes_percent_per_s: integrates.then_some([0.0, gain * (op - before.1)]),
+                slopes_percent_per_s: integrates.then(|| [slope(before.1), slope(op)]),
                 differs: false,
             }),
             fit: rejected.is_none().then(|| StepFit {
@@ -219,8 +233,8 @@ impl Plan {
                 dead_time_s: around(self.process.dead_time_s()),
                 residual_percent: 4.0,
                 rmse_percent: 0.1,
-                bias_percent: pv_span.percent(pv_from),
-                drift_percent_per_s: 0.0,
+                bias_percent: pv_span.percent(settled),
+                drift_percent_per_s: slope(before.1),
             }),
         }
     }

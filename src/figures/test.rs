@@ -62,9 +62,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
     );
     label_op_end(&mut canvas, &trend, &lines);
     marks.draw(&mut canvas, &trend, &record.steps);
-    for area in canvas.label_areas() {
-        taken.add_box(area);
-    }
+    taken.add_words(&canvas);
     name_rejected(&mut canvas, &trend, &record.steps, &mut taken);
 
     let mut caption = "The test as logged.".to_owned();
@@ -72,7 +70,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         caption.push_str(" Dotted lines: moves of OP, numbered as in the table.");
     }
     if record.steps.iter().any(|s| s.verdict == Verdict::Rejected) {
-        caption.push_str(" Hatched: not used.");
+        caption.push_str(" Hatched: not used, for the reason in the table.");
     }
     if !lines.sp.is_empty() && sp.is_none() {
         caption.push_str(" SP was logged far from PV and is not drawn.");
@@ -216,7 +214,7 @@ fn name_rejected(canvas: &mut Canvas, trend: &Trend, steps: &[Step], taken: &mut
             anchor: Anchor::Middle,
         });
         for block in blocks {
-            let spots = spots(area, sheet, block.size());
+            let spots = spots(area, sheet, trend.pv.frame.y1 - 4.0, block.size());
             if let Some(spot) = taken.first_free(sheet, spots) {
                 block.set(canvas, spot, true);
                 taken.add_box(spot.grown(1.5));
@@ -226,19 +224,24 @@ fn name_rejected(canvas: &mut Canvas, trend: &Trend, steps: &[Step], taken: &mut
     }
 }
 
-/// Places for a block in a stretch: its middle column from below upwards, then nearer its edges.
-fn spots(stretch: Rect, sheet: Rect, size: Point) -> Vec<Rect> {
+/// Places for a block in a stretch: its middle column, then nearer its edges.
+fn spots(stretch: Rect, sheet: Rect, pv_foot: f64, size: Point) -> Vec<Rect> {
     let (width, height) = size;
     let middle = (stretch.x0 + stretch.x1) / 2.0;
     let slack = ((stretch.x1 - stretch.x0 - width) / 2.0 - 3.0).max(0.0);
     let mut spots = Vec::new();
     for shift in [0.0, slack * 0.5, -slack * 0.5, slack, -slack] {
         let x0 = (middle + shift - width / 2.0).clamp(sheet.x0, (sheet.x1 - width).max(sheet.x0));
-        let mut y1 = sheet.y1;
-        while y1 - height >= sheet.y0 {
-            spots.push(Rect::new(x0, y1 - height, x0 + width, y1));
-            y1 -= 3.0;
-        }
+        // Up from the foot of the PV's window, then down through the OP's.
+        let above = (0..).map(|k| pv_foot - 3.0 * f64::from(k));
+        let above = above.take_while(|y1| y1 - height >= sheet.y0);
+        let below = (1..).map(|k| pv_foot + 3.0 * f64::from(k));
+        let below = below.take_while(|y1| *y1 <= sheet.y1);
+        spots.extend(
+            above
+                .chain(below)
+                .map(|y1| Rect::new(x0, y1 - height, x0 + width, y1)),
+        );
     }
     spots
 }

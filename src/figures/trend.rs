@@ -186,6 +186,13 @@ impl Trend {
         canvas.words(Label::new(0.0, op_title, op).bold());
     }
 
+    /// The lines of both grids.
+    pub fn grid(&self) -> Vec<(Point, Point)> {
+        let mut lines = self.pv.grid(&self.pv_axis);
+        lines.extend(self.op.grid(&self.op_axis));
+        lines
+    }
+
     /// Draws the PV; returns it as drawn.
     pub fn draw_pv(&self, canvas: &mut Canvas, lines: &Lines, width_pt: f64) -> Vec<Vec<Point>> {
         let mut drawn = Vec::new();
@@ -197,27 +204,36 @@ impl Trend {
                     canvas.dots(&[at], width_pt, Ink::Black);
                     drawn.push(vec![at, (at.0 + 0.1, at.1)]);
                 }
-                run => drawn.extend(self.pv.curve(
-                    canvas,
-                    run,
-                    Stroke::solid(width_pt, Ink::Black),
-                )),
+                run => {
+                    let stroke = Stroke::solid(width_pt, Ink::Black);
+                    drawn.extend(self.pv.curve(canvas, run, stroke));
+                    self.mark_sparse(canvas, run);
+                }
             }
         }
         drawn
     }
 
-    /// The PV's place at the end, level enough to set a label at: the middle of its last samples.
+    /// Dots on samples that stand so far apart that the line between them is only a guide.
+    fn mark_sparse(&self, canvas: &mut Canvas, run: &[Point]) {
+        const FAR_PT: f64 = 5.0;
+        let across = self.pv.at_x(run[run.len() - 1].0) - self.pv.at_x(run[0].0);
+        if across > FAR_PT * run.len() as f64 {
+            let place = |p: &Point| (self.pv.at_x(p.0), self.pv.at_y(p.1));
+            let placed: Vec<Point> = run.iter().map(place).collect();
+            canvas.dots(&placed, 1.2, Ink::Black);
+        }
+    }
+
+    /// The PV's place at the end, level enough to set a label at: the median of its last stretch.
     pub fn pv_end(&self, lines: &Lines) -> f64 {
-        const LAST: usize = 25;
-        let mut last: Vec<f64> = lines
-            .pv
-            .iter()
-            .flatten()
-            .rev()
-            .take(LAST)
-            .map(|p| p.1)
-            .collect();
+        const LAST_PART: f64 = 0.02;
+        let times = lines.time;
+        let end = lines.pv.last().and_then(|run| run.last());
+        let since = end.map_or(times.1, |p| p.0) - LAST_PART * (times.1 - times.0);
+        let samples = lines.pv.iter().flatten().rev();
+        let last = samples.take_while(|p| p.0 >= since).map(|p| p.1);
+        let mut last: Vec<f64> = last.collect();
         if last.is_empty() {
             return f64::NAN;
         }

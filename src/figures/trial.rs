@@ -81,11 +81,13 @@ pub fn draw(record: &Record) -> Option<Figure> {
     if record.trial.is_some() {
         let sheet = Rect::new(frame.x0, frame.y0 - 10.0, frame.x1, frame.y1);
         let mut taken = Taken::words_of(&canvas);
+        taken.add_grid(trend.grid());
         taken.add_paths(&set_point);
         taken.add_paths(&measured);
         let name = Block::line("predicted", false);
         name_curve(&mut canvas, &mut taken, &predicted, &name, sheet);
         let mut taken = Taken::words_of(&canvas);
+        taken.add_grid(trend.grid());
         taken.add_paths(&set_point);
         taken.add_paths(&predicted);
         let name = Block::line("measured", false);
@@ -93,6 +95,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         let frame = trend.op.frame;
         let sheet = Rect::new(frame.x0, frame.y0 - 4.0, frame.x1, frame.y1);
         let mut taken = Taken::words_of(&canvas);
+        taken.add_grid(trend.grid());
         taken.add_paths(&op_measured);
         let name = Block::line("predicted", false);
         name_curve(&mut canvas, &mut taken, &op_predicted, &name, sheet);

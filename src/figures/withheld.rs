@@ -31,7 +31,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         between: 20.0,
         op_height: 30.0,
         right: RIGHT_PT,
-        most_ticks: [4, 3],
+        most_ticks: [5, 3],
     };
     let trend = Trend::new(&canvas, &outline)?;
     test::hatch(&mut canvas, &trend, &record.steps);
