@@ -80,7 +80,14 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
         circumstances.inner_withheld = Some(inner.tag.clone());
     }
     let designed = fit.as_ref().and_then(|model| {
-        designed(&input, model, &identification, left.filter, &left, &mut circumstances)
+        designed(
+            &input,
+            model,
+            &identification,
+            left.filter,
+            &left,
+            &mut circumstances,
+        )
     });
 
     let block = |native: Native, side: &Side| {
@@ -114,7 +121,9 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
             next_time: identification.next_time,
         },
         steps: identification.steps,
-        model: fit.clone().map(|fit| model_block(fit, &unit_of_gain, &input.controller)),
+        model: fit
+            .clone()
+            .map(|fit| model_block(fit, &unit_of_gain, &input.controller)),
         valve: identification.valve,
         design: designed.map(|designed| designed.design),
         settings,

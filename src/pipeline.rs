@@ -2,9 +2,7 @@
 
 use crate::archive::{self, Standing};
 use crate::assemble::{self, InnerRecord, LoopInput, PROGRAM};
-use crate::document::{
-    self, Attachment, AttachmentKind, DossierInput, DossierRecord, Templates,
-};
+use crate::document::{self, Attachment, AttachmentKind, DossierInput, DossierRecord, Templates};
 use crate::figures::{self, Figure};
 use crate::job::{Job, LoopRow, schedule_row_csv};
 use crate::notice::Problem;
@@ -158,12 +156,8 @@ pub fn write_dossier(
     templates: &Templates,
 ) -> Result<(archive::Dossier, bool, Vec<Problem>), Vec<Problem>> {
     let sealed: Vec<Record> = records.iter().map(|r| r.record.clone()).collect();
-    let dossier = archive::Dossier::new(
-        dossier_document(job),
-        &sealed,
-        every_loop_recorded,
-        PROGRAM,
-    );
+    let dossier =
+        archive::Dossier::new(dossier_document(job), &sealed, every_loop_recorded, PROGRAM);
     match archive::look_for_dossier(out, &dossier).map_err(one)? {
         Standing::Issued { kept, notice } => Ok((*kept, true, notice.into_iter().collect())),
         Standing::Free(slot) => {
@@ -175,9 +169,14 @@ pub fn write_dossier(
                     attachments: &r.attachments,
                 })
                 .collect();
-            let pdf = document::typeset_dossier(&dossier_input(&dossier.document, job), &bound, templates)
-                .map_err(|error| vec![document_problem(job, &error)])?;
-            slot.store(&archive::json_text(&dossier), &pdf).map_err(one)?;
+            let pdf = document::typeset_dossier(
+                &dossier_input(&dossier.document, job),
+                &bound,
+                templates,
+            )
+            .map_err(|error| vec![document_problem(job, &error)])?;
+            slot.store(&archive::json_text(&dossier), &pdf)
+                .map_err(one)?;
             Ok((dossier, false, Vec::new()))
         }
     }

@@ -165,12 +165,7 @@ fn open_items(record: &Record) -> Vec<String> {
         .collect()
 }
 
-fn loop_report(
-    job: &Job,
-    index: usize,
-    outcome: LoopOutcome,
-    notices: Vec<Problem>,
-) -> LoopReport {
+fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Problem>) -> LoopReport {
     LoopReport {
         tag: tag_of(job, index).to_owned(),
         outcome,

@@ -4,6 +4,7 @@ pub mod headings;
 pub mod manifest;
 pub mod row;
 pub mod schedule;
+mod templates;
 mod toml_reader;
 
 use crate::notice::{Place, Problem, nearest};
