@@ -8,7 +8,7 @@ use super::place::{Block, LINE_PT, Taken};
 use super::{Figure, narrate, trend};
 use crate::display::{fixed, unit, with_unit};
 use crate::identify::{Step, StepFit, Verdict};
-use crate::quantity::Span;
+use crate::quantity::{Span, round_significant};
 use crate::record::{Log, Record};
 
 const WIDTH_MM: f64 = 170.0;
@@ -264,7 +264,9 @@ impl GainFigure {
     }
 
     fn print(&self, gain: f64) -> String {
-        narrate::grouped(&fixed(gain * self.factor, self.decimals))
+        let gain = gain * self.factor;
+        let figures = if self.decimals == 0 { 3 } else { 17 };
+        narrate::grouped(&fixed(round_significant(gain, figures), self.decimals))
     }
 }
 
