@@ -6,7 +6,7 @@ use super::geometry::{Point, Rect, length};
 use super::panel::{BELOW_PT, Panel};
 use super::place::{Block, LINE_PT, Taken};
 use super::{Figure, narrate, trend};
-use crate::display::{fixed, unit, with_unit};
+use crate::display::{fixed, plain, unit, with_unit};
 use crate::identify::{Step, StepFit, Verdict};
 use crate::quantity::{Span, round_significant};
 use crate::record::{Log, Record};
@@ -371,10 +371,12 @@ fn sheet(
         let pooled_name = names.map(|m| gains.print(m.fit.gain.value));
         draw_chart(&mut canvas, &upper, &lower, chart, &gains, pooled_name);
     }
-    let mut caption = format!(
-        "Each usable step, one scale. Bold figures: gain of the step, {}.",
-        gains.unit
-    );
+    let mut caption = if charts.len() == 1 {
+        format!("The usable step. Bold figure: its gain, {}.", gains.unit)
+    } else {
+        let of = "Each usable step, one scale. Bold figures: gain of the step";
+        format!("{of}, {}.", gains.unit)
+    };
     if left_out > 0 {
         caption.push_str(&format!(" {left_out} more usable steps are not drawn."));
     }
@@ -534,6 +536,6 @@ fn alt(
         narrate::list(&numbers),
         narrate::list(&figures),
         gains.unit,
-        narrate::pv_change(largest, pv)
+        with_unit(&narrate::grouped(&plain(largest, 2)), &pv.unit)
     )
 }

@@ -14,7 +14,7 @@ pub const MOVE: Stroke = Stroke::dashed(0.6, 1.4, 1.8);
 /// PV as logged.
 pub const PV_PT: f64 = 0.7;
 /// SP as logged.
-const SP: Stroke = Stroke::solid(0.5, Ink::Black);
+const SP: Stroke = Stroke::solid(0.6, Ink::Black);
 /// OP as logged.
 pub const OP: Stroke = Stroke::solid(1.0, Ink::Black);
 /// White between the words in a hatched stretch and its edges, both together, pt.
