@@ -13,7 +13,7 @@ use crate::record::{Range, Record, SettingsBlock};
 const WIDTH_MM: f64 = 80.0;
 const HEIGHT_MM: f64 = 42.0;
 /// The set point.
-pub const SET_POINT: Stroke = Stroke::solid(0.5, Ink::Black);
+pub const SET_POINT: Stroke = Stroke::solid(0.6, Ink::Black);
 
 /// Draws the responses; `None` where none was predicted for new settings.
 pub fn draw(record: &Record) -> Option<Figure> {

@@ -337,6 +337,29 @@ fn the_record_says_which_figures_there_are() {
 }
 
 #[test]
+fn half_a_million_samples_fit_on_a_page() {
+    let plan = Plan {
+        interval_s: 7740.0 / 500_000.0,
+        ..Plan::default()
+    };
+    let mut record = plan.record();
+    // One sample among them that must not be lost.
+    record.logs[0].data.pv[123_456] = 120.0;
+    let figures = draw(&record);
+    for figure in &figures {
+        check(figure);
+        assert!(
+            figure.svg.len() < 200_000,
+            "{}: {}",
+            figure.name,
+            figure.svg.len()
+        );
+    }
+    let labels = labels(&figures[1].svg);
+    assert!(labels.iter().any(|(words, _)| words == "120"), "{labels:?}");
+}
+
+#[test]
 fn the_same_record_draws_the_same_figures() {
     assert_eq!(
         draw(&Plan::default().record()),

@@ -6,9 +6,9 @@ use super::geometry::{Point, Rect, length};
 use super::panel::{BELOW_PT, Panel};
 use super::place::{Block, LINE_PT, Taken};
 use super::{Figure, narrate, trend};
-use crate::display::{fixed, unit, with_unit};
+use crate::display::{fixed, plain, unit, with_unit};
 use crate::identify::{Step, StepFit, Verdict};
-use crate::quantity::Span;
+use crate::quantity::{Span, round_significant};
 use crate::record::{Log, Record};
 
 const WIDTH_MM: f64 = 170.0;
@@ -264,7 +264,9 @@ impl GainFigure {
     }
 
     fn print(&self, gain: f64) -> String {
-        narrate::grouped(&fixed(gain * self.factor, self.decimals))
+        let gain = gain * self.factor;
+        let figures = if self.decimals == 0 { 3 } else { 17 };
+        narrate::grouped(&fixed(round_significant(gain, figures), self.decimals))
     }
 }
 
@@ -369,10 +371,12 @@ fn sheet(
         let pooled_name = names.map(|m| gains.print(m.fit.gain.value));
         draw_chart(&mut canvas, &upper, &lower, chart, &gains, pooled_name);
     }
-    let mut caption = format!(
-        "Each usable step, one scale. Bold figures: gain of the step, {}.",
-        gains.unit
-    );
+    let mut caption = if charts.len() == 1 {
+        format!("The usable step. Bold figure: its gain, {}.", gains.unit)
+    } else {
+        let of = "Each usable step, one scale. Bold figures: gain of the step";
+        format!("{of}, {}.", gains.unit)
+    };
     if left_out > 0 {
         caption.push_str(&format!(" {left_out} more usable steps are not drawn."));
     }
@@ -532,6 +536,6 @@ fn alt(
         narrate::list(&numbers),
         narrate::list(&figures),
         gains.unit,
-        narrate::pv_change(largest, pv)
+        with_unit(&narrate::grouped(&plain(largest, 2)), &pv.unit)
     )
 }

@@ -24,8 +24,16 @@ pub fn pv_change(value: f64, range: &Range) -> String {
     with_unit(&grouped(&plain(value, 3)), &range.unit)
 }
 
-/// A PV with its unit.
+/// A PV with its unit. On a range of many units the last figures, which say nothing, are zeros.
 pub fn pv(value: f64, range: &Range) -> String {
+    let coarse = (range.high - range.low).abs() / 500.0;
+    let value = if coarse >= 10.0 && coarse.is_finite() {
+        let tens = format!("1e{}", libm::floor(libm::log10(coarse)));
+        let tens: f64 = tens.parse().expect("a power of ten is a number");
+        libm::round(value / tens) * tens
+    } else {
+        value
+    };
     with_unit(&grouped(&fixed(value, decimals(range))), &range.unit)
 }
 
@@ -108,6 +116,21 @@ mod tests {
         assert_eq!(decimals(&range(0.0, 4.0)), 3);
         assert_eq!(decimals(&range(1.0, 1.0)), 1);
         assert_eq!(pv_change(4.0, &range(0.0, 1.0)), "4\u{a0}°C");
+    }
+
+    #[test]
+    fn figures_that_say_nothing_are_zeros() {
+        let range = |high| Range {
+            unit: "Pa".to_owned(),
+            low: 0.0,
+            high,
+        };
+        assert_eq!(
+            pv(4_743_417.0, &range(8.9e6)),
+            "4\u{202f}740\u{202f}000\u{a0}Pa"
+        );
+        assert_eq!(pv(-302.4, &range(5000.0)), "−300\u{a0}Pa");
+        assert_eq!(pv(98.04, &range(80.0)), "98.0\u{a0}Pa");
     }
 
     #[test]

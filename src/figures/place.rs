@@ -169,6 +169,7 @@ pub fn name_curve(
     if points.is_empty() {
         return false;
     }
+    let points = closer(&points);
     let every = points.len().div_ceil(ANCHORS);
     // A curve may be nearer to one side of another than its own width: farther than this is far.
     const CLEAR_PT: f64 = 12.0;
@@ -219,6 +220,23 @@ pub fn name_curve(
         }
     }
     false
+}
+
+/// The points of a path, with others between those that stand far apart.
+fn closer(points: &[Point]) -> Vec<Point> {
+    const APART_PT: f64 = 6.0;
+    let mut all: Vec<Point> = points.first().copied().into_iter().collect();
+    for pair in points.windows(2) {
+        let (a, b) = (pair[0], pair[1]);
+        let count = libm::ceil(length(a, b) / APART_PT).max(1.0);
+        let mut k = 1.0;
+        while k <= count {
+            let part = k / count;
+            all.push((a.0 + part * (b.0 - a.0), a.1 + part * (b.1 - a.1)));
+            k += 1.0;
+        }
+    }
+    all
 }
 
 /// Sets words at the right ends of lines, one below the other where the lines end close together;

@@ -71,6 +71,12 @@ pub fn draw(record: &Record) -> Option<Figure> {
     let (panel, axis) = window(&mut canvas, record, &ruler)?;
     let mut taken = Taken::default();
     taken.add_grid(panel.grid(&axis));
+    let (x0, x1, y1) = (panel.frame.x0, panel.frame.x1, panel.frame.y1);
+    let dotted = panel.at_x(0.0);
+    taken.add_paths(&[
+        vec![(x0, y1), (x1, y1)],
+        vec![(dotted, panel.frame.y0), (dotted, y1)],
+    ]);
     for run in &ruler.runs {
         taken.add_paths(&panel.samples(&mut canvas, run, Ink::Black));
     }
@@ -230,8 +236,10 @@ fn part_of_change(
         taken.add_paths(&[vec![(panel.frame.x0, at), (panel.frame.x1, at)]]);
     }
     taken.add_paths(&[
-        vec![(covered, part_y), (covered, y)],
-        vec![(first, base_y), (first, y)],
+        vec![(panel.frame.x0, part_y), (covered, part_y)],
+        vec![(covered, part_y - side * 6.0), (covered, beyond)],
+        vec![(first, base_y - side * 6.0), (first, beyond)],
+        vec![(zero, y), (covered, y)],
     ]);
     let dead = format!("dead time {},", duration(theta));
     let then = format!("then time constant {}", duration(tau));

@@ -233,7 +233,7 @@ pub fn name_both(
     let sheet = Rect::new(frame.x0, frame.y0 - 9.0, frame.x1, frame.y1 - 1.0);
     let block = Block::line(pair.found_name(), false);
     if !name_curve(canvas, &mut taken, found, &block, sheet) {
-        let words = format!("dashed: {}", pair.found_name());
+        let words = format!("dashed: {}", pair.found_name().replace(':', ","));
         let label = Label::new(frame.x1, frame.y0 - above, words);
         canvas.words(label.anchor(Anchor::End));
     }

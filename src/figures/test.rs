@@ -14,9 +14,11 @@ pub const MOVE: Stroke = Stroke::dashed(0.6, 1.4, 1.8);
 /// PV as logged.
 pub const PV_PT: f64 = 0.7;
 /// SP as logged.
-const SP: Stroke = Stroke::solid(0.5, Ink::Black);
+const SP: Stroke = Stroke::solid(0.6, Ink::Black);
 /// OP as logged.
 pub const OP: Stroke = Stroke::solid(1.0, Ink::Black);
+/// White between the words in a hatched stretch and its edges, both together, pt.
+const INSIDE_PT: f64 = 6.0;
 /// Size of the steps' numbers, pt.
 const NUMBER_PT: f64 = 9.5;
 /// Room for labels at the line ends, pt.
@@ -29,7 +31,10 @@ pub fn draw(record: &Record) -> Option<Figure> {
     let log = record.test_log()?;
     let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
     let lines = trend::lines(&log.data, canvas.width())?;
-    let marks = Marks::new(&record.steps, &lines, canvas.width(), |_| String::new());
+    let scale = (canvas.width() - 30.0 - RIGHT_PT) / (lines.time.1 - lines.time.0);
+    let marks = Marks::new(&record.steps, &lines, canvas.width(), |step| {
+        words_above(step, scale)
+    });
     let sp = trend::set_point_in_reach(&lines);
     let outline = Outline {
         log,
@@ -135,16 +140,23 @@ impl Marks {
         self.rows.iter().copied().max().unwrap_or(0) as f64 * LINE_PT
     }
 
-    /// Draws lines, numbers and words.
+    /// Draws lines, numbers and words; words stand white on the lines of later steps.
     pub fn draw(&self, canvas: &mut Canvas, trend: &Trend, steps: &[Step]) {
-        let top = trend.pv.frame.y0;
-        for ((step, &row), words) in steps.iter().zip(&self.rows).zip(&self.words) {
-            let x = trend.pv.at_x(step.at_s);
-            if !(trend.pv.frame.x0..=trend.pv.frame.x1).contains(&x) {
-                continue;
-            }
-            let base = top - 1.0 - LINE_PT * row as f64;
+        let frame = trend.pv.frame;
+        let base = |row: usize| frame.y0 - 1.0 - LINE_PT * row as f64;
+        let shown: Vec<(f64, f64, &Step, &str)> = steps
+            .iter()
+            .zip(&self.rows)
+            .zip(&self.words)
+            .map(|((step, &row), words)| {
+                (trend.pv.at_x(step.at_s), base(row), step, words.as_str())
+            })
+            .filter(|(x, ..)| (frame.x0..=frame.x1).contains(x))
+            .collect();
+        for &(x, base, ..) in &shown {
             canvas.line((x, base - 2.0), (x, trend.op.frame.y1), MOVE);
+        }
+        for (x, base, step, words) in shown {
             let mut number = number(step);
             (number.x, number.y) = (x + 3.0, base);
             let after = number.area().x1 + 4.0;
@@ -152,16 +164,19 @@ impl Marks {
             if words.is_empty() {
                 continue;
             }
-            let label = Label::new(after, base - 0.5, words.clone());
+            // At the right edge of the page as much of the words as there is room for.
             let room = canvas.width() - after;
-            let shown = if label.width() <= room {
-                words.clone()
-            } else {
-                wrapped(words, room).into_iter().next().unwrap_or_default()
-            };
-            let shown = Label::new(after, base - 0.5, shown);
-            if shown.width() <= room {
-                canvas.words(shown);
+            let fitting = wrapped(words, room).into_iter().next().unwrap_or_default();
+            let label = Label::new(after, base - 0.5, fitting);
+            if label.width() <= room {
+                let area = label.area();
+                canvas.blank(Rect::new(
+                    area.x0 - 1.0,
+                    base - 8.0,
+                    area.x1 + 1.0,
+                    base + 0.8,
+                ));
+                canvas.words(label);
             }
         }
     }
@@ -181,6 +196,32 @@ fn words_width(words: &str) -> f64 {
     }
 }
 
+/// "3 rejected:" over the reason, broken to `width`.
+fn rejected_block(step: &Step, width: f64) -> Block {
+    let mut lines = vec![(format!("{}\u{a0}rejected", step.number), true)];
+    if let Some(reason) = rejecting_reason(step) {
+        lines[0].0.push(':');
+        let words = wrapped(reason_words(reason), width).into_iter();
+        lines.extend(words.map(|line| (line, false)));
+    }
+    Block {
+        lines,
+        anchor: Anchor::Middle,
+    }
+}
+
+/// What stands behind the number of a rejected step whose stretch is too narrow to say it inside.
+fn words_above(step: &Step, scale: f64) -> String {
+    let width = (step.window_s[1] - step.at_s) * scale - INSIDE_PT;
+    if step.verdict != Verdict::Rejected || rejected_block(step, 45.0).size().0 <= width {
+        return String::new();
+    }
+    let reason = rejecting_reason(step).map_or("", reason_words);
+    format!("rejected: {reason}")
+        .trim_end_matches([':', ' '])
+        .to_owned()
+}
+
 /// Sets "3 rejected: PV was drifting" into each hatched stretch where it covers nothing.
 fn name_rejected(canvas: &mut Canvas, trend: &Trend, steps: &[Step], taken: &mut Taken) {
     let sheet = Rect::new(
@@ -193,27 +234,9 @@ fn name_rejected(canvas: &mut Canvas, trend: &Trend, steps: &[Step], taken: &mut
         let Some(area) = stretch(trend, step) else {
             continue;
         };
-        let head = format!("{}\u{a0}rejected", step.number);
-        let mut blocks = Vec::new();
-        if let Some(reason) = step.reasons.first() {
-            for width in [area.x1 - area.x0 - 8.0, 60.0, 45.0] {
-                let mut lines = vec![(format!("{head}:"), true)];
-                lines.extend(
-                    wrapped(reason_words(reason), width)
-                        .into_iter()
-                        .map(|l| (l, false)),
-                );
-                blocks.push(Block {
-                    lines,
-                    anchor: Anchor::Middle,
-                });
-            }
-        }
-        blocks.push(Block {
-            lines: vec![(head, true)],
-            anchor: Anchor::Middle,
-        });
-        for block in blocks {
+        let width = area.x1 - area.x0 - INSIDE_PT;
+        let blocks = [rejected_block(step, width), rejected_block(step, 45.0)];
+        for block in blocks.into_iter().filter(|b| b.size().0 <= width) {
             let spots = spots(area, sheet, trend.pv.frame.y1 - 4.0, block.size());
             if let Some(spot) = taken.first_free(sheet, spots) {
                 block.set(canvas, spot, true);
@@ -244,6 +267,20 @@ fn spots(stretch: Rect, sheet: Rect, pv_foot: f64, size: Point) -> Vec<Rect> {
         );
     }
     spots
+}
+
+/// The reason a step was rejected for: the first that is more than a reservation.
+pub fn rejecting_reason(step: &Step) -> Option<&Reason> {
+    let reservation = |reason: &&Reason| {
+        step.checks.iter().any(|check| {
+            check.code == reason.code
+                && reason.bound.is_some()
+                && check.reservation == reason.bound
+                && check.rejected != reason.bound
+        })
+    };
+    let rejecting = step.reasons.iter().find(|reason| !reservation(reason));
+    rejecting.or(step.reasons.first())
 }
 
 /// A reason in a few plain words.
@@ -317,12 +354,41 @@ fn step_sentence(record: &Record, step: &Step) -> String {
         step.number
     );
     if step.verdict == Verdict::Rejected {
-        let why = step
-            .reasons
-            .first()
-            .map_or_else(String::new, |r| format!(": {}", r.text));
+        let why = rejecting_reason(step).map_or_else(String::new, |r| format!(": {}", r.text));
         text.push_str(&format!(", hatched as rejected{why}"));
     }
     text.push('.');
     text
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::sample::Plan;
+    use super::*;
+    use crate::identify::Check;
+
+    #[test]
+    fn a_reservation_is_no_reason_for_a_rejection() {
+        let mut step = Plan::default().record().steps[2].clone();
+        let reason = |code, bound| Reason {
+            code,
+            text: String::new(),
+            figure: Some(1.0),
+            bound,
+        };
+        step.checks = vec![Check {
+            code: ReasonCode::Watched,
+            figure: Some(2.0),
+            reservation: Some(3.0),
+            rejected: Some(1.5),
+        }];
+        step.reasons = vec![
+            reason(ReasonCode::Watched, Some(3.0)),
+            reason(ReasonCode::Mode, None),
+        ];
+        let code = |step: &Step| rejecting_reason(step).map(|r| r.code);
+        assert_eq!(code(&step), Some(ReasonCode::Mode));
+        step.reasons[0].bound = Some(1.5);
+        assert_eq!(code(&step), Some(ReasonCode::Watched));
+    }
 }

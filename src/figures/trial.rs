@@ -18,7 +18,7 @@ const HEIGHT_MM: f64 = 93.0;
 const MEASURED_PT: f64 = 0.6;
 /// Predicted PV and OP.
 const PREDICTED: Stroke = Stroke::dashed(1.3, 4.5, 2.5);
-const SP: Stroke = Stroke::solid(0.5, Ink::Black);
+const SP: Stroke = Stroke::solid(0.6, Ink::Black);
 
 /// Draws the trial; `None` where there is no log of one, or nothing in it to draw.
 pub fn draw(record: &Record) -> Option<Figure> {

@@ -31,7 +31,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         between: 20.0,
         op_height: 30.0,
         right: RIGHT_PT,
-        most_ticks: [5, 3],
+        most_ticks: [4, 3],
     };
     let trend = Trend::new(&canvas, &outline)?;
     test::hatch(&mut canvas, &trend, &record.steps);
@@ -68,14 +68,14 @@ fn what_was_wrong(step: &Step) -> String {
     if step.verdict != Verdict::Rejected {
         return String::new();
     }
-    step.reasons
-        .first()
-        .map_or_else(String::new, |reason| match (reason.code, figure(reason)) {
+    test::rejecting_reason(step).map_or_else(String::new, |reason| {
+        match (reason.code, figure(reason)) {
             (ReasonCode::Change, Some(figure)) => format!("change {figure}\u{a0}σ"),
             (ReasonCode::Drift, Some(figure)) => format!("drift {figure}\u{a0}%"),
             (ReasonCode::Misfit, Some(figure)) => format!("misfit {figure}\u{a0}%"),
             _ => test::reason_words(reason).to_owned(),
-        })
+        }
+    })
 }
 
 fn figure(reason: &Reason) -> Option<String> {
