@@ -1,7 +1,7 @@
 //! The closed-loop trial held against the prediction.
 
 use crate::model::ProcessModel;
-use crate::predict::measure::{Disturbance, Meter, Sample, noise_sd, smoothed};
+use crate::predict::measure::{Disturbance, Meter, Sample, Thinner, noise_sd, smoothed};
 use crate::predict::oscillation::{self, Oscillation};
 use crate::predict::simulate::{Inputs, SampledController, run};
 use crate::predict::words::duration;
@@ -52,7 +52,7 @@ pub struct Trial {
     pub oscillation: Option<Oscillation>,
     /// In words, why they agree or do not.
     pub why: String,
-    /// The prediction on the samples' clock (seconds of the log, PV and OP in % of their ranges).
+    /// The prediction on the samples' clock, thinned: seconds of the log, PV and OP in % of their ranges.
     pub curve: Curve,
 }
 
@@ -387,6 +387,15 @@ impl<'a> Run<'a> {
     ) -> Trial {
         let squares = self.pv.iter().zip(&pv).map(|(a, b)| (a - b) * (a - b));
         let predicted_rmse_percent = libm::sqrt(squares.sum::<f64>() / pv.len() as f64);
+        let mut line = Thinner::new(pv.len());
+        for (k, (&pv, &op)) in pv.iter().zip(&op).enumerate() {
+            line.take(Sample {
+                t_s: self.t_s[k],
+                set_point: self.sp[k],
+                pv,
+                op,
+            });
+        }
         Trial {
             kind,
             at_s,
@@ -401,11 +410,7 @@ impl<'a> Run<'a> {
             agrees,
             oscillation,
             why,
-            curve: Curve {
-                t_s: self.t_s.to_vec(),
-                pv,
-                op,
-            },
+            curve: line.curve(),
         }
     }
 

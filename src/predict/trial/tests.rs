@@ -116,7 +116,7 @@ fn a_right_model_agrees_with_its_trial() {
         "{}",
         found.predicted_rmse_percent
     );
-    assert_eq!(found.curve.t_s.len(), 1500);
+    assert!((200..=400).contains(&found.curve.t_s.len()));
     let (measured, predicted) = (found.measured, found.predicted);
     let near = |a: Option<f64>, b: Option<f64>, tolerance: f64| {
         let (a, b) = a.zip(b).expect("both have the figure");
