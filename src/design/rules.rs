@@ -338,7 +338,7 @@ fn integrating(k: f64, theta: f64, derivative: bool) -> Vec<Row> {
 ///
 /// Rules are for one lag (or an integrator) with dead time: a second lag goes half to the lag and half
 /// to the dead time (the half rule). They are for continuous controllers, so half a scan is added to
-/// the dead time. With `derivative` the PID rules are given where a source has one. Margins are computed
+/// the dead time. With `derivative` the PID rules are given where a source has one; IMC has no other. Margins are computed
 /// with the controller's filter and scan; a set that a series controller cannot hold is computed in
 /// the standard form.
 pub fn published_rules(

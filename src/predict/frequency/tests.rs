@@ -200,3 +200,38 @@ fn unstable_loops_have_no_margin() {
     assert!(!conditional(0.192_1).stable);
     near(conditional(0.01).gain_margin, 19.20191687, 1e-7, "GM");
 }
+
+#[test]
+fn a_pv_filter_counts_only_as_far_as_it_was_changed_since_the_log() {
+    let pi = Terms::Standard {
+        kc: 1.5,
+        ti_s: Some(20.0),
+        td_s: 0.0,
+    };
+    let with = |lags: &[f64], in_log_s, in_controller_s| {
+        let process = Loop::gain(1.0).dead_time(3.0);
+        let process = lags.iter().fold(process, |p, lag| p.lag(*lag));
+        let filter = PvFilter {
+            in_log_s,
+            in_controller_s,
+        };
+        process.controller(&pi, 0.0).pv_filter(filter).margins()
+    };
+    let plain = with(&[20.0], 0.0, 0.0);
+    assert_eq!(with(&[20.0], 4.0, 4.0), plain);
+    // A filter whose lag the model holds, taken out; and one added that the model does not hold.
+    near(
+        with(&[20.0, 4.0], 4.0, 0.0).ms,
+        plain.ms.expect("stable"),
+        1e-6,
+        "Ms",
+    );
+    let slower = with(&[20.0, 4.0], 0.0, 0.0);
+    near(
+        with(&[20.0], 0.0, 4.0).ms,
+        slower.ms.expect("stable"),
+        1e-6,
+        "Ms",
+    );
+    assert!(slower.ms > plain.ms);
+}
