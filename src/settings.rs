@@ -356,6 +356,7 @@ impl Native {
 mod tests {
     use super::*;
     use proptest::prelude::*;
+    use proptest::test_runner::RngSeed;
 
     fn standard(kc: f64, ti_s: f64, td_s: f64) -> Standard {
         Standard {
@@ -457,7 +458,12 @@ mod tests {
     }
 
     proptest! {
-        #![proptest_config(ProptestConfig::with_cases(64))]
+        #![proptest_config(ProptestConfig {
+            cases: 64,
+            rng_seed: RngSeed::Fixed(1),
+            failure_persistence: None,
+            ..ProptestConfig::default()
+        })]
         #[test]
         fn settings_survive_the_faceplate(
             kc in 0.01..50.0_f64,

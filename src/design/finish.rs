@@ -112,6 +112,14 @@ fn floors(basis: &Basis) -> Result<Vec<Floor>, Refusal> {
             limits::inner_loop(basis, inner),
         ));
     }
+    if let Some(never) = floors.iter().find(|f| !f.need.seconds().is_finite()) {
+        return Err(Refusal::NoSolution {
+            text: format!(
+                "No closed-loop time constant satisfies every limit: {} stands in the way of any.",
+                words::limit(never.name)
+            ),
+        });
+    }
     let others = floors.iter().map(|f| f.need.seconds()).fold(0.0, f64::max);
     let need = limits::robustness(basis, others);
     if let Need::Impossible(nearest) = &need {
@@ -369,14 +377,10 @@ fn floor_limit(
         LimitName::DeadTime | LimitName::Target | LimitName::LevelDeviation => (
             Some(tau_c_s / theta_e),
             Some(bounds.dead_time),
-            if bounds.dead_time == 1.0 {
-                "τc at least the effective dead time θe".to_owned()
-            } else {
-                format!(
-                    "τc at least {} times the effective dead time θe",
-                    words::bound(bounds.dead_time)
-                )
-            },
+            format!(
+                "τc at least {}the effective dead time θe",
+                times(bounds.dead_time)
+            ),
         ),
     };
     let broken = floor.need.seconds() > tau_c_s * (1.0 + 1e-9);
@@ -399,6 +403,15 @@ fn floor_limit(
     }
 }
 
+/// "1.5 times " before what it multiplies, nothing for once.
+fn times(factor: f64) -> String {
+    if factor == 1.0 {
+        String::new()
+    } else {
+        format!("{} times ", words::bound(factor))
+    }
+}
+
 fn binding_detail(
     basis: &Basis,
     choice: &Choice,
@@ -417,8 +430,8 @@ fn binding_detail(
             words::ms(nearest.bound)
         ),
         LimitName::DeadTime => format!(
-            "Dead time decides: the closed-loop time constant is at least {} times the effective dead time θe of {}.",
-            words::bound(bounds.dead_time),
+            "Dead time decides: the closed-loop time constant is at least {}the effective dead time θe of {}.",
+            times(bounds.dead_time),
             duration(basis.recipe.effective_dead_time_s)
         ),
         LimitName::TimeConstant => format!(

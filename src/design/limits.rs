@@ -75,13 +75,13 @@ impl Basis<'_> {
         }
         let mut high = self.recipe.effective_dead_time_s;
         // The gain halves with each doubling, so a bound above 0 is met within a few dozen.
-        for _ in 0..200 {
+        for _ in 0..60 {
             if holds(high) {
-                break;
+                return Need::AtLeast(halve(0.0, high, holds));
             }
             high *= 2.0;
         }
-        Need::AtLeast(halve(0.0, high, holds))
+        Need::AtLeast(f64::INFINITY)
     }
 }
 

@@ -238,25 +238,25 @@ const LOPEZ: &str = "A.M. Lopez, J.A. Miller, C.L. Smith, P.W. Murrill, Instrume
 fn self_regulating(k: f64, tau: f64, theta: f64, derivative: bool) -> Vec<Row> {
     let r = theta / tau;
     let a = k * r;
-    // The reaction-curve rules were worked out on processes of moderate dead time; common practice
-    // takes 0.1 ≤ r ≤ 1 for both.
+    // The ITAE rules were fitted over 0.1 ≤ r ≤ 1; common practice takes the same range for the other
+    // rules that were worked out on reaction curves.
     let moderate = (0.1..=1.0).contains(&r);
-    let mut rows = vec![row(
-        "Lambda (λ = τ)",
-        DAHLIN,
-        lambda_pi(k, tau, theta, tau),
-        true,
-    )];
-    if derivative {
-        let lambda = imc_lambda_s(tau, theta);
-        rows.push(row("IMC PID", RIVERA, imc_pid(k, tau, theta, lambda), true));
-    }
-    rows.push(row(
-        "SIMC (τc = θ)",
-        SKOGESTAD,
-        simc_pi(k, tau, theta, theta),
-        true,
-    ));
+    let lambda = imc_lambda_s(tau, theta);
+    let mut rows = vec![
+        row(
+            "Lambda (λ = τ)",
+            DAHLIN,
+            lambda_pi(k, tau, theta, tau),
+            true,
+        ),
+        row("IMC PID", RIVERA, imc_pid(k, tau, theta, lambda), true),
+        row(
+            "SIMC (τc = θ)",
+            SKOGESTAD,
+            simc_pi(k, tau, theta, theta),
+            true,
+        ),
+    ];
     let either = |with: Standard, without: Standard| if derivative { with } else { without };
     rows.push(row(
         "AMIGO",
@@ -338,7 +338,7 @@ fn integrating(k: f64, theta: f64, derivative: bool) -> Vec<Row> {
 ///
 /// Rules are for one lag (or an integrator) with dead time: a second lag goes half to the lag and half
 /// to the dead time (the half rule). They are for continuous controllers, so half a scan is added to
-/// the dead time. With `derivative` the PID rules are given where a source has one. Margins are computed
+/// the dead time. With `derivative` the PID rules are given where a source has one; IMC has no other. Margins are computed
 /// with the controller's filter and scan; a set that a series controller cannot hold is computed in
 /// the standard form.
 pub fn published_rules(

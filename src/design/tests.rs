@@ -10,6 +10,7 @@ use crate::settings::{
     Action, ActsOn, DerivativeUnit, EquationForm, IntegralUnit, ProportionalUnit, Terms,
 };
 use proptest::prelude::*;
+use proptest::test_runner::RngSeed;
 
 fn exact(value: f64) -> Estimate {
     Estimate::new(value, value, value)
@@ -430,7 +431,12 @@ fn any_process() -> impl Strategy<Value = ProcessModel> {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig::with_cases(40))]
+    #![proptest_config(ProptestConfig {
+            cases: 40,
+            rng_seed: RngSeed::Fixed(1),
+            failure_persistence: None,
+            ..ProptestConfig::default()
+        })]
 
     #[test]
     fn what_is_typed_keeps_every_limit(

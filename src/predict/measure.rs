@@ -71,6 +71,13 @@ impl Meter {
         }
     }
 
+    /// The same with a settling band of at least this half width, % of span: for a measured response,
+    /// whose noise would leave a narrower one for ever.
+    pub fn with_least_band(mut self, half_width: f64) -> Self {
+        self.band = self.band.max(half_width);
+        self
+    }
+
     /// Takes the next sample; times increase.
     pub fn take(&mut self, now: Sample) {
         // Before the first sample the loop is at rest at its start.
@@ -197,4 +204,40 @@ impl Thinner {
         self.close();
         self.curve
     }
+}
+
+/// Running mean over `width_s` about each sample, and the mean number of samples in it.
+pub fn smoothed(t_s: &[f64], values: &[f64], width_s: f64) -> (Vec<f64>, f64) {
+    let (mut from, mut to) = (0, 0);
+    let mut sum = 0.0;
+    let mut counted = 0;
+    let smooth = t_s
+        .iter()
+        .map(|t| {
+            while to < t_s.len() && t_s[to] <= t + width_s / 2.0 {
+                sum += values[to];
+                to += 1;
+            }
+            while t_s[from] < t - width_s / 2.0 {
+                sum -= values[from];
+                from += 1;
+            }
+            counted += to - from;
+            sum / (to - from) as f64
+        })
+        .collect();
+    (smooth, counted as f64 / t_s.len() as f64)
+}
+
+/// Standard deviation of white noise on a slow signal of at least 3 samples, from the median of its
+/// second differences.
+pub fn noise_sd(values: &[f64]) -> f64 {
+    let mut differences: Vec<f64> = values
+        .windows(3)
+        .map(|w| (w[0] - 2.0 * w[1] + w[2]).abs())
+        .collect();
+    let middle = differences.len() / 2;
+    // 0.6745: the median of |x| of a standard normal; √6: the sd of a second difference.
+    let (_, median, _) = differences.select_nth_unstable_by(middle, f64::total_cmp);
+    *median / 0.674_489_75 / libm::sqrt(6.0)
 }

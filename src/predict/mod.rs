@@ -6,8 +6,10 @@ use serde::{Deserialize, Serialize};
 pub mod frequency;
 pub mod measure;
 pub mod open_loop;
+pub mod oscillation;
 pub mod simulate;
 pub mod trial;
+pub(crate) mod words;
 
 pub use frequency::margins;
 

@@ -399,3 +399,6 @@ impl LoopCase<'_> {
         meter.metrics().peak_deviation_percent
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -1,5 +1,5 @@
-//! Margins and closed-loop responses against independent values: tests/reference/README.md tells how
-//! those were made.
+//! Margins and closed-loop responses against independent values; the scripts beside them in
+//! tests/reference tell how those were made.
 
 use asleft::model::{Kind, ProcessModel};
 use asleft::predict::measure::{Disturbance, Meter};

@@ -118,7 +118,7 @@ fn simc_processes_with_their_printed_settings() {
         ("1/(s+1)^4, PID", fourth(), 0.5, 1.5, 1.0, 1.4318, 1.0, 6.7446, 62.451),
         ("(-2s+1)/(s+1)^3", inverse(), 0.214286, 1.5, 0.0, 1.6604, 1.0, 2.8310, 60.827),
         ("e^-s/(s+1)^2, PI", delayed_pair(), 0.5, 1.5, 0.0, 1.6140, 1.0, 3.2798, 60.406),
-        ("e^-s/(s+1)^2, PID", delayed_pair(), 0.5, 1.0, 1.0, 1.5905, 1.0, 3.1416, 61.352),
+        ("e^-s/(s+1)^2, PID", delayed_pair(), 0.5, 1.0, 1.0, 1.5905, 1.0, PI, 61.352),
         ("lags 20, 2, PI", slow_pair(), 5.25, 16.0, 0.0, 1.7156, 1.2343, 3.9757, 47.849),
         ("lags 20, 2, PID", slow_pair(), 10.0, 8.0, 2.0, 1.6512, 1.1579, 3.0348, 52.512),
         ("(-s+1)e^-s/((6s+1)(2s+1)^2)", inverse_delayed(), 0.7, 7.0, 0.0, 1.6264, 1.0064, 3.3362, 59.605),
@@ -169,11 +169,11 @@ fn a_gain_margin_met_only_at_infinite_frequency_is_found() {
 
 #[test]
 fn unstable_loops_have_no_margin() {
-    // Twice the gain margin π away.
+    // The gain margin at 1.25 is π.
     let process = || Loop::gain(2.0).lag(10.0).dead_time(2.0);
     let at = |kc| with_series(process(), kc, 10.0, 0.0);
-    assert!(at(1.25 * 3.14).stable);
-    assert_eq!(at(1.25 * 3.15), Margins::unstable());
+    assert!(at(1.25 * 0.999 * PI).stable);
+    assert_eq!(at(1.25 * 1.001 * PI), Margins::unstable());
     assert_eq!(at(1.25 * 30.0), Margins::unstable());
     // Wrong sign of feedback.
     assert_eq!(at(-1.25), Margins::unstable());
@@ -199,4 +199,39 @@ fn unstable_loops_have_no_margin() {
     assert!(conditional(0.192).stable);
     assert!(!conditional(0.192_1).stable);
     near(conditional(0.01).gain_margin, 19.20191687, 1e-7, "GM");
+}
+
+#[test]
+fn a_pv_filter_counts_only_as_far_as_it_was_changed_since_the_log() {
+    let pi = Terms::Standard {
+        kc: 1.5,
+        ti_s: Some(20.0),
+        td_s: 0.0,
+    };
+    let with = |lags: &[f64], in_log_s, in_controller_s| {
+        let process = Loop::gain(1.0).dead_time(3.0);
+        let process = lags.iter().fold(process, |p, lag| p.lag(*lag));
+        let filter = PvFilter {
+            in_log_s,
+            in_controller_s,
+        };
+        process.controller(&pi, 0.0).pv_filter(filter).margins()
+    };
+    let plain = with(&[20.0], 0.0, 0.0);
+    assert_eq!(with(&[20.0], 4.0, 4.0), plain);
+    // A filter whose lag the model holds, taken out; and one added that the model does not hold.
+    near(
+        with(&[20.0, 4.0], 4.0, 0.0).ms,
+        plain.ms.expect("stable"),
+        1e-6,
+        "Ms",
+    );
+    let slower = with(&[20.0, 4.0], 0.0, 0.0);
+    near(
+        with(&[20.0], 0.0, 4.0).ms,
+        slower.ms.expect("stable"),
+        1e-6,
+        "Ms",
+    );
+    assert!(slower.ms > plain.ms);
 }
