@@ -1,6 +1,6 @@
 //! The cautions, and what the record rests on: procedures, revisions, logs, limits, program, seal.
 
-use super::numbers::{capital, count, sentence, tidy};
+use super::numbers::{bound, capital, count, sentence, tidy};
 use super::{Context, Entry, Heading, native, span_of};
 use crate::design::{Aim, DesignBounds};
 use crate::display::{self, NO_BREAK};
@@ -54,7 +54,7 @@ pub(super) fn cautions(context: &Context) -> Cautions {
             .record
             .cautions
             .iter()
-            .map(|c| sentence(&tidy(&c.text)))
+            .map(|c| sentence(&bound(&c.text)))
             .collect(),
     }
 }
@@ -290,7 +290,7 @@ fn log(log: &Log) -> LogView {
         ),
         used,
     ];
-    lines.extend(log.notes.iter().map(|note| sentence(&tidy(note))));
+    lines.extend(log.notes.iter().map(|note| sentence(&bound(note))));
     LogView {
         role: match log.role {
             LogRole::Test => "Step test",

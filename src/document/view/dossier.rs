@@ -1,6 +1,6 @@
 //! The dossier: cover, register, open items, page for operations, settings to enter.
 
-use super::numbers::{capital, listed, number_word, sentence, tidy};
+use super::numbers::{bound, capital, listed, number_word, sentence, tidy};
 use super::summary::{ms, slope_unit};
 use super::{
     Context, DocumentView, Entry, Field, RecordView, SignatureView, native, operations, page_name,
@@ -383,7 +383,7 @@ fn open(contexts: &[Context]) -> Vec<Entry> {
                 .document
                 .open_items
                 .iter()
-                .map(|item| sentence(&tidy(&item.text)))
+                .map(|item| sentence(&bound(&item.text)))
                 .collect();
             Entry::new(tidy(&c.record.control_loop.tag), texts.join(" "))
         })
@@ -406,7 +406,7 @@ fn operations_page(input: &DossierInput, contexts: &[Context]) -> Option<Operati
             |name| {
                 format!(
                     "{}, who prepared this dossier, or the engineer in charge",
-                    tidy(name)
+                    tidy(name).replace(' ', "\u{a0}")
                 )
             },
         );

@@ -1,6 +1,6 @@
 //! The process model: its kind, its figures with their intervals, how well it is known.
 
-use super::numbers::{Cell, Row, Table, TimeUnit, estimate, listed, sentence, tidy};
+use super::numbers::{Cell, Row, Table, TimeUnit, bound, estimate, listed, sentence};
 use super::summary::slope_unit;
 use super::{Context, Entry, Heading, Plot};
 use crate::display::{self, NO_BREAK};
@@ -55,7 +55,7 @@ pub(super) fn model(context: &Context) -> Option<ModelPart> {
         alternatives: fit
             .alternatives
             .iter()
-            .map(|a| Entry::new(kind_name(a.kind), sentence(&tidy(&a.why_not))))
+            .map(|a| Entry::new(kind_name(a.kind), sentence(&bound(&a.why_not))))
             .collect(),
         fits: context.plot("fits.svg"),
         table: parameters(context),
@@ -110,15 +110,16 @@ fn parameters(context: &Context) -> Table {
         (String::new(), 1.0, "Process gain K")
     };
     let read_gain = read.map(|(_, r)| r.gain);
-    let mut rows = vec![
-        row(
-            symbol,
-            fit.gain,
-            slope_factor,
-            &format!("%{per_time}/%"),
-            read_gain,
-        ),
-        row(
+    let mut rows = vec![row(
+        symbol,
+        fit.gain,
+        slope_factor,
+        &format!("%{per_time}/%"),
+        read_gain,
+    )];
+    // A percent of PV for a percent of OP says the same twice.
+    if context.pv_unit != "%" || context.op_unit != "%" {
+        rows.push(row(
             "",
             Estimate::new(
                 block.gain_engineering.value,
@@ -128,8 +129,8 @@ fn parameters(context: &Context) -> Table {
             slope_factor,
             &format!("{}{per_time}/{}", context.pv_unit, context.op_unit),
             read_gain.map(|g| g * context.gain_factor()),
-        ),
-    ];
+        ));
+    }
     let mut time = |label: &str, of: Option<Estimate>, read: Option<f64>| {
         if let Some(of) = of {
             let unit = TimeUnit::for_all([of.value]);
@@ -235,7 +236,7 @@ fn notes(context: &Context) -> Vec<String> {
         ));
     }
     if let Some(undecided) = &fit.undecided {
-        notes.push(sentence(&tidy(undecided)));
+        notes.push(sentence(&bound(undecided)));
     }
     let differing: Vec<String> = record
         .steps
@@ -251,12 +252,12 @@ fn notes(context: &Context) -> Vec<String> {
             "steps"
         };
         let cause = if fit.kind == Kind::SecondOrder {
-            "the reading counts the second time constant as waiting"
+            "The reading counts the second time constant as waiting."
         } else {
-            "a process of higher order, drift or noise"
+            "Usual causes: a process of higher order, drift or noise."
         };
         notes.push(format!(
-            "Reading and fit differ by more than 25{NO_BREAK}% on {steps}{NO_BREAK}{}. Usual causes: {cause}.",
+            "Reading and fit differ by more than 25{NO_BREAK}% on {steps}{NO_BREAK}{}. {cause}",
             listed(&differing)
         ));
     }

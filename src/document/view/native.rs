@@ -123,7 +123,7 @@ pub(super) fn short(of: &Loop, native: Native) -> Vec<String> {
 
 /// The settings in standard form: Kc, Ti, and Td where `derivative` says that it is shown.
 pub(super) fn standard(of: Option<Standard>, derivative: bool) -> Vec<(&'static str, Cell)> {
-    let seconds = |s: f64| Cell::figure(super::numbers::grouped(&display::significant(s, 3)), "s");
+    let seconds = |s: f64| Cell::figure(super::numbers::grouped(&display::plain(s, 3)), "s");
     let mut rows = vec![
         (
             "Controller gain Kc",

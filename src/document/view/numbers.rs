@@ -271,12 +271,61 @@ pub(super) fn listed(items: &[String]) -> String {
     }
 }
 
+/// The fewest places (at most `most`) that show every value to within `tolerance`.
+pub(super) fn decimals_within(
+    values: impl Iterator<Item = f64> + Clone,
+    tolerance: f64,
+    most: usize,
+) -> usize {
+    (0..most)
+        .find(|&places| {
+            let scale = libm::pow(10.0, places as f64);
+            values
+                .clone()
+                .all(|v| (libm::round(v * scale) / scale - v).abs() <= tolerance)
+        })
+        .unwrap_or(most)
+}
+
 /// Text from people on one line: control characters and runs of space become one space.
 pub(super) fn tidy(text: &str) -> String {
     text.split(|c: char| c.is_control() || c == ' ')
         .filter(|part| !part.is_empty())
         .collect::<Vec<_>>()
         .join(" ")
+}
+
+/// Words that stand after a figure and must not part from it.
+const UNITS: [&str; 27] = [
+    "%", "%/%", "°C", "°F", "°C/%", "s", "ms", "min", "h", "mm", "m", "m³", "m³/h", "t/h", "kg/h",
+    "l/min", "bar", "mbar", "kPa", "Pa", "τ", "θ", "σ", "times", "scans", "points", "samples",
+];
+
+/// Words that a figure must not part from when it follows them.
+const NAMERS: [&str; 8] = ["step", "steps", "Step", "Steps", "Ms", "page", "OP", "PV"];
+
+/// Sentences on one line, with figures bound to their units and to what they number.
+pub(super) fn bound(text: &str) -> String {
+    let mut out = String::with_capacity(text.len());
+    let mut before = "";
+    let text = tidy(text);
+    for word in text.split(' ') {
+        if !out.is_empty() {
+            let bare = word.trim_end_matches(['.', ',', ';', ':', ')']);
+            let after_figure =
+                before.ends_with(|c: char| c.is_ascii_digit()) && UNITS.contains(&bare);
+            let figure_after = word.starts_with(|c: char| c.is_ascii_digit() || c == '−')
+                && NAMERS.contains(&before);
+            out.push(if after_figure || figure_after {
+                NO_BREAK
+            } else {
+                ' '
+            });
+        }
+        out.push_str(word);
+        before = word;
+    }
+    out
 }
 
 #[cfg(test)]
@@ -299,6 +348,15 @@ mod unit_tests {
         assert_eq!(count(3871), "3871");
         assert_eq!(count(13_871), "13\u{202f}871");
         assert_eq!(grouped("−1234567.25"), "−1\u{202f}234\u{202f}567.25");
+    }
+
+    #[test]
+    fn figures_do_not_part_from_their_units() {
+        assert_eq!(
+            bound("drift 31 % (bound 20 %), step 2 at 5 min"),
+            "drift 31\u{a0}% (bound 20\u{a0}%), step\u{a0}2 at 5\u{a0}min"
+        );
+        assert_eq!(bound("Unit 200 steam"), "Unit 200 steam");
     }
 
     #[test]

@@ -103,23 +103,37 @@ fn load(block: &SettingsBlock) -> Option<Metrics> {
 }
 
 fn different(context: &Context, after: &SettingsBlock) -> String {
-    let mut said = Vec::new();
     if context.record.settings.as_left.is_none() {
-        said.push("Not changed yet: works as before until the new settings are entered. Then:");
+        return format!(
+            "Not changed yet: works as before until the new settings are entered. From then on: {}",
+            lower(&difference(context, after))
+        );
     }
     if oscillates(context) {
-        said.push("Changed, but it went on swinging when it was tried.");
-        return said.join(" ");
+        return "Changed, but it went on swinging when it was tried.".to_owned();
     }
     if trial_disagrees(context) {
-        said.push("Changed, but when it was tried it did not do as expected.");
-        return said.join(" ");
+        return "Changed, but when it was tried it did not do as expected.".to_owned();
     }
+    difference(context, after)
+}
+
+/// A sentence that goes on after a colon.
+fn lower(text: &str) -> String {
+    let mut letters = text.chars();
+    letters
+        .next()
+        .map(|first| first.to_lowercase().chain(letters).collect())
+        .unwrap_or_default()
+}
+
+/// What the settings after the work change against those found.
+fn difference(context: &Context, after: &SettingsBlock) -> String {
     let found = &context.record.settings.as_found;
     if context.record.control_loop.aim == Aim::Averaging {
-        said.push("Lets the level move to keep the flow steady.");
-        return said.join(" ");
+        return "Lets the level move to keep the flow steady.".to_owned();
     }
+    let mut said = Vec::new();
     let found_swings = found.margins.is_some_and(|m| !m.stable)
         || set_point(found).is_some_and(|m| m.overshoot_percent.unwrap_or(0.0) >= SWINGS);
     let (before, now) = (set_point(found), set_point(after));
@@ -145,7 +159,7 @@ fn different(context: &Context, after: &SettingsBlock) -> String {
         Some(ratio) if ratio > 1.25 => said.push("Gives way more when something disturbs it."),
         _ => {}
     }
-    if said.is_empty() || said.last().is_some_and(|s| s.ends_with(':')) {
+    if said.is_empty() {
         said.push("Hardly different in daily running.");
     }
     said.join(" ")

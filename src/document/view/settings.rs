@@ -1,6 +1,6 @@
 //! The settings: which limit decided, all settings with their margins, what the published rules give.
 
-use super::numbers::{Cell, NONE, Row, Table, TimeUnit, grouped, ratio, sentence, tidy};
+use super::numbers::{Cell, NONE, Row, Table, TimeUnit, bound, grouped, ratio, sentence, tidy};
 use super::summary::{ms, phase};
 use super::{Context, Heading, Plot, native};
 use crate::design::{Design, Hardness, Limit, LimitName, LimitOutcome};
@@ -71,8 +71,8 @@ pub(super) fn settings(context: &Context) -> Option<SettingsPart> {
 }
 
 fn binding(design: &Design) -> String {
-    let mut text = sentence(&tidy(&design.binding_detail));
-    let derivative = sentence(&tidy(&design.derivative));
+    let mut text = sentence(&bound(&design.binding_detail));
+    let derivative = sentence(&bound(&design.derivative));
     if !derivative.is_empty() {
         text = format!("{text} {derivative}");
     }
@@ -96,7 +96,7 @@ fn limit_row(limit: &Limit, binding: bool) -> TextRow {
     TextRow {
         cells: vec![
             limit_name(limit.limit).to_owned(),
-            tidy(&limit.detail),
+            bound(&limit.detail),
             comes_to(limit),
             needs,
             kind.to_owned(),
@@ -156,6 +156,10 @@ fn settings_table(context: &Context) -> Table {
         .map(|(_, b)| native::settings(l, b.native))
         .collect();
     for k in 0..3 {
+        // Derivative that no set of settings uses needs no row.
+        if k == 2 && typed.iter().all(|t| t[k].1.text == "off") {
+            continue;
+        }
         let label = typed[0][k].0.label;
         rows.push(Row::new(
             label,
@@ -178,16 +182,17 @@ fn settings_table(context: &Context) -> Table {
             ));
         }
     }
-    for (title, of) in [
-        (
-            "Margins, fitted model",
-            (|b: &SettingsBlock| b.margins) as fn(&SettingsBlock) -> Option<Margins>,
-        ),
-        ("Margins, worst of the models", |b| b.worst_margins),
+    let fitted: fn(&SettingsBlock) -> Option<Margins> = |b| b.margins;
+    let worst_of: fn(&SettingsBlock) -> Option<Margins> = |b| b.worst_margins;
+    for (title, of, with_gain_margin) in [
+        ("Margins, fitted model", fitted, true),
+        ("Margins, worst of the models", worst_of, false),
     ] {
         rows.push(Row::group(title));
         rows.push(Row::new("Ms", each(&|b| ms(of(b)))));
-        rows.push(Row::new("Gain margin", each(&|b| gain_margin(of(b)))));
+        if with_gain_margin {
+            rows.push(Row::new("Gain margin", each(&|b| gain_margin(of(b)))));
+        }
         rows.push(Row::new("Phase margin", each(&|b| phase(of(b)))));
         let unit = TimeUnit::for_all(
             blocks
@@ -227,14 +232,11 @@ fn worst(context: &Context) -> String {
     } else {
         "settings to enter"
     };
-    let members = context.record.model.as_ref().map_or(0, |m| m.fit.set.len());
+    let others = context.record.model.as_ref().map_or(0, |m| m.fit.set.len());
     format!(
-        "The models are those of {} and the fitted one; the worst for the {of}: {}.",
-        display::counted(
-            members,
-            "step or end of an interval",
-            "steps and ends of intervals"
-        ),
+        "Worst of the fitted model and {}: each step’s own, and the ends of the intervals. For the {of} it \
+         is {}.",
+        display::counted(others, "other", "others"),
         tidy(label)
     )
 }

@@ -1,6 +1,9 @@
 //! The step tests: the test as logged and the table of its steps.
 
-use super::numbers::{NONE, TimeUnit, column_decimals, decimals_to_show, listed, sentence, tidy};
+use super::numbers::{
+    NONE, TimeUnit, bound, column_decimals, decimals_to_show, decimals_within, listed, sentence,
+    tidy,
+};
 use super::summary::slope_unit;
 use super::{Context, Heading, Plot, span_of};
 use crate::display;
@@ -59,9 +62,12 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
             .filter(|c| *c > 0.0)
             .fold(f64::INFINITY, f64::min)
     };
-    let op_decimals = decimals_to_show(
-        smallest(steps.iter().map(|s| (s.op_to - s.op_from).abs()).collect()),
-        10.0,
+    // A fiftieth of the smallest move is less than anyone would write down.
+    let smallest_move = smallest(steps.iter().map(|s| (s.op_to - s.op_from).abs()).collect());
+    let op_decimals = decimals_within(
+        steps.iter().flat_map(|s| [s.op_from, s.op_to]),
+        smallest_move / 50.0,
+        3,
     );
     let judged: Vec<&Step> = if used.is_empty() {
         steps.iter().collect()
@@ -87,8 +93,8 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
             let mut row = vec![
                 step.number.to_string(),
                 moment(step.at, several_days),
-                display::fixed(step.op_from, op_decimals.min(2)),
-                display::fixed(step.op_to, op_decimals.min(2)),
+                display::fixed(step.op_from, op_decimals),
+                display::fixed(step.op_to, op_decimals),
                 display::fixed(step.pv_from, pv_decimals),
                 display::fixed(step.pv_to, pv_decimals),
                 figure(fit.map(|f| f.gain.value * gain_factor), gain_decimals),
@@ -116,7 +122,7 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
             row.push(
                 step.reasons
                     .iter()
-                    .map(|r| tidy(&r.text))
+                    .map(|r| bound(&r.text))
                     .collect::<Vec<_>>()
                     .join("; "),
             );
@@ -156,8 +162,7 @@ fn note(integrates: bool, with_time_constant: bool) -> String {
     }
     names.push("dead time θ".to_owned());
     format!(
-        "{} of each step’s own fit. Misfit: what that fit leaves beyond the noise, in percent of the \
-         movement of PV.",
+        "{} of each step’s own fit. Misfit: what it leaves beyond the noise, in percent of the change of PV.",
         listed(&names)
     )
 }
@@ -180,7 +185,7 @@ fn text(context: &Context) -> String {
         text.push_str(&format!(" {on}"));
     }
     for part in [
-        l.conditions.as_deref().map(tidy),
+        l.conditions.as_deref().map(bound),
         l.tested_by.as_deref().map(|n| format!("by {}", tidy(n))),
         l.witnessed_by
             .as_deref()

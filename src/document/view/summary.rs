@@ -1,7 +1,7 @@
 //! Page 1: the verdict, what changed, what the loop does now, what is open, the sign-off.
 
 use super::numbers::{
-    Cell, NONE, Row, Table, TimeUnit, capital, listed, number_word, ratio, sentence, tidy,
+    Cell, NONE, Row, Table, TimeUnit, bound, capital, listed, number_word, ratio, sentence, tidy,
 };
 use super::{Context, Entry, Heading, Plot, SignatureView, native, sign_off};
 use crate::display::{self, NO_BREAK};
@@ -72,7 +72,7 @@ pub(super) fn summary(context: &Context) -> Summary {
                 .test
                 .next_time
                 .iter()
-                .map(|advice| Entry::new(tidy(&advice.what), tidy(&advice.how)))
+                .map(|advice| Entry::new(tidy(&advice.what), bound(&advice.how)))
                 .collect(),
         ),
         sign_off: parts.first_of(&[super::SIGN_OFF]),
@@ -629,7 +629,7 @@ fn open(context: &Context) -> Vec<Entry> {
             "Open",
             context
                 .parts
-                .pointing(&tidy(&item.text), part_of(item.code)),
+                .pointing(&bound(&item.text), part_of(item.code)),
         ));
     }
     for remark in &document.remarks {
@@ -639,7 +639,7 @@ fn open(context: &Context) -> Vec<Entry> {
         };
         entries.push(Entry::new(
             tidy(&remark.label),
-            context.parts.pointing(&tidy(&remark.text), part),
+            context.parts.pointing(&bound(&remark.text), part),
         ));
     }
     entries
@@ -664,14 +664,14 @@ fn reasons_withheld(context: &Context) -> Vec<Entry> {
         } else {
             entries.push(Entry::new(
                 reason_label(item.code),
-                sentence(&tidy(&item.text)),
+                sentence(&bound(&item.text)),
             ));
         }
     }
     for remark in &record.document.remarks {
         entries.push(Entry::new(
             tidy(&remark.label),
-            sentence(&tidy(&remark.text)),
+            sentence(&bound(&remark.text)),
         ));
     }
     if let Some(process) = process_sentences(context) {
@@ -701,7 +701,7 @@ fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
         .iter()
         .filter(|s| s.verdict == Verdict::Rejected)
     {
-        let reasons: Vec<String> = step.reasons.iter().map(|r| tidy(&r.text)).collect();
+        let reasons: Vec<String> = step.reasons.iter().map(|r| bound(&r.text)).collect();
         let text = sentence(&reasons.join("; "));
         match by_reason.values_mut().find(|(_, t)| *t == text) {
             Some((numbers, _)) => numbers.push(step.number.to_string()),
@@ -711,7 +711,7 @@ fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
         }
     }
     if by_reason.is_empty() {
-        return vec![Entry::new("Test", sentence(&tidy(item)))];
+        return vec![Entry::new("Test", sentence(&bound(item)))];
     }
     by_reason
         .into_values()

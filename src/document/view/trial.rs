@@ -1,6 +1,6 @@
 //! The closed-loop trial: what was logged beside what was predicted.
 
-use super::numbers::{Cell, Row, Table, TimeUnit, decimals_to_show, sentence, tidy};
+use super::numbers::{Cell, Row, Table, TimeUnit, bound, decimals_to_show, sentence};
 use super::{Context, Heading, Plot, span_of};
 use crate::display::{self, NO_BREAK};
 use crate::predict::Metrics;
@@ -64,7 +64,7 @@ fn text(context: &Context, trial: &Trial) -> String {
 }
 
 fn verdict(trial: &Trial) -> String {
-    let why = sentence(&tidy(&trial.why));
+    let why = sentence(&bound(&trial.why));
     let head = if trial.agrees {
         "Agrees with the prediction."
     } else {
@@ -77,7 +77,7 @@ fn verdict(trial: &Trial) -> String {
         format!("{head} {why}")
     };
     if let Some(oscillation) = &trial.oscillation {
-        let said = sentence(&tidy(&oscillation.text));
+        let said = sentence(&bound(&oscillation.text));
         if !text.contains(said.trim_end_matches('.')) {
             text = format!("{text} {said}");
         }
