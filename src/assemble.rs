@@ -4,7 +4,8 @@ use crate::design::{self, Aim, DesignRequest, Designed, InnerLoop, worst_margins
 use crate::identify::{self, Context, Identification, Model, Step, Verdict};
 use crate::notice::{Place, Problem};
 use crate::predict::simulate::{LoopCase, OperatingPoint};
-use crate::predict::{PvFilter, frequency};
+use crate::predict::trial::{self, AsLeft};
+use crate::predict::{PvFilter, margins};
 use crate::quantity::{Estimate, Span};
 use crate::record::{
     AllSettings, Document, EngineeringGain, LimitsInForce, Log, Loop, ModelBlock, Provenance,
@@ -140,8 +141,17 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
     if record.design.is_some()
         && let (Some(log), Some(native), Some(model)) = (&input.trial, input.left, &fit)
     {
-        let trace = trace_of(log, &input.controller)?;
-        let _ = (trace, native, model);
+        let as_left = AsLeft {
+            model: &model.process(),
+            terms: &input.controller.terms(native),
+            controller: &input.controller,
+            filter: left.filter,
+            action: left.action,
+        };
+        match trial::trial(&trace_of(log, &input.controller)?, &as_left) {
+            Ok(found) => record.trial = Some(found),
+            Err(error) => circumstances.trial_failure = Some(error.to_string()),
+        }
     }
     record.logs.extend(input.trial);
     record.document.open_items = open_items::open_items(&record, &circumstances);
@@ -264,7 +274,7 @@ fn settings_block(
     SettingsBlock {
         native,
         standard,
-        margins: Some(frequency::margins(
+        margins: Some(margins(
             &process,
             &terms,
             controller,

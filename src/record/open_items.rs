@@ -1,6 +1,6 @@
 //! What keeps a record from being signed, what was asked for and not met, and the status that follows.
 
-use super::{LogRole, OpenCode, OpenItem, Record, Remark, Status};
+use super::{OpenCode, OpenItem, Record, Remark, Status};
 use crate::design::{LimitName, LimitOutcome, Refusal};
 use crate::display::{counted, duration, plain};
 use crate::identify::Verdict;
@@ -13,6 +13,8 @@ pub struct Circumstances {
     pub refusal: Option<Refusal>,
     /// Tag of the inner loop, where its record is withheld.
     pub inner_withheld: Option<String>,
+    /// Why the closed-loop trial's log could not be assessed, where it could not.
+    pub trial_failure: Option<String>,
 }
 
 /// Whether the action in force makes feedback negative on the fitted process.
@@ -55,7 +57,7 @@ pub fn usable_steps(record: &Record) -> usize {
 pub fn open_items(record: &Record, circumstances: &Circumstances) -> Vec<OpenItem> {
     let withholding = withholding_items(record, circumstances);
     if withholding.is_empty() {
-        draft_items(record)
+        draft_items(record, circumstances)
     } else {
         withholding
     }
@@ -128,7 +130,7 @@ fn withholding_items(record: &Record, circumstances: &Circumstances) -> Vec<Open
     items
 }
 
-fn draft_items(record: &Record) -> Vec<OpenItem> {
+fn draft_items(record: &Record, circumstances: &Circumstances) -> Vec<OpenItem> {
     let mut items = Vec::new();
     if record.control_loop.waiver.is_none()
         && let Some(text) = few_steps(record)
@@ -166,11 +168,9 @@ fn draft_items(record: &Record) -> Vec<OpenItem> {
     match &record.trial {
         None => items.push(item(
             OpenCode::TrialMissing,
-            if record.logs.iter().any(|log| log.role == LogRole::Trial) {
-                "The closed-loop trial could not be assessed: its log shows neither a move of the set \
-                 point nor a load that the loop answered, or the settings as left are not entered."
-            } else {
-                "The closed-loop trial with the settings as left is missing."
+            match &circumstances.trial_failure {
+                Some(failure) => format!("The closed-loop trial could not be assessed: {failure}."),
+                None => "The closed-loop trial with the settings as left is missing.".to_owned(),
             },
         )),
         Some(trial) => {
