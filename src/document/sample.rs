@@ -35,9 +35,9 @@ fn at(day: u32, hour: u32, minute: u32) -> NaiveDateTime {
         .expect("a time of day")
 }
 
-fn figure(name: &str, width_mm: f64, height_mm: f64) -> Figure {
+fn figure(name: &'static str, width_mm: f64, height_mm: f64) -> Figure {
     Figure {
-        name: name.to_owned(),
+        name,
         svg: format!(
             "<svg xmlns=\"http://www.w3.org/2000/svg\" width=\"{width_mm}mm\" height=\"{height_mm}mm\" \
              viewBox=\"0 0 {width_mm} {height_mm}\"><rect x=\"0.2\" y=\"0.2\" width=\"{}\" height=\"{}\" \

@@ -47,6 +47,9 @@ pub struct Meter {
     at_63: Option<f64>,
     /// Last sample outside the band; 0 before any.
     last_outside: f64,
+    /// Time in the band after which the PV counts as settled, s, and when it had stayed that long.
+    hold_s: Option<f64>,
+    held_from: Option<f64>,
     iae: f64,
     peak: f64,
     travel: f64,
@@ -65,6 +68,8 @@ impl Meter {
             at_90: None,
             at_63: None,
             last_outside: 0.0,
+            hold_s: None,
+            held_from: None,
             iae: 0.0,
             peak: 0.0,
             travel: 0.0,
@@ -75,6 +80,13 @@ impl Meter {
     /// whose noise would leave a narrower one for ever.
     pub fn with_least_band(mut self, half_width: f64) -> Self {
         self.band = self.band.max(half_width);
+        self
+    }
+
+    /// The same, settled as soon as the PV has stayed in the band for `hold_s`: for a measured response,
+    /// which some later disturbance or a rare noise sample takes out of the band again.
+    pub fn with_hold(mut self, hold_s: f64) -> Self {
+        self.hold_s = Some(hold_s);
         self
     }
 
@@ -115,6 +127,12 @@ impl Meter {
         }
         if error.abs() > self.band {
             self.last_outside = now.t_s;
+        } else if self.held_from.is_none()
+            && self
+                .hold_s
+                .is_some_and(|hold| now.t_s - self.last_outside >= hold)
+        {
+            self.held_from = Some(self.last_outside);
         }
         self.last = Some(now);
     }
@@ -131,8 +149,9 @@ impl Meter {
         Metrics {
             overshoot_percent: set_point.then(|| (100.0 * (self.highest - 1.0)).max(0.0)),
             rise_time_s: self.at_90.zip(self.at_10).map(|(to, from)| to - from),
-            settling_time_s: (end - self.last_outside >= STAYED_PART * end)
-                .then_some(self.last_outside),
+            settling_time_s: self.held_from.or_else(|| {
+                (end - self.last_outside >= STAYED_PART * end).then_some(self.last_outside)
+            }),
             iae_percent_s: self.iae,
             peak_deviation_percent: self.peak,
             op_travel_percent: self.travel,

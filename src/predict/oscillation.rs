@@ -19,6 +19,8 @@ pub struct Oscillation {
 
 /// A decay ratio above this is named (quarter decay is the most that is left unsaid).
 const NAMED_DECAY: f64 = 0.25;
+/// A swing this many times the threshold is one: smaller ones are noise that ran the same way.
+const CLEAR_SWING: f64 = 2.0;
 /// Swings, counted to either side, that a limit cycle shows at least.
 const LIMIT_CYCLE_SWINGS: usize = 6;
 /// Ratio of the later to the earlier swings within which their size is the same.
@@ -92,7 +94,8 @@ pub fn find(t_s: &[f64], error: &[f64], threshold: f64, skip: usize) -> Option<O
         let ratio = mean(later) / mean(earlier);
         ratio > SAME_SIZE[0] && ratio < SAME_SIZE[1]
     };
-    if !limit_cycle && decay_ratio <= NAMED_DECAY {
+    let clear = swings.iter().any(|s| s.size >= CLEAR_SWING * threshold);
+    if !limit_cycle && (decay_ratio <= NAMED_DECAY || !clear) {
         return None;
     }
     let text = if limit_cycle {

@@ -32,15 +32,8 @@ pub struct Trial {
     pub at_s: f64,
     /// Its size: % of span (set point) or % of OP (load, fitted).
     pub step_percent: f64,
-    /// Measured overshoot, percent of the step; `None` for a load.
-    pub overshoot_percent: Option<f64>,
-    /// Measured rise time, s.
-    pub rise_time_s: Option<f64>,
-    /// Measured settling time, s.
-    pub settling_time_s: Option<f64>,
-    /// Measured IAE, % of span times s.
-    pub iae_percent_s: f64,
-    /// All measured figures.
+    /// The measured figures.
+    #[serde(flatten)]
     pub measured: Metrics,
     /// The same figures of the predicted response.
     pub predicted: Metrics,
@@ -279,15 +272,20 @@ impl<'a> Run<'a> {
         answer
     }
 
-    /// Figures of a response over `window`: deviations from `pv`, `op` and `sp`.
+    /// Figures of a response over `window`: deviations from `pv`, `op` and `sp`. A measured one has
+    /// settled when it has stayed in the band for `hold_s`, as long as it was predicted to take.
     fn metrics(
         &self,
         disturbance: Disturbance,
         window: Range<usize>,
         response: (&[f64], &[f64]),
         rest: (f64, f64, f64),
+        hold_s: Option<f64>,
     ) -> Metrics {
         let mut meter = Meter::new(disturbance).with_least_band(3.0 * self.noise);
+        if let Some(hold_s) = hold_s {
+            meter = meter.with_hold(hold_s);
+        }
         let (at, (pv, op, sp)) = (self.t_s[window.start], rest);
         for k in window {
             meter.take(Sample {
@@ -314,8 +312,14 @@ impl<'a> Run<'a> {
         let sp_before = self.sp[index - 1];
         let rest = |op: &[f64]| (pv_rest - sp_at_rest + sp_before, op[index - 1], sp_before);
         let step = Disturbance::SetPoint(size);
-        let measured = self.metrics(step, window.clone(), (&self.smooth, self.op), rest(self.op));
-        let predicted = self.metrics(step, window.clone(), (&pv, &op), rest(&op));
+        let predicted = self.metrics(step, window.clone(), (&pv, &op), rest(&op), None);
+        let measured = self.metrics(
+            step,
+            window.clone(),
+            (&self.smooth, self.op),
+            rest(self.op),
+            predicted.settling_time_s,
+        );
         let threshold = (3.0 * self.noise).max(0.05 * size.abs());
         let oscillation = self.oscillation(window, threshold, 1);
         let (agrees, why) = agreement(&measured, &predicted, oscillation.as_ref());
@@ -350,8 +354,14 @@ impl<'a> Run<'a> {
         let window = start..self.t_s.len();
         let step = Disturbance::Load(size);
         let rest = (base, op_rest, sp);
-        let measured = self.metrics(step, window.clone(), (&self.smooth, self.op), rest);
-        let predicted = self.metrics(step, window, (&pv, &op), rest);
+        let predicted = self.metrics(step, window.clone(), (&pv, &op), rest, None);
+        let measured = self.metrics(
+            step,
+            window,
+            (&self.smooth, self.op),
+            rest,
+            predicted.settling_time_s,
+        );
         let misfit = self.misfit_percent(&pv);
         let (agrees, why) = match &oscillation {
             Some(seen) => (false, format!("{}.", seen.text)),
@@ -400,10 +410,6 @@ impl<'a> Run<'a> {
             kind,
             at_s,
             step_percent,
-            overshoot_percent: measured.overshoot_percent,
-            rise_time_s: measured.rise_time_s,
-            settling_time_s: measured.settling_time_s,
-            iae_percent_s: measured.iae_percent_s,
             measured,
             predicted,
             predicted_rmse_percent,

@@ -175,14 +175,14 @@ fn draft_items(record: &Record, circumstances: &Circumstances) -> Vec<OpenItem> 
         )),
         Some(trial) => {
             if let Some(oscillation) = &trial.oscillation {
-                items.push(item(OpenCode::TrialOscillates, oscillation.text.clone()));
+                items.push(item(
+                    OpenCode::TrialOscillates,
+                    format!("Closed-loop trial: {}", sentence_end(&oscillation.text)),
+                ));
             } else if !trial.agrees {
                 items.push(item(
                     OpenCode::TrialDisagrees,
-                    format!(
-                        "The closed-loop trial does not agree with the prediction: {}",
-                        sentence_end(&trial.why)
-                    ),
+                    format!("Closed-loop trial: {}", sentence_end(&trial.why)),
                 ));
             }
         }

@@ -145,7 +145,7 @@ fn a_load_serves_where_no_set_point_was_moved() {
     let found = judged(&log(1.5, 1.5, 1000, load), 1.5, 1.5).expect("a trial");
     assert_eq!(found.kind, TrialKind::Load);
     assert!(found.agrees, "{}", found.why);
-    assert_eq!(found.overshoot_percent, None);
+    assert_eq!(found.measured.overshoot_percent, None);
     assert!((found.at_s - 310.0).abs() <= 2.0, "{}", found.at_s);
     assert!(
         (found.step_percent + 6.0).abs() < 0.2,
