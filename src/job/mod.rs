@@ -3,6 +3,7 @@
 pub mod headings;
 pub mod manifest;
 pub mod row;
+mod row_reader;
 pub mod schedule;
 mod toml_reader;
 
