@@ -369,9 +369,7 @@ fn formulas_are_not_handed_on() {
 
 #[test]
 fn document_numbers_are_file_names_and_each_ones_own() {
-    let job = JOB
-        .replace("D-{tag}", "D-{tag}")
-        .replace("date =", "dossier = \"D-X-1\"\ndate =");
+    let job = JOB.replace("date =", "dossier = \"D-X-1\"\ndate =");
     let row = |tag: &str| format!("{tag};Outlet;degC;0;100;reverse;standard;gain;s;1\n");
     let folder = folder(
         &job,

@@ -8,7 +8,7 @@ use super::layout::{self, Layout};
 use super::numbers::{DecimalSign, Evidence, Shape, Undecided, shape};
 use super::roles::{self, Roles};
 use super::source::{FileCache, SourceFile};
-use super::stamp::MICROSECONDS;
+use super::stamp::{MICROSECONDS, stamp};
 use super::table::{Cell, Table};
 use super::tracks::tracks;
 use super::{FileReference, LogRead, LogRequest, LogRule, Source, TimeUnit, join, units};
@@ -156,7 +156,7 @@ fn understand<'a>(
     rule: &LogRule,
     table: &'a Table,
 ) -> Result<Understood<'a>, Vec<Problem>> {
-    let Some(layout) = layout_of(request, rule, table) else {
+    let Some(mut layout) = layout_of(request, rule, table) else {
         return Err(vec![
             Problem::error(table.place(), "no rows of times and numbers were found")
                 .hint("a log has one row per sample, with its time and values"),
@@ -164,11 +164,30 @@ fn understand<'a>(
     };
     let tag = request.tag.as_deref();
     let roles = roles::assign(table, &layout, &request.columns, tag, rule.interval_s)?;
+    begin_at_first_time(table, &mut layout, roles.time);
     Ok(Understood {
         table,
         layout,
         roles,
     })
+}
+
+/// Rows right below the headings that have a time are data, whatever stands in their other cells:
+/// none may be passed over for not looking like a sample.
+fn begin_at_first_time(table: &Table, layout: &mut Layout, time: TimeColumns) {
+    let (Some(heading_row), TimeColumns::Single(column) | TimeColumns::Pair { time: column, .. }) =
+        (layout.heading_row, time)
+    else {
+        return;
+    };
+    let has_time = |index: &usize| match table.row(*index).cell(column) {
+        Cell::Date(_) | Cell::Duration(_) | Cell::Number(_) => true,
+        Cell::Text(text) => stamp(text).is_some() || shape(text) != Shape::NotNumber,
+        _ => false,
+    };
+    if let Some(first) = (heading_row + 1..layout.data_start).find(has_time) {
+        layout.data_start = first;
+    }
 }
 
 fn check_units(request: &LogRequest, understood: &Understood<'_>) -> Result<(), Problem> {

@@ -250,22 +250,17 @@ fn tags_in(table: &Table, layout: &Layout) -> Vec<Option<String>> {
             Some((heading.column, role))
         })
         .collect();
-    let of = |wanted: Role| roles.iter().find(|(_, role)| *role == wanted);
-    match (of(Role::Tag), of(Role::Value)) {
-        (Some((column, _)), Some(_)) => {
-            let mut seen = std::collections::BTreeSet::new();
-            for index in layout.data_start..table.len() {
-                let text = table.row(index).cell(*column).text();
-                if seen.insert(text.clone()) {
-                    take(&text);
-                }
+    if let Some((column, _)) = roles.iter().find(|(_, role)| *role == Role::Tag) {
+        let mut seen = std::collections::BTreeSet::new();
+        for index in layout.data_start..table.len() {
+            let text = table.row(index).cell(*column).text();
+            if seen.insert(text.clone()) {
+                take(&text);
             }
         }
-        _ => {
-            for heading in &layout.headings {
-                take(&heading.text);
-            }
-        }
+    }
+    for heading in &layout.headings {
+        take(&heading.text);
     }
     if tags.is_empty() {
         tags.push(None);

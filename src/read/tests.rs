@@ -345,6 +345,55 @@ fn a_long_table_is_joined_on_time() {
 }
 
 #[test]
+fn signals_of_a_long_table_may_be_named() {
+    let text = "Name,Time (s),Value\nT5,0,71\nV5,0,40\nT5,1,72\nV5,1,45\n";
+    let refusal = csv(text).refusal();
+    assert_eq!(
+        refusal,
+        "a.csv, column \"Name\": no tag is recognised as the PV; the tags are \"T5\", \"V5\"\n    \
+         name it in the schedule under \"pv column\"\n\
+         a.csv, column \"Name\": no tag is recognised as the OP; the tags are \"T5\", \"V5\"\n    \
+         name it in the schedule under \"op column\""
+    );
+    let log = csv(text)
+        .asking(|request| {
+            request.columns.pv = Some("T5".into());
+            request.columns.op = Some("v5".into());
+        })
+        .read();
+    assert_eq!(log.samples.pv, [71.0, 72.0]);
+    assert_eq!(log.samples.op, [40.0, 45.0]);
+}
+
+#[test]
+fn no_row_below_the_headings_is_passed_over() {
+    let text = "Time,PV,OP\n2026-03-14 09:00:00,Void,Void\n2026-03-14 09:00:01,71,40\n2026-03-14 09:00:02,71,40\n";
+    let refusal = csv(text).refusal();
+    assert!(
+        refusal.starts_with("a.csv, line 2, column \"PV\": \"Void\" is not a number"),
+        "{refusal}"
+    );
+}
+
+#[test]
+fn a_status_that_is_no_quality_is_left_alone() {
+    let text =
+        |status: &str| format!("Time (s),PV,OP,Status\n0,71,40,{status}\n1,72,40,{status}\n");
+    assert_eq!(csv(&text("Running")).read().bad_samples(), 0);
+    assert!(
+        csv(&text("Bad"))
+            .refusal()
+            .contains("the PV has no good sample (quality Bad: 2)")
+    );
+    let mixed = "Time (s),PV,OP,Quality\n0,71,40,Good\n1,72,40,Perhaps\n";
+    assert!(
+        csv(mixed)
+            .refusal()
+            .starts_with("a.csv, line 3, column \"Quality\": \"Perhaps\" is not a known quality")
+    );
+}
+
+#[test]
 fn bad_samples_are_counted_by_cause_and_unreadable_cells_named() {
     let text = "Time (s),TIC-204.PV,TIC-204.OP\n0,71,40\n1,Bad,40\n2,,40\n3,NaN,40\n4,500,40\n5,Void,40\n6,72,40\n";
     let span = Span::new(0.0, 100.0).expect("a range");
