@@ -2,7 +2,9 @@
 
 pub mod headings;
 pub mod manifest;
+mod new;
 pub mod row;
+mod row_reader;
 pub mod schedule;
 mod templates;
 mod toml_reader;
@@ -14,6 +16,7 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::path::{Path, PathBuf};
 
 pub use manifest::{Manifest, Page, Procedure, Revision, Signature, SiteCaution};
+pub use new::new_job;
 pub use row::{Day, Left, LogCell, LoopRow};
 pub use schedule::{BadRow, schedule_row_csv};
 
@@ -288,3 +291,6 @@ fn read_manifest(folder: &Path) -> Result<Manifest, Vec<Problem>> {
         )]),
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -1,10 +1,12 @@
 //! The loop schedule: one row per loop, every cell typed and checked.
 
 use super::headings::{HEADINGS, Heading, of};
-use super::row::{LoopRow, RowReader};
+use super::row::LoopRow;
+use super::row_reader::{NUMERIC, RowReader};
 use crate::notice::{Place, Problem, nearest};
 use crate::read::numbers::{DecimalSign, Evidence};
-use crate::read::table::{Cell, SourceFile, Table, WORKBOOK_ENDINGS};
+use crate::read::source::{SourceFile, WORKBOOK_ENDINGS};
+use crate::read::table::{Cell, Table};
 use std::collections::BTreeMap;
 use std::path::Path;
 
@@ -181,7 +183,7 @@ fn decimal_sign(
     table: &Table,
     columns: &BTreeMap<&'static str, usize>,
 ) -> Result<DecimalSign, Vec<Problem>> {
-    let numeric = super::row::NUMERIC
+    let numeric = NUMERIC
         .iter()
         .filter_map(|name| columns.get(name).map(|column| (*name, *column)));
     let mut evidence = Evidence::default();

@@ -1,10 +1,11 @@
 //! The cells of a loop's signals as samples.
 
 use super::collect::BadCells;
-use super::extract::{Track, Tracks, Understood};
+use super::extract::Understood;
 use super::headings::Role;
 use super::numbers::DecimalSign;
 use super::table::{Cell, Row};
+use super::tracks::{Track, Tracks};
 use super::values::{self, Value};
 use super::{LogRequest, LogRule};
 use crate::notice::{Place, Problem};

@@ -1,5 +1,6 @@
 //! The time column of a log: which way its dates are written, and the moments of its rows.
 
+use super::dates::date_order;
 use super::numbers::{DecimalSign, number};
 use super::stamp::{DateOrder, DateText, MICROSECONDS, Stamp, stamp};
 use super::table::{Cell, Table};
@@ -292,128 +293,24 @@ fn times_of_day(times: &[RowTime], rules: &ClockRules) -> Moments {
     }
 }
 
-/// The orders that a date of three numbers can be in.
-fn candidates(date: DateText) -> &'static [DateOrder] {
-    match date {
-        DateText::Known(_) => &[],
-        // With points between the numbers the day comes first wherever dates are written so.
-        DateText::Numbers {
-            separator: b'.', ..
-        } => &[DateOrder::DayFirst],
-        DateText::Numbers {
-            long_year: true, ..
-        } => &[DateOrder::DayFirst, DateOrder::MonthFirst],
-        DateText::Numbers { .. } => &[
-            DateOrder::DayFirst,
-            DateOrder::MonthFirst,
-            DateOrder::YearFirst,
-        ],
-    }
-}
-
-/// The order of day and month in a column, and how it is known.
-fn date_order(
-    table: &Table,
-    times: &[RowTime],
-    given: Option<DateOrder>,
-    place: &impl Fn(usize) -> Place,
-) -> Result<(DateOrder, String), Problem> {
-    let dates = || {
-        times.iter().enumerate().filter_map(|(k, time)| match time {
-            RowTime::Stamp(Stamp {
-                date: Some(date @ DateText::Numbers { .. }),
-                ..
-            }) => Some((k, *date)),
-            _ => None,
-        })
-    };
-    let Some((_, first)) = dates().next() else {
-        return Ok((DateOrder::YearFirst, "date and time of day".to_owned()));
-    };
-    if let Some(order) = given {
-        return Ok((
-            order,
-            format!("{} as given in job.toml", order.description()),
-        ));
-    }
-    // A few damaged dates must not rule the right order out: the order that reads most wins.
-    let scores: Vec<(DateOrder, usize)> = candidates(first)
-        .iter()
-        .map(|&order| {
-            (
-                order,
-                dates()
-                    .filter(|(_, date)| date.date(order).is_some())
-                    .count(),
-            )
-        })
-        .collect();
-    let best = scores.iter().map(|(_, count)| *count).max().unwrap_or(0);
-    let left: Vec<DateOrder> = scores
-        .iter()
-        .filter(|(_, count)| *count == best)
-        .map(|(order, _)| *order)
-        .collect();
-    let order = left.first().copied().unwrap_or(DateOrder::DayFirst);
-    if scores.len() == 1 {
-        return Ok((
-            order,
-            format!("{} (points between the numbers)", order.description()),
-        ));
-    }
-    if left.len() == 1 {
-        return Ok((
-            order,
-            format!("{} (no other order reads every date)", order.description()),
-        ));
-    }
-    for other in &left[1..] {
-        if let Some((k, date)) = dates().find(|(_, date)| date.date(order) != date.date(*other)) {
-            let reading = |order: DateOrder| {
-                date.date(order).map_or_else(String::new, |date| {
-                    format!("{} ({})", date.format("%-d %B %Y"), order.description())
-                })
-            };
-            let written = match date {
-                DateText::Numbers {
-                    parts: [a, b, c],
-                    separator,
-                    ..
-                } => format!(
-                    "{a:02}{sign}{b:02}{sign}{c:02}",
-                    sign = char::from(separator)
-                ),
-                DateText::Known(date) => date.to_string(),
-            };
-            return Err(Problem::error(
-                place(k),
-                format!(
-                    "the date {written} reads as {} or as {}, and no other row tells which",
-                    reading(order),
-                    reading(*other)
-                ),
-            )
-            .hint(format!(
-                "add to job.toml: [[log]] with files = [\"{}\"] and dates = \"{}\" or dates = \"{}\"",
-                table.file,
-                order.word(),
-                other.word()
-            )));
-        }
-    }
-    Ok((
-        order,
-        "day and month are the same number in every date".to_owned(),
-    ))
-}
-
 fn dates_as_text(
     table: &Table,
     times: &[RowTime],
     rules: &ClockRules,
     place: impl Fn(usize) -> Place,
 ) -> Result<Moments, Problem> {
-    let (order, why) = date_order(table, times, rules.dates, &place)?;
+    let dates: Vec<(usize, DateText)> = times
+        .iter()
+        .enumerate()
+        .filter_map(|(k, time)| match time {
+            RowTime::Stamp(Stamp {
+                date: Some(date @ DateText::Numbers { .. }),
+                ..
+            }) => Some((k, *date)),
+            _ => None,
+        })
+        .collect();
+    let (order, why) = date_order(&dates, rules.dates, &table.file, place)?;
     let with_offset = times
         .iter()
         .filter(|time| {

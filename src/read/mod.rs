@@ -8,17 +8,21 @@
 mod cells;
 pub mod clock;
 mod collect;
+mod dates;
 mod extract;
 pub mod headings;
+pub mod inspect;
 mod join;
 pub mod layout;
 pub mod numbers;
 pub mod order;
 pub mod roles;
 pub mod samples;
+pub mod source;
 pub mod stamp;
 pub mod table;
 pub mod text;
+mod tracks;
 pub mod units;
 pub mod values;
 
@@ -33,8 +37,8 @@ use std::path::PathBuf;
 pub use numbers::DecimalSign;
 pub use roles::RoleFound;
 pub use samples::{read_samples_csv, samples_csv};
+pub use source::FileCache;
 pub use stamp::DateOrder;
-pub use table::FileCache;
 pub use units::TimeUnit;
 
 /// Columns that the schedule names: heading text, or `#3` for the third column.
@@ -284,7 +288,7 @@ pub fn file_references(text: &str) -> Result<Vec<FileReference>, Problem> {
 
 fn has_workbook_ending(file: &str) -> bool {
     let lower = file.trim().to_lowercase();
-    table::WORKBOOK_ENDINGS
+    source::WORKBOOK_ENDINGS
         .iter()
         .any(|ending| lower.ends_with(&format!(".{ending}")))
 }
@@ -299,39 +303,4 @@ pub fn read_log(request: &LogRequest, cache: &FileCache) -> Result<LogRead, Vec<
 }
 
 #[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn patterns_match_names_below_folders() {
-        assert!(matches_pattern("logs/aic*.csv", "logs/aic208.csv"));
-        assert!(matches_pattern("logs/*.CSV", "logs/aic208.csv"));
-        assert!(!matches_pattern("logs/*.csv", "logs/old/aic208.csv"));
-        assert!(matches_pattern("logs/**/*.csv", "logs/old/aic208.csv"));
-        assert!(matches_pattern("logs/**/*.csv", "logs/aic208.csv"));
-        assert!(matches_pattern("logs/tic20?.xlsx", "logs/tic207.xlsx"));
-        assert!(!matches_pattern("logs/tic20?.xlsx", "logs/tic2077.xlsx"));
-    }
-
-    #[test]
-    fn file_cells_are_split() {
-        let references =
-            file_references("logs\\a.xlsx#Trend 1; logs/run#2.csv ;").expect("two files");
-        assert_eq!(
-            references,
-            [
-                FileReference {
-                    file: "logs/a.xlsx".into(),
-                    sheet: Some("Trend 1".into())
-                },
-                FileReference {
-                    file: "logs/run#2.csv".into(),
-                    sheet: None
-                }
-            ]
-        );
-        for outside in ["../a.csv", "/etc/a.csv", "C:\\a.csv", " ; "] {
-            assert!(file_references(outside).is_err(), "{outside}");
-        }
-    }
-}
+mod tests;

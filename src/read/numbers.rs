@@ -206,6 +206,14 @@ impl<W> Default for Evidence<W> {
 impl<W: Clone> Evidence<W> {
     /// Takes one text into account.
     pub fn observe(&mut self, text: &str, at: impl FnOnce() -> W) {
+        // Most texts of a long log say again what the first ones said.
+        let count = |sign: u8| text.bytes().filter(|byte| *byte == sign).count();
+        match (count(b'.'), count(b',')) {
+            (0, 0) => return,
+            (1, 0) if self.point.is_some() => return,
+            (0, 1) if self.comma.is_some() => return,
+            _ => {}
+        }
         match shape(text) {
             Shape::Decimal(DecimalSign::Point) if self.point.is_none() => {
                 self.point = Some((at(), text.to_owned()));

@@ -109,7 +109,11 @@ pub fn order(
                         moment_text(raw, scale.is_dated())
                     ),
                 )
-                .hint("export the test as one trend in order of time, or cut it with test from and test to"));
+                .hint(if scale == Scale::Local && zone.is_none() && back <= HOUR_US {
+                    "where summer time ends there, give zone in a [[log]] table of job.toml; else export the test again in order of time"
+                } else {
+                    "export the test as one trend in order of time"
+                }));
             }
         }
         if t >= latest {

@@ -6,6 +6,7 @@ use super::headings::{Meaning, Owner, Role, Sureness, meaning, squash};
 use super::layout::{Heading, Layout};
 use super::stamp::stamp;
 use super::table::{Cell, Table};
+use super::values::is_good;
 use crate::notice::{Problem, nearest};
 use serde::Serialize;
 
@@ -220,19 +221,35 @@ fn even(text: &str) -> String {
         .collect()
 }
 
-/// Whether the first rows of a column hold a date, and whether they hold a time of day.
+/// Whether the first cells of a column hold dates, and whether they hold times of day. Several are
+/// looked at: a log may begin at midnight, which a workbook keeps as a bare date.
 fn date_and_time(table: &Table, layout: &Layout, column: usize) -> (bool, bool) {
-    let first = (layout.data_start..table.len())
+    const CELLS_LOOKED_AT: usize = 5;
+    (layout.data_start..table.len())
         .map(|index| table.row(index).cell(column))
-        .find(|cell| !cell.is_empty());
-    match first {
-        Some(Cell::Date(at)) => (true, at.time() != chrono::NaiveTime::MIN),
-        Some(Cell::Duration(_)) => (false, true),
-        Some(Cell::Text(text)) => stamp(text).map_or((false, false), |stamp| {
-            (stamp.date.is_some(), stamp.time_us.is_some())
-        }),
-        _ => (false, false),
-    }
+        .filter(|cell| !cell.is_empty())
+        .take(CELLS_LOOKED_AT)
+        .map(|cell| match cell {
+            Cell::Date(at) => (true, at.time() != chrono::NaiveTime::MIN),
+            Cell::Duration(_) => (false, true),
+            Cell::Text(text) => stamp(text).map_or((false, false), |stamp| {
+                (stamp.date.is_some(), stamp.time_us.is_some())
+            }),
+            _ => (false, false),
+        })
+        .fold((false, false), |all, cell| {
+            (all.0 || cell.0, all.1 || cell.1)
+        })
+}
+
+/// Whether any of the first cells of a column is a known quality.
+fn holds_quality(table: &Table, layout: &Layout, column: usize) -> bool {
+    const CELLS_LOOKED_AT: usize = 50;
+    (layout.data_start..table.len())
+        .map(|index| table.row(index).cell(column))
+        .filter(|cell| !cell.is_empty())
+        .take(CELLS_LOOKED_AT)
+        .any(|cell| is_good(cell, &[]).is_some())
 }
 
 /// Gives every column its role for the loop `tag`.
@@ -264,7 +281,8 @@ pub fn assign(
             TimeColumns::Single(0)
         }
     };
-    let mut missing_pv_name = None;
+    // In a long table these may name the signal's own text in the tag column.
+    let mut unknown_names = Vec::new();
     for (role, name) in [
         (Role::Pv, &names.pv),
         (Role::Op, &names.op),
@@ -283,14 +301,27 @@ pub fn assign(
         match outcome {
             Ok(Some(role)) => found.push(role),
             Ok(None) => {}
-            Err(problem) if role == Role::Pv && name.is_some() => missing_pv_name = Some(problem),
+            Err(problem)
+                if name.is_some()
+                    && matches!(role, Role::Pv | Role::Op | Role::Sp | Role::Mode) =>
+            {
+                unknown_names.push(problem);
+            }
             Err(problem) => problems.push(problem),
         }
     }
+    // "Status" is as often that of something else: a column that was only recognised by its
+    // heading has to hold what a quality is.
+    found.retain(|found| {
+        found.role != Role::Quality
+            || names.quality.is_some()
+            || holds_quality(table, layout, found.column)
+    });
     let has = |role: Role| found.iter().any(|found| found.role == role);
     let long = has(Role::Tag) && has(Role::Value) && !has(Role::Pv);
-    // In a long table "pv column" may name the PV's own text in the tag column.
-    problems.extend(missing_pv_name.filter(|_| !long));
+    if !long {
+        problems.append(&mut unknown_names);
+    }
     if problems.is_empty() && !long && !has(Role::Pv) {
         problems.push(no_pv(&headings, tag));
     }

@@ -113,6 +113,9 @@ fn month_of(word: &str) -> Option<u32> {
         "november nov novembre noviembre",
         "december dec dezember dez déc décembre diciembre dic",
     ];
+    if word.len() < 3 {
+        return None;
+    }
     let word = word.to_lowercase();
     MONTHS
         .iter()
@@ -183,8 +186,48 @@ impl<'a> Cursor<'a> {
     }
 }
 
+/// `2026-03-14T09:05:00.25` and the same with a space: what most exports write, without the detours
+/// that the other ways need.
+fn plain_iso(text: &str) -> Option<Stamp> {
+    let bytes = text.as_bytes();
+    let digits = |range: std::ops::Range<usize>| {
+        bytes.get(range)?.iter().try_fold(0_u32, |value, byte| {
+            byte.is_ascii_digit()
+                .then(|| value * 10 + u32::from(byte - b'0'))
+        })
+    };
+    let signs = [(4, b'-'), (7, b'-'), (13, b':'), (16, b':')];
+    if signs.iter().any(|(at, sign)| bytes.get(*at) != Some(sign)) {
+        return None;
+    }
+    if !matches!(bytes.get(10), Some(b'T' | b' ')) {
+        return None;
+    }
+    let date = NaiveDate::from_ymd_opt(digits(0..4)? as i32, digits(5..7)?, digits(8..10)?)?;
+    let mut time_us = clock_us(
+        i64::from(digits(11..13)?),
+        i64::from(digits(14..16)?),
+        i64::from(digits(17..19)?),
+    )?;
+    match bytes.get(19..)? {
+        [] => {}
+        [b'.', fraction @ ..] if fraction.iter().all(u8::is_ascii_digit) => {
+            time_us += fraction_us(&text[20..])?;
+        }
+        _ => return None,
+    }
+    Some(Stamp {
+        date: Some(DateText::Known(date)),
+        time_us: Some(time_us),
+        offset_minutes: None,
+    })
+}
+
 /// Reads a text as date, time of day or both; `None` where it is neither.
 pub fn stamp(text: &str) -> Option<Stamp> {
+    if let Some(stamp) = plain_iso(text) {
+        return Some(stamp);
+    }
     let mut cursor = Cursor { rest: text.trim() };
     let mut stamp = Stamp::default();
     // Day, month and year in words: "14 Mar 2026", "Mar 14, 2026", "14-Mar-26".
@@ -198,14 +241,14 @@ pub fn stamp(text: &str) -> Option<Stamp> {
         } else if letter.is_alphabetic() {
             let word = cursor.word();
             cursor.take('.');
-            if let Some(found) = month_of(word) {
+            if matches!(word, "T" | "t") {
+                stamp.date?;
+            } else if let Some(found) = month_of(word) {
                 if month.replace(found).is_some() {
                     return None;
                 }
                 cursor.take('-');
                 cursor.take('/');
-            } else if matches!(word, "T" | "t") {
-                stamp.date?;
             } else {
                 word_token(word, &mut stamp)?;
             }
@@ -367,8 +410,9 @@ fn clock_us(hours: i64, minutes: i64, seconds: i64) -> Option<i64> {
 
 /// Microseconds of the digits behind the decimal sign of the seconds.
 fn fraction_us(digits: &str) -> Option<i64> {
-    let six: String = digits.chars().chain("000000".chars()).take(6).collect();
-    (!digits.is_empty()).then(|| six.parse().ok())?
+    let six = digits.bytes().chain(std::iter::repeat(b'0')).take(6);
+    let value = six.fold(0, |value, digit| value * 10 + i64::from(digit - b'0'));
+    (!digits.is_empty()).then_some(value)
 }
 
 fn offset_digits(cursor: &mut Cursor<'_>) -> Option<i32> {
