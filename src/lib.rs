@@ -7,6 +7,7 @@ pub mod display;
 pub mod document;
 pub mod figures;
 pub mod identify;
+mod inspect;
 pub mod job;
 pub mod model;
 pub mod notice;
@@ -22,4 +23,5 @@ pub mod settings;
 pub mod steps;
 pub mod trace;
 
-pub use run::{RecordOptions, check, record};
+pub use inspect::inspect;
+pub use run::{RecordOptions, check, new_job, record};

@@ -3,13 +3,15 @@
 use crate::archive::{self, FileNames};
 use crate::assemble::{self, InnerRecord};
 use crate::document::Templates;
-use crate::job::{Job, LoopRow};
+use crate::job::{self, Job, LoopRow};
 use crate::notice::{Place, Problem, nearest};
 use crate::pipeline::{self, Engineered, Recorded};
 use crate::read::FileCache;
 use crate::record::Record;
 use crate::register;
-use crate::report::{CheckReport, DossierOutcome, LoopOutcome, LoopReport, Progress, RunReport};
+use crate::report::{
+    CheckReport, DossierOutcome, LoopOutcome, LoopReport, NewReport, Progress, RunReport,
+};
 use std::path::{Path, PathBuf};
 use std::sync::OnceLock;
 use std::sync::atomic::{AtomicUsize, Ordering};
@@ -35,6 +37,18 @@ struct Selected {
     notices: Vec<Problem>,
     /// Places in `job.loops`, in the order of the schedule.
     wanted: Vec<usize>,
+}
+
+/// Lays out a job folder.
+///
+/// # Errors
+/// Where the folder is not empty or cannot be written.
+pub fn new_job(folder: &Path) -> Result<NewReport, Vec<Problem>> {
+    let files = job::new_job(folder).map_err(|problem| vec![problem])?;
+    Ok(NewReport {
+        folder: shown(folder),
+        files,
+    })
 }
 
 /// Does all that [`record`] would do short of typesetting and writing.

@@ -250,6 +250,21 @@ pub struct FileReference {
     pub sheet: Option<String>,
 }
 
+/// Splits `file.xlsx#Sheet`; a `#` in the name of a text file is part of the name.
+pub fn split_sheet(text: &str) -> FileReference {
+    let (file, sheet) = match text.rsplit_once('#') {
+        Some((file, sheet)) if !sheet.trim().is_empty() && has_workbook_ending(file) => {
+            (file.trim(), Some(sheet.trim().to_owned()))
+        }
+        _ => (text, None),
+    };
+    let file = file.replace('\\', "/");
+    FileReference {
+        file: file.strip_prefix("./").unwrap_or(&file).to_owned(),
+        sheet,
+    }
+}
+
 /// Splits the text of a `test log` cell.
 ///
 /// # Errors
@@ -261,14 +276,7 @@ pub fn file_references(text: &str) -> Result<Vec<FileReference>, Problem> {
         .map(str::trim)
         .filter(|part| !part.is_empty())
     {
-        let (file, sheet) = match part.rsplit_once('#') {
-            Some((file, sheet)) if !sheet.trim().is_empty() && has_workbook_ending(file) => {
-                (file.trim(), Some(sheet.trim().to_owned()))
-            }
-            _ => (part, None),
-        };
-        let file = file.replace('\\', "/");
-        let file = file.strip_prefix("./").unwrap_or(&file).to_owned();
+        let FileReference { file, sheet } = split_sheet(part);
         let is_outside =
             file.starts_with('/') || file.contains(':') || file.split('/').any(|step| step == "..");
         if is_outside {

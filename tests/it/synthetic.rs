@@ -10,7 +10,8 @@ use asleft::identify::{
     Valve, Verdict, VerdictBounds,
 };
 use asleft::model::Kind;
-use asleft::predict::trial::{Oscillation, Trial, TrialKind};
+use asleft::predict::oscillation::Oscillation;
+use asleft::predict::trial::{Trial, TrialKind};
 use asleft::predict::{Curve, Margins, Metrics, Predicted, Response};
 use asleft::quantity::Estimate;
 use asleft::record::{
