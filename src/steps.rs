@@ -1,8 +1,17 @@
 //! Finding the steps: deliberate moves of the OP, and the windows around them.
 
-use crate::trace::Trace;
+use crate::trace::{Trace, median_interval};
 use std::ops::Range;
 use thiserror::Error;
+
+/// Smallest move of the OP that counts as deliberate, %.
+const SMALLEST_MOVE_PERCENT: f64 = 0.2;
+/// A move is larger than this many times the OP's own jitter.
+const MOVE_OVER_JITTER: f64 = 5.0;
+/// Fewest samples in a quiet stretch, where the log has them.
+const QUIET_SAMPLES: usize = 10;
+/// Opposite moves that leave less than this part of the larger one are a pulse.
+const PULSE_REMAINDER: f64 = 0.1;
 
 /// One deliberate move of the OP with the samples that belong to it (indices into the trace).
 #[derive(Debug, Clone, PartialEq)]
@@ -13,7 +22,7 @@ pub struct OpStep {
     pub at_s: f64,
     /// OP before the move, %.
     pub op_from: f64,
-    /// OP after the move, %.
+    /// OP after the move, %; of a pulse, its furthest level.
     pub op_to: f64,
     /// Whether the OP came back at once (an opposite move nets it out): a pulse.
     pub pulse: bool,
@@ -37,11 +46,318 @@ pub enum StepsError {
     NeverManual,
 }
 
+/// A move of the OP: one or several changes close together.
+#[derive(Debug, Clone, Copy)]
+struct Move {
+    /// First sample of the OP's log that differs from the level before.
+    first: usize,
+    /// Last sample of the OP's log that still changed.
+    last: usize,
+    from: f64,
+    to: f64,
+    /// Furthest level reached.
+    peak: f64,
+    pulse: bool,
+}
+
 /// Finds the moves of the OP and the windows around them, in order of time.
+///
+/// Moves closer together than five intervals or three scans are one step. Moves in alternating
+/// directions that leave less than a tenth of the largest, each nearer to the next than a third of
+/// the hold that follows, are one pulse. Where a mode column was logged, only what was done in manual
+/// counts.
 ///
 /// # Errors
 /// Where the log holds no deliberate move to look at.
 pub fn find(trace: &Trace, scan_s: f64) -> Result<Vec<OpStep>, StepsError> {
-    let _ = (trace, scan_s);
-    Err(StepsError::NoMoves)
+    let stretches = manual_stretches(trace)?;
+    let refreshes = trace.refreshes();
+    let mut steps = Vec::new();
+    for (from_s, to_s) in stretches {
+        let (times, values) = trace.op_log();
+        let range = times.partition_point(|t| *t < from_s)..times.partition_point(|t| *t <= to_s);
+        let (times, values) = (&times[range.clone()], &values[range]);
+        let apart_s = (5.0 * median_interval(times)).max(3.0 * scan_s);
+        let jitter = jitter(values);
+        let moves = merge_pulses(&moves(times, values, jitter, apart_s), times);
+        if trace.manual().is_none() && moves_all_the_time(times, values, &moves, jitter) {
+            return Err(StepsError::ClosedLoop);
+        }
+        for (k, this) in moves.iter().enumerate() {
+            let before_s = if k == 0 {
+                from_s
+            } else {
+                times[moves[k - 1].last]
+            };
+            let end_s = moves.get(k + 1).map(|next| times[next.first]);
+            let at_s = times[this.first];
+            let quiet = quiet_stretch(trace, refreshes.as_deref(), before_s, at_s);
+            let end = match end_s {
+                Some(next) => trace.t_s().partition_point(|t| *t < next),
+                None => trace.t_s().partition_point(|t| *t <= to_s),
+            };
+            steps.push(OpStep {
+                number: steps.len() + 1,
+                at_s,
+                op_from: this.from,
+                op_to: if this.pulse { this.peak } else { this.to },
+                pulse: this.pulse,
+                window: quiet.start..end.max(quiet.end),
+                quiet,
+            });
+        }
+    }
+    if steps.is_empty() {
+        return Err(StepsError::NoMoves);
+    }
+    Ok(steps)
 }
+
+/// First and last second of each stretch in manual; the whole log where no mode was logged.
+fn manual_stretches(trace: &Trace) -> Result<Vec<(f64, f64)>, StepsError> {
+    let t_s = trace.t_s();
+    let Some(manual) = trace.manual() else {
+        let (op_t_s, _) = trace.op_log();
+        return Ok(vec![(op_t_s[0], op_t_s[op_t_s.len() - 1])]);
+    };
+    let mut stretches = Vec::new();
+    let mut start = None;
+    for k in 0..=manual.len() {
+        let now = manual.get(k).copied().unwrap_or(false);
+        match (start, now) {
+            (None, true) => start = Some(k),
+            (Some(from), false) => {
+                stretches.push((t_s[from], t_s[k - 1]));
+                start = None;
+            }
+            _ => {}
+        }
+    }
+    if stretches.is_empty() {
+        return Err(StepsError::NeverManual);
+    }
+    Ok(stretches)
+}
+
+/// Robust standard deviation of the OP's sample-to-sample jitter, %; 0 for an OP that stands still.
+fn jitter(values: &[f64]) -> f64 {
+    let mut changes: Vec<f64> = values.windows(2).map(|w| (w[1] - w[0]).abs()).collect();
+    if changes.is_empty() {
+        return 0.0;
+    }
+    let middle = changes.len() / 2;
+    // Median of |difference| of two samples with standard deviation s: 0.6745·√2·s.
+    *changes.select_nth_unstable_by(middle, f64::total_cmp).1 / (0.6745 * std::f64::consts::SQRT_2)
+}
+
+fn median(values: &[f64]) -> f64 {
+    let mut values = values.to_vec();
+    let middle = values.len() / 2;
+    *values.select_nth_unstable_by(middle, f64::total_cmp).1
+}
+
+/// Moves larger than the jitter, those closer together than `apart_s` joined.
+fn moves(times: &[f64], values: &[f64], jitter: f64, apart_s: f64) -> Vec<Move> {
+    let large = (MOVE_OVER_JITTER * jitter).max(SMALLEST_MOVE_PERCENT);
+    // What still belongs to a level: the jitter, or the last digit of a still OP.
+    let small = (3.0 * jitter).max(0.01);
+    // Excursions: the level is left by more than `large`. A ramp leaves it again and again.
+    let mut excursions: Vec<(usize, usize)> = Vec::new();
+    let mut level = values[0];
+    let mut near = 0;
+    let mut held = 0;
+    for (k, &op) in values.iter().enumerate() {
+        if (op - level).abs() > large {
+            excursions.push((near + 1, k));
+            (level, near, held) = (op, k, 0);
+            continue;
+        }
+        if (op - level).abs() <= small {
+            near = k;
+        }
+        held += 1;
+        if held == 5 {
+            // A single sample is a poor level where the OP jitters or was caught half-way.
+            level = median(&values[k - 4..=k]);
+            if (op - level).abs() <= small {
+                near = k;
+            }
+        }
+    }
+    let mut joined: Vec<(usize, usize)> = Vec::new();
+    for excursion in excursions {
+        match joined.last_mut() {
+            Some(last) if times[excursion.0] - times[last.1] <= apart_s => last.1 = excursion.1,
+            _ => joined.push(excursion),
+        }
+    }
+    let mut found: Vec<Move> = Vec::new();
+    for (k, &(first, mut last)) in joined.iter().enumerate() {
+        let next = joined.get(k + 1).map_or(values.len(), |n| n.0);
+        let since = k.checked_sub(1).map_or(0, |b| joined[b].1);
+        let hold = &values[last..next];
+        let to = median(hold);
+        // The tail of a ramp below the size of an excursion.
+        while last + 1 < next && (values[last] - to).abs() > small {
+            last += 1;
+        }
+        let from = median(&values[since.min(first - 1)..first]);
+        let peak = values[first..=last]
+            .iter()
+            .copied()
+            .chain([to])
+            .fold(from, |peak, op| {
+                if (op - from).abs() > (peak - from).abs() {
+                    op
+                } else {
+                    peak
+                }
+            });
+        let net = (to - from).abs();
+        let returned = net < PULSE_REMAINDER * (peak - from).abs();
+        if returned || net > large {
+            found.push(Move {
+                first,
+                last,
+                from,
+                to,
+                peak,
+                pulse: returned,
+            });
+        }
+    }
+    found
+}
+
+/// Joins two or three alternating moves that net out before a longer hold.
+fn merge_pulses(moves: &[Move], times: &[f64]) -> Vec<Move> {
+    let end_s = times.last().copied().unwrap_or(0.0);
+    let mut merged: Vec<Move> = Vec::new();
+    let mut k = 0;
+    while k < moves.len() {
+        let run = [3, 2].into_iter().find(|&n| {
+            k + n <= moves.len() && nets_out(&moves[k..k + n], moves.get(k + n), times, end_s)
+        });
+        match run {
+            Some(n) => {
+                let part = &moves[k..k + n];
+                let from = part[0].from;
+                let peak = part.iter().fold(from, |peak, m| {
+                    if (m.to - from).abs() > (peak - from).abs() {
+                        m.to
+                    } else {
+                        peak
+                    }
+                });
+                merged.push(Move {
+                    last: part[n - 1].last,
+                    to: part[n - 1].to,
+                    peak,
+                    pulse: true,
+                    ..part[0]
+                });
+                k += n;
+            }
+            None => {
+                merged.push(moves[k]);
+                k += 1;
+            }
+        }
+    }
+    merged
+}
+
+fn nets_out(part: &[Move], next: Option<&Move>, times: &[f64], end_s: f64) -> bool {
+    if part.iter().any(|m| m.pulse) {
+        return false;
+    }
+    let last = part[part.len() - 1];
+    let hold_s = next.map_or(end_s, |n| times[n.first]) - times[last.last];
+    let largest = part
+        .iter()
+        .map(|m| (m.to - m.from).abs())
+        .fold(0.0, f64::max);
+    let alternate = part
+        .windows(2)
+        .all(|w| (w[0].to - w[0].from) * (w[1].to - w[1].from) < 0.0);
+    let near = part
+        .windows(2)
+        .all(|w| times[w[1].first] - times[w[0].first] < hold_s / 3.0);
+    alternate && near && (last.to - part[0].from).abs() < PULSE_REMAINDER * largest
+}
+
+/// Whether the OP is never left alone, as a controller in automatic moves it: most samples differ
+/// from the one before, and not by a jitter about a level that is held.
+fn moves_all_the_time(times: &[f64], values: &[f64], moves: &[Move], jitter: f64) -> bool {
+    let changed = values
+        .windows(2)
+        .filter(|w| (w[1] - w[0]).abs() > 1e-9)
+        .count();
+    if values.len() < 10 || changed * 2 < values.len() {
+        return false;
+    }
+    let moving_s: f64 = moves.iter().map(|m| times[m.last] - times[m.first]).sum();
+    let whole_s = times[times.len() - 1] - times[0];
+    if moving_s > 0.4 * whole_s {
+        return true;
+    }
+    // A jitter about a level differs over many samples by no more than over one; a controller's
+    // output has gone elsewhere.
+    let typical = |lag: usize| {
+        let apart: Vec<f64> = values
+            .iter()
+            .zip(&values[lag..])
+            .map(|(a, b)| (b - a).abs())
+            .collect();
+        median(&apart)
+    };
+    let far = if values.len() > 50 { 20 } else { 5 };
+    if typical(far) > 2.0 * typical(1) {
+        return true;
+    }
+    // A held level with jitter: variance about the level equals half the mean square of differences.
+    // A controller's wandering has much more variance than its differences show.
+    let (mut about_level, mut count) = (0.0, 0.0);
+    let mut from = 0;
+    for end in moves.iter().map(|m| m.first).chain([values.len()]) {
+        let hold = &values[from.min(end)..end];
+        if hold.len() >= 5 {
+            let level = median(hold);
+            about_level += hold.iter().map(|v| (v - level) * (v - level)).sum::<f64>();
+            count += hold.len() as f64;
+        }
+        from = moves
+            .iter()
+            .find(|m| m.first == end)
+            .map_or(end, |m| m.last + 1);
+    }
+    count > 0.0 && about_level / count > 4.0 * jitter * jitter + 1e-6
+}
+
+/// The last third of the time since the previous move, and ten samples (refreshes of a held PV) where
+/// they are there.
+fn quiet_stretch(
+    trace: &Trace,
+    refreshes: Option<&[usize]>,
+    before_s: f64,
+    at_s: f64,
+) -> Range<usize> {
+    let t_s = trace.t_s();
+    let end = t_s.partition_point(|t| *t < at_s);
+    let earliest = t_s.partition_point(|t| *t < before_s).min(end);
+    let third = t_s.partition_point(|t| *t < at_s - (at_s - before_s) / 3.0);
+    let ten = match refreshes {
+        None => end.saturating_sub(QUIET_SAMPLES),
+        Some(keep) => {
+            let before = keep.partition_point(|k| *k < end);
+            before
+                .checked_sub(QUIET_SAMPLES)
+                .map_or(0, |first| keep[first])
+        }
+    };
+    third.min(ten).max(earliest).min(end)..end
+}
+
+#[cfg(test)]
+#[path = "steps_tests.rs"]
+mod tests;

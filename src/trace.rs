@@ -4,6 +4,7 @@ use crate::quantity::Span;
 use chrono::{NaiveDateTime, TimeDelta};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+use std::cmp::Ordering;
 use std::fmt;
 use thiserror::Error;
 
@@ -128,7 +129,11 @@ impl Trace {
                 return Err(TraceError::Lengths(format!("{n} times, {len} of {name}")));
             }
         }
-        if let Some(k) = samples.t_s.windows(2).position(|w| !(w[1] > w[0])) {
+        if let Some(k) = samples
+            .t_s
+            .windows(2)
+            .position(|w| w[0].partial_cmp(&w[1]) != Some(Ordering::Less))
+        {
             return Err(TraceError::Time(k + 1));
         }
         let mut trace = Trace {
@@ -257,6 +262,68 @@ impl Trace {
             op_all: self.op_all.clone(),
             bad_t_s: self.bad_t_s.clone(),
         }
+    }
+}
+
+impl Trace {
+    /// Indices of the good samples at which the PV was refreshed, where it is held for several
+    /// samples between refreshes (an analyser's cycle); `None` where each sample stands for itself.
+    ///
+    /// Told from a coarse resolution, whose values also repeat, by the changes being of many sizes
+    /// and a constant number of samples apart.
+    pub fn refreshes(&self) -> Option<Vec<usize>> {
+        let changes: Vec<usize> = (1..self.len())
+            .filter(|&k| self.pv[k] != self.pv[k - 1])
+            .collect();
+        // With fewer refreshes than this no cycle can be told.
+        if changes.len() < 8 || self.len() < 3 * changes.len() {
+            return None;
+        }
+        let mut cycles: Vec<f64> = changes
+            .windows(2)
+            .map(|w| self.t_s[w[1]] - self.t_s[w[0]])
+            .collect();
+        let middle = cycles.len() / 2;
+        let cycle = *cycles.select_nth_unstable_by(middle, f64::total_cmp).1;
+        let slack = (1.01 * self.interval_s).max(0.1 * cycle);
+        // A refresh that brings the same value again is not seen: whole multiples count as well.
+        let on_cycle = cycles
+            .iter()
+            .filter(|c| {
+                let multiple = libm::round(*c / cycle);
+                multiple >= 1.0 && multiple <= 4.0 && (*c - multiple * cycle).abs() <= slack
+            })
+            .count();
+        let once = cycles
+            .iter()
+            .filter(|c| (*c - cycle).abs() <= slack)
+            .count();
+        let mut sizes: Vec<f64> = changes
+            .iter()
+            .map(|&k| (self.pv[k] - self.pv[k - 1]).abs())
+            .collect();
+        sizes.sort_by(f64::total_cmp);
+        let smallest = sizes.iter().filter(|s| **s < 1.01 * sizes[0]).count();
+        let enough = |count: usize, part: f64| count as f64 >= part * changes.len() as f64;
+        if cycle < 2.5 * self.interval_s
+            || !enough(on_cycle + 1, 0.9)
+            || !enough(once + 1, 0.6)
+            || enough(smallest, 0.7)
+        {
+            return None;
+        }
+        let mut keep = Vec::new();
+        let mut last_s = self.t_s[changes[0]] - cycle;
+        let mut next_change = changes.iter().copied().peekable();
+        for k in 0..self.len() {
+            let changed = next_change.next_if_eq(&k).is_some();
+            if changed || (k >= changes[0] && self.t_s[k] - last_s >= cycle + slack) {
+                // A value that came again is put where the cycle has it.
+                last_s = if changed { self.t_s[k] } else { last_s + cycle };
+                keep.push(k);
+            }
+        }
+        Some(keep)
     }
 }
 

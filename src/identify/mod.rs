@@ -1,11 +1,29 @@
 //! Identification: from the steps of a trace to a process model with its intervals.
 
+mod advice;
+mod choice;
+pub mod covariance;
+pub mod least_squares;
+mod noise;
+mod pooled;
+mod reading;
+mod response;
+mod search;
+mod verdict;
+mod words;
+
 use crate::model::{Kind, ProcessModel};
 use crate::quantity::Estimate;
 use crate::steps::OpStep;
 use crate::trace::{Moment, Trace};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+
+use choice::Candidate;
+use least_squares::Problem;
+use noise::Noise;
+use pooled::Fitted;
+use verdict::{Grounds, Judged};
 
 /// Verdict on a step.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
@@ -354,14 +372,219 @@ pub struct Context {
 }
 
 /// Judges the steps, reads and fits them, and fits the model over all usable ones.
+///
+/// Each step is fitted and judged with its own best kind; the pooled kind is chosen over the usable
+/// steps; each usable step's fit is then given in that kind. A PV that is held between refreshes is
+/// thinned to them first.
 pub fn identify(trace: &Trace, steps: &[OpStep], context: &Context) -> Identification {
-    let _ = (trace, steps, context);
+    match trace.refreshes() {
+        Some(keep) => {
+            let steps: Vec<OpStep> = steps.iter().map(|s| on_refreshes(s, &keep)).collect();
+            identify_samples(&trace.thinned(&keep), &steps, context)
+        }
+        None => identify_samples(trace, steps, context),
+    }
+}
+
+/// A step with its ranges in the thinned samples.
+fn on_refreshes(step: &OpStep, keep: &[usize]) -> OpStep {
+    let at = |index: usize| keep.partition_point(|k| *k < index);
+    let range = |range: &std::ops::Range<usize>| at(range.start)..at(range.end);
+    OpStep {
+        window: range(&step.window),
+        quiet: range(&step.quiet),
+        ..step.clone()
+    }
+}
+
+/// A step through fit and verdict.
+struct Work {
+    fitted: Option<Fitted>,
+    own: Option<Kind>,
+    judged: Judged,
+}
+
+impl Work {
+    fn own(&self) -> Option<(&Fitted, &Candidate)> {
+        let fitted = self.fitted.as_ref()?;
+        Some((fitted, fitted.of(self.own?)))
+    }
+}
+
+fn identify_samples(trace: &Trace, steps: &[OpStep], context: &Context) -> Identification {
+    let noise = noise::assess(trace, steps);
+    let mut work: Vec<Work> = Vec::new();
+    for (k, step) in steps.iter().enumerate() {
+        let before = k.checked_sub(1).map(|b| &steps[b]);
+        work.push(fit_and_judge(trace, step, before, &noise, context));
+    }
+    compare_signs(&mut work, steps);
+    let usable: Vec<&Fitted> = work
+        .iter()
+        .filter(|w| w.judged.verdict != Verdict::Rejected)
+        .filter_map(|w| w.fitted.as_ref())
+        .collect();
+    let own_kinds: Vec<Kind> = work
+        .iter()
+        .filter(|w| w.judged.verdict != Verdict::Rejected)
+        .filter_map(|w| w.own)
+        .collect();
+    let watched_s = usable
+        .iter()
+        .map(|f| watched_s(trace, &f.step))
+        .fold(0.0, f64::max);
+    let model = if usable.is_empty() {
+        None
+    } else {
+        pooled::model(trace, &usable, &own_kinds, &noise, watched_s)
+    };
+    let for_advice: Vec<_> = work.iter().map(|w| (w.own(), &w.judged)).collect();
+    let next_time = advice::next_time(trace, context, &noise, model.as_ref(), &for_advice, steps);
+    let kind = model.as_ref().map(|m| m.kind);
     Identification {
-        steps: Vec::new(),
-        model: None,
-        noise_sd_percent: None,
-        sigma_percent: None,
-        next_time: Vec::new(),
+        steps: work
+            .iter()
+            .zip(steps)
+            .map(|(work, step)| finished(trace, step, work, kind, &noise, context))
+            .collect(),
+        model,
+        noise_sd_percent: noise.sd,
+        sigma_percent: noise.sigma,
+        next_time,
         valve: None,
+    }
+}
+
+fn watched_s(trace: &Trace, step: &OpStep) -> f64 {
+    verdict::watched_until_s(trace, step) - verdict::arrived_s(trace, step)
+}
+
+fn fit_and_judge(
+    trace: &Trace,
+    step: &OpStep,
+    before: Option<&OpStep>,
+    noise: &Noise,
+    context: &Context,
+) -> Work {
+    let window = pooled::window(trace, step);
+    let fitted = if step.quiet.is_empty() {
+        Err("there are no samples before the move".to_owned())
+    } else {
+        choice::of_step(&Problem::new(vec![window.clone()]))
+            .map(|candidates| Fitted {
+                step: step.clone(),
+                window,
+                candidates,
+            })
+            .map_err(|error| error.to_string())
+    };
+    let own = fitted.as_ref().ok().map(|fitted| {
+        choice::choose(
+            &fitted.candidates,
+            watched_s(trace, step),
+            trace.interval_s(),
+        )
+        .kind
+    });
+    let mut grounds = Grounds {
+        trace,
+        noise,
+        bounds: &context.bounds,
+        not_before_s: context.not_before_s,
+        explained_slope: 0.0,
+    };
+    let judged = match (&fitted, own) {
+        (Ok(fitted), Some(kind)) => {
+            let own = fitted.of(kind);
+            grounds.explained_slope =
+                before.map_or(0.0, |b| explained_slope(trace, b, step, own.fit.gains[0]));
+            verdict::judge(step, Ok((own, &fitted.window.moves)), &grounds)
+        }
+        (Err(why), _) => verdict::judge(step, Err(why.clone()), &grounds),
+        (Ok(_), None) => verdict::judge(step, Err("no kind fits".to_owned()), &grounds),
+    };
+    Work {
+        fitted: fitted.ok(),
+        own,
+        judged,
+    }
+}
+
+/// Slope of an integrating PV that the move before explains, % per s: that of its quiet stretch and
+/// what its move added. A level driven on purpose does not drift.
+fn explained_slope(trace: &Trace, before: &OpStep, step: &OpStep, gain_per_s: f64) -> f64 {
+    let contiguous = before.window.end >= step.quiet.start && before.quiet.len() >= 3;
+    if !contiguous {
+        return 0.0;
+    }
+    let quiet = before.quiet.clone();
+    let slope = noise::line(&trace.t_s()[quiet.clone()], &trace.pv()[quiet]).slope;
+    slope + gain_per_s * (step.op_from - before.op_from)
+}
+
+fn compare_signs(work: &mut [Work], steps: &[OpStep]) {
+    let mut compared: Vec<(&mut Judged, f64, f64)> = work
+        .iter_mut()
+        .zip(steps)
+        .filter_map(|(work, step)| {
+            let gain = work.fitted.as_ref()?.of(work.own?).fit.gains[0];
+            Some((&mut work.judged, gain, step.op_to - step.op_from))
+        })
+        .collect();
+    verdict::compare_signs(&mut compared);
+}
+
+/// A step as the record holds it; `kind` is that of the model.
+fn finished(
+    trace: &Trace,
+    step: &OpStep,
+    work: &Work,
+    kind: Option<Kind>,
+    noise: &Noise,
+    context: &Context,
+) -> Step {
+    let usable = work.judged.verdict != Verdict::Rejected;
+    let fit = work
+        .fitted
+        .as_ref()
+        .zip(kind)
+        .filter(|_| usable)
+        .map(|(fitted, kind)| {
+            pooled::step_fit(
+                fitted.of(kind),
+                &fitted.window.pv,
+                noise,
+                trace.interval_s(),
+            )
+        });
+    let integrates = kind.or(work.own).is_some_and(Kind::integrates);
+    let mut reading = reading::read(trace, step, noise, integrates);
+    if let (Some(reading), Some(fit)) = (&mut reading, &fit) {
+        reading.differs = reading::differs(reading, fit, trace.interval_s());
+    }
+    let (from, to) = reading::ends(trace, step);
+    let seconds = |range: &std::ops::Range<usize>| {
+        let times = &trace.t_s()[range.clone()];
+        [
+            times.first().copied().unwrap_or(step.at_s),
+            times.last().copied().unwrap_or(step.at_s),
+        ]
+    };
+    Step {
+        number: step.number,
+        at: context.clock.at(step.at_s),
+        at_s: step.at_s,
+        op_from: context.op_span.engineering(step.op_from),
+        op_to: context.op_span.engineering(step.op_to),
+        pv_from: context.pv_span.engineering(from),
+        pv_to: context.pv_span.engineering(to),
+        window_s: seconds(&step.window),
+        quiet_s: seconds(&step.quiet),
+        pulse: step.pulse,
+        verdict: work.judged.verdict,
+        reasons: work.judged.reasons.clone(),
+        checks: work.judged.checks.clone(),
+        reading,
+        fit,
     }
 }

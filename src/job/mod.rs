@@ -6,6 +6,7 @@ mod new;
 pub mod row;
 mod row_reader;
 pub mod schedule;
+mod templates;
 mod toml_reader;
 
 use crate::notice::{Place, Problem, nearest};

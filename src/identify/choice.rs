@@ -1,0 +1,234 @@
+//! The choice of the kind of model: by BIC with the effective number of samples.
+//!
+//! BIC: G. Schwarz, Annals of Statistics 6 (1978) 461-464.
+
+use super::Alternative;
+use super::covariance::{self, Memory};
+use super::least_squares::{Base, Fit, FitError, Problem};
+use super::search;
+use super::words::time_text;
+use crate::model::Kind;
+
+/// A richer model has to be better by more than this in BIC: odds of about 150 to 1.
+const CLEARLY: f64 = 10.0;
+/// Beyond this many times what was watched, a time constant is not seen to end: the PV did not bend.
+const UNBENT: f64 = 3.0;
+/// Mean square residual below which there is nothing left to explain, %².
+const NOTHING_LEFT: f64 = 1e-10;
+
+/// A fit with what its residual remembers.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Candidate {
+    pub fit: Fit,
+    pub memory: Memory,
+    /// Base of each window.
+    pub bases: Vec<Base>,
+}
+
+/// BIC of a fit for a given number of samples that count, less a constant common to all fits.
+fn bic(fit: &Fit, effective: f64) -> f64 {
+    let mean_square = (fit.rss / fit.rows as f64).max(NOTHING_LEFT);
+    effective * libm::log(mean_square) + fit.parameters as f64 * libm::log(effective)
+}
+
+fn lengths(problem: &Problem) -> Vec<usize> {
+    problem.windows.iter().map(|w| w.t_s.len()).collect()
+}
+
+fn candidate(
+    problem: &Problem,
+    kind: Kind,
+    hints: &[super::least_squares::Point],
+) -> Result<Candidate, FitError> {
+    let fit = search::fit(problem, kind, hints)?;
+    Ok(Candidate {
+        memory: covariance::memory(&fit, &lengths(problem)),
+        fit,
+        bases: problem.windows.iter().map(|w| w.base).collect(),
+    })
+}
+
+fn with_bases(problem: &Problem, base: impl Fn(usize) -> Base) -> Problem {
+    let mut problem = problem.clone();
+    for (k, window) in problem.windows.iter_mut().enumerate() {
+        window.base = base(k);
+    }
+    problem
+}
+
+/// Fits of all four kinds to one step. A slope is always free for integrating kinds, whose OP may be
+/// off balance before the move; others get one only where it earns its place.
+pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
+    let sloped = with_bases(problem, |_| Base::LevelAndSlope);
+    let mut found = Vec::new();
+    for kind in Kind::ALL {
+        if kind.integrates() {
+            found.push(candidate(&sloped, kind, &[])?);
+            continue;
+        }
+        let level = candidate(problem, kind, &[])?;
+        let slope = candidate(&sloped, kind, &[level.fit.point])?;
+        let effective = slope.fit.rows as f64 / slope.memory.factor;
+        let gained = bic(&level.fit, effective) - bic(&slope.fit, effective);
+        found.push(if gained > CLEARLY { slope } else { level });
+    }
+    Ok(found)
+}
+
+/// Fits of all four kinds to several steps; `bases` are those that each step's own fit of a kind
+/// took, `hints` its points.
+pub(crate) fn of_steps(
+    problem: &Problem,
+    bases: impl Fn(Kind, usize) -> Base,
+    hints: impl Fn(Kind) -> Vec<super::least_squares::Point>,
+) -> Result<Vec<Candidate>, FitError> {
+    Kind::ALL
+        .iter()
+        .map(|&kind| {
+            let problem = with_bases(problem, |k| bases(kind, k));
+            candidate(&problem, kind, &hints(kind))
+        })
+        .collect()
+}
+
+/// What was chosen and why the others were not.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Choice {
+    pub kind: Kind,
+    pub undecided: Option<String>,
+    pub alternatives: Vec<Alternative>,
+}
+
+/// Controller gain and integral time of a fit by SIMC with τc = θe (S. Skogestad, J. Process Control
+/// 13 (2003) 291-309), in the fit's own units; θe at least `interval_s`.
+fn settings(fit: &Fit, interval_s: f64) -> (f64, f64) {
+    let (tau, tau2) = fit.point.lags(fit.kind);
+    let gain = fit.gains[0].abs();
+    // The half rule: half of a neglected lag is dead time, half goes to the lag before it.
+    let (tau, theta) = match fit.kind {
+        Kind::FirstOrder => (tau, fit.point.dead_time_s),
+        Kind::SecondOrder => (tau + tau2 / 2.0, fit.point.dead_time_s + tau2 / 2.0),
+        Kind::Integrating => (f64::INFINITY, fit.point.dead_time_s),
+        Kind::IntegratingLag => (f64::INFINITY, fit.point.dead_time_s + tau / 2.0),
+    };
+    let theta = theta.max(interval_s);
+    if fit.kind.integrates() {
+        (1.0 / (gain * 2.0 * theta), 8.0 * theta)
+    } else {
+        (tau / (gain * 2.0 * theta), tau.min(8.0 * theta))
+    }
+}
+
+/// Words for a kind.
+pub(crate) fn kind_words(kind: Kind) -> &'static str {
+    match kind {
+        Kind::FirstOrder => "first order",
+        Kind::SecondOrder => "second order",
+        Kind::Integrating => "integrating",
+        Kind::IntegratingLag => "integrating with a lag",
+    }
+}
+
+/// Chooses among fits of all four kinds, in the order of [`Kind::ALL`].
+pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Choice {
+    let least = found
+        .iter()
+        .min_by(|a, b| a.fit.rss.total_cmp(&b.fit.rss))
+        .expect("there are four candidates");
+    let effective = least.fit.rows as f64 / least.memory.factor;
+    let bics: Vec<f64> = found.iter().map(|c| bic(&c.fit, effective)).collect();
+    // Within a family the simpler one stands unless the richer one is clearly better.
+    let richer = |simple: usize| {
+        if bics[simple] - bics[simple + 1] > CLEARLY {
+            simple + 1
+        } else {
+            simple
+        }
+    };
+    let (settling, integrating) = (richer(0), richer(2));
+    let excess = bics[integrating] - bics[settling];
+    let lag_s = found[settling].fit.point.lags(found[settling].fit.kind).0;
+    let unbent = lag_s > UNBENT * watched_s;
+    let mut undecided = None;
+    let chosen = if excess > CLEARLY && !unbent {
+        settling
+    } else if excess < -CLEARLY {
+        integrating
+    } else {
+        let (kc_s, ti_s) = settings(&found[settling].fit, interval_s);
+        let (kc_i, ti_i) = settings(&found[integrating].fit, interval_s);
+        let near = |a: f64, b: f64| (a - b).abs() <= 0.1 * b.abs();
+        let slower = if kc_s / ti_s < kc_i / ti_i {
+            settling
+        } else {
+            integrating
+        };
+        if near(kc_s, kc_i) && near(ti_s, ti_i) {
+            // Nothing hangs on it.
+            if unbent { integrating } else { slower }
+        } else {
+            undecided = Some(format!(
+                "The PV was not watched for long enough to tell a process that settles \
+                 ({}, time constant about {}) from one that integrates; designed for \"{}\", \
+                 whose settings are the slower",
+                kind_words(found[settling].fit.kind),
+                time_text(lag_s),
+                kind_words(found[slower].fit.kind),
+            ));
+            slower
+        }
+    };
+    let alternatives = (0..found.len())
+        .filter(|&k| k != chosen)
+        .map(|k| Alternative {
+            kind: found[k].fit.kind,
+            bic: bics[k] - bics[chosen],
+            rmse_percent: found[k].fit.rmse(),
+            why_not: why_not(
+                &found[k].fit,
+                &found[chosen].fit,
+                bics[k] - bics[chosen],
+                undecided.is_some(),
+            ),
+        })
+        .collect();
+    Choice {
+        kind: found[chosen].fit.kind,
+        undecided,
+        alternatives,
+    }
+}
+
+/// Why a kind was not chosen, in words.
+fn why_not(other: &Fit, chosen: &Fit, excess: f64, undecided: bool) -> String {
+    let times = libm::sqrt(other.rss / chosen.rss.max(f64::MIN_POSITIVE));
+    let higher = if excess >= 0.5 {
+        format!("BIC higher by {excess:.0}")
+    } else {
+        format!("BIC lower by {:.0}, too little to count", -excess)
+    };
+    let left = if times > 100.0 {
+        "leaves more than a hundred times as much unexplained".to_owned()
+    } else if times > 1.05 {
+        format!("leaves {times:.1} times as much unexplained")
+    } else {
+        "explains the PV no better".to_owned()
+    };
+    match (other.kind.integrates(), chosen.kind.integrates()) {
+        (true, false) if undecided => {
+            format!("not ruled out: {left} ({higher}), but its settings are the faster")
+        }
+        (false, true) if undecided => {
+            format!("not ruled out: {left} ({higher}), but its settings are the faster")
+        }
+        (true, false) => format!("the PV settles: it {left} ({higher})"),
+        (false, true) if excess > CLEARLY => {
+            format!("the PV does not settle: it {left} ({higher})")
+        }
+        (false, true) => format!("the PV shows no sign of settling: it {left} ({higher})"),
+        _ if other.parameters > chosen.parameters && times <= 1.0 => {
+            format!("one more time constant changes nothing that can be told from noise ({higher})")
+        }
+        _ => format!("it {left} ({higher})"),
+    }
+}

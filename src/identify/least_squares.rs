@@ -1,0 +1,647 @@
+//! Separable least squares on windows of a log: gain and base are solved inside, the search is
+//! over dead time and lags only.
+//!
+//! Output error by variable projection (G.H. Golub, V. Pereyra, SIAM J. Numer. Anal. 10 (1973)
+//! 413-432) with the Jacobian of L. Kaufman (BIT 15 (1975) 49-57) and the damping of
+//! D.W. Marquardt (J. SIAM 11 (1963) 431-441).
+
+use super::response::{self, Answer};
+use super::search;
+use crate::model::{Kind, ProcessModel};
+use std::ops::Range;
+use thiserror::Error;
+
+/// What the PV of a window stands on beside the answer to the OP.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Base {
+    /// Nothing: the PV is 0 before the move.
+    Nothing,
+    /// A level.
+    Level,
+    /// A level and a constant slope.
+    LevelAndSlope,
+}
+
+impl Base {
+    fn parameters(self) -> usize {
+        match self {
+            Base::Nothing => 0,
+            Base::Level => 1,
+            Base::LevelAndSlope => 2,
+        }
+    }
+}
+
+/// A stretch of a log for a fit. Times increase; second 0 is best near the move.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Window {
+    /// Times of the samples, s.
+    pub t_s: Vec<f64>,
+    /// PV, %.
+    pub pv: Vec<f64>,
+    /// The OP as logged: (time, deviation from its value at rest from then on, %), in order.
+    pub moves: Vec<(f64, f64)>,
+    /// What the PV stands on.
+    pub base: Base,
+}
+
+/// What to fit.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Problem {
+    /// The stretches; each has its own base.
+    pub windows: Vec<Window>,
+    /// Whether each window has a gain of its own; one gain for all otherwise.
+    pub gain_per_window: bool,
+    /// Whether the process may be moving at the first move: its rate then is free.
+    pub moving_at_start: bool,
+    /// Dead time, s, where it is known and not searched.
+    pub fixed_dead_time_s: Option<f64>,
+}
+
+impl Problem {
+    /// A fit of gain, base, lags and dead time, one gain for all windows, each at rest at its start.
+    pub fn new(windows: Vec<Window>) -> Self {
+        Problem {
+            windows,
+            gain_per_window: false,
+            moving_at_start: false,
+            fixed_dead_time_s: None,
+        }
+    }
+
+    /// Number of samples.
+    pub fn rows(&self) -> usize {
+        self.windows.iter().map(|w| w.t_s.len()).sum()
+    }
+
+    /// Number of parameters of a fit of this kind, the linear ones counted.
+    pub fn parameters(&self, kind: Kind) -> usize {
+        let gains = if self.gain_per_window {
+            self.windows.len()
+        } else {
+            1
+        };
+        let bases: usize = self.windows.iter().map(|w| w.base.parameters()).sum();
+        gains * (1 + usize::from(self.moving_at_start)) + bases + searched(kind)
+            - usize::from(self.fixed_dead_time_s.is_some())
+    }
+}
+
+/// Why there is no fit.
+#[derive(Debug, Clone, PartialEq, Error)]
+pub enum FitError {
+    /// Fewer samples than the fit needs.
+    #[error("{rows} samples are too few for a fit of {parameters} parameters")]
+    TooFew {
+        /// Samples.
+        rows: usize,
+        /// Parameters.
+        parameters: usize,
+    },
+    /// OP did not move within the windows.
+    #[error("the OP does not move within the window")]
+    NoMove,
+    /// The PV does not move at all.
+    #[error("the PV does not change within the window")]
+    Still,
+}
+
+/// What the search moves: dead time, and the lags as the logarithm of their geometric mean and the
+/// square of half their log ratio. The response is smooth in these also where both lags are equal.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Point {
+    /// θ, s.
+    pub dead_time_s: f64,
+    /// m = ln √(τ τ₂); ln τ for one lag.
+    pub ln_lag: f64,
+    /// w = (ln(τ/τ₂)/2)², not negative; 0 for one lag.
+    pub spread: f64,
+}
+
+impl Point {
+    /// The point of these figures.
+    pub fn new(dead_time_s: f64, tau: f64, tau2: Option<f64>) -> Self {
+        let (ln_lag, spread) = match tau2 {
+            None => (libm::log(tau), 0.0),
+            Some(tau2) => {
+                let half = libm::log(tau / tau2) / 2.0;
+                (libm::log(tau) - half, half * half)
+            }
+        };
+        Point {
+            dead_time_s,
+            ln_lag,
+            spread,
+        }
+    }
+
+    /// (τ, τ₂), s, longer first; τ₂ is 0 for kinds with one lag.
+    pub fn lags(&self, kind: Kind) -> (f64, f64) {
+        if kind == Kind::SecondOrder {
+            let half = libm::sqrt(self.spread.max(0.0));
+            (libm::exp(self.ln_lag + half), libm::exp(self.ln_lag - half))
+        } else {
+            (libm::exp(self.ln_lag), 0.0)
+        }
+    }
+
+    pub(crate) fn get(&self, k: usize) -> f64 {
+        [self.dead_time_s, self.ln_lag, self.spread][k]
+    }
+
+    pub(crate) fn set(&mut self, k: usize, value: f64) {
+        match k {
+            0 => self.dead_time_s = value,
+            1 => self.ln_lag = value,
+            _ => self.spread = value,
+        }
+    }
+}
+
+/// How many of the point's coordinates a kind has.
+pub(crate) fn searched(kind: Kind) -> usize {
+    match kind {
+        Kind::Integrating => 1,
+        Kind::FirstOrder | Kind::IntegratingLag => 2,
+        Kind::SecondOrder => 3,
+    }
+}
+
+/// A least-squares fit.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Fit {
+    /// Which model.
+    pub kind: Kind,
+    /// Gain of each window, all the same unless they were fitted with their own.
+    pub gains: Vec<f64>,
+    /// Factor of the rate of the unit response for each window where `moving_at_start`, else 0.
+    pub rates: Vec<f64>,
+    /// Dead time and lags.
+    pub point: Point,
+    /// Level at second 0 and slope of each window, % and %/s.
+    pub bases: Vec<(f64, f64)>,
+    /// Sum of squared residuals, %².
+    pub rss: f64,
+    /// Samples.
+    pub rows: usize,
+    /// Parameters, linear ones counted.
+    pub parameters: usize,
+    /// Residual of each sample, window after window.
+    pub residual: Vec<f64>,
+    /// JᵀJ over gain (relative), dead time, m, w, bases projected out; searched ones only. Empty where
+    /// each window has its own gain.
+    pub information: Vec<Vec<f64>>,
+}
+
+impl Fit {
+    /// The fitted model, with the gain of the first window.
+    pub fn process(&self) -> ProcessModel {
+        let (tau, tau2) = self.point.lags(self.kind);
+        ProcessModel::of_kind(self.kind, self.gains[0], tau, tau2, self.point.dead_time_s)
+    }
+
+    /// Root mean square of the residual, %.
+    pub fn rmse(&self) -> f64 {
+        libm::sqrt(self.rss / self.rows as f64)
+    }
+}
+
+/// Fits one kind to all samples, from several starts of its own.
+///
+/// # Errors
+/// Where the samples cannot carry a fit.
+pub fn fit(problem: &Problem, kind: Kind) -> Result<Fit, FitError> {
+    search::fit(problem, kind, &[])
+}
+
+/// A window in the flattened rows of [`Prepared`].
+struct Rows {
+    rows: Range<usize>,
+    moves: Vec<(f64, f64)>,
+    base: Base,
+    mean_t: f64,
+    /// Σ (t − mean)².
+    square_t: f64,
+}
+
+/// Bounds of the search.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Bounds {
+    pub low: [f64; 3],
+    pub high: [f64; 3],
+}
+
+impl Bounds {
+    fn clip(&self, mut point: Point) -> Point {
+        for k in 0..3 {
+            point.set(k, point.get(k).max(self.low[k]).min(self.high[k]));
+        }
+        point
+    }
+}
+
+/// A problem laid out for evaluation, with its work space.
+pub(crate) struct Prepared {
+    kind: Kind,
+    windows: Vec<Rows>,
+    /// Rows that share linear parameters.
+    groups: Vec<Range<usize>>,
+    t_s: Vec<f64>,
+    /// PV with the bases projected out.
+    pv: Vec<f64>,
+    /// Means and slopes that were projected out of the PV.
+    pv_base: Vec<(f64, f64)>,
+    linear: usize,
+    searched: usize,
+    columns: Vec<Vec<f64>>,
+    residual: Vec<f64>,
+}
+
+/// What one evaluation found.
+#[derive(Debug, Clone)]
+pub(crate) struct Evaluation {
+    pub rss: f64,
+    /// Linear factors (gain, rate) of each group.
+    factors: Vec<[f64; 2]>,
+    /// Normal matrix and right-hand side of the step, linear parameters projected out.
+    normal: [[f64; 3]; 3],
+    rhs: [f64; 3],
+    /// Means and slopes projected out of the linear columns, by window and column.
+    column_base: Vec<[(f64, f64); 2]>,
+}
+
+fn dot(a: &[f64], b: &[f64]) -> f64 {
+    // Four sums side by side: quicker, and their rounding errors do not line up.
+    let mut sums = [0.0; 4];
+    let (a4, b4) = (a.chunks_exact(4), b.chunks_exact(4));
+    let tail: f64 = a4
+        .remainder()
+        .iter()
+        .zip(b4.remainder())
+        .map(|(x, y)| x * y)
+        .sum();
+    for (x, y) in a4.zip(b4) {
+        for k in 0..4 {
+            sums[k] += x[k] * y[k];
+        }
+    }
+    (sums[0] + sums[1]) + (sums[2] + sums[3]) + tail
+}
+
+/// Takes level and slope out of one window of a column; gives what was taken (mean, slope).
+fn project(window: &Rows, t_s: &[f64], column: &mut [f64]) -> (f64, f64) {
+    if window.base == Base::Nothing {
+        return (0.0, 0.0);
+    }
+    let column = &mut column[window.rows.clone()];
+    let t_s = &t_s[window.rows.clone()];
+    let mean = column.iter().sum::<f64>() / column.len() as f64;
+    for value in column.iter_mut() {
+        *value -= mean;
+    }
+    if window.base == Base::Level || window.square_t <= 0.0 {
+        return (mean, 0.0);
+    }
+    let slope = column
+        .iter()
+        .zip(t_s)
+        .map(|(value, t)| value * (t - window.mean_t))
+        .sum::<f64>()
+        / window.square_t;
+    for (value, t) in column.iter_mut().zip(t_s) {
+        *value -= slope * (t - window.mean_t);
+    }
+    (mean, slope)
+}
+
+impl Prepared {
+    pub(crate) fn new(problem: &Problem, kind: Kind) -> Self {
+        let (mut t_s, mut pv, mut windows) = (Vec::new(), Vec::new(), Vec::new());
+        for window in &problem.windows {
+            let start = t_s.len();
+            t_s.extend_from_slice(&window.t_s);
+            pv.extend_from_slice(&window.pv);
+            let mean_t = window.t_s.iter().sum::<f64>() / window.t_s.len().max(1) as f64;
+            windows.push(Rows {
+                rows: start..t_s.len(),
+                moves: window.moves.clone(),
+                base: window.base,
+                mean_t,
+                square_t: window.t_s.iter().map(|t| (t - mean_t) * (t - mean_t)).sum(),
+            });
+        }
+        let pv_base = windows.iter().map(|w| project(w, &t_s, &mut pv)).collect();
+        let groups = if problem.gain_per_window {
+            windows.iter().map(|w| w.rows.clone()).collect()
+        } else {
+            vec![0..t_s.len()]
+        };
+        let linear = 1 + usize::from(problem.moving_at_start);
+        let rows = t_s.len();
+        Prepared {
+            kind,
+            windows,
+            groups,
+            pv,
+            pv_base,
+            linear,
+            searched: searched(kind),
+            columns: vec![vec![0.0; rows]; linear * (1 + searched(kind))],
+            residual: vec![0.0; rows],
+            t_s,
+        }
+    }
+
+    /// Sum of squares of the PV about its bases: what a fit has to explain.
+    pub(crate) fn total(&self) -> f64 {
+        dot(&self.pv, &self.pv)
+    }
+
+    /// Residual sum of squares and the step's normal equations at a point; leaves the residual.
+    pub(crate) fn evaluate(&mut self, point: &Point) -> Evaluation {
+        let per_column = 1 + self.searched;
+        let linear = self.linear;
+        for window in &self.windows {
+            let start = window.rows.start;
+            let columns = &mut self.columns;
+            let searched = self.searched;
+            response::answers(
+                self.kind,
+                point,
+                &window.moves,
+                &self.t_s[window.rows.clone()],
+                |row, a: Answer| {
+                    columns[0][start + row] = a.value;
+                    for k in 0..searched {
+                        columns[1 + k][start + row] = a.slopes[k];
+                    }
+                    if linear == 2 {
+                        columns[per_column][start + row] = a.rate;
+                        for k in 0..searched {
+                            columns[per_column + 1 + k][start + row] = a.rate_slopes[k];
+                        }
+                    }
+                },
+            );
+        }
+        let mut column_base = Vec::with_capacity(self.windows.len());
+        for window in &self.windows {
+            let mut taken = [(0.0, 0.0); 2];
+            for (c, column) in self.columns.iter_mut().enumerate() {
+                let base = project(window, &self.t_s, column);
+                if c % per_column == 0 {
+                    taken[c / per_column] = base;
+                }
+            }
+            column_base.push(taken);
+        }
+        let mut evaluation = Evaluation {
+            rss: 0.0,
+            factors: Vec::with_capacity(self.groups.len()),
+            normal: [[0.0; 3]; 3],
+            rhs: [0.0; 3],
+            column_base,
+        };
+        for rows in self.groups.clone() {
+            self.add_group(rows, &mut evaluation);
+        }
+        evaluation
+    }
+
+    /// Solves the linear parameters of a group of rows and adds its part of the normal equations.
+    fn add_group(&mut self, rows: Range<usize>, evaluation: &mut Evaluation) {
+        let per_column = 1 + self.searched;
+        let pv = &self.pv[rows.clone()];
+        let first = &self.columns[0][rows.clone()];
+        let g00 = dot(first, first);
+        let b0 = dot(first, pv);
+        let mut factors = [if g00 > 0.0 { b0 / g00 } else { 0.0 }, 0.0];
+        let (mut g01, mut g11) = (0.0, 0.0);
+        if self.linear == 2 {
+            let second = &self.columns[per_column][rows.clone()];
+            (g01, g11) = (dot(first, second), dot(second, second));
+            let b1 = dot(second, pv);
+            let determinant = g00 * g11 - g01 * g01;
+            if determinant > 1e-14 * g00 * g11 {
+                factors = [
+                    (b0 * g11 - b1 * g01) / determinant,
+                    (b1 * g00 - b0 * g01) / determinant,
+                ];
+            }
+        }
+        let residual = &mut self.residual[rows.clone()];
+        for ((r, y), g) in residual.iter_mut().zip(pv).zip(first) {
+            *r = y - factors[0] * g;
+        }
+        if self.linear == 2 {
+            let second = &self.columns[per_column][rows.clone()];
+            for (r, g) in residual.iter_mut().zip(second) {
+                *r -= factors[1] * g;
+            }
+        }
+        // The columns of the Jacobian, in place of the derivatives of the first response.
+        for k in 0..self.searched {
+            let (head, rest) = self.columns.split_at_mut(per_column);
+            let column = &mut head[1 + k][rows.clone()];
+            for value in column.iter_mut() {
+                *value *= factors[0];
+            }
+            if self.linear == 2 {
+                for (value, rate) in column.iter_mut().zip(&rest[1 + k][rows.clone()]) {
+                    *value += factors[1] * rate;
+                }
+            }
+        }
+        let residual = &self.residual[rows.clone()];
+        evaluation.rss += dot(residual, residual);
+        evaluation.factors.push(factors);
+        let mut along = [[0.0; 2]; 3];
+        for (k, along) in along.iter_mut().enumerate().take(self.searched) {
+            let column = &self.columns[1 + k][rows.clone()];
+            evaluation.rhs[k] += dot(column, residual);
+            along[0] = dot(column, &self.columns[0][rows.clone()]);
+            if self.linear == 2 {
+                along[1] = dot(column, &self.columns[per_column][rows.clone()]);
+            }
+        }
+        let determinant = g00 * g11 - g01 * g01;
+        for j in 0..self.searched {
+            for k in 0..=j {
+                let plain = dot(
+                    &self.columns[1 + j][rows.clone()],
+                    &self.columns[1 + k][rows.clone()],
+                );
+                let explained = if self.linear == 2 && determinant > 1e-14 * g00 * g11 {
+                    let [a, b] = along[j];
+                    let [c, d] = along[k];
+                    (a * c * g11 - (a * d + b * c) * g01 + b * d * g00) / determinant
+                } else if g00 > 0.0 {
+                    along[j][0] * along[k][0] / g00
+                } else {
+                    0.0
+                };
+                let value = plain - explained;
+                evaluation.normal[j][k] += value;
+                if j != k {
+                    evaluation.normal[k][j] += value;
+                }
+            }
+        }
+    }
+
+    /// JᵀJ over relative gain and the searched parameters, from the columns of the latest evaluation.
+    fn information(&self, evaluation: &Evaluation, fixed_dead_time: bool) -> Vec<Vec<f64>> {
+        let gain = evaluation.factors[0][0];
+        let mut columns: Vec<Vec<f64>> = vec![self.columns[0].iter().map(|g| g * gain).collect()];
+        for k in usize::from(fixed_dead_time)..self.searched {
+            columns.push(self.columns[1 + k].clone());
+        }
+        columns
+            .iter()
+            .map(|a| columns.iter().map(|b| dot(a, b)).collect())
+            .collect()
+    }
+
+    /// The fit at a point.
+    pub(crate) fn finish(&mut self, problem: &Problem, point: Point) -> Fit {
+        let evaluation = self.evaluate(&point);
+        let common = self.groups.len() == 1;
+        let factors = |w: usize| evaluation.factors[if common { 0 } else { w }];
+        let bases = (0..self.windows.len())
+            .map(|w| {
+                let (mean, slope) = self.pv_base[w];
+                let taken = evaluation.column_base[w];
+                let [gain, rate] = factors(w);
+                let slope = slope - gain * taken[0].1 - rate * taken[1].1;
+                let mean = mean - gain * taken[0].0 - rate * taken[1].0;
+                (mean - slope * self.windows[w].mean_t, slope)
+            })
+            .collect();
+        Fit {
+            kind: self.kind,
+            gains: (0..self.windows.len()).map(|w| factors(w)[0]).collect(),
+            rates: (0..self.windows.len()).map(|w| factors(w)[1]).collect(),
+            point,
+            bases,
+            rss: evaluation.rss,
+            rows: self.t_s.len(),
+            parameters: problem.parameters(self.kind),
+            residual: self.residual.clone(),
+            information: if problem.gain_per_window {
+                Vec::new()
+            } else {
+                self.information(&evaluation, problem.fixed_dead_time_s.is_some())
+            },
+        }
+    }
+
+    /// Levenberg-Marquardt from `start` within the bounds; gives the best point and its sum of squares.
+    pub(crate) fn descend(&mut self, start: Point, bounds: &Bounds, rounds: usize) -> (Point, f64) {
+        let mut point = bounds.clip(start);
+        let mut here = self.evaluate(&point);
+        let mut damping = 1e-3;
+        for _ in 0..rounds {
+            let Some(step) = self.step(&here, &point, bounds, damping) else {
+                break;
+            };
+            let mut next = point;
+            for k in 0..self.searched {
+                // A lag moves by a factor of e² at most: beyond, the linear picture says nothing.
+                let most = if k == 0 { f64::INFINITY } else { 2.0 };
+                next.set(k, point.get(k) + step[k].clamp(-most, most));
+            }
+            let next = bounds.clip(next);
+            if next == point {
+                break;
+            }
+            let there = self.evaluate(&next);
+            let expected: f64 = (0..self.searched).map(|k| step[k] * here.rhs[k]).sum();
+            // Below the rounding of the sum of squares the step itself is the better judge.
+            let at_rounding = expected < 1e-10 * here.rss && there.rss < here.rss * (1.0 + 1e-11);
+            if there.rss < here.rss || at_rounding {
+                let moved = (0..self.searched)
+                    .map(|k| (next.get(k) - point.get(k)).abs() / (1e-3 + point.get(k).abs()))
+                    .fold(0.0, f64::max);
+                (point, here) = (next, there);
+                damping = if damping < 1e-9 { 0.0 } else { damping / 10.0 };
+                if moved < 1e-12 || expected < 1e-22 * here.rss {
+                    break;
+                }
+            } else {
+                if expected < 1e-13 * here.rss {
+                    break;
+                }
+                damping = (damping * 8.0).max(1e-6);
+                if damping > 1e9 {
+                    break;
+                }
+            }
+        }
+        (point, here.rss)
+    }
+
+    /// The damped step; parameters that stand at a bound and push outwards stay.
+    fn step(
+        &self,
+        here: &Evaluation,
+        point: &Point,
+        bounds: &Bounds,
+        damping: f64,
+    ) -> Option<[f64; 3]> {
+        let free: Vec<usize> = (0..self.searched)
+            .filter(|&k| {
+                let at = point.get(k);
+                here.normal[k][k] > 0.0
+                    && !(at <= bounds.low[k] && here.rhs[k] <= 0.0)
+                    && !(at >= bounds.high[k] && here.rhs[k] >= 0.0)
+            })
+            .collect();
+        let n = free.len();
+        if n == 0 {
+            return None;
+        }
+        // Cholesky of the scaled, damped normal matrix.
+        let scale = |k: usize| libm::sqrt(here.normal[k][k]);
+        let mut lower = [[0.0; 3]; 3];
+        for a in 0..n {
+            for b in 0..=a {
+                let (j, k) = (free[a], free[b]);
+                let mut value = here.normal[j][k] / (scale(j) * scale(k));
+                if a == b {
+                    value += damping;
+                }
+                for c in 0..b {
+                    value -= lower[a][c] * lower[b][c];
+                }
+                lower[a][b] = if a == b {
+                    libm::sqrt(value.max(1e-14))
+                } else {
+                    value / lower[b][b]
+                };
+            }
+        }
+        let mut solved = [0.0; 3];
+        for a in 0..n {
+            let mut value = here.rhs[free[a]] / scale(free[a]);
+            for c in 0..a {
+                value -= lower[a][c] * solved[c];
+            }
+            solved[a] = value / lower[a][a];
+        }
+        for a in (0..n).rev() {
+            for c in a + 1..n {
+                solved[a] -= lower[c][a] * solved[c];
+            }
+            solved[a] /= lower[a][a];
+        }
+        let mut step = [0.0; 3];
+        for (a, &k) in free.iter().enumerate() {
+            step[k] = solved[a] / scale(k);
+        }
+        step.iter().all(|s| s.is_finite()).then_some(step)
+    }
+}
+
+#[cfg(test)]
+#[path = "least_squares_tests.rs"]
+mod tests;
