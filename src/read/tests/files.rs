@@ -210,7 +210,7 @@ fn what_is_ambiguous_is_asked_for() {
     .refusal();
     assert_eq!(
         refusal,
-        "a.csv, line 2, column 1: the date 03/04/2026 reads as 3 April 2026 (day first) or as 4 March 2026 (month first), and no other row tells which\n    \
+        "a.csv, line 2, column \"Time\": the date 03/04/2026 reads as 3 April 2026 (day first) or as 4 March 2026 (month first), and no other row tells which\n    \
          add to job.toml: [[log]] with files = [\"a.csv\"] and dates = \"dmy\" or dates = \"mdy\""
     );
     let log = csv(&four_rows(
@@ -364,4 +364,61 @@ fn file_cells_are_split() {
     for outside in ["../a.csv", "/etc/a.csv", "C:\\a.csv", " ; "] {
         assert!(file_references(outside).is_err(), "{outside}");
     }
+}
+
+/// The same four rows as an open document, with dates and times of day in columns of their own.
+fn open_document() -> Vec<u8> {
+    use std::io::Write;
+    let mut rows = String::from("<table:table-row>");
+    for heading in ["Date", "Time", "TIC-204.PV", "TIC-204.OP"] {
+        rows.push_str(&format!(
+            "<table:table-cell office:value-type=\"string\"><text:p>{heading}</text:p></table:table-cell>"
+        ));
+    }
+    rows.push_str("</table:table-row>");
+    for (second, (pv, op)) in [(71.2, 40), (71.25, 40), (71.4, 45), (72.0, 45)]
+        .iter()
+        .enumerate()
+    {
+        rows.push_str(&format!(
+            "<table:table-row>\
+             <table:table-cell office:value-type=\"date\" office:date-value=\"2026-03-14\"><text:p>14.03.26</text:p></table:table-cell>\
+             <table:table-cell office:value-type=\"time\" office:time-value=\"PT09H05M{second:02}S\"><text:p>9:05</text:p></table:table-cell>\
+             <table:table-cell office:value-type=\"float\" office:value=\"{pv}\"><text:p>{pv}</text:p></table:table-cell>\
+             <table:table-cell office:value-type=\"float\" office:value=\"{op}\"><text:p>{op}</text:p></table:table-cell>\
+             </table:table-row>"
+        ));
+    }
+    let content = format!(
+        "<?xml version=\"1.0\" encoding=\"UTF-8\"?>\
+         <office:document-content xmlns:office=\"urn:oasis:names:tc:opendocument:xmlns:office:1.0\" \
+         xmlns:table=\"urn:oasis:names:tc:opendocument:xmlns:table:1.0\" \
+         xmlns:text=\"urn:oasis:names:tc:opendocument:xmlns:text:1.0\">\
+         <office:body><office:spreadsheet><table:table table:name=\"Trend\">{rows}</table:table>\
+         </office:spreadsheet></office:body></office:document-content>"
+    );
+    let manifest = "<?xml version=\"1.0\"?><manifest:manifest xmlns:manifest=\"urn:oasis:names:tc:opendocument:xmlns:manifest:1.0\"/>";
+    let mut archive = zip::ZipWriter::new(std::io::Cursor::new(Vec::new()));
+    let plain =
+        zip::write::SimpleFileOptions::default().compression_method(zip::CompressionMethod::Stored);
+    for (name, text) in [
+        ("mimetype", "application/vnd.oasis.opendocument.spreadsheet"),
+        ("META-INF/manifest.xml", manifest),
+        ("content.xml", content.as_str()),
+    ] {
+        archive.start_file(name, plain).expect("begun");
+        archive.write_all(text.as_bytes()).expect("written");
+    }
+    archive.finish().expect("finished").into_inner()
+}
+
+#[test]
+fn an_open_document_with_date_and_time_apart_is_read() {
+    let log = Logs::new("a.ods").with("a.ods", open_document()).read();
+    assert_four_rows(&log);
+    assert_eq!(
+        log.clock,
+        Clock::Dated("2026-03-14T09:05:00".parse().expect("a time"))
+    );
+    assert_eq!(log.sources[0].sheet.as_deref(), Some("Trend"));
 }
