@@ -37,7 +37,9 @@ pub enum TimeColumns {
 
 /// What is known of the clock beside the column itself.
 #[derive(Debug, Clone, Copy)]
-pub struct ClockRules {
+pub struct ClockRules<'a> {
+    /// Heading of the time column, for its place in a text file.
+    pub heading: Option<&'a str>,
     /// Order of day and month.
     pub dates: Option<DateOrder>,
     /// Date of the first row, where the log has only times of day.
@@ -175,7 +177,7 @@ pub fn read(
     table: &Table,
     rows: &[usize],
     columns: TimeColumns,
-    rules: &ClockRules,
+    rules: &ClockRules<'_>,
 ) -> Result<Moments, Problem> {
     let column = match columns {
         TimeColumns::Counted { interval_s } => return Ok(counted(rows.len(), interval_s)),
@@ -196,7 +198,7 @@ pub fn read(
         table
             .place()
             .row(table.row(rows[k]).number)
-            .column(column, None)
+            .column(column, rules.heading)
     };
     let count = |is: fn(&RowTime) -> bool| times.iter().filter(|time| is(time)).count();
     let cells = count(|time| matches!(time, RowTime::Cell(_)));
@@ -206,7 +208,7 @@ pub fn read(
     let most = cells.max(numbers).max(dated).max(undated);
     if most == 0 {
         return Err(Problem::error(
-            table.place().column(column, None),
+            table.place().column(column, rules.heading),
             "no row of this column holds a time",
         )
         .hint("name the time column in the schedule, or give interval_s in a [[log]] table of job.toml"));
@@ -266,7 +268,7 @@ fn real_dates(times: &[RowTime]) -> Moments {
     }
 }
 
-fn times_of_day(times: &[RowTime], rules: &ClockRules) -> Moments {
+fn times_of_day(times: &[RowTime], rules: &ClockRules<'_>) -> Moments {
     let base = rules
         .date
         .map_or(0, |date| microseconds(date.and_time(NaiveTime::MIN)));
@@ -296,7 +298,7 @@ fn times_of_day(times: &[RowTime], rules: &ClockRules) -> Moments {
 fn dates_as_text(
     table: &Table,
     times: &[RowTime],
-    rules: &ClockRules,
+    rules: &ClockRules<'_>,
     place: impl Fn(usize) -> Place,
 ) -> Result<Moments, Problem> {
     let dates: Vec<(usize, DateText)> = times
@@ -404,7 +406,12 @@ fn what_it_counts(values: &[f64], unit: Option<TimeUnit>) -> Count {
     }
 }
 
-fn plain_numbers(table: &Table, column: usize, times: &[RowTime], rules: &ClockRules) -> Moments {
+fn plain_numbers(
+    table: &Table,
+    column: usize,
+    times: &[RowTime],
+    rules: &ClockRules<'_>,
+) -> Moments {
     let values: Vec<f64> = times
         .iter()
         .filter_map(|time| match time {
@@ -436,7 +443,7 @@ fn plain_numbers(table: &Table, column: usize, times: &[RowTime], rules: &ClockR
         Count::Bare => {
             warnings.push(
                 Problem::warning(
-                    table.place().column(column, None),
+                    table.place().column(column, rules.heading),
                     "plain numbers without a unit are taken as elapsed seconds",
                 )
                 .hint("where that is wrong, give time_unit in a [[log]] table of job.toml"),

@@ -311,6 +311,10 @@ fn read_table(
         .and_then(|found| found.unit.as_deref())
         .and_then(TimeUnit::of);
     let clock_rules = ClockRules {
+        heading: roles
+            .found(Role::Time)
+            .map(|found| found.heading.as_str())
+            .filter(|heading| !heading.is_empty()),
         dates: rule.dates,
         date: rule.date,
         zone: rule.zone,

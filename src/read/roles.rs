@@ -182,7 +182,7 @@ impl Headings<'_> {
             };
             let why = match (&owner, tag) {
                 (Owner::This, Some(tag)) => format!("the heading bears the tag {tag}"),
-                _ => format!("the heading is usual for a {}", role.name()),
+                _ => format!("the heading is usual for the {}", role.name()),
             };
             return Ok(Some(self.role(role, column, why)));
         }
@@ -435,13 +435,13 @@ fn time_columns(
                 })
                 .collect();
             match exact.as_slice() {
-                [column] => single(*column, "the heading is usual for a time", found),
+                [column] => single(*column, "the heading is usual for the time", found),
                 _ => Err(headings.several(Role::Time, &by_heading)),
             }
         }
         ([], _, _) => {
             if let [column] = by_heading[..] {
-                return single(column, "the heading is usual for a time", found);
+                return single(column, "the heading is usual for the time", found);
             }
             // No usual heading: the only column that holds dates.
             let dated: Vec<usize> = (0..headings.table.width())
