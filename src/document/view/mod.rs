@@ -360,16 +360,6 @@ fn document(context: &Context) -> DocumentView {
     let d = &record.document;
     let l = &record.control_loop;
     let text = |value: &Option<String>| value.as_deref().map(tidy).unwrap_or_default();
-    let range = |range: &crate::record::Range| {
-        display::with_unit(
-            &format!(
-                "{} to {}",
-                display::plain(range.low, 6),
-                display::plain(range.high, 6)
-            ),
-            &range.unit,
-        )
-    };
     let controller = l
         .particulars
         .get("controller")
@@ -425,6 +415,12 @@ fn document(context: &Context) -> DocumentView {
             ],
         ],
     }
+}
+
+/// "60 to 140 °C".
+fn range(of: &crate::record::Range) -> String {
+    let end = |value| numbers::grouped(&display::plain(value, 6));
+    display::with_unit(&format!("{} to {}", end(of.low), end(of.high)), &of.unit)
 }
 
 fn sign_off(signatures: &[Signature]) -> Vec<SignatureView> {

@@ -556,7 +556,7 @@ fn predicted_table(context: &Context, found: &SettingsBlock, after: &SettingsBlo
     let peak = figure(&|b| {
         let deviation = load(b)?.peak_deviation_percent * context.pv_per_percent;
         Some(Cell::figure(
-            display::fixed(deviation, decimals),
+            super::numbers::grouped(&display::fixed(deviation, decimals)),
             context.pv_unit.clone(),
         ))
     });
