@@ -35,9 +35,9 @@ fn at(day: u32, hour: u32, minute: u32) -> NaiveDateTime {
         .expect("a time of day")
 }
 
-fn figure(name: &str, width_mm: f64, height_mm: f64) -> Figure {
+fn figure(name: &'static str, width_mm: f64, height_mm: f64) -> Figure {
     Figure {
-        name: name.to_owned(),
+        name,
         svg: format!(
             "<svg xmlns=\"http://www.w3.org/2000/svg\" width=\"{width_mm}mm\" height=\"{height_mm}mm\" \
              viewBox=\"0 0 {width_mm} {height_mm}\"><rect x=\"0.2\" y=\"0.2\" width=\"{}\" height=\"{}\" \
@@ -230,7 +230,7 @@ fn design() -> Design {
                          step 2 would have Ms above 2.0"
                 .to_owned(),
         governing_model: Some("step 2".to_owned()),
-        derivative: "derivative action is not asked for".to_owned(),
+        derivative: "Not used: the loop schedule does not ask for it.".to_owned(),
         limits: vec![
             limit(
                 LimitName::Target,

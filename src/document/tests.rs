@@ -473,7 +473,9 @@ fn a_dossier_opens_with_what_each_reader_needs() {
         enter,
         &[
             "Settings to enter",
-            "TIC-212 Standard form Proportional band 38 % 41.24 % Integral time 1.20 min 3.638 min",
+            "TIC-212 Standard form",
+            "Proportional band 38 % 41.24 %",
+            "Integral time 1.20 min 3.638 min",
             "under LM-SP-014 and LM-SP-021",
         ],
     );

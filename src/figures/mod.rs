@@ -4,7 +4,7 @@
 #[derive(Debug, Clone, PartialEq)]
 pub struct Figure {
     /// File name, e.g. "test.svg".
-    pub name: String,
+    pub name: &'static str,
     /// The drawing.
     pub svg: String,
     /// Width on paper, mm.

@@ -252,6 +252,15 @@ pub(super) fn capital(text: &str) -> String {
     }
 }
 
+/// A sentence that goes on after a colon.
+pub(super) fn lower(text: &str) -> String {
+    let mut letters = text.chars();
+    letters
+        .next()
+        .map(|first| first.to_lowercase().chain(letters).collect())
+        .unwrap_or_default()
+}
+
 /// A text that ends as a sentence does.
 pub(super) fn sentence(text: &str) -> String {
     let text = text.trim();
