@@ -81,6 +81,11 @@ impl Field {
             span,
         }
     }
+
+    /// A field that leaves its place blank where there is no value.
+    fn optional(label: &'static str, value: String, span: usize) -> Self {
+        Field::new(if value.is_empty() { "" } else { label }, value, span)
+    }
 }
 
 /// Number and title of a part.
@@ -389,7 +394,7 @@ fn document(context: &Context) -> DocumentView {
             vec![
                 Field::new("Legal owner", tidy(&d.owner), 2),
                 Field::new("Plant", tidy(&d.plant), 2),
-                Field::new("Area", text(&d.area), 2),
+                Field::optional("Area", text(&d.area), 2),
             ],
             vec![
                 Field::new("Document number", tidy(&d.number), 2),
@@ -405,7 +410,7 @@ fn document(context: &Context) -> DocumentView {
             vec![
                 Field::new("Created by", text(&d.creator), 1),
                 Field::new("Approved by", text(&d.approver), 1),
-                Field::new("Controller", controller, 2),
+                Field::optional("Controller", controller, 2),
                 Field::new("PV range", range(&l.pv), 1),
                 Field::new(
                     "Scan",
@@ -438,7 +443,7 @@ fn span_of(log: &Log, with_seconds: bool) -> String {
     match (log.from, log.to) {
         (Moment::Dated(from), Moment::Dated(to)) => dated_span(from, to, with_seconds),
         (from, to) => format!(
-            "for {}, by a log that bears no date",
+            "for {} (the log bears no date)",
             display::duration(elapsed(to) - elapsed(from))
         ),
     }

@@ -76,7 +76,7 @@ fn binding(design: &Design) -> String {
     let mut text = sentence(&bound(&design.binding_detail));
     if !design.derivative.is_empty() {
         let derivative = lower(&sentence(&bound(&design.derivative)));
-        text = format!("{text} Derivative action: {derivative}");
+        text = format!("{text} Derivative action is {derivative}");
     }
     text
 }

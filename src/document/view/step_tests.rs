@@ -33,7 +33,7 @@ pub(super) struct StepTests {
     rows: Vec<Vec<String>>,
     /// The reasons of each step's verdict.
     reasons: Vec<String>,
-    /// Whether the reasons need a line of their own under each step.
+    /// Whether no column is kept for the reasons: they stand below their steps, or there are none.
     reasons_below: bool,
     note: String,
 }
