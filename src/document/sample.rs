@@ -230,7 +230,7 @@ fn design() -> Design {
                          step 2 would have Ms above 2.0"
                 .to_owned(),
         governing_model: Some("step 2".to_owned()),
-        derivative: "derivative action is not asked for".to_owned(),
+        derivative: "Not used: the loop schedule does not ask for it.".to_owned(),
         limits: vec![
             limit(
                 LimitName::Target,

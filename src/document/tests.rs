@@ -154,7 +154,7 @@ fn a_withheld_record_recommends_nothing_anywhere() {
             "Withheld. No step of the test can be used. The loop stays as found.",
             "Proportional band 38 %",
             "Nothing was entered.",
-            "Steps 1, 2, 3 PV changed by 1.5 times its noise; at least 5 times is needed.",
+            "Steps 1 to 3 PV changed by 1.5 times its noise; at least 5 times is needed.",
             "Step 4 OP stood at the end of its range (100 %).",
             "Move OP by at least 7 %, once up and once down.",
             "Tested by A. Quill",
@@ -215,7 +215,7 @@ fn an_integrating_process_is_told_by_its_slope_and_the_controller_in_its_own_uni
     holds(
         &pages[1],
         &[
-            "Tested 2026-03-11 for 129 min, by a log that bears no date",
+            "Tested 2026-03-11 for 129 min (the log bears no date)",
             "1 30.0 min 42 47 98.0 101.8 −0.120 8.0 4.5 accepted",
         ],
     );
@@ -473,7 +473,9 @@ fn a_dossier_opens_with_what_each_reader_needs() {
         enter,
         &[
             "Settings to enter",
-            "TIC-212 Proportional band 38 % 41.24 %",
+            "TIC-212 Standard form",
+            "Proportional band 38 % 41.24 %",
+            "Integral time 1.20 min 3.638 min",
             "under LM-SP-014 and LM-SP-021",
         ],
     );

@@ -119,19 +119,10 @@ fn particulars(context: &Context) -> Vec<Entry> {
             entries.push(Entry::new(label, text));
         }
     };
-    add("Ranges", {
-        let range = |r: &crate::record::Range| {
-            display::with_unit(
-                &format!(
-                    "{} to {}",
-                    display::plain(r.low, 6),
-                    display::plain(r.high, 6)
-                ),
-                &r.unit,
-            )
-        };
-        format!("PV {}, OP {}.", range(&l.pv), range(&l.op))
-    });
+    add(
+        "Ranges",
+        format!("PV {}, OP {}.", super::range(&l.pv), super::range(&l.op)),
+    );
     add("Controller", controller(context));
     add("Purpose", purpose(context));
     let mut cascade = Vec::new();

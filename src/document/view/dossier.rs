@@ -190,7 +190,7 @@ fn document(input: &DossierInput, status: Status) -> DocumentView {
             vec![
                 Field::new("Legal owner", tidy(&input.owner), 2),
                 Field::new("Plant", tidy(&input.plant), 2),
-                Field::new("Area", text(&input.area), 2),
+                Field::optional("Area", text(&input.area), 2),
             ],
             vec![
                 Field::new("Document number", tidy(&input.number), 2),
@@ -206,7 +206,7 @@ fn document(input: &DossierInput, status: Status) -> DocumentView {
             vec![
                 Field::new("Created by", creator.unwrap_or_default(), 1),
                 Field::new("Approved by", named("Approved"), 1),
-                Field::new("Client", text(&input.client), 4),
+                Field::optional("Client", text(&input.client), 4),
             ],
         ],
     }

@@ -81,6 +81,11 @@ impl Field {
             span,
         }
     }
+
+    /// A field that leaves its place blank where there is no value.
+    fn optional(label: &'static str, value: String, span: usize) -> Self {
+        Field::new(if value.is_empty() { "" } else { label }, value, span)
+    }
 }
 
 /// Number and title of a part.
@@ -360,16 +365,6 @@ fn document(context: &Context) -> DocumentView {
     let d = &record.document;
     let l = &record.control_loop;
     let text = |value: &Option<String>| value.as_deref().map(tidy).unwrap_or_default();
-    let range = |range: &crate::record::Range| {
-        display::with_unit(
-            &format!(
-                "{} to {}",
-                display::plain(range.low, 6),
-                display::plain(range.high, 6)
-            ),
-            &range.unit,
-        )
-    };
     let controller = l
         .particulars
         .get("controller")
@@ -399,7 +394,7 @@ fn document(context: &Context) -> DocumentView {
             vec![
                 Field::new("Legal owner", tidy(&d.owner), 2),
                 Field::new("Plant", tidy(&d.plant), 2),
-                Field::new("Area", text(&d.area), 2),
+                Field::optional("Area", text(&d.area), 2),
             ],
             vec![
                 Field::new("Document number", tidy(&d.number), 2),
@@ -415,7 +410,7 @@ fn document(context: &Context) -> DocumentView {
             vec![
                 Field::new("Created by", text(&d.creator), 1),
                 Field::new("Approved by", text(&d.approver), 1),
-                Field::new("Controller", controller, 2),
+                Field::optional("Controller", controller, 2),
                 Field::new("PV range", range(&l.pv), 1),
                 Field::new(
                     "Scan",
@@ -425,6 +420,12 @@ fn document(context: &Context) -> DocumentView {
             ],
         ],
     }
+}
+
+/// "60 to 140 °C".
+fn range(of: &crate::record::Range) -> String {
+    let end = |value| numbers::grouped(&display::plain(value, 6));
+    display::with_unit(&format!("{} to {}", end(of.low), end(of.high)), &of.unit)
 }
 
 fn sign_off(signatures: &[Signature]) -> Vec<SignatureView> {
@@ -442,7 +443,7 @@ fn span_of(log: &Log, with_seconds: bool) -> String {
     match (log.from, log.to) {
         (Moment::Dated(from), Moment::Dated(to)) => dated_span(from, to, with_seconds),
         (from, to) => format!(
-            "for {}, by a log that bears no date",
+            "for {} (the log bears no date)",
             display::duration(elapsed(to) - elapsed(from))
         ),
     }

@@ -252,6 +252,15 @@ pub(super) fn capital(text: &str) -> String {
     }
 }
 
+/// A sentence that goes on after a colon.
+pub(super) fn lower(text: &str) -> String {
+    let mut letters = text.chars();
+    letters
+        .next()
+        .map(|first| first.to_lowercase().chain(letters).collect())
+        .unwrap_or_default()
+}
+
 /// A text that ends as a sentence does.
 pub(super) fn sentence(text: &str) -> String {
     let text = text.trim();
@@ -285,6 +294,24 @@ pub(super) fn decimals_within(
                 .all(|v| (libm::round(v * scale) / scale - v).abs() <= tolerance)
         })
         .unwrap_or(most)
+}
+
+/// Increasing numbers with runs of three and more in short: "1 to 4, 7".
+pub(super) fn runs(numbers: &[usize]) -> String {
+    let mut parts = Vec::new();
+    let mut from = 0;
+    for end in 1..=numbers.len() {
+        if end < numbers.len() && numbers[end] == numbers[end - 1] + 1 {
+            continue;
+        }
+        let run = &numbers[from..end];
+        match run {
+            [first, _, .., last] if run.len() > 2 => parts.push(format!("{first} to {last}")),
+            _ => parts.extend(run.iter().map(ToString::to_string)),
+        }
+        from = end;
+    }
+    parts.join(", ")
 }
 
 /// Text from people on one line: control characters and runs of space become one space.
@@ -345,6 +372,8 @@ mod unit_tests {
 
     #[test]
     fn thousands_stand_apart_from_five_digits_on() {
+        assert_eq!(runs(&[1, 2, 3, 4, 7, 9, 10]), "1 to 4, 7, 9, 10");
+        assert_eq!(runs(&[]), "");
         assert_eq!(count(3871), "3871");
         assert_eq!(count(13_871), "13\u{202f}871");
         assert_eq!(grouped("−1234567.25"), "−1\u{202f}234\u{202f}567.25");

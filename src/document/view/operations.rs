@@ -1,7 +1,7 @@
 //! The page for operations: plain words for the control room, no symbols.
 
 use super::Context;
-use super::numbers::{decimals_to_show, tidy};
+use super::numbers::{decimals_to_show, lower, tidy};
 use crate::design::Aim;
 use crate::display::{self, NO_BREAK};
 use crate::predict::Metrics;
@@ -116,15 +116,6 @@ fn different(context: &Context, after: &SettingsBlock) -> String {
         return "Changed, but when it was tried it did not do as expected.".to_owned();
     }
     difference(context, after)
-}
-
-/// A sentence that goes on after a colon.
-fn lower(text: &str) -> String {
-    let mut letters = text.chars();
-    letters
-        .next()
-        .map(|first| first.to_lowercase().chain(letters).collect())
-        .unwrap_or_default()
 }
 
 /// What the settings after the work change against those found.

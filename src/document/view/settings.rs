@@ -1,6 +1,8 @@
 //! The settings: which limit decided, all settings with their margins, what the published rules give.
 
-use super::numbers::{Cell, NONE, Row, Table, TimeUnit, bound, grouped, ratio, sentence, tidy};
+use super::numbers::{
+    Cell, NONE, Row, Table, TimeUnit, bound, grouped, lower, ratio, sentence, tidy,
+};
 use super::summary::{ms, phase};
 use super::{Context, Heading, Plot, native};
 use crate::design::{Design, Hardness, Limit, LimitName, LimitOutcome};
@@ -72,9 +74,9 @@ pub(super) fn settings(context: &Context) -> Option<SettingsPart> {
 
 fn binding(design: &Design) -> String {
     let mut text = sentence(&bound(&design.binding_detail));
-    let derivative = sentence(&bound(&design.derivative));
-    if !derivative.is_empty() {
-        text = format!("{text} {derivative}");
+    if !design.derivative.is_empty() {
+        let derivative = lower(&sentence(&bound(&design.derivative)));
+        text = format!("{text} Derivative action is {derivative}");
     }
     text
 }
@@ -82,6 +84,10 @@ fn binding(design: &Design) -> String {
 fn limit_row(limit: &Limit, binding: bool) -> TextRow {
     let needs = match (limit.outcome, limit.needs_s) {
         (LimitOutcome::NotAssessed, _) => "not assessed".to_owned(),
+        // An averaging level is made slow: its limit is one from above.
+        (_, Some(seconds)) if limit.limit == LimitName::LevelDeviation => {
+            format!("at most{NO_BREAK}{}", seconds_needed(seconds))
+        }
         (_, Some(seconds)) => seconds_needed(seconds),
         (LimitOutcome::MetByAny, None) => "met by any".to_owned(),
         (_, None) => NONE.to_owned(),
@@ -109,16 +115,22 @@ fn seconds_needed(seconds: f64) -> String {
     grouped(&display::fixed(seconds, usize::from(seconds < 9.95)))
 }
 
-/// The limit's figure of the final settings, where it looks at one that is not τc itself.
+/// The limit's figure of the final settings, in the terms that its bound is told in.
 fn comes_to(limit: &Limit) -> String {
     let Some(figure) = limit.figure else {
         return String::new();
     };
+    let short = || display::significant(figure, 2);
+    let with = |text: String, unit: &str| format!("{text}{NO_BREAK}{unit}");
     match limit.limit {
+        LimitName::Target => with(seconds_needed(figure), "s"),
         LimitName::Robustness => format!("Ms{NO_BREAK}{}", ratio(figure)),
-        LimitName::Noise => format!("{}{NO_BREAK}% sd", display::significant(figure, 2)),
-        LimitName::OpMove => format!("{}{NO_BREAK}%", display::significant(figure, 2)),
-        _ => String::new(),
+        LimitName::DeadTime | LimitName::TimeConstant | LimitName::InnerLoop => {
+            with(short(), "times")
+        }
+        LimitName::ScanTime => with(grouped(&display::fixed(figure, 0)), "scans"),
+        LimitName::Noise => with(short(), "% sd"),
+        LimitName::OpMove | LimitName::LevelDeviation => with(short(), "%"),
     }
 }
 

@@ -1,8 +1,8 @@
 //! The step tests: the test as logged and the table of its steps.
 
 use super::numbers::{
-    NONE, TimeUnit, bound, column_decimals, decimals_to_show, decimals_within, listed, sentence,
-    tidy,
+    NONE, TimeUnit, bound, column_decimals, decimals_to_show, decimals_within, grouped, listed,
+    sentence, tidy,
 };
 use super::summary::slope_unit;
 use super::{Context, Heading, Plot, span_of};
@@ -11,6 +11,11 @@ use crate::identify::{Step, Verdict};
 use crate::quantity::Estimate;
 use crate::trace::Moment;
 use serde::Serialize;
+
+/// Reasons up to this many characters stand beside the figures of a step on two lines.
+const LONGEST_REASON_BESIDE: usize = 44;
+/// With a longer unit of the PV the figures leave no room beside them.
+const LONGEST_UNIT_BESIDE: usize = 3;
 
 /// The part.
 #[derive(Debug, Serialize)]
@@ -26,6 +31,10 @@ pub(super) struct StepTests {
     /// Whether the steps have a time constant.
     with_time_constant: bool,
     rows: Vec<Vec<String>>,
+    /// The reasons of each step's verdict.
+    reasons: Vec<String>,
+    /// Whether no column is kept for the reasons: they stand below their steps, or there are none.
+    reasons_below: bool,
     note: String,
 }
 
@@ -95,8 +104,8 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
                 moment(step.at, several_days),
                 display::fixed(step.op_from, op_decimals),
                 display::fixed(step.op_to, op_decimals),
-                display::fixed(step.pv_from, pv_decimals),
-                display::fixed(step.pv_to, pv_decimals),
+                grouped(&display::fixed(step.pv_from, pv_decimals)),
+                grouped(&display::fixed(step.pv_to, pv_decimals)),
                 figure(fit.map(|f| f.gain.value * gain_factor), gain_decimals),
             ];
             if with_time_constant {
@@ -119,14 +128,14 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
                 }
                 .to_owned(),
             );
-            row.push(
-                step.reasons
-                    .iter()
-                    .map(|r| bound(&r.text))
-                    .collect::<Vec<_>>()
-                    .join("; "),
-            );
             row
+        })
+        .collect();
+    let reasons: Vec<String> = steps
+        .iter()
+        .map(|step| {
+            let texts: Vec<String> = step.reasons.iter().map(|r| bound(&r.text)).collect();
+            texts.join("; ")
         })
         .collect();
 
@@ -146,6 +155,11 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
         dead_time_unit: theta_unit.sign(),
         with_time_constant,
         rows,
+        reasons_below: reasons
+            .iter()
+            .any(|r| r.chars().count() > LONGEST_REASON_BESIDE)
+            || context.pv_unit.chars().count() > LONGEST_UNIT_BESIDE,
+        reasons,
         note: note(integrates, with_time_constant),
     })
 }

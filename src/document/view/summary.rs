@@ -1,7 +1,8 @@
 //! Page 1: the verdict, what changed, what the loop does now, what is open, the sign-off.
 
 use super::numbers::{
-    Cell, NONE, Row, Table, TimeUnit, bound, capital, listed, number_word, ratio, sentence, tidy,
+    Cell, NONE, Row, Table, TimeUnit, bound, capital, listed, number_word, ratio, runs, sentence,
+    tidy,
 };
 use super::{Context, Entry, Heading, Plot, SignatureView, native, sign_off};
 use crate::display::{self, NO_BREAK};
@@ -556,7 +557,7 @@ fn predicted_table(context: &Context, found: &SettingsBlock, after: &SettingsBlo
     let peak = figure(&|b| {
         let deviation = load(b)?.peak_deviation_percent * context.pv_per_percent;
         Some(Cell::figure(
-            display::fixed(deviation, decimals),
+            super::numbers::grouped(&display::fixed(deviation, decimals)),
             context.pv_unit.clone(),
         ))
     });
@@ -695,7 +696,7 @@ fn reason_label(code: OpenCode) -> &'static str {
 
 /// Rejected steps with the same reasons in one line; where no step was found, why.
 fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
-    let mut by_reason: BTreeMap<usize, (Vec<String>, String)> = BTreeMap::new();
+    let mut by_reason: BTreeMap<usize, (Vec<usize>, String)> = BTreeMap::new();
     for step in record
         .steps
         .iter()
@@ -704,9 +705,9 @@ fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
         let reasons: Vec<String> = step.reasons.iter().map(|r| bound(&r.text)).collect();
         let text = sentence(&reasons.join("; "));
         match by_reason.values_mut().find(|(_, t)| *t == text) {
-            Some((numbers, _)) => numbers.push(step.number.to_string()),
+            Some((numbers, _)) => numbers.push(step.number),
             None => {
-                by_reason.insert(step.number, (vec![step.number.to_string()], text));
+                by_reason.insert(step.number, (vec![step.number], text));
             }
         }
     }
@@ -717,7 +718,7 @@ fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
         .into_values()
         .map(|(numbers, text)| {
             let label = if numbers.len() == 1 { "Step" } else { "Steps" };
-            Entry::new(format!("{label}{NO_BREAK}{}", numbers.join(", ")), text)
+            Entry::new(format!("{label}{NO_BREAK}{}", runs(&numbers)), text)
         })
         .collect()
 }
