@@ -3,8 +3,7 @@
 //! BIC: G. Schwarz, Annals of Statistics 6 (1978) 461-464.
 
 use super::Alternative;
-use super::covariance::{self, Memory};
-use super::least_squares::{Base, Fit, FitError, Problem};
+use super::least_squares::{Base, Fit, FitError, Point, Problem};
 use super::search;
 use super::words::time_text;
 use crate::model::Kind;
@@ -16,11 +15,10 @@ const UNBENT: f64 = 3.0;
 /// Mean square residual below which there is nothing left to explain, %².
 const NOTHING_LEFT: f64 = 1e-10;
 
-/// A fit with what its residual remembers.
+/// A fit with the bases it was given.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Candidate {
     pub fit: Fit,
-    pub memory: Memory,
     /// Base of each window.
     pub bases: Vec<Base>,
 }
@@ -31,18 +29,9 @@ fn bic(fit: &Fit, effective: f64) -> f64 {
     effective * libm::log(mean_square) + fit.parameters as f64 * libm::log(effective)
 }
 
-fn lengths(problem: &Problem) -> Vec<usize> {
-    problem.windows.iter().map(|w| w.t_s.len()).collect()
-}
-
-fn candidate(
-    problem: &Problem,
-    kind: Kind,
-    hints: &[super::least_squares::Point],
-) -> Result<Candidate, FitError> {
+fn candidate(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Candidate, FitError> {
     let fit = search::fit(problem, kind, hints)?;
     Ok(Candidate {
-        memory: covariance::memory(&fit, &lengths(problem)),
         fit,
         bases: problem.windows.iter().map(|w| w.base).collect(),
     })
@@ -60,19 +49,31 @@ fn with_bases(problem: &Problem, base: impl Fn(usize) -> Base) -> Problem {
 /// off balance before the move; others get one only where it earns its place.
 pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
     let sloped = with_bases(problem, |_| Base::LevelAndSlope);
-    let mut found = Vec::new();
-    for kind in Kind::ALL {
-        if kind.integrates() {
-            found.push(candidate(&sloped, kind, &[])?);
-            continue;
-        }
-        let level = candidate(problem, kind, &[])?;
-        let slope = candidate(&sloped, kind, &[level.fit.point])?;
-        let effective = slope.fit.rows as f64 / slope.memory.factor;
+    // Where a fit with a slope starts: near the one without, its lag also much longer or shorter.
+    let around = |point: Point| {
+        [1.0, 3.0, 1.0 / 3.0].map(|factor| Point {
+            ln_lag: point.ln_lag + libm::log(factor),
+            ..point
+        })
+    };
+    let better = |level: Candidate, slope: Candidate| {
+        let effective = slope.fit.rows as f64 / slope.fit.memory.factor;
         let gained = bic(&level.fit, effective) - bic(&slope.fit, effective);
-        found.push(if gained > CLEARLY { slope } else { level });
-    }
-    Ok(found)
+        if gained > CLEARLY { slope } else { level }
+    };
+    let first = candidate(problem, Kind::FirstOrder, &[])?;
+    let first_sloped = candidate(&sloped, Kind::FirstOrder, &around(first.fit.point))?;
+    let splits = search::split_lags(&[first.fit.point]);
+    let second = candidate(problem, Kind::SecondOrder, &splits)?;
+    let mut splits = search::split_lags(&[first_sloped.fit.point]);
+    splits.push(second.fit.point);
+    let second_sloped = candidate(&sloped, Kind::SecondOrder, &splits)?;
+    Ok(vec![
+        better(first, first_sloped),
+        better(second, second_sloped),
+        candidate(&sloped, Kind::Integrating, &[])?,
+        candidate(&sloped, Kind::IntegratingLag, &[])?,
+    ])
 }
 
 /// Fits of all four kinds to several steps; `bases` are those that each step's own fit of a kind
@@ -80,7 +81,7 @@ pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
 pub(crate) fn of_steps(
     problem: &Problem,
     bases: impl Fn(Kind, usize) -> Base,
-    hints: impl Fn(Kind) -> Vec<super::least_squares::Point>,
+    hints: impl Fn(Kind) -> Vec<Point>,
 ) -> Result<Vec<Candidate>, FitError> {
     Kind::ALL
         .iter()
@@ -135,7 +136,7 @@ pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Ch
         .iter()
         .min_by(|a, b| a.fit.rss.total_cmp(&b.fit.rss))
         .expect("there are four candidates");
-    let effective = least.fit.rows as f64 / least.memory.factor;
+    let effective = least.fit.rows as f64 / least.fit.memory.factor;
     let bics: Vec<f64> = found.iter().map(|c| bic(&c.fit, effective)).collect();
     // Within a family the simpler one stands unless the richer one is clearly better.
     let richer = |simple: usize| {
