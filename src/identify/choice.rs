@@ -12,6 +12,8 @@ use crate::model::Kind;
 const CLEARLY: f64 = 10.0;
 /// Beyond this many times what was watched, a time constant is not seen to end: the PV did not bend.
 const UNBENT: f64 = 3.0;
+/// Part of the change of slope that an integrating PV still moves with at the end.
+const STILL_MOVING: f64 = 0.3;
 /// Mean square residual below which there is nothing left to explain, %².
 const NOTHING_LEFT: f64 = 1e-10;
 
@@ -21,6 +23,25 @@ pub(crate) struct Candidate {
     pub fit: Fit,
     /// Base of each window.
     pub bases: Vec<Base>,
+    /// OP at the end of each window less its level before the move, %.
+    pub op_end: Vec<f64>,
+}
+
+impl Candidate {
+    /// Whether an integrating fit has the PV still moving at the end, on average over its windows by
+    /// more than a part of what the moves changed its slope. A PV that came to rest just because a
+    /// slope before the move met its opposite would be chance.
+    fn still_moving(&self) -> bool {
+        let parts: Vec<f64> = self
+            .op_end
+            .iter()
+            .zip(&self.fit.bases)
+            .zip(&self.fit.gains)
+            .filter(|((op, _), _)| **op != 0.0)
+            .map(|((op, base), gain)| ((base.1 + gain * op) / (gain * op)).abs().min(1.0))
+            .collect();
+        parts.is_empty() || parts.iter().sum::<f64>() > STILL_MOVING * parts.len() as f64
+    }
 }
 
 /// BIC of a fit for a given number of samples that count, less a constant common to all fits.
@@ -34,6 +55,11 @@ fn candidate(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Candidate
     Ok(Candidate {
         fit,
         bases: problem.windows.iter().map(|w| w.base).collect(),
+        op_end: problem
+            .windows
+            .iter()
+            .map(|w| w.moves.last().map_or(0.0, |m| m.1))
+            .collect(),
     })
 }
 
@@ -90,6 +116,12 @@ pub(crate) fn of_steps(
             candidate(&problem, kind, &hints(kind))
         })
         .collect()
+}
+
+/// Puts one gain for all windows in the place of one for each; the bases stay.
+pub(crate) fn share_gain(candidate: &mut Candidate, problem: &Problem) {
+    let problem = with_bases(problem, |k| candidate.bases[k]);
+    candidate.fit = search::with_common_gain(&problem, &candidate.fit);
 }
 
 /// What was chosen and why the others were not.
@@ -155,6 +187,10 @@ pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Ch
         settling
     } else if excess < -CLEARLY {
         integrating
+    } else if !found[integrating].still_moving() {
+        settling
+    } else if unbent {
+        integrating
     } else {
         let (kc_s, ti_s) = settings(&found[settling].fit, interval_s);
         let (kc_i, ti_i) = settings(&found[integrating].fit, interval_s);
@@ -165,8 +201,8 @@ pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Ch
             integrating
         };
         if near(kc_s, kc_i) && near(ti_s, ti_i) {
-            // Nothing hangs on it.
-            if unbent { integrating } else { slower }
+            // Nothing hangs on it, and the time constant is not seen to end.
+            integrating
         } else {
             undecided = Some(format!(
                 "The PV was not watched for long enough to tell a process that settles \

@@ -209,7 +209,7 @@ fn sandwich(fit: &Fit) -> Vec<Vec<f64>> {
     let left =
         (rows - (shapes * tail).min(n as f64 * fit.memory.factor) - bases * fit.memory.factor)
             .max((rows - fit.parameters as f64) / 4.0);
-    scaled(product(&half, &inverse), fit.rss / left * tail)
+    scaled(product(&half, &inverse), fit.noise_rss / left * tail)
 }
 
 /// Covariance in logarithms. `repeated` is how often the windows use a sample on average: windows

@@ -183,6 +183,8 @@ pub struct Fit {
     pub bases: Vec<(f64, f64)>,
     /// Sum of squared residuals, %².
     pub rss: f64,
+    /// The part of it that is noise: all, unless a fit with more freedom left less.
+    pub noise_rss: f64,
     /// Samples.
     pub rows: usize,
     /// Parameters, linear ones counted.
@@ -515,8 +517,9 @@ impl Prepared {
             .collect()
     }
 
-    /// The fit at a point.
-    pub(crate) fn finish(&mut self, problem: &Problem, point: Point) -> Fit {
+    /// The fit at a point; `freer` is a fit of the same samples with more freedom, whose residual then
+    /// stands for the noise.
+    pub(crate) fn finish(&mut self, problem: &Problem, point: Point, freer: Option<&Fit>) -> Fit {
         let evaluation = self.evaluate(&point);
         let common = self.groups.len() == 1;
         let factors = |w: usize| evaluation.factors[if common { 0 } else { w }];
@@ -532,7 +535,10 @@ impl Prepared {
             .collect();
         let parameters = problem.parameters(self.kind);
         let lengths: Vec<usize> = self.windows.iter().map(|w| w.rows.len()).collect();
-        let memory = covariance::memory(&self.residual, &lengths, parameters);
+        let memory = match freer {
+            Some(freer) => freer.memory,
+            None => covariance::memory(&self.residual, &lengths, parameters),
+        };
         let gains = (0..self.windows.len()).map(|w| factors(w)[0]).collect();
         let rates = (0..self.windows.len()).map(|w| factors(w)[1]).collect();
         let (information, filtered) = if problem.gain_per_window {
@@ -553,6 +559,7 @@ impl Prepared {
             point,
             bases,
             rss: evaluation.rss,
+            noise_rss: freer.map_or(evaluation.rss, |f| f.rss),
             rows: self.t_s.len(),
             parameters,
             residual: self.residual.clone(),

@@ -185,27 +185,29 @@ fn fit_all(
     watched_s: f64,
     interval_s: f64,
 ) -> Option<(Vec<Candidate>, Choice)> {
-    let mut problem = Problem::new(usable.iter().map(|f| f.window.clone()).collect());
-    let bases = |kind: Kind, k: usize| usable[k].of(kind).bases[0];
-    let hints = |kind: Kind| usable.iter().map(|f| f.of(kind).fit.point).collect();
-    let pooled = if usable.len() == 1 {
-        usable[0].candidates.clone()
-    } else {
-        choice::of_steps(&problem, bases, hints).ok()?
-    };
-    // Where the gain differs from step to step, what one gain leaves would hide what a lag explains:
-    // the kind is then chosen with a gain for each step.
+    if usable.len() == 1 {
+        let candidates = usable[0].candidates.clone();
+        let choice = choice::choose(&candidates, watched_s, interval_s);
+        return Some((candidates, choice));
+    }
+    // Where the gain differs from step to step, what one gain leaves would hide what a lag explains
+    // and pass for noise: kind, lags, dead time and noise are then found with a gain for each step.
     let apart = own_kinds
         .iter()
         .any(|&kind| gains_disagree(usable, kind, interval_s));
-    if usable.len() > 1 && apart {
-        problem.gain_per_window = true;
-        let free = choice::of_steps(&problem, bases, hints).ok()?;
-        let choice = choice::choose(&free, watched_s, interval_s);
-        return Some((pooled, choice));
+    let mut problem = Problem::new(usable.iter().map(|f| f.window.clone()).collect());
+    problem.gain_per_window = apart;
+    let bases = |kind: Kind, k: usize| usable[k].of(kind).bases[0];
+    let hints = |kind: Kind| usable.iter().map(|f| f.of(kind).fit.point).collect();
+    let mut candidates = choice::of_steps(&problem, bases, hints).ok()?;
+    let choice = choice::choose(&candidates, watched_s, interval_s);
+    if apart {
+        problem.gain_per_window = false;
+        for candidate in &mut candidates {
+            choice::share_gain(candidate, &problem);
+        }
     }
-    let choice = choice::choose(&pooled, watched_s, interval_s);
-    Some((pooled, choice))
+    Some((candidates, choice))
 }
 
 /// The model over all usable steps; `None` where no fit of them succeeds.

@@ -315,7 +315,12 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
             }
         }
     }
-    Ok(all.finish(problem, found.0))
+    Ok(all.finish(problem, found.0, None))
+}
+
+/// The fit of one gain for all windows with the dynamics of a fit of one gain for each.
+pub(crate) fn with_common_gain(problem: &Problem, freer: &Fit) -> Fit {
+    Prepared::new(problem, freer.kind).finish(problem, freer.point, Some(freer))
 }
 
 /// The pieces of dead time near the best between which a sample passes a delayed move: the sum of
