@@ -306,3 +306,40 @@ impl State {
         }
     }
 }
+
+/// A hold of fixed length as one linear map of the state: what `State::advance` does, its
+/// exponentials worked out once.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Hold {
+    first: [f64; 3],
+    second: [f64; 3],
+}
+
+impl Hold {
+    /// A hold of `h_s` seconds, ≥ 0.
+    pub fn new(model: &ProcessModel, h_s: f64) -> Self {
+        let column = |first, second, op| {
+            let mut state = State { first, second };
+            state.advance(model, h_s, op);
+            state
+        };
+        let columns = [
+            column(1.0, 0.0, 0.0),
+            column(0.0, 1.0, 0.0),
+            column(0.0, 0.0, 1.0),
+        ];
+        Hold {
+            first: columns.map(|state| state.first),
+            second: columns.map(|state| state.second),
+        }
+    }
+
+    /// The state at the end of the hold under the (already delayed) OP deviation `op`, %.
+    pub fn advance(&self, state: State, op: f64) -> State {
+        let row = |row: [f64; 3]| row[0] * state.first + row[1] * state.second + row[2] * op;
+        State {
+            first: row(self.first),
+            second: row(self.second),
+        }
+    }
+}

@@ -186,14 +186,15 @@ impl Standard {
             // Without integral action both forms are Kc (1 + Td s).
             return Some((self.kc, None, self.td_s));
         };
+        // At the edge Ti = 4 Td rounding of what came from a series form must not lose it.
+        const ROUNDING: f64 = 1e-12;
         let under_root = 1.0 - 4.0 * self.td_s / ti;
-        if under_root < 0.0 {
+        if under_root < -ROUNDING {
             return None;
         }
-        let half = (1.0 + libm::sqrt(under_root)) / 2.0;
+        let half = (1.0 + libm::sqrt(under_root.max(0.0))) / 2.0;
         // Td′ from the product Ti′·Td′ = Ti·Td, which keeps its figures where Td is small.
-        let ti_series = ti * half;
-        Some((self.kc * half, Some(ti_series), self.td_s / half))
+        Some((self.kc * half, Some(ti * half), self.td_s / half))
     }
 
     /// The standard form of a series controller (unfiltered).
@@ -347,6 +348,150 @@ impl Native {
             p: round(self.p),
             i: round(self.i),
             d: round(self.d),
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use proptest::prelude::*;
+    use proptest::test_runner::RngSeed;
+
+    fn standard(kc: f64, ti_s: f64, td_s: f64) -> Standard {
+        Standard {
+            kc,
+            ti_s: Some(ti_s),
+            td_s,
+        }
+    }
+
+    fn assert_near(found: (f64, Option<f64>, f64), expected: (f64, f64, f64)) {
+        let (kc, ti, td) = (found.0, found.1.expect("integral action"), found.2);
+        for (found, expected) in [(kc, expected.0), (ti, expected.1), (td, expected.2)] {
+            // Ten figures are quoted.
+            assert!(
+                (found - expected).abs() <= 1e-9 * expected.abs(),
+                "{found}, expected {expected}"
+            );
+        }
+    }
+
+    fn parts(settings: Standard) -> (f64, Option<f64>, f64) {
+        (settings.kc, settings.ti_s, settings.td_s)
+    }
+
+    // K.J. Åström, T. Hägglund, PID Controllers, 2nd ed. 1995, sec. 3.2, recomputed.
+    #[test]
+    fn forms_convert_as_in_the_textbook() {
+        let pid = standard(2.0, 10.0, 2.0);
+        assert_eq!(pid.parallel(), (2.0, 0.2, 4.0));
+        assert_eq!(Standard::from_parallel(2.0, 0.2, 4.0), Some(pid));
+        let series = |s: Standard| s.series().expect("a series form");
+        assert_near(series(pid), (1.447_213_595_5, 7.236_067_977, 2.763_932_023));
+        // The edge Ti = 4 Td, and beyond it.
+        assert_near(series(standard(10.0, 8.0, 2.0)), (5.0, 4.0, 4.0));
+        assert_eq!(standard(5.0, 6.0, 2.0).series(), None);
+        assert_near(
+            parts(Standard::from_series(1.3, Some(2.0), 1.2)),
+            (2.08, 3.2, 0.75),
+        );
+        // Two series sets are one controller: the one with Ti′ ≥ Td′ comes back.
+        let swapped = Standard::from_series(2.0, Some(2.0), 6.0);
+        assert_near(parts(swapped), (8.0, 8.0, 1.5));
+        assert_near(series(swapped), (6.0, 6.0, 2.0));
+    }
+
+    fn controller(form: EquationForm) -> Controller {
+        Controller {
+            form,
+            p_as: ProportionalUnit::Band,
+            i_as: IntegralUnit::PerMinute,
+            d_as: DerivativeUnit::Minutes,
+            p_on: ActsOn::Error,
+            d_on: ActsOn::Pv,
+            d_filter_n: 10.0,
+            scan_s: 1.0,
+            pv_span: Span::new(60.0, 140.0).expect("a range"),
+            op_span: Span::new(0.0, 100.0).expect("a range"),
+        }
+    }
+
+    #[test]
+    fn typed_numbers_mean_what_the_faceplate_says() {
+        // PB % = 100/Kc; repeats/min = 60/Ti.
+        let native = Native {
+            p: 40.0,
+            i: 0.5,
+            d: 0.25,
+        };
+        let expected = Terms::Standard {
+            kc: 2.5,
+            ti_s: Some(120.0),
+            td_s: 15.0,
+        };
+        assert_eq!(controller(EquationForm::Standard).terms(native), expected);
+        // 0.5 % OP per degC on a span of 80 degC is 0.4 % per %; so with the parallel gains.
+        let parallel = Controller {
+            p_as: ProportionalUnit::GainPerUnit,
+            ..controller(EquationForm::Parallel)
+        };
+        let native = Native {
+            p: 0.5,
+            i: 3.0,
+            d: 0.1,
+        };
+        let Terms::Parallel { kp, ki_per_s, kd_s } = parallel.terms(native) else {
+            panic!("a parallel controller has parallel terms");
+        };
+        assert!((kp - 0.4).abs() < 1e-12);
+        assert!((ki_per_s - 0.04).abs() < 1e-12);
+        assert!((kd_s - 4.8).abs() < 1e-12);
+        // Integral and derivative off.
+        let off = Native {
+            p: 40.0,
+            i: 0.0,
+            d: 0.0,
+        };
+        let p_only = controller(EquationForm::Series).terms(off).standard();
+        assert_eq!(p_only.map(parts), Some((2.5, None, 0.0)));
+    }
+
+    proptest! {
+        #![proptest_config(ProptestConfig {
+            cases: 64,
+            rng_seed: RngSeed::Fixed(1),
+            failure_persistence: None,
+            ..ProptestConfig::default()
+        })]
+        #[test]
+        fn settings_survive_the_faceplate(
+            kc in 0.01..50.0_f64,
+            ti in 0.5..5000.0_f64,
+            part in 0.0..0.25_f64,
+            form in prop::sample::select(vec![
+                EquationForm::Standard, EquationForm::Series, EquationForm::Parallel,
+            ]),
+            p_as in prop::sample::select(vec![
+                ProportionalUnit::Gain, ProportionalUnit::Band, ProportionalUnit::GainPerUnit,
+            ]),
+            i_as in prop::sample::select(vec![
+                IntegralUnit::Seconds, IntegralUnit::Minutes,
+                IntegralUnit::PerSecond, IntegralUnit::PerMinute,
+            ]),
+        ) {
+            // Parallel gains are never typed as a band or the integral as a time.
+            let parallel = form == EquationForm::Parallel;
+            prop_assume!(!parallel || (p_as != ProportionalUnit::Band
+                && matches!(i_as, IntegralUnit::PerSecond | IntegralUnit::PerMinute)));
+            let controller = Controller { p_as, i_as, ..controller(form) };
+            let given = standard(kc, ti, part * ti);
+            let native = controller.native(given).expect("Ti is at least 4 Td");
+            let back = controller.terms(native).standard().expect("proportional gain");
+            // Near Ti = 4 Td the square root halves the figures.
+            prop_assert!((back.kc / given.kc - 1.0).abs() < 1e-7);
+            prop_assert!((back.ti_s.expect("integral") / ti - 1.0).abs() < 1e-7);
+            prop_assert!((back.td_s - given.td_s).abs() < 1e-7 * ti);
         }
     }
 }

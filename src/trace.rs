@@ -4,6 +4,7 @@ use crate::quantity::Span;
 use chrono::{NaiveDateTime, TimeDelta};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+use std::cmp::Ordering;
 use std::fmt;
 use thiserror::Error;
 
@@ -59,8 +60,9 @@ pub struct Gap {
 /// The columns of a log for one loop, in engineering units as exported, on one clock.
 ///
 /// All columns have one value per time; times increase strictly. A PV that is missing or was
-/// marked bad is not good; its value is kept where it was a number, else it is NaN. OP and SP are
-/// NaN where the export left them out before their first value.
+/// marked bad is not good; its value is kept where it was a number, else it is NaN. A good PV that
+/// is NaN was not sampled at that time, which belongs to the OP alone (signals written at times of
+/// their own). OP and SP are NaN where the export left them out before their first value.
 #[derive(Debug, Clone, PartialEq, Default)]
 pub struct Samples {
     /// Seconds on the log's clock.
@@ -127,7 +129,11 @@ impl Trace {
                 return Err(TraceError::Lengths(format!("{n} times, {len} of {name}")));
             }
         }
-        if let Some(k) = samples.t_s.windows(2).position(|w| !(w[1] > w[0])) {
+        if let Some(k) = samples
+            .t_s
+            .windows(2)
+            .position(|w| w[0].partial_cmp(&w[1]) != Some(Ordering::Less))
+        {
             return Err(TraceError::Time(k + 1));
         }
         let mut trace = Trace {
@@ -155,8 +161,11 @@ impl Trace {
             }
             trace.op_t_s.push(samples.t_s[k]);
             trace.op_all.push(op_held);
-            if !samples.good[k] || !samples.pv[k].is_finite() {
+            if !samples.good[k] {
                 trace.bad_t_s.push(samples.t_s[k]);
+                continue;
+            }
+            if !samples.pv[k].is_finite() {
                 continue;
             }
             trace.t_s.push(samples.t_s[k]);

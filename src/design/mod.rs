@@ -1,13 +1,27 @@
 //! Design: the fastest loop that every limit allows.
 
+use crate::design::candidate::{Recipe, second_lag_s};
+use crate::design::finish::{Finished, finish};
+use crate::design::limits::Basis;
+use crate::design::robustness::RobustnessLimit;
 use crate::identify::Model;
-use crate::predict::Margins;
-use crate::settings::{ActsOn, Controller, Native, Standard};
+use crate::model::ProcessModel;
+pub use crate::predict::PvFilter;
+use crate::settings::{Controller, Native, Standard};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
-pub mod limits;
+mod candidate;
+mod finish;
+mod limits;
+mod robustness;
 pub mod rules;
+#[cfg(test)]
+mod tests;
+mod words;
+
+pub use candidate::effective_dead_time_s;
+pub use robustness::{WorstMargins, worst_margins};
 
 /// What the loop is for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default, Serialize, Deserialize, JsonSchema)]
@@ -68,7 +82,8 @@ pub enum LimitOutcome {
     MetByAny,
     /// A soft limit overridden by a target with a reason.
     Overridden,
-    /// The request was slower limits allow and was not met (target only).
+    /// A target faster (or slower) than the other limits allow, or a level that they do not let be
+    /// kept within its deviation.
     NotMet,
     /// Could not be assessed from the data.
     NotAssessed,
@@ -169,16 +184,6 @@ impl Default for DesignBounds {
     }
 }
 
-/// The PV filter as the margins see it.
-#[derive(Debug, Clone, Copy, PartialEq, Default)]
-pub struct PvFilter {
-    /// Filter time constant while the log was taken and seen in it, s; 0 where the log was taken
-    /// before the filter (or there is none).
-    pub in_log_s: f64,
-    /// Filter time constant that the controller has, s.
-    pub in_controller_s: f64,
-}
-
 /// What the inner loop of a cascade brings.
 #[derive(Debug, Clone, PartialEq)]
 pub struct InnerLoop {
@@ -241,6 +246,18 @@ pub struct Designed {
     pub standard: Option<Standard>,
 }
 
+impl DesignRequest {
+    /// The reason for the target, where one is given.
+    pub fn reason(&self) -> Option<&str> {
+        let reason = self.target_reason.as_deref()?.trim();
+        (!reason.is_empty()).then_some(reason)
+    }
+}
+
+/// A PID design is taken where its Kc/Ti is at least this many times the PI design's: integral action is
+/// what holds against load, and less is not worth a third setting.
+const DERIVATIVE_WORTH: f64 = 1.2;
+
 /// The fastest settings that every limit allows.
 ///
 /// `sigma_percent` is the noise σ, % of span, `None` where not assessable.
@@ -254,16 +271,137 @@ pub fn design(
     filter: PvFilter,
     request: &DesignRequest,
 ) -> Result<Designed, Refusal> {
-    let _ = (
+    let process = model.process();
+    check(&process, controller, request)?;
+    let robustness = RobustnessLimit::new(
         model,
-        sigma_percent,
+        request.bounds.ms,
+        request.bounds.worst_ms,
         controller,
         filter,
-        request,
-        ActsOn::Error,
     );
-    let _: Option<Margins> = None;
-    Err(Refusal::NoSolution {
-        text: String::new(),
+    let finished = |derivative| {
+        let recipe = Recipe::new(&process, controller, filter, request.aim, derivative);
+        finish(&Basis {
+            process: &process,
+            recipe: &recipe,
+            controller,
+            filter,
+            sigma_percent,
+            request,
+            robustness: &robustness,
+        })
+        .map(|finished| (finished, recipe.effective_dead_time_s))
+    };
+    let without = finished(false);
+    let second = second_lag_s(&process).unwrap_or(0.0);
+    let theta = process.dead_time_s();
+    let refused = if !request.derivative {
+        Some("Not used: the loop schedule does not ask for it.".to_owned())
+    } else if second <= 0.0 {
+        Some("Not used: the model has no second time constant for it to take up.".to_owned())
+    } else if second <= theta {
+        Some(format!(
+            "Not used: the second time constant of {} is not longer than the dead time of {}.",
+            words::duration(second),
+            words::duration(theta)
+        ))
+    } else {
+        None
+    };
+    let (chosen, derivative) = match refused {
+        Some(why) => (without, why),
+        None => with_or_without(without, finished(true)),
+    };
+    let (finished, effective_dead_time_s) = chosen?;
+    let uses_derivative = finished.typed.native.d > 0.0;
+    Ok(Designed {
+        design: Design {
+            closed_loop_time_constant_s: finished.tau_c_s,
+            effective_dead_time_s,
+            binding_limit: finished.binding,
+            binding_detail: finished.binding_detail,
+            governing_model: Some(finished.governing_model),
+            derivative,
+            limits: finished.limits,
+            rules: rules::published_rules(&process, controller, filter, uses_derivative),
+            remarks: finished.remarks,
+        },
+        native: finished.typed.native,
+        standard: finished.standard,
     })
+}
+
+type Outcome = Result<(Finished, f64), Refusal>;
+
+/// The design with derivative action where it is worth it, and why.
+fn with_or_without(without: Outcome, with: Outcome) -> (Outcome, String) {
+    let integral_action = |outcome: &Outcome| {
+        let standard = outcome.as_ref().ok()?.0.standard?;
+        Some(standard.kc / standard.ti_s?)
+    };
+    match (integral_action(&without), integral_action(&with)) {
+        (Some(pi), Some(pid)) if pid >= DERIVATIVE_WORTH * pi => (
+            with,
+            format!(
+                "Used: it takes up the second time constant, and Kc/Ti is {:.1} times that of the design without it.",
+                pid / pi
+            ),
+        ),
+        (Some(pi), Some(pid)) => (
+            without,
+            format!(
+                "Not used: with it Kc/Ti would be {:.2} times that of the design without it, at least {DERIVATIVE_WORTH} times is asked for.",
+                pid / pi
+            ),
+        ),
+        (None, Some(_)) => (
+            with,
+            "Used: without it no settings satisfy every limit.".to_owned(),
+        ),
+        (_, None) => (
+            without,
+            "Not used: with it no settings satisfy every limit.".to_owned(),
+        ),
+    }
+}
+
+/// What no choice of τc can mend.
+fn check(
+    process: &ProcessModel,
+    controller: &Controller,
+    request: &DesignRequest,
+) -> Result<(), Refusal> {
+    let wrong_aim = |text: &str| {
+        Err(Refusal::WrongAim {
+            text: text.to_owned(),
+        })
+    };
+    if request.aim == Aim::Averaging {
+        if !process.kind().integrates() {
+            return wrong_aim(
+                "The aim is averaging, and the process settles by itself: averaging is for integrating processes only.",
+            );
+        }
+        let given = |value: Option<f64>| value.is_some_and(|v| v.is_finite() && v > 0.0);
+        if !given(request.allowed_deviation_percent) || !given(request.expected_load_percent) {
+            return wrong_aim(
+                "The aim is averaging, and the allowed deviation or the expected load is not given.",
+            );
+        }
+    }
+    // Of an integrating process no scan misses the movement; the scan-time limit alone holds there.
+    if let (false, Some(tau)) = (process.kind().integrates(), process.time_constant_s()) {
+        let total = tau + process.second_time_constant_s().unwrap_or(0.0) + process.dead_time_s();
+        if controller.scan_s > total {
+            return Err(Refusal::ScanTooSlow {
+                text: format!(
+                    "The controller executes every {}, longer than time constant and dead time together ({}): it misses the process.",
+                    words::duration(controller.scan_s),
+                    words::duration(total)
+                ),
+            });
+        }
+    }
+    Ok(())
 }

@@ -4,8 +4,14 @@ use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
 
 pub mod frequency;
+pub mod measure;
+pub mod open_loop;
+pub mod oscillation;
 pub mod simulate;
 pub mod trial;
+pub(crate) mod words;
+
+pub use frequency::margins;
 
 /// Stability margins of one loop. An unstable loop has no margin: all `None`.
 #[derive(Debug, Clone, Copy, PartialEq, Serialize, Deserialize, JsonSchema)]
@@ -24,6 +30,33 @@ pub struct Margins {
     pub delay_margin_s: Option<f64>,
 }
 
+impl Margins {
+    /// An unstable loop: no margin.
+    pub fn unstable() -> Self {
+        Margins {
+            stable: false,
+            ms: None,
+            mt: None,
+            gain_margin: None,
+            phase_margin_deg: None,
+            delay_margin_s: None,
+        }
+    }
+}
+
+/// The PV filter as the margins see it.
+///
+/// Where the log was taken after the filter and the filter was not changed since, both times are the
+/// same and the fitted model holds the filter's lag.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct PvFilter {
+    /// Filter time constant while the log was taken and seen in it, s; 0 where the log was taken
+    /// before the filter (or there is none).
+    pub in_log_s: f64,
+    /// Filter time constant that the controller has, s.
+    pub in_controller_s: f64,
+}
+
 /// A line of a predicted or measured response, thinned for printing.
 #[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize, JsonSchema)]
 pub struct Curve {
@@ -38,7 +71,7 @@ pub struct Curve {
 /// Figures of one closed-loop response.
 ///
 /// Definitions: overshoot past the new set point in percent of the step; rise time from 10 to
-/// 90 % of the step; settling time to stay within ±2 % of the step (at least ±0.1 % of span);
+/// 90 % of the step; settling time the last sample outside ±2 % of the step (at least ±0.1 % of span);
 /// IAE the integral of |SP − PV|; OP travel the sum of all OP moves (K.J. Åström, T. Hägglund, PID
 /// Controllers, 2nd ed. 1995, sec. 4.2).
 #[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize, JsonSchema)]

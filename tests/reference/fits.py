@@ -102,10 +102,7 @@ def fit(kind, t, op, pv, seed):
         basis = np.column_stack([unit_response(kind, tuple(lags), theta, t, op), np.ones(len(t))])
         gain, bias = np.linalg.lstsq(basis, pv)[0]
         start = np.array([gain, *lags, theta, bias])
-        try:
-            found.append(descend(kind, start, (lower, upper), t, op, pv))
-        except ValueError:
-            continue  # the two lags met exactly: a singular start
+        found.append(descend(kind, start, (lower, upper), t, op, pv))
     best = min(found, key=lambda result: result.cost)
 
     # The dead time makes corners where it passes a sample. Each smooth piece near the best is searched
@@ -136,7 +133,7 @@ def fit(kind, t, op, pv, seed):
     if p[-2] > 0.0:
         piece = edges[max(0, np.searchsorted(edges, p[-2]) - 1) :][:2]
         clearance = np.min(np.abs(p[-2] - piece)) / np.diff(piece)[0]
-        assert clearance > 0.01, f"optimum in a corner ({clearance}): choose another seed"
+        assert clearance > 0.01, f"optimum in a corner ({clearance}), where no Jacobian exists: choose another seed"
     basins = sum(result.cost < best.cost * 1.01 for result in found)
     return p, rss, np.sqrt(np.diag(covariance)), np.linalg.norm(j.T @ residual), basins
 
@@ -167,7 +164,8 @@ def simulate(case, rng):
     irregular = case["sampling"] == "exception"
     # An exception-reporting historian looks often and stores seldom.
     interval = case["interval"] / 2.0 if irregular else case["interval"]
-    t = sample_times("regular" if irregular else case["sampling"], interval, case["count"], rng)
+    count = 2 * case["count"] if irregular else case["count"]
+    t = sample_times("regular" if irregular else case["sampling"], interval, count, rng)
     op = np.full(len(t), case["op"])
     for share, move in case["moves"]:
         op[int(share * len(t)) :] += move
@@ -240,7 +238,7 @@ def main():
     rows = []
     for case in cases():
         kind = case["kind"]
-        t, op, pv = simulate(case, np.random.default_rng(SEEDS.get(case["number"], 1000 + case["number"])))
+        t, op, pv = simulate(case, np.random.default_rng(1000 + case["number"]))
         p, rss, errors, gradient, basins = fit(kind, t, op, pv, seed=case["number"])
         name = f"case{case['number']:02d}.csv"
         with open(HERE / "fits" / name, "w", newline="") as file:
@@ -266,10 +264,6 @@ def main():
         writer = csv.writer(file, lineterminator="\n")
         writer.writerow(header)
         writer.writerows(rows)
-
-
-# A seed whose optimum falls in a corner of the dead time (where no Jacobian exists) is replaced here.
-SEEDS = {}
 
 
 if __name__ == "__main__":

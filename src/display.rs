@@ -1,0 +1,105 @@
+//! Figures as they are printed: minus sign, units, durations. Only pages, plots and messages use it.
+
+use crate::quantity::decimals_for;
+
+/// Keeps a figure and its unit on one line.
+pub const NO_BREAK: char = '\u{a0}';
+
+/// A figure with a fixed number of decimals and a true minus sign; a rounded zero has no sign.
+pub fn fixed(value: f64, decimals: usize) -> String {
+    let text = format!("{value:.decimals$}");
+    match text.strip_prefix('-') {
+        Some(digits) if digits.bytes().all(|b| b == b'0' || b == b'.') => digits.to_owned(),
+        Some(digits) => format!("−{digits}"),
+        None => text,
+    }
+}
+
+/// A figure with `digits` significant digits, trailing zeros kept, no exponent.
+pub fn significant(value: f64, digits: usize) -> String {
+    if value == 0.0 {
+        return "0".to_owned();
+    }
+    let rounded = crate::quantity::round_significant(value, digits);
+    let first = libm::floor(libm::log10(rounded.abs())) as i64;
+    let decimals = (digits as i64 - 1 - first).max(0) as usize;
+    fixed(rounded, decimals)
+}
+
+/// A figure with as many digits as it needs (at most `digits` significant), no trailing zeros.
+pub fn plain(value: f64, digits: usize) -> String {
+    let text = significant(value, digits);
+    if text.contains('.') {
+        text.trim_end_matches('0').trim_end_matches('.').to_owned()
+    } else {
+        text
+    }
+}
+
+/// A figure rounded by its interval: one place beyond the first figure of the half width.
+pub fn by_interval(value: f64, half_width: f64) -> String {
+    fixed(value, decimals_for(half_width, 6))
+}
+
+/// A time: seconds below 120 s, else minutes.
+pub fn duration(seconds: f64) -> String {
+    let (value, unit) = if seconds.abs() < 120.0 {
+        (seconds, "s")
+    } else {
+        (seconds / 60.0, "min")
+    };
+    let decimals = if value.abs() >= 99.95 {
+        0
+    } else if value.abs() >= 9.95 {
+        if unit == "s" { 0 } else { 1 }
+    } else {
+        1
+    };
+    format!("{}{NO_BREAK}{unit}", fixed(value, decimals))
+}
+
+/// A unit as printed: the spellings of exports become the signs of the trade.
+pub fn unit(text: &str) -> String {
+    match text.trim() {
+        "degC" | "deg C" | "DegC" | "DEGC" | "°C" => "°C".to_owned(),
+        "degF" | "deg F" | "DegF" | "DEGF" | "°F" => "°F".to_owned(),
+        "m3/h" => "m³/h".to_owned(),
+        "Nm3/h" => "Nm³/h".to_owned(),
+        "m3" => "m³".to_owned(),
+        "um" => "µm".to_owned(),
+        other => other.to_owned(),
+    }
+}
+
+/// A figure and its unit, bound together; no unit leaves the figure alone.
+pub fn with_unit(figure: &str, unit_text: &str) -> String {
+    let unit_text = unit(unit_text);
+    if unit_text.is_empty() {
+        figure.to_owned()
+    } else {
+        format!("{figure}{NO_BREAK}{unit_text}")
+    }
+}
+
+/// "1 step", "2 steps".
+pub fn counted(count: usize, one: &str, many: &str) -> String {
+    format!("{count}{NO_BREAK}{}", if count == 1 { one } else { many })
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn figures_print_as_on_paper() {
+        assert_eq!(fixed(-0.001, 1), "0.0");
+        assert_eq!(fixed(-1.25, 1), "−1.2");
+        assert_eq!(significant(0.8333, 3), "0.833");
+        assert_eq!(plain(42.0, 4), "42");
+        assert_eq!(plain(3.60, 4), "3.6");
+        assert_eq!(duration(24.2), "24\u{a0}s");
+        assert_eq!(duration(246.0), "4.1\u{a0}min");
+        assert_eq!(with_unit("5", "degC"), "5\u{a0}°C");
+        assert_eq!(counted(1, "step", "steps"), "1\u{a0}step");
+    }
+}

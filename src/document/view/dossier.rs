@@ -1,0 +1,473 @@
+//! The dossier: cover, register, open items, page for operations, settings to enter.
+
+use super::numbers::{bound, capital, listed, number_word, sentence, tidy};
+use super::summary::{ms, slope_unit};
+use super::{
+    Context, DocumentView, Entry, Field, RecordView, SignatureView, native, operations, page_name,
+    sign_off, status_word,
+};
+use crate::display::{self, NO_BREAK};
+use crate::document::{DocumentError, DossierInput, DossierRecord};
+use crate::record::{Record, Status};
+use crate::settings::ProportionalUnit;
+use serde::Serialize;
+
+/// Everything a dossier prints.
+#[derive(Debug, Serialize)]
+pub(in crate::document) struct DossierView {
+    document: DocumentView,
+    title: String,
+    header: String,
+    running: String,
+    logo: Option<String>,
+    verdict: Entry,
+    /// Status, number of loops, their tags.
+    counts: Vec<[String; 3]>,
+    signatures: Vec<SignatureView>,
+    register: Vec<RegisterRow>,
+    register_note: String,
+    open: Vec<Entry>,
+    operations: Option<Operations>,
+    enter: Option<Enter>,
+    records: Vec<RecordView>,
+}
+
+#[derive(Debug, Serialize)]
+struct RegisterRow {
+    id: String,
+    tag: String,
+    service: String,
+    found: Vec<String>,
+    left: Vec<String>,
+    model: Vec<String>,
+    ms: String,
+    status: String,
+    /// Whether the status wants action.
+    open: bool,
+}
+
+#[derive(Debug, Serialize)]
+struct Operations {
+    intro: String,
+    rows: Vec<operations::Row>,
+    call: String,
+}
+
+#[derive(Debug, Serialize)]
+struct Enter {
+    intro: String,
+    loops: Vec<EnterLoop>,
+}
+
+#[derive(Debug, Serialize)]
+struct EnterLoop {
+    tag: String,
+    form: String,
+    rows: Vec<super::numbers::Row>,
+}
+
+/// The records with every inner loop before the loops that cascade to it, else in the order given.
+pub(in crate::document) fn inner_first<'a>(
+    records: &[DossierRecord<'a>],
+) -> Vec<DossierRecord<'a>> {
+    fn place<'a>(
+        index: usize,
+        records: &[DossierRecord<'a>],
+        placed: &mut Vec<bool>,
+        out: &mut Vec<DossierRecord<'a>>,
+    ) {
+        if std::mem::replace(&mut placed[index], true) {
+            return;
+        }
+        let inner = records[index].record.control_loop.inner_loop.as_deref();
+        if let Some(at) = inner.and_then(|tag| {
+            records
+                .iter()
+                .position(|r| r.record.control_loop.tag == tag)
+        }) {
+            place(at, records, placed, out);
+        }
+        out.push(records[index]);
+    }
+    // An inner loop stands directly before its first outer loop, so it waits for that loop where
+    // the outer one comes later in the schedule.
+    let mut placed = vec![false; records.len()];
+    let mut out = Vec::with_capacity(records.len());
+    for (index, part) in records.iter().enumerate() {
+        let l = &part.record.control_loop;
+        let waits = records
+            .iter()
+            .skip(index + 1)
+            .any(|other| other.record.control_loop.inner_loop.as_deref() == Some(l.tag.as_str()));
+        if !waits {
+            place(index, records, &mut placed, &mut out);
+        }
+    }
+    // Whatever waits for a loop that waits for it.
+    for index in 0..records.len() {
+        place(index, records, &mut placed, &mut out);
+    }
+    out
+}
+
+pub(in crate::document) fn dossier(
+    input: &DossierInput,
+    records: &[DossierRecord],
+    views: Vec<RecordView>,
+    logo: Option<String>,
+) -> Result<DossierView, DocumentError> {
+    let contexts: Vec<Context> = records
+        .iter()
+        .map(|part| Context::new(part.record, part.figures, ""))
+        .collect::<Result<_, _>>()?;
+    let complete = contexts
+        .iter()
+        .all(|c| c.record.document.status == Status::ForSignature);
+    let status = if complete {
+        Status::ForSignature
+    } else {
+        Status::Draft
+    };
+    let register = contexts
+        .iter()
+        .zip(&views)
+        .map(|(context, view)| register_row(context, view))
+        .collect();
+    Ok(DossierView {
+        document: document(input, status),
+        title: tidy(&input.title),
+        header: header(&contexts, complete),
+        running: input
+            .area
+            .as_deref()
+            .map_or_else(|| tidy(&input.plant), tidy),
+        logo,
+        verdict: verdict(&contexts, complete),
+        counts: counts(&contexts),
+        signatures: sign_off(&input.signatures),
+        register,
+        register_note: register_note(&contexts),
+        open: open(&contexts),
+        operations: operations_page(input, &contexts),
+        enter: enter(input, &contexts),
+        records: views,
+    })
+}
+
+fn document(input: &DossierInput, status: Status) -> DocumentView {
+    let named = |role: &str| {
+        input
+            .signatures
+            .iter()
+            .find(|s| s.role.starts_with(role))
+            .and_then(|s| s.name.as_deref())
+            .map(tidy)
+            .unwrap_or_default()
+    };
+    let creator = input
+        .signatures
+        .first()
+        .and_then(|s| s.name.as_deref())
+        .map(tidy);
+    let status = status_word(status);
+    let text = |value: &Option<String>| value.as_deref().map(tidy).unwrap_or_default();
+    DocumentView {
+        kind: "Loop-tuning dossier",
+        title: format!("{} {}", tidy(&input.number), tidy(&input.title)),
+        number: tidy(&input.number),
+        revision: tidy(&input.revision),
+        date: input.date.to_string(),
+        status,
+        owner: tidy(&input.owner),
+        page: page_name(input.page),
+        authors: creator.iter().cloned().collect(),
+        keywords: vec![
+            tidy(&input.number),
+            format!("revision {}", tidy(&input.revision)),
+            status.to_lowercase(),
+        ],
+        fields: vec![
+            vec![
+                Field::new("Legal owner", tidy(&input.owner), 2),
+                Field::new("Plant", tidy(&input.plant), 2),
+                Field::new("Area", text(&input.area), 2),
+            ],
+            vec![
+                Field::new("Document number", tidy(&input.number), 2),
+                Field::new("Revision", tidy(&input.revision), 1),
+                Field::new("Date of issue", input.date.to_string(), 1),
+                Field::new("Status", status, 1),
+                Field {
+                    label: "Sheet",
+                    value: None,
+                    span: 1,
+                },
+            ],
+            vec![
+                Field::new("Created by", creator.unwrap_or_default(), 1),
+                Field::new("Approved by", named("Approved"), 1),
+                Field::new("Client", text(&input.client), 4),
+            ],
+        ],
+    }
+}
+
+fn with_status(contexts: &[Context], status: Status) -> Vec<String> {
+    contexts
+        .iter()
+        .filter(|c| c.record.document.status == status)
+        .map(|c| tidy(&c.record.control_loop.tag))
+        .collect()
+}
+
+/// "3 loops are withheld and 1 is open".
+fn not_complete(contexts: &[Context]) -> String {
+    let mut parts = Vec::new();
+    for (status, word) in [(Status::Withheld, "withheld"), (Status::Draft, "open")] {
+        let n = with_status(contexts, status).len();
+        if n == 0 {
+            continue;
+        }
+        let verb = if n == 1 { "is" } else { "are" };
+        let loops = if parts.is_empty() {
+            display::counted(n, "loop", "loops")
+        } else {
+            n.to_string()
+        };
+        parts.push(format!("{loops} {verb} {word}"));
+    }
+    listed(&parts)
+}
+
+fn header(contexts: &[Context], complete: bool) -> String {
+    if complete {
+        String::new()
+    } else {
+        format!("Draft: {}", not_complete(contexts))
+    }
+}
+
+fn verdict(contexts: &[Context], complete: bool) -> Entry {
+    let all = contexts.len();
+    if complete {
+        let loops = match all {
+            1 => "The loop is".to_owned(),
+            n => format!("All {} loops are", number_word(n)),
+        };
+        return Entry::new("For signature.", format!("{loops} for signature."));
+    }
+    let ready = with_status(contexts, Status::ForSignature).len();
+    let verb = if ready == 1 { "is" } else { "are" };
+    Entry::new(
+        "Draft.",
+        format!(
+            "{ready} of {} {verb} for signature; {}.",
+            display::counted(all, "loop", "loops"),
+            not_complete(contexts)
+        ),
+    )
+}
+
+fn counts(contexts: &[Context]) -> Vec<[String; 3]> {
+    [Status::ForSignature, Status::Draft, Status::Withheld]
+        .into_iter()
+        .map(|status| (status, with_status(contexts, status)))
+        .filter(|(_, tags)| !tags.is_empty())
+        .map(|(status, tags)| {
+            [
+                status_word(status).to_owned(),
+                tags.len().to_string(),
+                tags.join(", "),
+            ]
+        })
+        .collect()
+}
+
+// ---- register
+
+fn register_row(context: &Context, view: &RecordView) -> RegisterRow {
+    let record = context.record;
+    let l = &record.control_loop;
+    let mut service = tidy(&l.service);
+    if let Some(inner) = &l.inner_loop {
+        service.push_str(&format!(" (outer of {})", tidy(inner)));
+    } else if let [outer] = l.outer_loops.as_slice() {
+        service.push_str(&format!(" (inner of {})", tidy(outer)));
+    }
+    let settings = &record.settings;
+    RegisterRow {
+        id: view.id.clone(),
+        tag: tidy(&l.tag),
+        service,
+        found: native::short(l, settings.as_found.native),
+        left: settings
+            .as_left
+            .as_ref()
+            .map(|b| native::short(l, b.native))
+            .unwrap_or_default(),
+        model: model_in_short(record),
+        ms: if context.withheld() {
+            super::numbers::NONE.to_owned()
+        } else {
+            ms(context.after().and_then(|b| b.worst_margins)).text
+        },
+        status: status_word(record.document.status).to_owned(),
+        open: record.document.status != Status::ForSignature,
+    }
+}
+
+/// "K 0.93", "τ 3.3 min", "θ 24 s".
+fn model_in_short(record: &Record) -> Vec<String> {
+    let Some(block) = &record.model else {
+        return vec!["none: no usable step".to_owned()];
+    };
+    let fit = &block.fit;
+    let mut parts = Vec::new();
+    let gain = fit.gain.value;
+    if fit.kind.integrates() {
+        let unit = slope_unit(gain);
+        parts.push("integrates".to_owned());
+        parts.push(format!(
+            "K′{NO_BREAK}{}{NO_BREAK}/{}",
+            display::significant(gain * unit.factor(), 2),
+            unit.sign()
+        ));
+    } else {
+        parts.push(format!("K{NO_BREAK}{}", display::significant(gain, 2)));
+    }
+    for (symbol, time) in [
+        ("τ", fit.time_constant_s),
+        ("τ₂", fit.second_time_constant_s),
+        ("θ", Some(fit.dead_time_s)),
+    ] {
+        if let Some(time) = time {
+            parts.push(format!(
+                "{symbol}{NO_BREAK}{}",
+                display::duration(time.value)
+            ));
+        }
+    }
+    parts
+}
+
+fn register_note(contexts: &[Context]) -> String {
+    let mut notes = Vec::new();
+    if contexts
+        .iter()
+        .any(|c| c.record.control_loop.p_as == ProportionalUnit::Band)
+    {
+        notes.push("PB: proportional band.".to_owned());
+    }
+    notes.push(
+        "Settings in each controller’s own form and units: first the gain or band, then the integral time, \
+         or with a stroke before the unit the reset rate, then the derivative time where it is used. \
+         Ms of the worst model, settings as left or to enter."
+            .to_owned(),
+    );
+    if contexts
+        .iter()
+        .any(|c| c.record.control_loop.inner_loop.is_some())
+    {
+        notes.push("Cascade pairs stand together, inner loop first.".to_owned());
+    }
+    notes.join(" ")
+}
+
+fn open(contexts: &[Context]) -> Vec<Entry> {
+    contexts
+        .iter()
+        .filter(|c| !c.record.document.open_items.is_empty())
+        .map(|c| {
+            let texts: Vec<String> = c
+                .record
+                .document
+                .open_items
+                .iter()
+                .map(|item| sentence(&bound(&item.text)))
+                .collect();
+            Entry::new(tidy(&c.record.control_loop.tag), texts.join(" "))
+        })
+        .collect()
+}
+
+// ---- operations and faceplate
+
+fn operations_page(input: &DossierInput, contexts: &[Context]) -> Option<Operations> {
+    let rows: Vec<operations::Row> = contexts.iter().filter_map(operations::row).collect();
+    if rows.is_empty() {
+        return None;
+    }
+    let whom = input
+        .signatures
+        .first()
+        .and_then(|s| s.name.as_deref())
+        .map_or_else(
+            || "the engineer in charge of these loops".to_owned(),
+            |name| {
+                format!(
+                    "{}, who prepared this dossier, or the engineer in charge",
+                    tidy(name).replace(' ', "\u{a0}")
+                )
+            },
+        );
+    Some(Operations {
+        intro: format!(
+            "What the new controller settings of {} mean for the control room. Loops not listed work as before.",
+            input.date.format("%B %Y")
+        ),
+        rows,
+        call: format!(
+            "Questions, or a loop that does not do as written here: put it in manual as site procedure allows \
+             and call {whom}. The old settings stand on the first page of each record."
+        ),
+    })
+}
+
+fn enter(input: &DossierInput, contexts: &[Context]) -> Option<Enter> {
+    let loops: Vec<EnterLoop> = contexts.iter().filter_map(enter_loop).collect();
+    if loops.is_empty() {
+        return None;
+    }
+    let procedures: Vec<String> = input
+        .procedures
+        .iter()
+        .map(|p| tidy(&p.reference))
+        .collect();
+    let under = if procedures.is_empty() {
+        String::new()
+    } else {
+        format!(", under {}", listed(&procedures))
+    };
+    Some(Enter {
+        intro: format!(
+            "One loop at a time, in manual{under}. Compare “found” with the faceplate first: where it \
+             differs, stop. Tick each value when it has been entered and read back."
+        ),
+        loops,
+    })
+}
+
+/// Settings recommended and not entered; never those of a withheld loop.
+fn enter_loop(context: &Context) -> Option<EnterLoop> {
+    let settings = &context.record.settings;
+    if context.withheld() || settings.as_left.is_some() {
+        return None;
+    }
+    let recommended = settings.recommended.as_ref()?;
+    let l = &context.record.control_loop;
+    let found = native::settings(l, settings.as_found.native);
+    let typed = native::settings(l, recommended.native);
+    let rows = found
+        .into_iter()
+        .zip(typed)
+        .filter(|((_, found), (_, typed))| found.text != "off" || typed.text != "off")
+        .map(|((named, found), (_, typed))| {
+            super::numbers::Row::new(named.label, vec![found, typed.bold(true)])
+        })
+        .collect();
+    Some(EnterLoop {
+        tag: tidy(&l.tag),
+        form: format!("{} form", capital(native::form(l.form))),
+        rows,
+    })
+}

@@ -1,0 +1,162 @@
+//! The closed-loop trial as logged, with the prediction over it.
+
+use super::axis;
+use super::canvas::{Canvas, Ink, Stroke};
+use super::geometry::Rect;
+use super::place::{Block, Taken, end_labels, name_curve};
+use super::trend::{self, Outline, Trend};
+use super::{Figure, narrate};
+use crate::display::{duration, plain, with_unit};
+use crate::predict::Metrics;
+use crate::predict::trial::{Trial, TrialKind};
+use crate::quantity::Span;
+use crate::record::{Log, Record};
+
+const WIDTH_MM: f64 = 170.0;
+const HEIGHT_MM: f64 = 93.0;
+/// Measured PV and OP.
+const MEASURED_PT: f64 = 0.6;
+/// Predicted PV and OP.
+const PREDICTED: Stroke = Stroke::dashed(1.3, 4.5, 2.5);
+const SP: Stroke = Stroke::solid(0.6, Ink::Black);
+
+/// Draws the trial; `None` where there is no log of one, or nothing in it to draw.
+pub fn draw(record: &Record) -> Option<Figure> {
+    let log = record.trial_log()?;
+    let control_loop = &record.control_loop;
+    let pv_span = Span::new(control_loop.pv.low, control_loop.pv.high).ok()?;
+    let op_span = Span::new(control_loop.op.low, control_loop.op.high).ok()?;
+    let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
+    let lines = trend::lines(&log.data, canvas.width())?;
+    let (pv, op) = record
+        .trial
+        .as_ref()
+        .map_or_else(Default::default, |trial| {
+            let curve = &trial.curve;
+            (
+                trend::engineering(&curve.t_s, &curve.pv, pv_span),
+                trend::engineering(&curve.t_s, &curve.op, op_span),
+            )
+        });
+    let sp = axis::range(lines.sp.iter().map(|p| p.1));
+    let predicted = axis::range(pv.iter().map(|p| p.1));
+    let outline = Outline {
+        log,
+        control_loop,
+        lines: &lines,
+        also_pv: sp.map(|sp| axis::joined(sp, predicted)).or(predicted),
+        also_op: axis::range(op.iter().map(|p| p.1)),
+        top: 22.0,
+        between: 32.0,
+        op_height: 68.0,
+        right: 40.0,
+        most_ticks: [6, 5],
+    };
+    let what = if lines.sp.is_empty() {
+        "PV"
+    } else {
+        "PV and SP"
+    };
+    let trend = Trend::new(&canvas, &outline)?.pv_title(what, &control_loop.pv.unit);
+    trend.draw_axes(&mut canvas);
+    let set_point = trend.pv.curve(&mut canvas, &lines.sp, SP);
+    let measured = trend.draw_pv(&mut canvas, &lines, MEASURED_PT);
+    let op_measured = trend.op.curve(
+        &mut canvas,
+        &lines.op,
+        Stroke::solid(MEASURED_PT, Ink::Black),
+    );
+    let predicted = trend.pv.curve(&mut canvas, &pv, PREDICTED);
+    let op_predicted = trend.op.curve(&mut canvas, &op, PREDICTED);
+
+    let frame = trend.pv.frame;
+    let mut ends = vec![(trend.pv_end(&lines), "PV")];
+    ends.extend(lines.sp.last().map(|p| (trend.pv.at_y(p.1), "SP")));
+    end_labels(&mut canvas, frame.x1 + 4.0, &ends, (frame.y0, frame.y1));
+    let op_end = lines.op.last().map(|p| (trend.op.at_y(p.1), "OP"));
+    let within = (trend.op.frame.y0, trend.op.frame.y1);
+    let op_ends: Vec<(f64, &str)> = op_end.into_iter().collect();
+    end_labels(&mut canvas, frame.x1 + 4.0, &op_ends, within);
+
+    if record.trial.is_some() {
+        let sheet = Rect::new(frame.x0, frame.y0 - 10.0, frame.x1, frame.y1);
+        let mut taken = Taken::words_of(&canvas);
+        taken.add_grid(trend.grid());
+        taken.add_paths(&set_point);
+        taken.add_paths(&measured);
+        let name = Block::line("predicted", false);
+        name_curve(&mut canvas, &mut taken, &predicted, &name, sheet);
+        let mut taken = Taken::words_of(&canvas);
+        taken.add_grid(trend.grid());
+        taken.add_paths(&set_point);
+        taken.add_paths(&predicted);
+        let name = Block::line("measured", false);
+        name_curve(&mut canvas, &mut taken, &measured, &name, sheet);
+        let frame = trend.op.frame;
+        let sheet = Rect::new(frame.x0, frame.y0 - 4.0, frame.x1, frame.y1);
+        let mut taken = Taken::words_of(&canvas);
+        taken.add_grid(trend.grid());
+        taken.add_paths(&op_measured);
+        let name = Block::line("predicted", false);
+        name_curve(&mut canvas, &mut taken, &op_predicted, &name, sheet);
+    }
+    let caption = match &record.trial {
+        None => "The trial as logged.".to_owned(),
+        Some(Trial {
+            kind: TrialKind::SetPoint,
+            ..
+        }) => {
+            "The trial as logged (solid), and what the fitted model predicts from the logged set \
+             point (dashed)."
+                .to_owned()
+        }
+        Some(Trial {
+            kind: TrialKind::Load,
+            ..
+        }) => "The trial as logged (solid), and what the fitted model predicts from the load that \
+             fits it best (dashed)."
+            .to_owned(),
+    };
+    Some(Figure::new("trial.svg", &canvas, caption, alt(record, log)))
+}
+
+fn alt(record: &Record, log: &Log) -> String {
+    let mut text = format!("PV and set point above OP, {}.", narrate::when(log));
+    let Some(trial) = &record.trial else {
+        return text;
+    };
+    let pv = &record.control_loop.pv;
+    let step = trial.step_percent / 100.0 * (pv.high - pv.low);
+    let (measured, predicted) = (&trial.measured, &trial.predicted);
+    match trial.kind {
+        TrialKind::SetPoint => {
+            let size = narrate::pv_change(step.abs(), pv);
+            let way = if step < 0.0 { "fall" } else { "rise" };
+            text.push_str(&format!(
+                " After a set-point {way} of {size} PV {}; predicted: {}.",
+                told(measured),
+                told(predicted)
+            ));
+        }
+        TrialKind::Load => {
+            let size = with_unit(&plain(trial.step_percent, 3), "%");
+            text.push_str(&format!(
+                " A load that amounts to {size} of OP came in; PV {}; predicted: {}.",
+                told(measured),
+                told(predicted)
+            ));
+        }
+    }
+    text
+}
+
+fn told(metrics: &Metrics) -> String {
+    let settled = metrics.settling_time_s.map_or_else(
+        || "did not settle in the time logged".to_owned(),
+        |s| format!("settled in {}", duration(s)),
+    );
+    match metrics.overshoot_percent {
+        Some(overshoot) => format!("overshot by {} and {settled}", narrate::percent(overshoot)),
+        None => settled,
+    }
+}

@@ -1,0 +1,317 @@
+//! The cells of one row of the loop schedule, typed, with everything wrong at its place.
+
+use super::headings::HEADINGS;
+use super::row::{Day, LogCell};
+use crate::notice::{Place, Problem, nearest};
+use crate::quantity::Span;
+use crate::read::numbers::{DecimalSign, number};
+use crate::read::stamp::{DateText, stamp};
+use crate::read::table::{Cell, Row, Table};
+use crate::settings::Native;
+use crate::trace::Moment;
+use chrono::{NaiveDate, NaiveDateTime, NaiveTime, TimeDelta};
+use std::collections::BTreeMap;
+
+/// Columns that hold numbers.
+pub const NUMERIC: [&str; 20] = [
+    "pv low",
+    "pv high",
+    "op low",
+    "op high",
+    "d filter",
+    "scan s",
+    "pv filter s",
+    "found p",
+    "found i",
+    "found d",
+    "left p",
+    "left i",
+    "left d",
+    "left pv filter s",
+    "target s",
+    "allowed deviation",
+    "expected load",
+    "op move limit",
+    "pv scale",
+    "pv offset",
+];
+
+/// Reads the cells of one row and gathers what is wrong with them.
+pub struct RowReader<'a> {
+    pub(super) table: &'a Table,
+    pub(super) row: Row<'a>,
+    columns: &'a BTreeMap<&'static str, usize>,
+    decimal: DecimalSign,
+    pub(super) problems: Vec<Problem>,
+}
+
+/// Words of an enumerated column with what they mean.
+pub(super) type Words<T> = &'static [(&'static str, T)];
+
+impl<'a> RowReader<'a> {
+    /// A reader of one row.
+    pub fn new(
+        table: &'a Table,
+        row: Row<'a>,
+        columns: &'a BTreeMap<&'static str, usize>,
+        decimal: DecimalSign,
+    ) -> Self {
+        RowReader {
+            table,
+            row,
+            columns,
+            decimal,
+            problems: Vec::new(),
+        }
+    }
+
+    pub(super) fn cell(&self, name: &'static str) -> Cell<'a> {
+        self.columns
+            .get(name)
+            .map_or(Cell::Empty, |&column| self.row.cell(column))
+    }
+
+    pub(super) fn place(&self, name: &'static str) -> Place {
+        let place = self.table.place().row(self.row.number);
+        match self.columns.get(name) {
+            Some(&column) => place.column(column, Some(name)),
+            None => place,
+        }
+    }
+
+    pub(super) fn wrong(&mut self, name: &'static str, message: impl Into<String>) {
+        let problem = Problem::error(self.place(name), message);
+        self.problems.push(problem);
+    }
+
+    pub(super) fn text(&mut self, name: &'static str) -> Option<String> {
+        match self.cell(name) {
+            Cell::Empty => None,
+            Cell::Error(error) => {
+                self.wrong(name, format!("the cell holds the error value {error}"));
+                None
+            }
+            cell => Some(cell.text()),
+        }
+    }
+
+    pub(super) fn needed<T>(
+        &mut self,
+        name: &'static str,
+        read: impl FnOnce(&mut Self, &'static str) -> Option<T>,
+    ) -> Option<T> {
+        if self.cell(name).is_empty() {
+            self.wrong(name, format!("{name} is blank"));
+            return None;
+        }
+        read(self, name)
+    }
+
+    pub(super) fn number(&mut self, name: &'static str) -> Option<f64> {
+        let found = match self.cell(name) {
+            Cell::Empty => return None,
+            Cell::Number(number) if number.is_finite() => Some(number),
+            Cell::Text(text) => number(text, self.decimal),
+            _ => None,
+        };
+        if found.is_none() {
+            let text = self.cell(name).text();
+            self.wrong(name, format!("{name} is a number, found \"{text}\""));
+        }
+        found
+    }
+
+    pub(super) fn above_zero(&mut self, name: &'static str) -> Option<f64> {
+        let number = self.number(name)?;
+        if number <= 0.0 {
+            self.wrong(name, format!("{name} is above 0, found {number}"));
+            return None;
+        }
+        Some(number)
+    }
+
+    pub(super) fn not_below_zero(&mut self, name: &'static str) -> Option<f64> {
+        let number = self.number(name)?;
+        if number < 0.0 {
+            self.wrong(name, format!("{name} is not below 0, found {number}"));
+            return None;
+        }
+        Some(number)
+    }
+
+    pub(super) fn word<T: Copy>(&mut self, name: &'static str, words: Words<T>) -> Option<T> {
+        let text = self.text(name)?;
+        let evened = super::headings::even(&text);
+        let found = words
+            .iter()
+            .find(|(word, _)| super::headings::even(word) == evened)
+            .map(|(_, value)| *value);
+        if found.is_none() {
+            // The words as the schedule's own drop-down has them.
+            let shown = HEADINGS
+                .iter()
+                .find(|heading| heading.name == name)
+                .map_or(&[][..], |heading| heading.words);
+            let mut problem = Problem::error(
+                self.place(name),
+                format!("{name} is {}, found \"{text}\"", shown.join(" or ")),
+            );
+            problem.hint = nearest(&text.to_lowercase(), shown.iter().copied())
+                .map(|near| format!("did you mean \"{near}\"?"));
+            self.problems.push(problem);
+        }
+        found
+    }
+
+    pub(super) fn day(&mut self, name: &'static str) -> Option<Day> {
+        let found = match self.cell(name) {
+            Cell::Empty => return None,
+            Cell::Date(at) if at.time() == NaiveTime::MIN => Some(Day::Date(at.date())),
+            Cell::Date(at) => Some(Day::Moment(at)),
+            Cell::Text(text) => iso_day(text),
+            _ => None,
+        };
+        if found.is_none() {
+            let text = self.cell(name).text();
+            self.wrong(
+                name,
+                format!("{name} is a date such as 2026-03-14, found \"{text}\""),
+            );
+        }
+        found
+    }
+
+    /// A cut of a log: date and time of day, or seconds where the log bears no dates.
+    pub(super) fn cut(
+        &mut self,
+        name: &'static str,
+        whole_day: fn(Day) -> NaiveDateTime,
+    ) -> Option<Moment> {
+        match self.cell(name) {
+            Cell::Empty => None,
+            Cell::Number(seconds) => Some(Moment::Elapsed(seconds)),
+            Cell::Duration(seconds) => Some(Moment::Elapsed(seconds)),
+            Cell::Text(text) if number(text, self.decimal).is_some() => {
+                number(text, self.decimal).map(Moment::Elapsed)
+            }
+            _ => {
+                let text = self.cell(name).text();
+                let told = self.problems.len();
+                let day = self.day(name);
+                if self.problems.len() > told {
+                    self.problems.truncate(told);
+                    self.wrong(
+                        name,
+                        format!("{name} is a date and time such as 2026-03-14 09:05:00, or seconds where the log has no dates, found \"{text}\""),
+                    );
+                }
+                day.map(|day| Moment::Dated(whole_day(day)))
+            }
+        }
+    }
+
+    pub(super) fn span(
+        &mut self,
+        low_name: &'static str,
+        high_name: &'static str,
+        low: Option<f64>,
+        high: Option<f64>,
+    ) -> Option<Span> {
+        let (low, high) = (low?, high?);
+        let span = Span::new(low, high).ok();
+        if span.is_none() {
+            self.wrong(
+                high_name,
+                format!("{high_name} is above {low_name}, found {low} to {high}"),
+            );
+        }
+        span
+    }
+
+    /// P, I and D of one set; `None` where P is blank.
+    pub(super) fn native(
+        &mut self,
+        names: [&'static str; 3],
+        warnings: &mut Vec<Problem>,
+    ) -> Option<Native> {
+        let [p_name, i_name, d_name] = names;
+        let p = self.number(p_name);
+        let i = self.not_below_zero(i_name);
+        let d = self.not_below_zero(d_name);
+        let Some(p) = p else {
+            if i.is_some() || d.is_some() {
+                self.wrong(
+                    p_name,
+                    format!("{p_name} is blank although {i_name} or {d_name} is given"),
+                );
+            }
+            return None;
+        };
+        // Without P a controller of the parallel form still integrates; no other form acts then.
+        let is_parallel = self.cell("form").text().eq_ignore_ascii_case("parallel");
+        if p < 0.0 || (p == 0.0 && !is_parallel) {
+            self.wrong(
+                p_name,
+                format!("{p_name} is above 0 (the sign is the action's), found {p}"),
+            );
+            return None;
+        }
+        if i.is_none() && self.cell(i_name).is_empty() {
+            warnings.push(Problem::warning(
+                self.place(i_name),
+                format!("{i_name} is blank: read as no integral action"),
+            ));
+        }
+        Some(Native {
+            p,
+            i: i.unwrap_or(0.0),
+            d: d.unwrap_or(0.0),
+        })
+    }
+
+    pub(super) fn log(&mut self, [files, from, to]: [&'static str; 3]) -> Option<LogCell> {
+        let from_cut = self.cut(from, Day::begins);
+        let to_cut = self.cut(to, Day::ends);
+        let in_order = match (from_cut, to_cut) {
+            (Some(Moment::Dated(from)), Some(Moment::Dated(to))) => from < to,
+            (Some(Moment::Elapsed(from)), Some(Moment::Elapsed(to))) => from < to,
+            (Some(_), Some(_)) => false,
+            _ => true,
+        };
+        if !in_order {
+            self.wrong(to, format!("{to} is not after {from}"));
+        }
+        Some(LogCell {
+            files: self.text(files)?,
+            from: from_cut,
+            to: to_cut,
+        })
+    }
+
+    pub(super) fn as_read(&self) -> Vec<(String, String)> {
+        (0..self.table.width())
+            .map(|column| {
+                let heading = self.table.row(0).cell(column).text();
+                (heading, self.row.cell(column).text())
+            })
+            .filter(|(heading, value)| !(heading.is_empty() && value.is_empty()))
+            .collect()
+    }
+}
+
+/// A date or a moment in ISO form.
+fn iso_day(text: &str) -> Option<Day> {
+    if let Ok(date) = text.parse::<NaiveDate>() {
+        return Some(Day::Date(date));
+    }
+    let read = stamp(text)?;
+    let DateText::Known(date) = read.date? else {
+        return None;
+    };
+    Some(match read.time_us {
+        None => Day::Date(date),
+        Some(time_us) => {
+            Day::Moment(date.and_time(NaiveTime::MIN) + TimeDelta::microseconds(time_us))
+        }
+    })
+}

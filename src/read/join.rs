@@ -1,0 +1,307 @@
+//! Files of one loop put together on one clock, with what there is to say of their sampling.
+
+use super::cells::FileSamples;
+use super::clock::{Scale, microseconds, moment, moment_text};
+use super::extract::FileRead;
+use super::stamp::MICROSECONDS;
+use super::table::Table;
+use super::values::is_manual;
+use super::{LogRead, LogRequest};
+use crate::notice::{Place, Problem};
+use crate::trace::{Clock, Gap, Moment, Samples, gaps, median_interval};
+
+const HOUR_US: i64 = 3600 * MICROSECONDS;
+
+/// Intervals that differ from the usual one by more than this part of it are irregular.
+const IRREGULAR: f64 = 0.5;
+/// With more irregular intervals than this part of them a log is called reported by exception.
+const REPORTED_BY_EXCEPTION: f64 = 0.10;
+/// Part of the intervals that the jitter covers.
+const JITTER_COVERS: f64 = 0.90;
+
+/// Seconds as microseconds.
+fn to_us(seconds: f64) -> i64 {
+    libm::round(seconds * MICROSECONDS as f64) as i64
+}
+
+/// Microseconds as seconds.
+fn to_s(t_us: i64) -> f64 {
+    t_us as f64 / MICROSECONDS as f64
+}
+
+/// First and last microsecond wanted of a file whose moments are `t_us`.
+///
+/// # Errors
+/// Where the cut is of the other kind than the clock, or leaves nothing.
+pub(super) fn wanted(
+    request: &LogRequest,
+    scale: Scale,
+    table: &Table,
+    t_us: &[i64],
+) -> Result<(i64, i64), Problem> {
+    let dated = scale.is_dated();
+    let one = |cut: Option<Moment>, open: i64| match cut {
+        None => Ok(open),
+        Some(Moment::Dated(at)) if dated => Ok(microseconds(at)),
+        Some(Moment::Elapsed(seconds)) if !dated => Ok(to_us(seconds)),
+        Some(cut) => Err(Problem::error(
+            table.place(),
+            if dated {
+                format!("the log bears dates, but it is to be cut at {cut}")
+            } else {
+                format!("the log counts elapsed seconds, but it is to be cut at {cut}")
+            },
+        )
+        .hint(if dated {
+            "give the cut as a date and time of day"
+        } else {
+            "give the cut as a number of seconds"
+        })),
+    };
+    let range = (one(request.from, i64::MIN)?, one(request.to, i64::MAX)?);
+    let is_left = t_us.iter().any(|t| (range.0..=range.1).contains(t));
+    // With several files one of them may lie outside the cut as a whole.
+    if !is_left && !request.files.contains(';') {
+        let (first, last) = (
+            t_us.first().copied().unwrap_or_default(),
+            t_us.last().copied().unwrap_or_default(),
+        );
+        return Err(Problem::error(
+            table.place(),
+            format!(
+                "nothing is left within the cut; the log reaches from {} to {}",
+                moment_text(first, dated),
+                moment_text(last, dated)
+            ),
+        ));
+    }
+    Ok(range)
+}
+
+/// What an earlier file's unfolded summer time adds to the file that begins at `first_raw`.
+pub(super) fn carried_shift(before: Option<&FileRead>, first_raw: i64) -> i64 {
+    let Some(before) = before.filter(|before| before.scale == Scale::Local) else {
+        return 0;
+    };
+    let interval = to_us(before.source.interval_s).max(MICROSECONDS);
+    let back = before.last_raw - first_raw;
+    if before.shift_us > 0 && first_raw >= before.last_raw {
+        before.shift_us
+    } else if before.shift_us == 0 && (back - (HOUR_US - interval)).abs() <= interval {
+        // The clock went back between the two files.
+        HOUR_US
+    } else {
+        0
+    }
+}
+
+impl FileRead {
+    /// Works out interval, jitter and whether the file was reported by exception.
+    pub(super) fn describe_sampling(&mut self) {
+        let t_s: Vec<f64> = (0..self.samples.t_us.len())
+            .filter(|&k| !self.samples.good[k] || self.samples.pv[k].is_finite())
+            .map(|k| to_s(self.samples.t_us[k] - self.samples.t_us[0]))
+            .collect();
+        let interval = median_interval(&t_s);
+        let mut off: Vec<f64> = t_s
+            .windows(2)
+            .map(|pair| (pair[1] - pair[0] - interval).abs())
+            .collect();
+        off.sort_unstable_by(f64::total_cmp);
+        let irregular = off
+            .iter()
+            .filter(|off| **off > IRREGULAR * interval)
+            .count();
+        self.source.interval_s = interval;
+        self.source.compressed = irregular as f64 > REPORTED_BY_EXCEPTION * off.len() as f64;
+        let covered = libm::ceil(JITTER_COVERS * off.len() as f64) as usize;
+        self.source.jitter_s = covered.checked_sub(1).map_or(0.0, |k| off[k]);
+    }
+}
+
+/// Stretches without a good sample. Where samples come by exception a long silence means that
+/// nothing changed: only one with a bad sample in it is a gap.
+fn gaps_of(samples: &FileSamples, zero_us: i64, compressed: bool) -> Vec<Gap> {
+    let good: Vec<f64> = (0..samples.t_us.len())
+        .filter(|&k| samples.good[k] && samples.pv[k].is_finite())
+        .map(|k| to_s(samples.t_us[k] - zero_us))
+        .collect();
+    let bad: Vec<f64> = (0..samples.t_us.len())
+        .filter(|&k| !samples.good[k])
+        .map(|k| to_s(samples.t_us[k] - zero_us))
+        .collect();
+    gaps(&good)
+        .into_iter()
+        .filter(|gap| {
+            let first_inside = bad.partition_point(|t| *t <= gap.from_s);
+            !compressed || bad.get(first_inside).is_some_and(|t| *t < gap.to_s)
+        })
+        .collect()
+}
+
+/// Puts the files of a loop together.
+///
+/// # Errors
+/// Where their clocks do not go together, or nothing is left.
+pub(super) fn join(mut files: Vec<FileRead>) -> Result<LogRead, Vec<Problem>> {
+    let one = |problem: Problem| vec![problem];
+    let place = |file: &FileRead| {
+        let place = Place::file(&file.source.file);
+        match &file.source.sheet {
+            Some(sheet) => place.sheet(sheet),
+            None => place,
+        }
+    };
+    if let [first, rest @ ..] = &files[..]
+        && let Some(other) = rest
+            .iter()
+            .find(|file| !file.scale.is_dated() || !first.scale.is_dated())
+    {
+        return Err(one(Problem::error(
+            place(other),
+            "logs without dates cannot be put together: nothing tells how they follow each other",
+        )
+        .hint("give one file per test")));
+    }
+    let mut warnings: Vec<Problem> = Vec::new();
+    for file in &mut files {
+        warnings.append(&mut file.warnings);
+    }
+    files.retain(|file| !file.samples.t_us.is_empty());
+    if files.is_empty() {
+        return Err(one(Problem::general("nothing is left within the cut")));
+    }
+    files.sort_by_key(|file| file.samples.t_us[0]);
+    for pair in files.windows(2) {
+        let end = pair[0].samples.t_us.last().copied().unwrap_or_default();
+        if pair[1].samples.t_us[0] <= end {
+            warnings.push(Problem::warning(
+                place(&pair[1]),
+                format!(
+                    "the file begins before {} ends; of two samples at one moment the later file's is used",
+                    pair[0].source.file
+                ),
+            ));
+        }
+    }
+    let dated = files[0].scale.is_dated();
+    // Elapsed time keeps its own 0, which the schedule's cuts refer to.
+    let zero_us = if dated { files[0].samples.t_us[0] } else { 0 };
+    let mut rows: Vec<(i64, usize, usize)> = Vec::new();
+    for (f, file) in files.iter().enumerate() {
+        rows.extend(
+            file.samples
+                .t_us
+                .iter()
+                .enumerate()
+                .map(|(k, t)| (*t, f, k)),
+        );
+    }
+    if files.len() > 1 {
+        rows.sort_by_key(|(t, f, _)| (*t, *f));
+        // The last of one moment is kept: look from the end.
+        rows.reverse();
+        rows.dedup_by_key(|(t, _, _)| *t);
+        rows.reverse();
+    }
+    let all_have = |has: fn(&FileSamples) -> bool| files.iter().all(|file| has(&file.samples));
+    let has_sp = all_have(|samples| samples.sp.is_some());
+    let has_mode = all_have(|samples| samples.mode.is_some());
+    let mut samples = Samples::default();
+    for &(t_us, f, k) in &rows {
+        let file = &files[f].samples;
+        samples.t_s.push(to_s(t_us - zero_us));
+        samples.pv.push(file.pv[k]);
+        samples.good.push(file.good[k]);
+        samples.op.push(file.op[k]);
+        if has_sp && let Some(sp) = &file.sp {
+            samples.sp.push(sp[k]);
+        }
+        if has_mode && let Some(mode) = &file.mode {
+            samples
+                .manual
+                .push(is_manual(&mode[k], &files[f].manual_values));
+            samples.mode.push(mode[k].clone());
+        }
+    }
+    if samples.sp.iter().all(|sp| sp.is_nan()) {
+        samples.sp.clear();
+    }
+    warn_of_modes(&samples, &place(&files[0]), &mut warnings);
+    for file in &mut files {
+        file.source.gaps = gaps_of(&file.samples, zero_us, file.source.compressed);
+    }
+    if !samples
+        .good
+        .iter()
+        .zip(&samples.pv)
+        .any(|(good, pv)| *good && pv.is_finite())
+    {
+        return Err(one(no_good_sample(&files[0], place(&files[0]))));
+    }
+    Ok(LogRead {
+        clock: if dated {
+            Clock::Dated(moment(zero_us))
+        } else {
+            Clock::Elapsed
+        },
+        samples,
+        sources: files.into_iter().map(|file| file.source).collect(),
+        warnings,
+    })
+}
+
+/// A mode column none of whose texts means manual: the schedule's words may be missing.
+fn warn_of_modes(samples: &Samples, place: &Place, warnings: &mut Vec<Problem>) {
+    if samples.mode.is_empty() || samples.manual.iter().any(|manual| *manual) {
+        return;
+    }
+    let known_automatic = [
+        "AUTO",
+        "AUT",
+        "A",
+        "AUTOMATIC",
+        "CAS",
+        "CASCADE",
+        "RCAS",
+        "C",
+    ];
+    let mut unknown: Vec<&str> = samples
+        .mode
+        .iter()
+        .map(String::as_str)
+        .filter(|mode| {
+            !known_automatic
+                .iter()
+                .any(|word| word.eq_ignore_ascii_case(mode))
+        })
+        .collect();
+    unknown.sort_unstable();
+    unknown.dedup();
+    if !unknown.is_empty() {
+        warnings.push(
+            Problem::warning(
+                place.clone(),
+                format!(
+                    "no text of the mode column is known to mean manual; it holds {}",
+                    unknown.join(", ")
+                ),
+            )
+            .hint("name those that do under manual_values in a [[log]] table of job.toml"),
+        );
+    }
+}
+
+fn no_good_sample(file: &FileRead, place: Place) -> Problem {
+    let causes: Vec<String> = file
+        .source
+        .bad
+        .iter()
+        .map(|(cause, count)| format!("{cause}: {count}"))
+        .collect();
+    Problem::error(
+        place,
+        format!("the PV has no good sample ({})", causes.join(", ")),
+    )
+    .hint("compare the unit and range in the schedule with the log, and look at its quality column")
+}

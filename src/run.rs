@@ -1,0 +1,396 @@
+//! The runs over a whole job: loop by loop on all cores, inner loops before those that cascade to them.
+
+use crate::archive::{self, FileNames};
+use crate::assemble::{self, InnerRecord};
+use crate::document::Templates;
+use crate::job::{self, Job, LoopRow};
+use crate::notice::{Place, Problem, nearest};
+use crate::pipeline::{self, Engineered, Recorded};
+use crate::read::FileCache;
+use crate::record::Record;
+use crate::register;
+use crate::report::{
+    CheckReport, DossierOutcome, LoopOutcome, LoopReport, NewReport, Progress, RunReport,
+};
+use std::path::{Path, PathBuf};
+use std::sync::OnceLock;
+use std::sync::atomic::{AtomicUsize, Ordering};
+use std::sync::mpsc;
+
+/// Folder of the records in the job folder.
+const RECORDS_FOLDER: &str = "records";
+
+/// What `record` is asked for.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct RecordOptions {
+    /// Tags of the loops to record; empty: all.
+    pub only: Vec<String>,
+    /// Folder of the records; `None`: `records` in the job folder.
+    pub out: Option<PathBuf>,
+    /// Whether the dossier is wanted.
+    pub dossier: bool,
+}
+
+/// A job with the loops that this run is about.
+struct Selected {
+    job: Job,
+    notices: Vec<Problem>,
+    /// Places in `job.loops`, in the order of the schedule.
+    wanted: Vec<usize>,
+}
+
+/// Lays out a job folder.
+///
+/// # Errors
+/// Where the folder is not empty or cannot be written.
+pub fn new_job(folder: &Path) -> Result<NewReport, Vec<Problem>> {
+    let files = job::new_job(folder).map_err(|problem| vec![problem])?;
+    Ok(NewReport {
+        folder: shown(folder),
+        files,
+    })
+}
+
+/// Does all that [`record`] would do short of typesetting and writing.
+///
+/// # Errors
+/// Where the job as a whole cannot be used.
+pub fn check(folder: &Path, only: &[String]) -> Result<CheckReport, Vec<Problem>> {
+    let selected = select(folder, only)?;
+    let out = folder.join(RECORDS_FOLDER);
+    let outcomes = each_loop(&selected, &mut |_| {}, |_, engineered| {
+        pipeline::look(&engineered, &out)?;
+        Ok(engineered)
+    });
+    let loops = selected
+        .wanted
+        .iter()
+        .zip(outcomes)
+        .map(|(&index, outcome)| {
+            let (outcome, notices) = match outcome {
+                Ok(engineered) => (
+                    LoopOutcome::Ready {
+                        status: engineered.record.document.status,
+                        open_items: open_items(&engineered.record),
+                    },
+                    engineered.notices,
+                ),
+                Err(problems) => (LoopOutcome::Failed { problems }, Vec::new()),
+            };
+            loop_report(&selected.job, index, outcome, notices)
+        })
+        .collect();
+    Ok(CheckReport {
+        job: shown(folder),
+        notices: selected.notices,
+        loops,
+    })
+}
+
+/// Makes records, dossier and register.
+///
+/// # Errors
+/// Where the job as a whole cannot be used or the folder of the records cannot be written.
+pub fn record(
+    folder: &Path,
+    options: &RecordOptions,
+    progress: &mut dyn FnMut(Progress),
+) -> Result<RunReport, Vec<Problem>> {
+    let selected = select(folder, &options.only)?;
+    let templates = Templates::new(selected.job.template_files()?);
+    let out = options
+        .out
+        .clone()
+        .unwrap_or_else(|| folder.join(RECORDS_FOLDER));
+    archive::prepare(&out).map_err(|problem| vec![problem])?;
+    let outcomes = each_loop(&selected, progress, |row, engineered| {
+        pipeline::write(&selected.job, row, engineered, &out, &templates)
+    });
+    let recorded: Vec<&Recorded> = outcomes.iter().flatten().collect();
+    let dossier = (options.dossier && options.only.is_empty() && !recorded.is_empty()).then(|| {
+        progress(Progress {
+            done: selected.wanted.len(),
+            of: selected.wanted.len(),
+            now: "the dossier".to_owned(),
+        });
+        dossier(&selected, &outcomes, &out, &templates)
+    });
+    let mut notices = selected.notices.clone();
+    let register = if options.only.is_empty() && !recorded.is_empty() {
+        let records: Vec<Record> = recorded.iter().map(|r| r.record.clone()).collect();
+        archive::write_register(&out, &register::to_csv(&records))
+            .map_err(|problem| vec![problem])?;
+        Some(archive::REGISTER_FILE.to_owned())
+    } else {
+        None
+    };
+    let loops = selected
+        .wanted
+        .iter()
+        .zip(&outcomes)
+        .map(|(&index, outcome)| match outcome {
+            Ok(recorded) => {
+                let document = &recorded.record.document;
+                let written = FileNames::new(&document.number, &document.revision).map(|names| {
+                    LoopOutcome::Written {
+                        status: document.status,
+                        open_items: open_items(&recorded.record),
+                        pdf: names.pdf(),
+                        json: names.json(),
+                        kept: recorded.kept,
+                    }
+                });
+                let outcome = written.unwrap_or_else(|problem| LoopOutcome::Failed {
+                    problems: vec![problem],
+                });
+                loop_report(&selected.job, index, outcome, recorded.notices.clone())
+            }
+            Err(problems) => loop_report(
+                &selected.job,
+                index,
+                LoopOutcome::Failed {
+                    problems: problems.clone(),
+                },
+                Vec::new(),
+            ),
+        })
+        .collect();
+    notices.dedup();
+    Ok(RunReport {
+        job: shown(folder),
+        out: shown(&out),
+        notices,
+        loops,
+        dossier,
+        register,
+    })
+}
+
+fn shown(path: &Path) -> String {
+    path.display().to_string().replace('\\', "/")
+}
+
+fn open_items(record: &Record) -> Vec<String> {
+    record
+        .document
+        .open_items
+        .iter()
+        .map(|item| item.text.clone())
+        .collect()
+}
+
+fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Problem>) -> LoopReport {
+    LoopReport {
+        tag: tag_of(job, index).to_owned(),
+        outcome,
+        notices,
+    }
+}
+
+fn tag_of(job: &Job, index: usize) -> &str {
+    match &job.loops[index] {
+        Ok(row) => &row.tag,
+        Err(bad) => &bad.tag,
+    }
+}
+
+/// Reads the job and picks the loops asked for.
+fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
+    let (job, notices) = Job::read(folder)?;
+    let tags: Vec<&str> = (0..job.loops.len()).map(|k| tag_of(&job, k)).collect();
+    let unknown: Vec<Problem> = only
+        .iter()
+        .filter(|tag| !tags.iter().any(|known| known.eq_ignore_ascii_case(tag)))
+        .map(|tag| {
+            let problem = Problem::error(
+                Place::file(&job.schedule_file),
+                format!("there is no loop {tag}"),
+            );
+            match nearest(tag, tags.iter().copied()) {
+                Some(known) => problem.hint(format!("did you mean {known}?")),
+                None => problem.hint(format!("the loops are {}", tags.join(", "))),
+            }
+        })
+        .collect();
+    if !unknown.is_empty() {
+        return Err(unknown);
+    }
+    let wanted = (0..job.loops.len())
+        .filter(|&k| {
+            only.is_empty()
+                || only
+                    .iter()
+                    .any(|tag| tag.eq_ignore_ascii_case(tag_of(&job, k)))
+        })
+        .collect();
+    let mut selected = Selected {
+        job,
+        notices,
+        wanted,
+    };
+    refuse_clashes(&mut selected);
+    Ok(selected)
+}
+
+/// Two loops whose documents would be one file: both fail, neither overwrites the other.
+fn refuse_clashes(selected: &mut Selected) {
+    let mut names = Vec::new();
+    for row in selected.job.loops.iter().flatten() {
+        let identity = selected.job.document(row);
+        if let Ok(name) = FileNames::new(&identity.number, &identity.revision) {
+            names.push((row.tag.clone(), name));
+        }
+    }
+    let labelled = names.iter().map(|(tag, name)| (tag.as_str(), name));
+    for (tag, problem) in archive::clashes(labelled) {
+        selected.job.refuse(&tag, problem);
+    }
+}
+
+/// The loops that have to be engineered for this run, inner loops first: those asked for and the inner
+/// loops that they stand on.
+fn needed(selected: &Selected) -> Vec<usize> {
+    let job = &selected.job;
+    let mut needed = vec![false; job.loops.len()];
+    for &start in &selected.wanted {
+        let mut next = Some(start);
+        while let Some(index) = next.filter(|&k| !needed[k]) {
+            needed[index] = true;
+            next = inner_of(job, index);
+        }
+    }
+    job.inner_first()
+        .into_iter()
+        .filter(|&k| needed[k])
+        .collect()
+}
+
+/// Place of the loop's inner loop in the schedule.
+fn inner_of(job: &Job, index: usize) -> Option<usize> {
+    let inner = job.loops[index].as_ref().ok()?.inner_loop.as_deref()?;
+    (0..job.loops.len()).find(|&k| tag_of(job, k).eq_ignore_ascii_case(inner))
+}
+
+/// Engineers every loop and does `finish` with those asked for, on all cores. Outcomes come in the
+/// order of `selected.wanted`, whatever order the work was done in.
+fn each_loop<T: Send + Sync>(
+    selected: &Selected,
+    progress: &mut dyn FnMut(Progress),
+    finish: impl Fn(&LoopRow, Engineered) -> Result<T, Vec<Problem>> + Sync,
+) -> Vec<Result<T, Vec<Problem>>> {
+    let job = &selected.job;
+    let order = needed(selected);
+    let cache = FileCache::default();
+    // An outer loop waits for its inner one; that one was taken earlier, so somebody is at it.
+    let inner: Vec<OnceLock<Option<InnerRecord>>> =
+        job.loops.iter().map(|_| OnceLock::new()).collect();
+    let outcomes: Vec<OnceLock<Result<T, Vec<Problem>>>> =
+        job.loops.iter().map(|_| OnceLock::new()).collect();
+    let next = AtomicUsize::new(0);
+    let (told, heard) = mpsc::channel();
+    let work = |told: mpsc::Sender<usize>| {
+        while let Some(&index) = order.get(next.fetch_add(1, Ordering::Relaxed)) {
+            // Who listens is the thread that started this one; it listens to the end.
+            let _ = told.send(index);
+            let Ok(row) = &job.loops[index] else { continue };
+            let engineered = engineer(job, index, row, &inner, &cache);
+            let for_outer = engineered.as_ref().ok();
+            let _ = inner[index].set(for_outer.map(|e| assemble::inner_record(&e.record)));
+            if selected.wanted.contains(&index) {
+                let _ = outcomes[index].set(engineered.and_then(|e| finish(row, e)));
+            }
+        }
+    };
+    let workers = std::thread::available_parallelism()
+        .map_or(1, |n| n.get())
+        .min(order.len());
+    std::thread::scope(|scope| {
+        for _ in 0..workers {
+            let told = told.clone();
+            scope.spawn(|| work(told));
+        }
+        drop(told);
+        for (done, index) in heard.iter().enumerate() {
+            progress(Progress {
+                done,
+                of: order.len(),
+                now: tag_of(job, index).to_owned(),
+            });
+        }
+    });
+    let mut outcomes = outcomes;
+    selected
+        .wanted
+        .iter()
+        .map(|&index| match &job.loops[index] {
+            Err(bad) => Err(bad.problems.clone()),
+            Ok(_) => outcomes[index]
+                .take()
+                .expect("every loop asked for was worked on"),
+        })
+        .collect()
+}
+
+fn engineer(
+    job: &Job,
+    index: usize,
+    row: &LoopRow,
+    inner: &[OnceLock<Option<InnerRecord>>],
+    cache: &FileCache,
+) -> Result<Engineered, Vec<Problem>> {
+    let inner_record = match inner_of(job, index) {
+        None => None,
+        Some(k) => {
+            let found = match &job.loops[k] {
+                Ok(_) => inner[k].wait().clone(),
+                Err(_) => None,
+            };
+            match found {
+                Some(record) => Some(record),
+                None => {
+                    return Err(vec![Problem::error(
+                        row.place.clone(),
+                        format!(
+                            "its inner loop {} could not be recorded, and this loop stands on it",
+                            tag_of(job, k)
+                        ),
+                    )]);
+                }
+            }
+        }
+    };
+    pipeline::engineer(job, row, inner_record, cache)
+}
+
+/// The dossier of all records that there are, inner loops before the loops that cascade to them.
+fn dossier(
+    selected: &Selected,
+    outcomes: &[Result<Recorded, Vec<Problem>>],
+    out: &Path,
+    templates: &Templates,
+) -> DossierOutcome {
+    let records: Vec<&Recorded> = selected
+        .job
+        .inner_first()
+        .into_iter()
+        .filter_map(|index| {
+            let place = selected.wanted.iter().position(|&k| k == index)?;
+            outcomes[place].as_ref().ok()
+        })
+        .collect();
+    let complete = outcomes.iter().all(Result::is_ok);
+    let written = pipeline::write_dossier(&selected.job, &records, complete, out, templates)
+        .and_then(|(dossier, kept, notices)| {
+            let document = &dossier.document;
+            let names = FileNames::new(&document.number, &document.revision)
+                .map_err(|problem| vec![problem])?;
+            Ok(DossierOutcome::Written {
+                status: document.status,
+                pdf: names.pdf(),
+                json: names.json(),
+                kept,
+                notices,
+            })
+        });
+    written.unwrap_or_else(|problems| DossierOutcome::Failed { problems })
+}
