@@ -291,7 +291,7 @@ impl Trace {
             .iter()
             .filter(|c| {
                 let multiple = libm::round(*c / cycle);
-                multiple >= 1.0 && multiple <= 4.0 && (*c - multiple * cycle).abs() <= slack
+                (1.0..=4.0).contains(&multiple) && (*c - multiple * cycle).abs() <= slack
             })
             .count();
         let once = cycles

@@ -3,8 +3,7 @@
 //! BIC: G. Schwarz, Annals of Statistics 6 (1978) 461-464.
 
 use super::Alternative;
-use super::covariance::{self, Memory};
-use super::least_squares::{Base, Fit, FitError, Problem};
+use super::least_squares::{Base, Fit, FitError, Point, Problem};
 use super::search;
 use super::words::time_text;
 use crate::model::Kind;
@@ -13,16 +12,36 @@ use crate::model::Kind;
 const CLEARLY: f64 = 10.0;
 /// Beyond this many times what was watched, a time constant is not seen to end: the PV did not bend.
 const UNBENT: f64 = 3.0;
+/// Part of the change of slope that an integrating PV still moves with at the end.
+const STILL_MOVING: f64 = 0.3;
 /// Mean square residual below which there is nothing left to explain, %².
 const NOTHING_LEFT: f64 = 1e-10;
 
-/// A fit with what its residual remembers.
+/// A fit with the bases it was given.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Candidate {
     pub fit: Fit,
-    pub memory: Memory,
     /// Base of each window.
     pub bases: Vec<Base>,
+    /// OP at the end of each window less its level before the move, %.
+    pub op_end: Vec<f64>,
+}
+
+impl Candidate {
+    /// Whether an integrating fit has the PV still moving at the end, on average over its windows by
+    /// more than a part of what the moves changed its slope. A PV that came to rest just because a
+    /// slope before the move met its opposite would be chance.
+    fn still_moving(&self) -> bool {
+        let parts: Vec<f64> = self
+            .op_end
+            .iter()
+            .zip(&self.fit.bases)
+            .zip(&self.fit.gains)
+            .filter(|((op, _), _)| **op != 0.0)
+            .map(|((op, base), gain)| ((base.1 + gain * op) / (gain * op)).abs().min(1.0))
+            .collect();
+        parts.is_empty() || parts.iter().sum::<f64>() > STILL_MOVING * parts.len() as f64
+    }
 }
 
 /// BIC of a fit for a given number of samples that count, less a constant common to all fits.
@@ -31,20 +50,16 @@ fn bic(fit: &Fit, effective: f64) -> f64 {
     effective * libm::log(mean_square) + fit.parameters as f64 * libm::log(effective)
 }
 
-fn lengths(problem: &Problem) -> Vec<usize> {
-    problem.windows.iter().map(|w| w.t_s.len()).collect()
-}
-
-fn candidate(
-    problem: &Problem,
-    kind: Kind,
-    hints: &[super::least_squares::Point],
-) -> Result<Candidate, FitError> {
+fn candidate(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Candidate, FitError> {
     let fit = search::fit(problem, kind, hints)?;
     Ok(Candidate {
-        memory: covariance::memory(&fit, &lengths(problem)),
         fit,
         bases: problem.windows.iter().map(|w| w.base).collect(),
+        op_end: problem
+            .windows
+            .iter()
+            .map(|w| w.moves.last().map_or(0.0, |m| m.1))
+            .collect(),
     })
 }
 
@@ -60,19 +75,31 @@ fn with_bases(problem: &Problem, base: impl Fn(usize) -> Base) -> Problem {
 /// off balance before the move; others get one only where it earns its place.
 pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
     let sloped = with_bases(problem, |_| Base::LevelAndSlope);
-    let mut found = Vec::new();
-    for kind in Kind::ALL {
-        if kind.integrates() {
-            found.push(candidate(&sloped, kind, &[])?);
-            continue;
-        }
-        let level = candidate(problem, kind, &[])?;
-        let slope = candidate(&sloped, kind, &[level.fit.point])?;
-        let effective = slope.fit.rows as f64 / slope.memory.factor;
+    // Where a fit with a slope starts: near the one without, its lag also much longer or shorter.
+    let around = |point: Point| {
+        [1.0, 3.0, 1.0 / 3.0].map(|factor| Point {
+            ln_lag: point.ln_lag + libm::log(factor),
+            ..point
+        })
+    };
+    let better = |level: Candidate, slope: Candidate| {
+        let effective = slope.fit.rows as f64 / slope.fit.memory.factor;
         let gained = bic(&level.fit, effective) - bic(&slope.fit, effective);
-        found.push(if gained > CLEARLY { slope } else { level });
-    }
-    Ok(found)
+        if gained > CLEARLY { slope } else { level }
+    };
+    let first = candidate(problem, Kind::FirstOrder, &[])?;
+    let first_sloped = candidate(&sloped, Kind::FirstOrder, &around(first.fit.point))?;
+    let splits = search::split_lags(&[first.fit.point]);
+    let second = candidate(problem, Kind::SecondOrder, &splits)?;
+    let mut splits = search::split_lags(&[first_sloped.fit.point]);
+    splits.push(second.fit.point);
+    let second_sloped = candidate(&sloped, Kind::SecondOrder, &splits)?;
+    Ok(vec![
+        better(first, first_sloped),
+        better(second, second_sloped),
+        candidate(&sloped, Kind::Integrating, &[])?,
+        candidate(&sloped, Kind::IntegratingLag, &[])?,
+    ])
 }
 
 /// Fits of all four kinds to several steps; `bases` are those that each step's own fit of a kind
@@ -80,7 +107,7 @@ pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
 pub(crate) fn of_steps(
     problem: &Problem,
     bases: impl Fn(Kind, usize) -> Base,
-    hints: impl Fn(Kind) -> Vec<super::least_squares::Point>,
+    hints: impl Fn(Kind) -> Vec<Point>,
 ) -> Result<Vec<Candidate>, FitError> {
     Kind::ALL
         .iter()
@@ -89,6 +116,12 @@ pub(crate) fn of_steps(
             candidate(&problem, kind, &hints(kind))
         })
         .collect()
+}
+
+/// Puts one gain for all windows in the place of one for each; the bases stay.
+pub(crate) fn share_gain(candidate: &mut Candidate, problem: &Problem) {
+    let problem = with_bases(problem, |k| candidate.bases[k]);
+    candidate.fit = search::with_common_gain(&problem, &candidate.fit);
 }
 
 /// What was chosen and why the others were not.
@@ -135,7 +168,7 @@ pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Ch
         .iter()
         .min_by(|a, b| a.fit.rss.total_cmp(&b.fit.rss))
         .expect("there are four candidates");
-    let effective = least.fit.rows as f64 / least.memory.factor;
+    let effective = least.fit.rows as f64 / least.fit.memory.factor;
     let bics: Vec<f64> = found.iter().map(|c| bic(&c.fit, effective)).collect();
     // Within a family the simpler one stands unless the richer one is clearly better.
     let richer = |simple: usize| {
@@ -154,6 +187,10 @@ pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Ch
         settling
     } else if excess < -CLEARLY {
         integrating
+    } else if !found[integrating].still_moving() {
+        settling
+    } else if unbent {
+        integrating
     } else {
         let (kc_s, ti_s) = settings(&found[settling].fit, interval_s);
         let (kc_i, ti_i) = settings(&found[integrating].fit, interval_s);
@@ -164,8 +201,8 @@ pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Ch
             integrating
         };
         if near(kc_s, kc_i) && near(ti_s, ti_i) {
-            // Nothing hangs on it.
-            if unbent { integrating } else { slower }
+            // Nothing hangs on it, and the time constant is not seen to end.
+            integrating
         } else {
             undecided = Some(format!(
                 "The PV was not watched for long enough to tell a process that settles \

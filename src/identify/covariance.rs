@@ -53,13 +53,13 @@ fn scaled(mut matrix: Vec<Vec<f64>>, factor: f64) -> Vec<Vec<f64>> {
 
 /// Memory of a residual.
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub(crate) struct Memory {
+pub struct Memory {
     /// Lag-one autocorrelation as it stands.
     pub autocorrelation: f64,
+    /// Lag-one autocorrelation of the noise, corrected for what the fit took up of it; not negative.
+    pub noise_autocorrelation: f64,
     /// How many samples count as one: Σ of the autocorrelation over all lags, at least 1.
     pub factor: f64,
-    /// Variance of the noise, corrected for what the fit took up of it, %².
-    pub variance: f64,
 }
 
 /// Σ r(i) r(i+lag) over the windows of the residual.
@@ -80,36 +80,31 @@ fn products(residual: &[f64], windows: &[usize], lag: usize) -> f64 {
     sum
 }
 
-/// The memory of a fit's residual; `windows` are the numbers of samples of its windows.
+/// The memory of a residual left by a fit of so many parameters; `windows` are the numbers of
+/// samples of its windows.
 ///
 /// A fit takes up the slow part of correlated noise: of p parameters each removes about F = Σρ
 /// samples' worth. For noise of one time constant the residual then shows
 /// ρ̂ = (ρ − cF)/(1 − cF), c = p/n, F = (1+ρ)/(1−ρ), which is solved for ρ. Where the autocorrelation
 /// has a longer tail than that, its sum over lags is used if larger.
-pub(crate) fn memory(fit: &Fit, windows: &[usize]) -> Memory {
-    let rows = fit.rows as f64;
-    let own = products(&fit.residual, windows, 0);
-    let free = (rows - fit.parameters as f64).max(1.0);
+pub(crate) fn memory(residual: &[f64], windows: &[usize], parameters: usize) -> Memory {
+    let rows = residual.len() as f64;
+    let own = products(residual, windows, 0);
     if own <= 0.0 {
         return Memory {
             autocorrelation: 0.0,
+            noise_autocorrelation: 0.0,
             factor: 1.0,
-            variance: 0.0,
         };
     }
-    let at = |lag: usize| products(&fit.residual, windows, lag) / own;
+    let at = |lag: usize| products(residual, windows, lag) / own;
     let seen = at(1);
-    let c = fit.parameters as f64 / rows;
+    let c = parameters as f64 / rows;
     // ρ² − ρ(1 + ρ̂ − c(1 − ρ̂)) + ρ̂ + c(1 − ρ̂) = 0; the root that goes to ρ̂ with c → 0.
     let sum = 1.0 + seen - c * (1.0 - seen);
     let under_root = sum * sum / 4.0 - seen - c * (1.0 - seen);
-    let rho = if under_root > 0.0 {
-        sum / 2.0 - libm::sqrt(under_root)
-    } else {
-        sum / 2.0
-    }
-    .clamp(-0.99, 0.999);
-    let by_one_lag = ((1.0 + rho) / (1.0 - rho)).max(1.0);
+    let rho = (sum / 2.0 - libm::sqrt(under_root.max(0.0))).clamp(0.0, 0.999);
+    let by_one_lag = (1.0 + rho) / (1.0 - rho);
 
     // Σ of the autocorrelation by the trapezoid over widening lags until it is lost in its scatter.
     let mut by_sum = 1.0;
@@ -121,18 +116,39 @@ pub(crate) fn memory(fit: &Fit, windows: &[usize]) -> Memory {
         if here < 2.0 / libm::sqrt(rows) {
             break;
         }
-        // Lags between the last and this one: the mean of both, twice for both signs.
+        // Lags after the last up to this one: the mean of both, twice for both signs.
         by_sum += (lag - last_lag) as f64 * (before + here) - before + here;
         (before, last_lag) = (here, lag);
         lag += 1 + lag / 4;
     }
-    let factor = by_one_lag.max(by_sum).min(rows / 4.0).max(1.0);
-    let left = (rows - fit.parameters as f64 * factor).max(free / 4.0);
     Memory {
         autocorrelation: seen.clamp(-1.0, 1.0),
-        factor,
-        variance: fit.rss / left,
+        noise_autocorrelation: rho,
+        factor: by_one_lag.max(by_sum).min(rows / 4.0).max(1.0),
     }
+}
+
+/// JᵀVJ for columns J and noise whose autocorrelation falls as ρ^lag within each window: the middle
+/// of the sandwich (H. White, Econometrica 48 (1980) 817-838) with the noise's model put in.
+pub(crate) fn filtered(columns: &[&[f64]], windows: &[usize], rho: f64) -> Vec<Vec<f64>> {
+    let mut sums = vec![vec![0.0; columns.len()]; columns.len()];
+    let mut start = 0;
+    for &rows in windows {
+        for (j, a) in columns.iter().enumerate() {
+            // Σ over earlier rows of ρ^distance, row by row.
+            let mut earlier = 0.0;
+            for i in start..start + rows {
+                for (k, b) in columns.iter().enumerate() {
+                    let both = a[i] * b[i];
+                    sums[j][k] += earlier * b[i] + both / 2.0;
+                    sums[k][j] += earlier * b[i] + both / 2.0;
+                }
+                earlier = rho * (earlier + a[i]);
+            }
+        }
+        start += rows;
+    }
+    sums
 }
 
 /// Two-sided 95 % quantile of Student's t for `degrees` of freedom (not whole), by the expansion of
@@ -169,18 +185,39 @@ pub(crate) fn parameter_names(kind: Kind) -> Vec<String> {
         .collect()
 }
 
+/// (JᵀJ)⁻¹ JᵀVJ (JᵀJ)⁻¹ with the variance of the noise, over relative gain, dead time, m, w.
+fn sandwich(fit: &Fit) -> Vec<Vec<f64>> {
+    let inverse = inverse_information(fit);
+    let n = inverse.len();
+    let product = |a: &[Vec<f64>], b: &[Vec<f64>]| -> Vec<Vec<f64>> {
+        (0..n)
+            .map(|j| {
+                (0..n)
+                    .map(|k| (0..n).map(|i| a[j][i] * b[i][k]).sum())
+                    .collect()
+            })
+            .collect()
+    };
+    let rho = fit.memory.noise_autocorrelation;
+    // A longer tail of the autocorrelation than ρ has.
+    let tail = (fit.memory.factor * (1.0 - rho) / (1.0 + rho)).max(1.0);
+    let half = product(&inverse, &fit.filtered);
+    // What the fit took up of the noise: by each shape parameter as computed, by each base F.
+    let shapes: f64 = (0..n).map(|k| half[k][k]).sum();
+    let bases = fit.parameters.saturating_sub(n) as f64;
+    let rows = fit.rows as f64;
+    let left =
+        (rows - (shapes * tail).min(n as f64 * fit.memory.factor) - bases * fit.memory.factor)
+            .max((rows - fit.parameters as f64) / 4.0);
+    scaled(product(&half, &inverse), fit.noise_rss / left * tail)
+}
+
 /// Covariance in logarithms. `repeated` is how often the windows use a sample on average: windows
 /// share the quiet stretch between two moves, which must not count twice.
-pub(crate) fn logarithmic(
-    fit: &Fit,
-    memory: &Memory,
-    repeated: f64,
-    interval_s: f64,
-) -> LogCovariance {
-    let count = fit.rows as f64 / memory.factor / repeated;
+pub(crate) fn logarithmic(fit: &Fit, repeated: f64, interval_s: f64) -> LogCovariance {
+    let count = fit.rows as f64 / fit.memory.factor / repeated;
     let quantile = student_95(count - fit.parameters as f64) / TWO_SIDED_95;
-    let factor = memory.variance * memory.factor * repeated * quantile * quantile;
-    let raw = scaled(inverse_information(fit), factor);
+    let raw = scaled(sandwich(fit), repeated * quantile * quantile);
     // raw: 0 gain, 1 dead time, 2 m, 3 w.
     let sd = |k: usize| libm::sqrt(raw[k][k].max(0.0));
     let theta = fit.point.dead_time_s + interval_s;
@@ -198,21 +235,9 @@ pub(crate) fn logarithmic(
         Kind::Integrating => {}
         Kind::FirstOrder | Kind::IntegratingLag => rows.push(unit(size, 2, 1.0)),
         Kind::SecondOrder => {
-            // ln τ = m + √w, ln τ₂ = m − √w. The square root has no slope at equal lags: the wider
-            // of its two chords over the interval of w is used.
-            let w = fit.point.spread.max(0.0);
-            let reach = TWO_SIDED_95 * sd(3);
-            let root = libm::sqrt(w);
-            let up = libm::sqrt(w + reach) - root;
-            let down = root - libm::sqrt((w - reach).max(0.0));
-            let chord = if reach > 0.0 {
-                up.max(down) / reach
-            } else {
-                0.0
-            };
             for sign in [1.0, -1.0] {
                 let mut row = unit(size, 2, 1.0);
-                row[3] = sign * chord;
+                row[3] = spread_slope(fit.point.spread, &raw, sign);
                 rows.push(row);
             }
         }
@@ -243,6 +268,36 @@ pub(crate) fn logarithmic(
         .collect();
     stretch(&mut matrix, &cuts);
     LogCovariance { matrix, interval_s }
+}
+
+/// Weight of w in ln τ = m + √w (`sign` +1) or ln τ₂ = m − √w (−1).
+///
+/// The square root has no slope at equal lags, so the chord over the 95 % interval of w is used: of
+/// what w alone does to the lag, with m following it as the data have the two linked, the largest
+/// deviation within the interval. Where equal lags lie within it, that deviation is a bound and no
+/// standard deviation: it is then added to the scatter of m, not squared with it.
+fn spread_slope(w: f64, raw: &[Vec<f64>], sign: f64) -> f64 {
+    let variance = raw[3][3];
+    if variance <= 0.0 {
+        return 0.0;
+    }
+    let w = w.max(0.0);
+    let reach = TWO_SIDED_95 * libm::sqrt(variance);
+    let follow = raw[2][3] / variance;
+    let (low, high) = ((w - reach).max(0.0), w + reach);
+    let deviation = |at: f64| (follow * (at - w) + sign * (libm::sqrt(at) - libm::sqrt(w))).abs();
+    let mut largest = deviation(low).max(deviation(high));
+    // Where following and root pull against each other the largest may lie between.
+    let turn = 1.0 / (4.0 * follow * follow);
+    if follow * sign < 0.0 && turn > low && turn < high {
+        largest = largest.max(deviation(turn));
+    }
+    let mut sd = largest / TWO_SIDED_95;
+    if low == 0.0 {
+        let alone = libm::sqrt((raw[2][2] - follow * raw[2][3]).max(0.0));
+        sd = libm::sqrt(sd * sd + 2.0 * sd * alone);
+    }
+    sign * sd / libm::sqrt(variance) - follow
 }
 
 fn unit(size: usize, place: usize, value: f64) -> Vec<f64> {

@@ -5,6 +5,7 @@
 //! 413-432) with the Jacobian of L. Kaufman (BIT 15 (1975) 49-57) and the damping of
 //! D.W. Marquardt (J. SIAM 11 (1963) 431-441).
 
+use super::covariance::{self, Memory};
 use super::response::{self, Answer};
 use super::search;
 use crate::model::{Kind, ProcessModel};
@@ -182,6 +183,8 @@ pub struct Fit {
     pub bases: Vec<(f64, f64)>,
     /// Sum of squared residuals, %².
     pub rss: f64,
+    /// The part of it that is noise: all, unless a fit with more freedom left less.
+    pub noise_rss: f64,
     /// Samples.
     pub rows: usize,
     /// Parameters, linear ones counted.
@@ -191,6 +194,10 @@ pub struct Fit {
     /// JᵀJ over gain (relative), dead time, m, w, bases projected out; searched ones only. Empty where
     /// each window has its own gain.
     pub information: Vec<Vec<f64>>,
+    /// The same with the memory of the noise between the two: JᵀVJ for noise of variance 1.
+    pub filtered: Vec<Vec<f64>>,
+    /// Memory of the residual.
+    pub memory: Memory,
 }
 
 impl Fit {
@@ -239,6 +246,13 @@ impl Bounds {
         point
     }
 }
+
+/// Rounds of a search; it ends well before unless the data do not determine the point.
+const MOST_ROUNDS: usize = 40;
+/// The same where many samples make a round costly: their search starts from the end of another.
+const MOST_ROUNDS_OF_MANY: usize = 6;
+/// What counts as many samples.
+const MANY_ROWS: usize = 8000;
 
 /// A problem laid out for evaluation, with its work space.
 pub(crate) struct Prepared {
@@ -334,7 +348,7 @@ impl Prepared {
         let groups = if problem.gain_per_window {
             windows.iter().map(|w| w.rows.clone()).collect()
         } else {
-            vec![0..t_s.len()]
+            std::iter::once(0..t_s.len()).collect()
         };
         let linear = 1 + usize::from(problem.moving_at_start);
         let rows = t_s.len();
@@ -489,21 +503,23 @@ impl Prepared {
         }
     }
 
-    /// JᵀJ over relative gain and the searched parameters, from the columns of the latest evaluation.
-    fn information(&self, evaluation: &Evaluation, fixed_dead_time: bool) -> Vec<Vec<f64>> {
+    /// Columns of the Jacobian over relative gain and the searched parameters, from the latest
+    /// evaluation; the one of the gain is made here, in the place of the unit response.
+    fn jacobian(&mut self, evaluation: &Evaluation, fixed_dead_time: bool) -> Vec<&[f64]> {
         let gain = evaluation.factors[0][0];
-        let mut columns: Vec<Vec<f64>> = vec![self.columns[0].iter().map(|g| g * gain).collect()];
-        for k in usize::from(fixed_dead_time)..self.searched {
-            columns.push(self.columns[1 + k].clone());
+        for value in &mut self.columns[0] {
+            *value *= gain;
         }
-        columns
-            .iter()
-            .map(|a| columns.iter().map(|b| dot(a, b)).collect())
+        let first = usize::from(fixed_dead_time);
+        (0..=self.searched)
+            .filter(|&k| k == 0 || k > first)
+            .map(|k| self.columns[k].as_slice())
             .collect()
     }
 
-    /// The fit at a point.
-    pub(crate) fn finish(&mut self, problem: &Problem, point: Point) -> Fit {
+    /// The fit at a point; `freer` is a fit of the same samples with more freedom, whose residual then
+    /// stands for the noise.
+    pub(crate) fn finish(&mut self, problem: &Problem, point: Point, freer: Option<&Fit>) -> Fit {
         let evaluation = self.evaluate(&point);
         let common = self.groups.len() == 1;
         let factors = |w: usize| evaluation.factors[if common { 0 } else { w }];
@@ -517,38 +533,64 @@ impl Prepared {
                 (mean - slope * self.windows[w].mean_t, slope)
             })
             .collect();
+        let parameters = problem.parameters(self.kind);
+        let lengths: Vec<usize> = self.windows.iter().map(|w| w.rows.len()).collect();
+        let memory = match freer {
+            Some(freer) => freer.memory,
+            None => covariance::memory(&self.residual, &lengths, parameters),
+        };
+        let gains = (0..self.windows.len()).map(|w| factors(w)[0]).collect();
+        let rates = (0..self.windows.len()).map(|w| factors(w)[1]).collect();
+        let (information, filtered) = if problem.gain_per_window {
+            (Vec::new(), Vec::new())
+        } else {
+            let columns = self.jacobian(&evaluation, problem.fixed_dead_time_s.is_some());
+            let information = columns
+                .iter()
+                .map(|a| columns.iter().map(|b| dot(a, b)).collect())
+                .collect();
+            let rho = memory.noise_autocorrelation;
+            (information, covariance::filtered(&columns, &lengths, rho))
+        };
         Fit {
             kind: self.kind,
-            gains: (0..self.windows.len()).map(|w| factors(w)[0]).collect(),
-            rates: (0..self.windows.len()).map(|w| factors(w)[1]).collect(),
+            gains,
+            rates,
             point,
             bases,
             rss: evaluation.rss,
+            noise_rss: freer.map_or(evaluation.rss, |f| f.rss),
             rows: self.t_s.len(),
-            parameters: problem.parameters(self.kind),
+            parameters,
             residual: self.residual.clone(),
-            information: if problem.gain_per_window {
-                Vec::new()
-            } else {
-                self.information(&evaluation, problem.fixed_dead_time_s.is_some())
-            },
+            information,
+            filtered,
+            memory,
         }
     }
 
     /// Levenberg-Marquardt from `start` within the bounds; gives the best point and its sum of squares.
-    pub(crate) fn descend(&mut self, start: Point, bounds: &Bounds, rounds: usize) -> (Point, f64) {
+    /// It ends where the next step would gain less than `close` times the mean square residual: the
+    /// point then moves by less than √close of a standard deviation.
+    pub(crate) fn descend(&mut self, start: Point, bounds: &Bounds, close: f64) -> (Point, f64) {
         let mut point = bounds.clip(start);
         let mut here = self.evaluate(&point);
-        let mut damping = 1e-3;
-        for _ in 0..rounds {
+        let mut damping = 1e-4;
+        let rows = self.t_s.len() as f64;
+        let most = if self.t_s.len() > MANY_ROWS {
+            MOST_ROUNDS_OF_MANY
+        } else {
+            MOST_ROUNDS
+        };
+        for _ in 0..most {
             let Some(step) = self.step(&here, &point, bounds, damping) else {
                 break;
             };
             let mut next = point;
-            for k in 0..self.searched {
+            for (k, size) in step.iter().enumerate().take(self.searched) {
                 // A lag moves by a factor of e² at most: beyond, the linear picture says nothing.
                 let most = if k == 0 { f64::INFINITY } else { 2.0 };
-                next.set(k, point.get(k) + step[k].clamp(-most, most));
+                next.set(k, point.get(k) + size.clamp(-most, most));
             }
             let next = bounds.clip(next);
             if next == point {
@@ -564,11 +606,11 @@ impl Prepared {
                     .fold(0.0, f64::max);
                 (point, here) = (next, there);
                 damping = if damping < 1e-9 { 0.0 } else { damping / 10.0 };
-                if moved < 1e-12 || expected < 1e-22 * here.rss {
+                if moved < 1e-12 || expected < close * here.rss / rows {
                     break;
                 }
             } else {
-                if expected < 1e-13 * here.rss {
+                if expected < close.max(1e-13) * here.rss / rows {
                     break;
                 }
                 damping = (damping * 8.0).max(1e-6);

@@ -588,3 +588,6 @@ fn finished(
         fit,
     }
 }
+
+#[cfg(test)]
+mod tests;

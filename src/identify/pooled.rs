@@ -82,7 +82,7 @@ pub(crate) fn step_fit(
     noise: &Noise,
     interval_s: f64,
 ) -> StepFit {
-    let covariance = covariance::logarithmic(&candidate.fit, &candidate.memory, 1.0, interval_s);
+    let covariance = covariance::logarithmic(&candidate.fit, 1.0, interval_s);
     let figures = figures(candidate, &covariance);
     let (bias_percent, drift_percent_per_s) = candidate.fit.bases[0];
     StepFit {
@@ -138,7 +138,7 @@ fn spread(usable: &[&Fitted], pooled: &Candidate, covariance: &LogCovariance) ->
         .iter()
         .map(|f| {
             let own = f.of(kind);
-            let covariance = covariance::logarithmic(&own.fit, &own.memory, 1.0, interval_s);
+            let covariance = covariance::logarithmic(&own.fit, 1.0, interval_s);
             (logarithms(own, interval_s), covariance)
         })
         .collect();
@@ -169,7 +169,7 @@ fn gains_disagree(usable: &[&Fitted], kind: Kind, interval_s: f64) -> bool {
     let (mut highest_low, mut lowest_high) = (f64::NEG_INFINITY, f64::INFINITY);
     for fitted in usable {
         let own = fitted.of(kind);
-        let covariance = covariance::logarithmic(&own.fit, &own.memory, 1.0, interval_s);
+        let covariance = covariance::logarithmic(&own.fit, 1.0, interval_s);
         let reach = TWO_SIDED_95 * sd(&covariance, 0);
         let gain = libm::log(own.fit.gains[0].abs());
         highest_low = highest_low.max(gain - reach);
@@ -185,27 +185,29 @@ fn fit_all(
     watched_s: f64,
     interval_s: f64,
 ) -> Option<(Vec<Candidate>, Choice)> {
-    let mut problem = Problem::new(usable.iter().map(|f| f.window.clone()).collect());
-    let bases = |kind: Kind, k: usize| usable[k].of(kind).bases[0];
-    let hints = |kind: Kind| usable.iter().map(|f| f.of(kind).fit.point).collect();
-    let pooled = if usable.len() == 1 {
-        usable[0].candidates.clone()
-    } else {
-        choice::of_steps(&problem, bases, hints).ok()?
-    };
-    // Where the gain differs from step to step, what one gain leaves would hide what a lag explains:
-    // the kind is then chosen with a gain for each step.
+    if usable.len() == 1 {
+        let candidates = usable[0].candidates.clone();
+        let choice = choice::choose(&candidates, watched_s, interval_s);
+        return Some((candidates, choice));
+    }
+    // Where the gain differs from step to step, what one gain leaves would hide what a lag explains
+    // and pass for noise: kind, lags, dead time and noise are then found with a gain for each step.
     let apart = own_kinds
         .iter()
         .any(|&kind| gains_disagree(usable, kind, interval_s));
-    if usable.len() > 1 && apart {
-        problem.gain_per_window = true;
-        let free = choice::of_steps(&problem, bases, hints).ok()?;
-        let choice = choice::choose(&free, watched_s, interval_s);
-        return Some((pooled, choice));
+    let mut problem = Problem::new(usable.iter().map(|f| f.window.clone()).collect());
+    problem.gain_per_window = apart;
+    let bases = |kind: Kind, k: usize| usable[k].of(kind).bases[0];
+    let hints = |kind: Kind| usable.iter().map(|f| f.of(kind).fit.point).collect();
+    let mut candidates = choice::of_steps(&problem, bases, hints).ok()?;
+    let choice = choice::choose(&candidates, watched_s, interval_s);
+    if apart {
+        problem.gain_per_window = false;
+        for candidate in &mut candidates {
+            choice::share_gain(candidate, &problem);
+        }
     }
-    let choice = choice::choose(&pooled, watched_s, interval_s);
-    Some((pooled, choice))
+    Some((candidates, choice))
 }
 
 /// The model over all usable steps; `None` where no fit of them succeeds.
@@ -221,7 +223,7 @@ pub(crate) fn model(
     let pooled = candidates.iter().find(|c| c.fit.kind == choice.kind)?;
     let fit = &pooled.fit;
     let repeated = repetition(usable);
-    let mut covariance = covariance::logarithmic(fit, &pooled.memory, repeated, interval_s);
+    let mut covariance = covariance::logarithmic(fit, repeated, interval_s);
     let spread = spread(usable, pooled, &covariance);
     covariance::stretch(&mut covariance.matrix, &spread.factors);
     let figures = figures(pooled, &covariance);
@@ -244,8 +246,8 @@ pub(crate) fn model(
             usable.iter().map(|f| f.window.pv.as_slice()),
         ),
         covariance_of: covariance::parameter_names(fit.kind),
-        residual_autocorrelation: pooled.memory.autocorrelation,
-        effective_samples: fit.rows as f64 / pooled.memory.factor / repeated,
+        residual_autocorrelation: fit.memory.autocorrelation,
+        effective_samples: fit.rows as f64 / fit.memory.factor / repeated,
         widened: spread.widened,
         gain_ratio: spread.gains_disagree.then(|| largest / smallest),
         undecided: choice.undecided,

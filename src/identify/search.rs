@@ -8,8 +8,17 @@ use crate::model::Kind;
 const COARSE_ROWS: usize = 240;
 /// Samples of the middle search, after which few rounds over all samples are left to do.
 const MIDDLE_ROWS: usize = 4000;
+/// How close a search comes to its end, as the square of a part of a standard deviation: for starts,
+/// for many samples, and for few, where rounds cost nothing.
+const ROUGHLY: f64 = 1e-3;
+const CLOSELY: f64 = 1e-7;
+const EXACTLY: f64 = 1e-18;
+/// What counts as few samples.
+const FEW_ROWS: usize = 500;
 /// Above this the corners that single samples make in the sum of squares are too small to matter.
 const MOST_ROWS_FOR_PIECES: usize = 5000;
+/// With so many starts from other fits of the same data no grid is needed.
+const ENOUGH_HINTS: usize = 2;
 /// Pieces searched to either side of the best dead time.
 const PIECES: usize = 6;
 
@@ -171,7 +180,7 @@ fn grid(kind: Kind, problem: &Problem, scales: &Scales) -> Vec<Point> {
 
 /// Starts of a second-order search from the best first-order points: the sum of lags and dead time
 /// is kept and split in several ways.
-fn split_lags(single: &[Point]) -> Vec<Point> {
+pub(crate) fn split_lags(single: &[Point]) -> Vec<Point> {
     let mut points = Vec::new();
     for point in single.iter().take(2) {
         let (tau, _) = point.lags(Kind::FirstOrder);
@@ -224,6 +233,11 @@ fn coarse(
     hints: &[Point],
 ) -> Vec<Point> {
     let few = thinned(problem, COARSE_ROWS);
+    if hints.len() >= ENOUGH_HINTS {
+        let mut prepared = Prepared::new(&few, kind);
+        let gone_down = hints.iter().map(|p| prepared.descend(*p, bounds, ROUGHLY));
+        return best(gone_down.collect(), 3);
+    }
     let single = if kind == Kind::SecondOrder {
         Kind::FirstOrder
     } else {
@@ -237,17 +251,17 @@ fn coarse(
     let starts = best(graded, 4);
     let mut gone_down: Vec<(Point, f64)> = starts
         .iter()
-        .map(|p| prepared.descend(*p, bounds, 15))
+        .map(|p| prepared.descend(*p, bounds, ROUGHLY))
         .collect();
     if kind == Kind::SecondOrder {
         let mut prepared = Prepared::new(&few, kind);
         gone_down = split_lags(&best(gone_down, 2))
             .iter()
-            .map(|p| prepared.descend(*p, bounds, 20))
+            .map(|p| prepared.descend(*p, bounds, ROUGHLY))
             .collect();
-        gone_down.extend(hints.iter().map(|p| prepared.descend(*p, bounds, 20)));
+        gone_down.extend(hints.iter().map(|p| prepared.descend(*p, bounds, ROUGHLY)));
     } else {
-        gone_down.extend(hints.iter().map(|p| prepared.descend(*p, bounds, 20)));
+        gone_down.extend(hints.iter().map(|p| prepared.descend(*p, bounds, ROUGHLY)));
     }
     best(gone_down, 3)
 }
@@ -273,17 +287,19 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
         let mut prepared = Prepared::new(&some, kind);
         let found = starts
             .iter()
-            .map(|p| prepared.descend(*p, &bounds, 20))
+            .map(|p| prepared.descend(*p, &bounds, ROUGHLY))
             .collect();
         starts = best(found, 1);
     }
-    let rounds = if rows > MOST_ROWS_FOR_PIECES { 30 } else { 100 };
+    let close = if rows > FEW_ROWS { CLOSELY } else { EXACTLY };
     let mut found = starts
         .iter()
-        .map(|p| all.descend(*p, &bounds, rounds))
+        .map(|p| all.descend(*p, &bounds, close))
         .min_by(|a, b| a.1.total_cmp(&b.1))
         .ok_or(FitError::NoMove)?;
-    if rows <= MOST_ROWS_FOR_PIECES && problem.fixed_dead_time_s.is_none() {
+    // One lag more behind the move smooths the corners away.
+    let corners = matches!(kind, Kind::FirstOrder | Kind::Integrating);
+    if corners && rows <= MOST_ROWS_FOR_PIECES && problem.fixed_dead_time_s.is_none() {
         for piece in pieces(problem, found.0.dead_time_s, scales.interval_s) {
             let mut within = bounds;
             within.low[0] = piece.0.max(bounds.low[0]);
@@ -293,13 +309,18 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
                 piece.0 + 0.05 * (piece.1 - piece.0),
                 piece.1 - 0.05 * (piece.1 - piece.0),
             );
-            let there = all.descend(start, &within, 12);
+            let there = all.descend(start, &within, CLOSELY);
             if there.1 < found.1 {
-                found = all.descend(there.0, &within, 100);
+                found = all.descend(there.0, &within, close);
             }
         }
     }
-    Ok(all.finish(problem, found.0))
+    Ok(all.finish(problem, found.0, None))
+}
+
+/// The fit of one gain for all windows with the dynamics of a fit of one gain for each.
+pub(crate) fn with_common_gain(problem: &Problem, freer: &Fit) -> Fit {
+    Prepared::new(problem, freer.kind).finish(problem, freer.point, Some(freer))
 }
 
 /// The pieces of dead time near the best between which a sample passes a delayed move: the sum of
