@@ -64,13 +64,13 @@ pub const TUNINGS: [Tuning; 12] = {
             "FIC-201",
             controller(Reverse, Standard, Gain, PerMinute, 0.5),
             settings(0.25, 4.0, 0.0),
-            Some(settings(0.85, 11.0, 0.0)),
+            Some(settings(1.0, 10.7, 0.0)),
         ),
         row(
             "TIC-202",
             controller(Reverse, Standard, Gain, Minutes, 1.0),
             settings(0.9, 20.0, 0.0),
-            Some(settings(3.2, 7.8, 0.0)),
+            Some(settings(3.1, 7.6, 0.0)),
         ),
         row(
             "FIC-203",
@@ -107,7 +107,7 @@ pub const TUNINGS: [Tuning; 12] = {
             "TIC-207",
             controller(Reverse, Parallel, GainPerUnit, PerMinute, 1.0),
             settings(2.6, 1.6, 0.0),
-            Some(settings(1.4, 0.4, 0.0)),
+            Some(settings(1.3, 0.37, 0.0)),
         ),
         row(
             "AIC-208",

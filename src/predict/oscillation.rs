@@ -65,20 +65,15 @@ fn swings(t_s: &[f64], error: &[f64], threshold: f64) -> Vec<Swing> {
 ///
 /// `threshold` is what counts as a swing: beyond noise, and a small part of the step. `skip` is the number
 /// of swings that the disturbance itself makes: 1 after a set-point step, whose first swing is the
-/// step, 0 after a load. At least two further swings are needed.
+/// step, 0 after a load. At least three further swings are needed: one period.
 pub fn find(t_s: &[f64], error: &[f64], threshold: f64, skip: usize) -> Option<Oscillation> {
     let all = swings(t_s, error, threshold);
     let swings = all.get(skip..)?;
-    if swings.len() < 2 {
+    if swings.len() < 3 {
         return None;
     }
-    // Ratios over one period where there are that many swings, else the square of half a period's.
-    let ratios: Vec<f64> = if swings.len() > 2 {
-        swings.windows(3).map(|w| w[2].size / w[0].size).collect()
-    } else {
-        let half = swings[1].size / swings[0].size;
-        vec![half * half]
-    };
+    // Ratios over one period.
+    let ratios: Vec<f64> = swings.windows(3).map(|w| w[2].size / w[0].size).collect();
     let mean_log = ratios.iter().map(|r| libm::log(*r)).sum::<f64>() / ratios.len() as f64;
     let decay_ratio = libm::exp(mean_log);
     // From the middle of one swing to that of the next is half a period.

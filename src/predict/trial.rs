@@ -282,7 +282,8 @@ impl<'a> Run<'a> {
         rest: (f64, f64, f64),
         hold_s: Option<f64>,
     ) -> Metrics {
-        let mut meter = Meter::new(disturbance).with_least_band(3.0 * self.noise);
+        let least_band = (3.0 * self.noise).max(self.wander(window.start));
+        let mut meter = Meter::new(disturbance).with_least_band(least_band);
         if let Some(hold_s) = hold_s {
             meter = meter.with_hold(hold_s);
         }
@@ -296,6 +297,24 @@ impl<'a> Run<'a> {
             });
         }
         meter.metrics()
+    }
+
+    /// How far the smoothed PV strays from its mean while the loop is at rest before sample `first`, %
+    /// (19 in 20 samples): what the plant does by itself is no part of the response. 0 where the log
+    /// shows too little of it.
+    fn wander(&self, first: usize) -> f64 {
+        let rest: Vec<f64> = (0..first)
+            .rev()
+            .take_while(|&k| self.sp[k] == self.sp[first - 1])
+            .map(|k| self.smooth[k])
+            .collect();
+        if rest.len() < LEAST_SAMPLES {
+            return 0.0;
+        }
+        let middle = mean(&rest);
+        let mut strays: Vec<f64> = rest.iter().map(|pv| (pv - middle).abs()).collect();
+        let place = strays.len() * 19 / 20;
+        *strays.select_nth_unstable_by(place, f64::total_cmp).1
     }
 
     fn set_point_trial(&self, left: &AsLeft, moves: &[Move], chosen: usize, end: usize) -> Trial {
