@@ -268,7 +268,7 @@ pub(in crate::document) fn design() -> Design {
                 Some(47.0),
                 Some(Hard),
                 Met,
-                Some(49.0),
+                Some(1.04),
                 "τc at least the effective dead time θe",
             ),
             limit(
