@@ -1,7 +1,7 @@
 //! The process model: its kind, its figures with their intervals, how well it is known.
 
 use super::numbers::{Cell, Row, Table, TimeUnit, bound, estimate, listed, sentence};
-use super::summary::slope_unit;
+use super::process::slope_unit;
 use super::{Context, Entry, Heading, Plot};
 use crate::display::{self, NO_BREAK};
 use crate::identify::{Reading, Verdict};
