@@ -336,7 +336,7 @@ pub const LOOPS: [LoopSpec; 12] = [
 pub fn at_trial(spec: LoopSpec) -> LoopSpec {
     if spec.tag == TIC207.tag {
         LoopSpec {
-            start_op: 43.0,
+            start_op: 45.0,
             ..spec
         }
     } else {

@@ -100,14 +100,14 @@ pub const TUNINGS: [Tuning; 12] = {
                 "PIC-206",
                 controller(Direct, Standard, Gain, Minutes, 0.5),
                 settings(1.2, 0.5, 0.0),
-                Some(settings(4.8, 0.97, 0.22)),
+                Some(settings(4.1, 0.97, 0.21)),
             )
         },
         row(
             "TIC-207",
             controller(Reverse, Parallel, GainPerUnit, PerMinute, 1.0),
             settings(2.6, 1.6, 0.0),
-            Some(settings(1.3, 0.37, 0.0)),
+            Some(settings(1.28, 0.365, 0.0)),
         ),
         row(
             "AIC-208",

@@ -93,6 +93,8 @@ const LOAD_OVER_NOISE: f64 = 5.0;
 /// The PV is smoothed over this part of the process's dead time plus time constant before figures are
 /// read off it: short against any answer of the loop, long against noise.
 const SMOOTHED_PART: f64 = 0.1;
+/// A swing exceeds the noise by this: noise alone reaches it once in 100,000 samples.
+const SWING_OVER_NOISE: f64 = 4.5;
 /// Instants at which a load is tried to begin.
 const LOAD_STARTS: usize = 240;
 
@@ -282,8 +284,8 @@ impl<'a> Run<'a> {
         rest: (f64, f64, f64),
         hold_s: Option<f64>,
     ) -> Metrics {
-        let least_band = (3.0 * self.noise).max(self.wander(window.start));
-        let mut meter = Meter::new(disturbance).with_least_band(least_band);
+        let margin = (3.0 * self.noise).max(self.wander(window.start));
+        let mut meter = Meter::new(disturbance).with_margin(margin);
         if let Some(hold_s) = hold_s {
             meter = meter.with_hold(hold_s);
         }
@@ -339,7 +341,7 @@ impl<'a> Run<'a> {
             rest(self.op),
             predicted.settling_time_s,
         );
-        let threshold = (3.0 * self.noise).max(0.05 * size.abs());
+        let threshold = (SWING_OVER_NOISE * self.noise).max(0.05 * size.abs());
         let oscillation = self.oscillation(window, threshold, 1);
         let (agrees, why) = agreement(&measured, &predicted, oscillation.as_ref());
         self.result(
@@ -353,7 +355,7 @@ impl<'a> Run<'a> {
 
     fn load_trial(&self, left: &AsLeft) -> Result<Trial, TrialError> {
         let sp = self.sp[0];
-        let threshold = (5.0 * self.noise).max(0.1);
+        let threshold = (SWING_OVER_NOISE * self.noise).max(0.1);
         let oscillation = self.oscillation(0..self.t_s.len(), threshold, 0);
         // The answer to a load of 1 % OP from the first sample on; later loads are the same, later.
         let unit = self.unit_load(left);
