@@ -3,6 +3,7 @@
 mod advice;
 mod choice;
 pub mod covariance;
+mod descent;
 pub mod least_squares;
 mod noise;
 mod pooled;

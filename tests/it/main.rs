@@ -3,6 +3,7 @@
 
 mod archive;
 mod cli;
+mod identify;
 mod layering;
 mod register;
 mod schema;
