@@ -343,6 +343,18 @@ impl Model {
     }
 }
 
+/// Gains of the steps that differ by less than this factor are not called non-linear: intervals of
+/// good tests are narrow enough to part steps by a few percent, which no loop notices (Ms moves by less
+/// than the margin between the two robustness limits).
+const NONLINEAR_RATIO: f64 = 1.2;
+
+impl Model {
+    /// Largest gain of a step over the smallest, where the process is non-linear enough to say so.
+    pub fn nonlinear_gain(&self) -> Option<f64> {
+        self.gain_ratio.filter(|ratio| *ratio >= NONLINEAR_RATIO)
+    }
+}
+
 impl StepFit {
     /// The fitted values as a model to compute with.
     pub fn process(&self) -> ProcessModel {

@@ -288,11 +288,14 @@ fn set(usable: &[&Fitted], pooled: &Candidate, covariance: &LogCovariance) -> Ve
         let lead = direction.iamax();
         let sign = if direction[lead] < 0.0 { -1.0 } else { 1.0 };
         let reach = TWO_SIDED_95 * libm::sqrt(eigen.eigenvalues[axis].max(0.0));
-        for (way, name) in [(1.0, "up"), (-1.0, "down")] {
+        for way in [1.0, -1.0] {
             let values: Vec<f64> = (0..n)
                 .map(|k| centre[k] + way * sign * reach * direction[k])
                 .collect();
-            let label = format!("end of the interval, {} axis, {name}", ordinal(place + 1));
+            let mut label = format!("end of the interval with {}", leading(lead, n, way > 0.0));
+            if members.iter().any(|other| other.label == label) {
+                label = format!("{label} ({} axis)", ordinal(place + 1));
+            }
             members.push(member(
                 label,
                 kind,
@@ -303,6 +306,20 @@ fn set(usable: &[&Fitted], pooled: &Candidate, covariance: &LogCovariance) -> Ve
         }
     }
     members
+}
+
+/// The figure that an end of the interval moves most, in words; `lead` is its place among `n`.
+fn leading(lead: usize, n: usize, up: bool) -> &'static str {
+    match (lead, up) {
+        (0, true) => "high gain",
+        (0, false) => "low gain",
+        (k, true) if k == n - 1 => "long dead time",
+        (k, false) if k == n - 1 => "short dead time",
+        (1, true) => "long time constant",
+        (1, false) => "short time constant",
+        (_, true) => "long second time constant",
+        (_, false) => "short second time constant",
+    }
 }
 
 fn ordinal(n: usize) -> String {

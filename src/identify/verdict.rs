@@ -320,12 +320,11 @@ fn saturation(judged: &mut Judged, step: &OpStep, trace: &Trace) {
     });
     for (name, count) in [("PV", pv), ("OP", op)] {
         if count > 0 {
-            let samples = if count == 1 { "sample" } else { "samples" };
             judged.worsen(
                 Verdict::Rejected,
                 Reason {
                     code: ReasonCode::Saturated,
-                    text: format!("{name} at the end of its range in {count} {samples}"),
+                    text: format!("{name} at the end of its range"),
                     figure: Some(count as f64),
                     bound: Some(0.0),
                 },

@@ -1,5 +1,6 @@
 //! The closed-loop trial held against the prediction.
 
+use crate::display::{fixed, with_unit};
 use crate::model::ProcessModel;
 use crate::predict::measure::{Disturbance, Meter, Sample, Thinner, noise_sd, smoothed};
 use crate::predict::oscillation::{self, Oscillation};
@@ -389,13 +390,15 @@ impl<'a> Run<'a> {
             None if misfit <= MISFIT_AGREES => (
                 true,
                 format!(
-                    "A load step of {size:.1} % OP explains the run with a misfit of {misfit:.0} % (bound {MISFIT_AGREES} %), and no cycle is seen."
+                    "A load step of {} explains the run with a misfit of {misfit:.0} % (bound {MISFIT_AGREES} %), and no cycle is seen.",
+                    with_unit(&fixed(size, 1), "% OP")
                 ),
             ),
             None => (
                 false,
                 format!(
-                    "A load step of {size:.1} % OP explains the run with a misfit of {misfit:.0} % only (bound {MISFIT_AGREES} %)."
+                    "A load step of {} explains the run with a misfit of {misfit:.0} % only (bound {MISFIT_AGREES} %).",
+                    with_unit(&fixed(size, 1), "% OP")
                 ),
             ),
         };

@@ -47,10 +47,15 @@ pub(super) fn process_sentences(context: &Context) -> Option<String> {
     );
     let (value, interval) = gain_words(gain, 1.0);
     let unit = &context.pv_unit;
-    let moves = match block.fit.gain_ratio {
+    let holds = if context.withheld() {
+        ""
+    } else {
+        ", and the settings hold for all of it"
+    };
+    let moves = match block.fit.nonlinear_gain() {
         Some(ratio) => format!(
             "Each {op} of OP moves PV by {interval}{NO_BREAK}{unit}: the gain varies by a factor of {} over \
-             the range tested, and the settings hold for all of it.",
+             the range tested{holds}.",
             display::fixed(ratio, 1)
         ),
         None => format!(

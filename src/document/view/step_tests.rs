@@ -200,7 +200,6 @@ fn text(context: &Context) -> String {
         text.push_str(&format!(" {on}"));
     }
     for part in [
-        l.conditions.as_deref().map(bound),
         l.tested_by.as_deref().map(|n| format!("by {}", tidy(n))),
         l.witnessed_by
             .as_deref()
@@ -212,7 +211,12 @@ fn text(context: &Context) -> String {
         text.push_str(", ");
         text.push_str(part.trim_end_matches('.'));
     }
-    sentence(&text)
+    match l.conditions.as_deref().map(bound) {
+        Some(conditions) if !conditions.is_empty() => {
+            format!("{} Conditions: {}", sentence(&text), sentence(&conditions))
+        }
+        _ => sentence(&text),
+    }
 }
 
 fn several_days(steps: &[Step]) -> bool {
