@@ -3,8 +3,15 @@
 
 mod archive;
 mod cli;
+mod demo;
+mod identify;
 mod layering;
+mod new_user;
+mod plant;
+mod predict;
+mod published;
 mod register;
 mod schema;
 mod support;
 mod synthetic;
+mod twins;
