@@ -2,8 +2,10 @@
 //! `tests/README.md`.
 
 mod archive;
+mod broken;
 mod cli;
 mod demo;
+mod errors;
 mod identify;
 mod layering;
 mod new_user;
