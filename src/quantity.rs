@@ -64,17 +64,17 @@ impl Span {
 
     /// An engineering value as percent of span, 0 at the low end.
     pub fn percent(self, engineering: f64) -> f64 {
-        (engineering - self.low) / self.width() * 100.0
+        (engineering - self.low) * 100.0 / self.width()
     }
 
     /// Percent of span as an engineering value.
     pub fn engineering(self, percent: f64) -> f64 {
-        self.low + percent / 100.0 * self.width()
+        self.low + percent * self.width() / 100.0
     }
 
     /// A difference in percent of span as a difference in engineering units.
     pub fn engineering_change(self, percent: f64) -> f64 {
-        percent / 100.0 * self.width()
+        percent * self.width() / 100.0
     }
 }
 

@@ -62,8 +62,9 @@ fn main() -> Result<(), Box<dyn Error>> {
     for spec in plant::LOOPS {
         let controller = &tuning(spec.tag).controller;
         let test = run(&spec, controller, scripts::test(&spec), inner(&spec)?);
-        let trial = match scripts::trial(&spec) {
-            Some(script) => Some(run(&spec, controller, script, inner(&spec)?)),
+        let at_trial = plant::at_trial(spec);
+        let trial = match scripts::trial(&at_trial) {
+            Some(script) => Some(run(&at_trial, controller, script, inner(&spec)?)),
             None => None,
         };
         let runs = Runs { spec, test, trial };

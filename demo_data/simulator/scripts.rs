@@ -122,7 +122,7 @@ fn up_and_down(spec: &LoopSpec, size: f64, up_s: f64, down_s: f64, length_s: f64
 pub fn trial(spec: &LoopSpec) -> Option<Script> {
     let left = tuning(spec.tag).left?;
     let mut script = match spec.tag {
-        "FIC-201" => up_and_down(spec, 5.0, 120.0, 300.0, 480.0),
+        "FIC-201" => up_and_down(spec, 10.0, 120.0, 300.0, 480.0),
         "TIC-202" => up_and_down(spec, 4.0, 1200.0, 4200.0, 7200.0),
         "FIC-203" => up_and_down(spec, 5.0, 60.0, 180.0, 300.0),
         "LIC-204" => up_and_down(spec, 5.0, 300.0, 1500.0, 2700.0),

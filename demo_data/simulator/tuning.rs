@@ -64,13 +64,13 @@ pub const TUNINGS: [Tuning; 12] = {
             "FIC-201",
             controller(Reverse, Standard, Gain, PerMinute, 0.5),
             settings(0.25, 4.0, 0.0),
-            Some(settings(0.85, 11.0, 0.0)),
+            Some(settings(1.0, 10.7, 0.0)),
         ),
         row(
             "TIC-202",
             controller(Reverse, Standard, Gain, Minutes, 1.0),
             settings(0.9, 20.0, 0.0),
-            Some(settings(3.2, 7.8, 0.0)),
+            Some(settings(3.1, 7.6, 0.0)),
         ),
         row(
             "FIC-203",
@@ -100,14 +100,14 @@ pub const TUNINGS: [Tuning; 12] = {
                 "PIC-206",
                 controller(Direct, Standard, Gain, Minutes, 0.5),
                 settings(1.2, 0.5, 0.0),
-                Some(settings(4.8, 0.97, 0.22)),
+                Some(settings(4.1, 0.97, 0.21)),
             )
         },
         row(
             "TIC-207",
             controller(Reverse, Parallel, GainPerUnit, PerMinute, 1.0),
             settings(2.6, 1.6, 0.0),
-            Some(settings(1.4, 0.4, 0.0)),
+            Some(settings(1.28, 0.365, 0.0)),
         ),
         row(
             "AIC-208",

@@ -74,7 +74,7 @@ fn a_complete_record_has_its_six_pages() {
         &pages[1],
         &[
             "5 Step tests",
-            "Tested 2026-03-11 from 09:05 to 11:14, feed 11.8 to 12.3 t/h, by A. Quill, witnessed by P. Lind.",
+            "Tested 2026-03-11 from 09:05 to 11:14, by A. Quill, witnessed by P. Lind. Conditions: Feed 11.8 to 12.3 t/h.",
             "1 09:35:00 42 47 98.0 101.8 0.760 3.17 19.0 4.5 accepted",
             "3 10:15:00 51 46 105.3 101.2 – – – – rejected drift 31 % (bound 20 %)",
             "accepted with reservation",

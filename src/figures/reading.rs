@@ -7,7 +7,7 @@ use super::panel::{BELOW_PT, HALF_FIGURE_PT, Panel};
 use super::place::{Block, LINE_PT, Taken, name_curve};
 use super::test::MOVE;
 use super::{Figure, narrate, trend};
-use crate::display::{duration, significant, with_unit};
+use crate::display::{duration, fixed, with_unit};
 use crate::identify::{Reading, Step, Verdict};
 use crate::quantity::Span;
 use crate::record::{Range, Record};
@@ -294,7 +294,14 @@ fn two_slopes(
         taken.add_paths(paths);
     }
     let unit = crate::display::unit(&record.control_loop.pv.unit);
-    let per_minute = |slope: f64| with_unit(&significant(slope * 60.0, 3), &format!("{unit}/min"));
+    // Both slopes with the decimals of the larger: three figures of that one.
+    let larger = 60.0 * slopes[0].abs().max(slopes[1].abs());
+    let decimals = if larger > 0.0 {
+        (2.0 - libm::floor(libm::log10(larger))).clamp(0.0, 6.0) as usize
+    } else {
+        0
+    };
+    let per_minute = |slope: f64| with_unit(&fixed(slope * 60.0, decimals), &format!("{unit}/min"));
     let dead = format!("dead time {}", duration(theta));
     beside(canvas, &mut taken, (zero, first), y, [&dead, ""]);
     let sheet = Rect::new(

@@ -146,7 +146,7 @@ pub(crate) fn next_time(
                     "Wait",
                     format!(
                         "at least {} after each move, until the PV is steady before the next.",
-                        time_text(rounded_up(wait))
+                        short_time(wait)
                     ),
                 );
             }
@@ -157,22 +157,23 @@ pub(crate) fn next_time(
             );
         }
     }
-    if has(ReasonCode::Samples) || has(ReasonCode::BadSamples) {
+    if has(ReasonCode::Samples) {
         let interval = known.as_ref().and_then(|k| {
             k.lag_s
                 .map(|lag| lag / LOG_PER_LAG)
                 .or((k.theta_s > 0.0).then_some(k.theta_s / 5.0))
         });
         match interval {
-            Some(s) => say(
-                "Log",
-                format!(
-                    "the PV every {} s or faster, without compression.",
-                    figure(s)
-                ),
-            ),
-            None => say("Log", "the PV faster, without compression.".to_owned()),
+            Some(s) if s < trace.interval_s() => {
+                say("Log", format!("the PV every {} s or faster.", figure(s)));
+            }
+            // What was logged would do for the process as it is known.
+            Some(_) => {}
+            None => say("Log", "the PV faster.".to_owned()),
         }
+    }
+    if has(ReasonCode::BadSamples) {
+        say("Log", "with a PV that is good throughout.".to_owned());
     }
     // Without a reason of its own a one-sided or a single step still wants its counterpart.
     let directions = |up: bool| {
@@ -191,6 +192,16 @@ pub(crate) fn next_time(
         });
     }
     advice
+}
+
+/// A time rounded up, without needless decimals.
+fn short_time(seconds: f64) -> String {
+    let seconds = if seconds < 120.0 {
+        rounded_up(seconds)
+    } else {
+        60.0 * rounded_up(seconds / 60.0)
+    };
+    time_text(seconds).replace(".0 ", " ")
 }
 
 /// An OP value or move in its own unit; percent where its range is 0 to 100.

@@ -246,17 +246,16 @@ fn why_not(other: &Fit, chosen: &Fit, excess: f64, undecided: bool) -> String {
     };
     let left = if times > 100.0 {
         "leaves more than a hundred times as much unexplained".to_owned()
-    } else if times > 1.05 {
+    } else if times >= 1.2 {
         format!("leaves {times:.1} times as much unexplained")
+    } else if times >= 1.005 {
+        format!("leaves {:.0} % more unexplained", 100.0 * (times - 1.0))
     } else {
         "explains the PV no better".to_owned()
     };
     match (other.kind.integrates(), chosen.kind.integrates()) {
-        (true, false) if undecided => {
-            format!("not ruled out: {left} ({higher}), but its settings are the faster")
-        }
-        (false, true) if undecided => {
-            format!("not ruled out: {left} ({higher}), but its settings are the faster")
+        (true, false) | (false, true) if undecided => {
+            format!("not ruled out: it {left} ({higher}); its settings are the faster")
         }
         (true, false) => format!("the PV settles: it {left} ({higher})"),
         (false, true) if excess > CLEARLY => {

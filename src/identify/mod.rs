@@ -3,6 +3,7 @@
 mod advice;
 mod choice;
 pub mod covariance;
+mod descent;
 pub mod least_squares;
 mod noise;
 mod pooled;
@@ -339,6 +340,18 @@ impl Model {
                 (m.label.as_str(), model)
             })
             .collect()
+    }
+}
+
+/// Gains of the steps that differ by less than this factor are not called non-linear: intervals of
+/// good tests are narrow enough to part steps by a few percent, which no loop notices (Ms moves by less
+/// than the margin between the two robustness limits).
+const NONLINEAR_RATIO: f64 = 1.2;
+
+impl Model {
+    /// Largest gain of a step over the smallest, where the process is non-linear enough to say so.
+    pub fn nonlinear_gain(&self) -> Option<f64> {
+        self.gain_ratio.filter(|ratio| *ratio >= NONLINEAR_RATIO)
     }
 }
 

@@ -3,7 +3,7 @@
 
 use super::choice::{self, Candidate, Choice};
 use super::covariance::{self, LogCovariance, TWO_SIDED_95};
-use super::least_squares::{Base, Problem, Window};
+use super::least_squares::{Base, Fit, Problem, Window};
 use super::noise::Noise;
 use super::verdict::misfit_percent;
 use super::{Model, SetMember, StepFit};
@@ -48,15 +48,14 @@ fn sd(covariance: &LogCovariance, k: usize) -> f64 {
 }
 
 /// Gain, τ, τ₂ and θ with their intervals.
-struct Figures {
-    gain: Estimate,
-    tau: Option<Estimate>,
-    tau2: Option<Estimate>,
-    theta: Estimate,
+pub(crate) struct Figures {
+    pub gain: Estimate,
+    pub tau: Option<Estimate>,
+    pub tau2: Option<Estimate>,
+    pub theta: Estimate,
 }
 
-fn figures(candidate: &Candidate, covariance: &LogCovariance) -> Figures {
-    let fit = &candidate.fit;
+pub(crate) fn figures(fit: &Fit, covariance: &LogCovariance) -> Figures {
     let (tau, tau2) = fit.point.lags(fit.kind);
     let by_factor = |value: f64, k: usize| {
         let factor = libm::exp(TWO_SIDED_95 * sd(covariance, k));
@@ -83,7 +82,7 @@ pub(crate) fn step_fit(
     interval_s: f64,
 ) -> StepFit {
     let covariance = covariance::logarithmic(&candidate.fit, 1.0, interval_s);
-    let figures = figures(candidate, &covariance);
+    let figures = figures(&candidate.fit, &covariance);
     let (bias_percent, drift_percent_per_s) = candidate.fit.bases[0];
     StepFit {
         kind: candidate.fit.kind,
@@ -104,12 +103,13 @@ pub(crate) fn step_fit(
 
 /// How often the windows use a sample on average: the quiet stretch before a move also belongs to
 /// the move before.
-fn repetition(usable: &[&Fitted]) -> f64 {
-    let total: usize = usable.iter().map(|f| f.step.window.len()).sum();
+pub(crate) fn repetition<'a>(steps: impl Iterator<Item = &'a OpStep>) -> f64 {
+    let mut total = 0;
     let mut unique = 0;
     let mut end = 0;
-    for fitted in usable {
-        let window = &fitted.step.window;
+    for step in steps {
+        let window = &step.window;
+        total += window.len();
         unique += window.end.saturating_sub(window.start.max(end));
         end = end.max(window.end);
     }
@@ -222,11 +222,11 @@ pub(crate) fn model(
     let (candidates, choice) = fit_all(usable, own_kinds, watched_s, interval_s)?;
     let pooled = candidates.iter().find(|c| c.fit.kind == choice.kind)?;
     let fit = &pooled.fit;
-    let repeated = repetition(usable);
+    let repeated = repetition(usable.iter().map(|f| &f.step));
     let mut covariance = covariance::logarithmic(fit, repeated, interval_s);
     let spread = spread(usable, pooled, &covariance);
     covariance::stretch(&mut covariance.matrix, &spread.factors);
-    let figures = figures(pooled, &covariance);
+    let figures = figures(fit, &covariance);
     let gains = usable.iter().map(|f| f.of(fit.kind).fit.gains[0].abs());
     let largest = gains.clone().fold(0.0, f64::max);
     let smallest = gains.fold(f64::INFINITY, f64::min);
@@ -288,11 +288,14 @@ fn set(usable: &[&Fitted], pooled: &Candidate, covariance: &LogCovariance) -> Ve
         let lead = direction.iamax();
         let sign = if direction[lead] < 0.0 { -1.0 } else { 1.0 };
         let reach = TWO_SIDED_95 * libm::sqrt(eigen.eigenvalues[axis].max(0.0));
-        for (way, name) in [(1.0, "up"), (-1.0, "down")] {
+        for way in [1.0, -1.0] {
             let values: Vec<f64> = (0..n)
                 .map(|k| centre[k] + way * sign * reach * direction[k])
                 .collect();
-            let label = format!("end of the interval, {} axis, {name}", ordinal(place + 1));
+            let mut label = format!("end of the interval with {}", leading(lead, n, way > 0.0));
+            if members.iter().any(|other| other.label == label) {
+                label = format!("{label} ({} axis)", ordinal(place + 1));
+            }
             members.push(member(
                 label,
                 kind,
@@ -303,6 +306,20 @@ fn set(usable: &[&Fitted], pooled: &Candidate, covariance: &LogCovariance) -> Ve
         }
     }
     members
+}
+
+/// The figure that an end of the interval moves most, in words; `lead` is its place among `n`.
+fn leading(lead: usize, n: usize, up: bool) -> &'static str {
+    match (lead, up) {
+        (0, true) => "high gain",
+        (0, false) => "low gain",
+        (k, true) if k == n - 1 => "long dead time",
+        (k, false) if k == n - 1 => "short dead time",
+        (1, true) => "long time constant",
+        (1, false) => "short time constant",
+        (_, true) => "long second time constant",
+        (_, false) => "short second time constant",
+    }
 }
 
 fn ordinal(n: usize) -> String {

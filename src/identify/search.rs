@@ -1,7 +1,8 @@
 //! The search for the best fit: starts from a coarse grid on few samples, then more samples, then
 //! all, then the pieces between which the dead time makes corners.
 
-use super::least_squares::{Bounds, Fit, FitError, Point, Prepared, Problem, Window};
+use super::descent::{Bounds, Prepared};
+use super::least_squares::{Fit, FitError, Point, Problem, Window};
 use crate::model::Kind;
 
 /// Samples of the coarse grid: enough to tell starts apart.

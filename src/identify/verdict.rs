@@ -179,12 +179,11 @@ pub(crate) fn misfit_percent<'a>(
     100.0 * libm::sqrt((rss - rows * sigma * sigma).max(0.0) / movement)
 }
 
-/// Judges a step. `own` is the fit of its own best kind with its moves, or why there is none.
-pub(crate) fn judge(
-    step: &OpStep,
-    own: Result<(&Candidate, &[(f64, f64)]), String>,
-    grounds: &Grounds,
-) -> Judged {
+/// A fit of a step's own best kind with the moves of its window, or why there is none.
+pub(crate) type OwnFit<'a> = Result<(&'a Candidate, &'a [(f64, f64)]), String>;
+
+/// Judges a step by the fit of its own best kind.
+pub(crate) fn judge(step: &OpStep, own: OwnFit, grounds: &Grounds) -> Judged {
     let mut judged = Judged::new();
     let trace = grounds.trace;
     if grounds.not_before_s.is_some_and(|since| step.at_s < since) {
@@ -321,12 +320,11 @@ fn saturation(judged: &mut Judged, step: &OpStep, trace: &Trace) {
     });
     for (name, count) in [("PV", pv), ("OP", op)] {
         if count > 0 {
-            let samples = if count == 1 { "sample" } else { "samples" };
             judged.worsen(
                 Verdict::Rejected,
                 Reason {
                     code: ReasonCode::Saturated,
-                    text: format!("{name} at the end of its range in {count} {samples}"),
+                    text: format!("{name} at the end of its range"),
                     figure: Some(count as f64),
                     bound: Some(0.0),
                 },

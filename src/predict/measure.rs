@@ -76,10 +76,10 @@ impl Meter {
         }
     }
 
-    /// The same with a settling band of at least this half width, % of span: for a measured response,
-    /// whose noise would leave a narrower one for ever.
-    pub fn with_least_band(mut self, half_width: f64) -> Self {
-        self.band = self.band.max(half_width);
+    /// The same with a settling band that is wider by `margin` to each side, % of span: for a measured
+    /// response, which noise would otherwise keep leaving the band, and its prediction.
+    pub fn with_margin(mut self, margin: f64) -> Self {
+        self.band += margin;
         self
     }
 

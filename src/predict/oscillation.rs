@@ -65,35 +65,38 @@ fn swings(t_s: &[f64], error: &[f64], threshold: f64) -> Vec<Swing> {
 ///
 /// `threshold` is what counts as a swing: beyond noise, and a small part of the step. `skip` is the number
 /// of swings that the disturbance itself makes: 1 after a set-point step, whose first swing is the
-/// step, 0 after a load. At least two further swings are needed.
+/// step, 0 after a load. At least three further swings are needed: one period.
 pub fn find(t_s: &[f64], error: &[f64], threshold: f64, skip: usize) -> Option<Oscillation> {
     let all = swings(t_s, error, threshold);
     let swings = all.get(skip..)?;
-    if swings.len() < 2 {
+    if swings.len() < 3 {
         return None;
     }
-    // Ratios over one period where there are that many swings, else the square of half a period's.
-    let ratios: Vec<f64> = if swings.len() > 2 {
-        swings.windows(3).map(|w| w[2].size / w[0].size).collect()
+    // Ratios over one period.
+    let ratios: Vec<f64> = swings.windows(3).map(|w| w[2].size / w[0].size).collect();
+    let mean_log =
+        |ratios: &[f64]| ratios.iter().map(|r| libm::log(*r)).sum::<f64>() / ratios.len() as f64;
+    // The last swing may be cut off by the end of the log; those that the disturbance itself made are
+    // larger. What comes between shows whether the size stays the same.
+    let later = &ratios[ratios.len() / 2..];
+    let whole = &later[..later.len().saturating_sub(1).max(1)];
+    let stays = libm::exp(mean_log(whole));
+    let limit_cycle =
+        swings.len() >= LIMIT_CYCLE_SWINGS && stays > SAME_SIZE[0] && stays < SAME_SIZE[1];
+    let decay_ratio = if limit_cycle {
+        stays
     } else {
-        let half = swings[1].size / swings[0].size;
-        vec![half * half]
+        libm::exp(mean_log(&ratios))
     };
-    let mean_log = ratios.iter().map(|r| libm::log(*r)).sum::<f64>() / ratios.len() as f64;
-    let decay_ratio = libm::exp(mean_log);
-    // From the middle of one swing to that of the next is half a period.
+    // From the middle of one swing to that of the next is half a period; of a cycle the later ones count.
+    let counted = if limit_cycle {
+        &swings[swings.len() / 2..]
+    } else {
+        swings
+    };
     let middle = |swing: &Swing| 0.5 * (swing.from_s + swing.to_s);
-    let (first, last) = (&swings[0], &swings[swings.len() - 1]);
-    let period_s = 2.0 * (middle(last) - middle(first)) / (swings.len() - 1) as f64;
-    let limit_cycle = swings.len() >= LIMIT_CYCLE_SWINGS && {
-        // The last swing may be cut off by the end of the log.
-        let whole = &swings[..swings.len() - 1];
-        let later = &whole[whole.len() / 2..];
-        let earlier = &whole[..whole.len() / 2];
-        let mean = |part: &[Swing]| part.iter().map(|s| s.size).sum::<f64>() / part.len() as f64;
-        let ratio = mean(later) / mean(earlier);
-        ratio > SAME_SIZE[0] && ratio < SAME_SIZE[1]
-    };
+    let (first, last) = (&counted[0], &counted[counted.len() - 1]);
+    let period_s = 2.0 * (middle(last) - middle(first)) / (counted.len() - 1) as f64;
     let clear = swings.iter().any(|s| s.size >= CLEAR_SWING * threshold);
     if !limit_cycle && (decay_ratio <= NAMED_DECAY || !clear) {
         return None;

@@ -1,5 +1,6 @@
 //! The closed-loop trial held against the prediction.
 
+use crate::display::{fixed, with_unit};
 use crate::model::ProcessModel;
 use crate::predict::measure::{Disturbance, Meter, Sample, Thinner, noise_sd, smoothed};
 use crate::predict::oscillation::{self, Oscillation};
@@ -93,6 +94,8 @@ const LOAD_OVER_NOISE: f64 = 5.0;
 /// The PV is smoothed over this part of the process's dead time plus time constant before figures are
 /// read off it: short against any answer of the loop, long against noise.
 const SMOOTHED_PART: f64 = 0.1;
+/// A swing exceeds the noise by this: noise alone reaches it once in 100,000 samples.
+const SWING_OVER_NOISE: f64 = 4.5;
 /// Instants at which a load is tried to begin.
 const LOAD_STARTS: usize = 240;
 
@@ -282,7 +285,8 @@ impl<'a> Run<'a> {
         rest: (f64, f64, f64),
         hold_s: Option<f64>,
     ) -> Metrics {
-        let mut meter = Meter::new(disturbance).with_least_band(3.0 * self.noise);
+        let margin = (3.0 * self.noise).max(self.wander(window.start));
+        let mut meter = Meter::new(disturbance).with_margin(margin);
         if let Some(hold_s) = hold_s {
             meter = meter.with_hold(hold_s);
         }
@@ -296,6 +300,24 @@ impl<'a> Run<'a> {
             });
         }
         meter.metrics()
+    }
+
+    /// How far the smoothed PV strays from its mean while the loop is at rest before sample `first`, %
+    /// (19 in 20 samples): what the plant does by itself is no part of the response. 0 where the log
+    /// shows too little of it.
+    fn wander(&self, first: usize) -> f64 {
+        let rest: Vec<f64> = (0..first)
+            .rev()
+            .take_while(|&k| self.sp[k] == self.sp[first - 1])
+            .map(|k| self.smooth[k])
+            .collect();
+        if rest.len() < LEAST_SAMPLES {
+            return 0.0;
+        }
+        let middle = mean(&rest);
+        let mut strays: Vec<f64> = rest.iter().map(|pv| (pv - middle).abs()).collect();
+        let place = strays.len() * 19 / 20;
+        *strays.select_nth_unstable_by(place, f64::total_cmp).1
     }
 
     fn set_point_trial(&self, left: &AsLeft, moves: &[Move], chosen: usize, end: usize) -> Trial {
@@ -320,7 +342,7 @@ impl<'a> Run<'a> {
             rest(self.op),
             predicted.settling_time_s,
         );
-        let threshold = (3.0 * self.noise).max(0.05 * size.abs());
+        let threshold = (SWING_OVER_NOISE * self.noise).max(0.05 * size.abs());
         let oscillation = self.oscillation(window, threshold, 1);
         let (agrees, why) = agreement(&measured, &predicted, oscillation.as_ref());
         self.result(
@@ -334,7 +356,7 @@ impl<'a> Run<'a> {
 
     fn load_trial(&self, left: &AsLeft) -> Result<Trial, TrialError> {
         let sp = self.sp[0];
-        let threshold = (5.0 * self.noise).max(0.1);
+        let threshold = (SWING_OVER_NOISE * self.noise).max(0.1);
         let oscillation = self.oscillation(0..self.t_s.len(), threshold, 0);
         // The answer to a load of 1 % OP from the first sample on; later loads are the same, later.
         let unit = self.unit_load(left);
@@ -368,13 +390,15 @@ impl<'a> Run<'a> {
             None if misfit <= MISFIT_AGREES => (
                 true,
                 format!(
-                    "A load step of {size:.1} % OP explains the run with a misfit of {misfit:.0} % (bound {MISFIT_AGREES} %), and no cycle is seen."
+                    "A load step of {} explains the run with a misfit of {misfit:.0} % (bound {MISFIT_AGREES} %), and no cycle is seen.",
+                    with_unit(&fixed(size, 1), "% OP")
                 ),
             ),
             None => (
                 false,
                 format!(
-                    "A load step of {size:.1} % OP explains the run with a misfit of {misfit:.0} % only (bound {MISFIT_AGREES} %)."
+                    "A load step of {} explains the run with a misfit of {misfit:.0} % only (bound {MISFIT_AGREES} %).",
+                    with_unit(&fixed(size, 1), "% OP")
                 ),
             ),
         };

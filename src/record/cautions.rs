@@ -1,7 +1,7 @@
 //! The cautions of a record: the standing ones, those that the data raised, and the site's own.
 
 use super::open_items::{action_fits, few_steps};
-use super::{Caution, Procedure, Record, Status};
+use super::{Caution, OpenCode, Procedure, Record, Status};
 use crate::display::{counted, duration, fixed, plain, significant, unit, with_unit};
 use crate::identify::{ReasonCode, Verdict};
 
@@ -124,8 +124,14 @@ fn raised(record: &Record) -> Vec<Caution> {
         ));
     }
     let tau = model.time_constant_s.map(|e| e.value);
+    let misses_process = record
+        .document
+        .open_items
+        .iter()
+        .any(|item| item.code == OpenCode::ScanTooSlow);
     if let Some(tau) = tau
         && l.scan_s > tau / 4.0
+        && !misses_process
     {
         list.push(caution(
             "scan time",
@@ -155,7 +161,7 @@ fn raised(record: &Record) -> Vec<Caution> {
     if let Some(text) = few_steps(record) {
         list.push(caution("steps", text));
     }
-    if let Some(ratio) = model.gain_ratio {
+    if let Some(ratio) = model.nonlinear_gain() {
         let gains: Vec<f64> = record
             .steps
             .iter()

@@ -3,7 +3,7 @@
 use super::{OpenCode, OpenItem, Record, Remark, Status};
 use crate::design::{LimitName, LimitOutcome, Refusal};
 use crate::display::{counted, duration, plain};
-use crate::identify::Verdict;
+use crate::identify::{Step, Verdict};
 use crate::settings::Action;
 
 /// Facts that the open items look at and that the record itself does not hold.
@@ -182,7 +182,10 @@ fn draft_items(record: &Record, circumstances: &Circumstances) -> Vec<OpenItem> 
             } else if !trial.agrees {
                 items.push(item(
                     OpenCode::TrialDisagrees,
-                    format!("Closed-loop trial: {}", sentence_end(&trial.why)),
+                    format!(
+                        "Closed-loop trial: {}",
+                        sentence_end(&uncapital(&trial.why))
+                    ),
                 ));
             }
         }
@@ -193,6 +196,17 @@ fn draft_items(record: &Record, circumstances: &Circumstances) -> Vec<OpenItem> 
         items.push(item(OpenCode::LevelDeviation, sentence_end(&limit.detail)));
     }
     items
+}
+
+/// The text as it goes on within a sentence: its first word begins small, unless it is a name in capitals.
+fn uncapital(text: &str) -> String {
+    let mut letters = text.chars();
+    match (letters.next(), letters.clone().next()) {
+        (Some(first), Some(second)) if second.is_lowercase() => {
+            first.to_lowercase().chain(letters).collect()
+        }
+        _ => text.to_owned(),
+    }
 }
 
 /// The text with a capital left as it is and a full stop at its end.
@@ -280,26 +294,60 @@ pub fn remarks(record: &Record) -> Vec<Remark> {
     }
     // Of a withheld record without a model every step is among the reasons already.
     if record.model.is_some() {
-        for step in &record.steps {
-            let reasons: Vec<&str> = step.reasons.iter().map(|r| r.text.as_str()).collect();
-            match step.verdict {
-                Verdict::Accepted => {}
-                Verdict::Reservation => add(
-                    "Reservation",
-                    format!(
-                        "Step {} is used with a reservation: {}.",
-                        step.number,
-                        reasons.join("; ")
-                    ),
-                ),
-                Verdict::Rejected => add(
-                    "Not used",
-                    format!("Step {} is rejected: {}.", step.number, reasons.join("; ")),
-                ),
+        for (verdict, label, verb) in [
+            (
+                Verdict::Reservation,
+                "Reservation",
+                "used with a reservation",
+            ),
+            (Verdict::Rejected, "Not used", "rejected"),
+        ] {
+            for group in steps_alike(record, verdict) {
+                add(label, steps_in_words(&group, verb));
             }
         }
     }
     remarks
+}
+
+/// Steps of one verdict, those with the same rules behind it together.
+fn steps_alike(record: &Record, verdict: Verdict) -> Vec<Vec<&Step>> {
+    let codes = |step: &Step| step.reasons.iter().map(|r| r.code).collect::<Vec<_>>();
+    let mut groups: Vec<Vec<&Step>> = Vec::new();
+    for step in record.steps.iter().filter(|s| s.verdict == verdict) {
+        match groups.iter_mut().find(|g| codes(g[0]) == codes(step)) {
+            Some(group) => group.push(step),
+            None => groups.push(vec![step]),
+        }
+    }
+    groups
+}
+
+/// "Step 3 is rejected: ...", "Steps 1 and 2 are used with a reservation, at worst: ...".
+fn steps_in_words(group: &[&Step], verb: &str) -> String {
+    // Figures of rules that ask for at least something are worst where lowest, the others where highest.
+    let badness = |step: &Step| {
+        step.reasons
+            .first()
+            .and_then(|r| Some(r.figure? / r.bound?))
+            .map_or(0.0, |ratio| if ratio < 1.0 { 1.0 / ratio } else { ratio })
+    };
+    let worst = group
+        .iter()
+        .copied()
+        .max_by(|a, b| badness(a).total_cmp(&badness(b)))
+        .unwrap_or(group[0]);
+    let reasons: Vec<&str> = worst.reasons.iter().map(|r| r.text.as_str()).collect();
+    let reasons = reasons.join("; ");
+    let numbers: Vec<String> = group.iter().map(|s| s.number.to_string()).collect();
+    match numbers.as_slice() {
+        [one] => format!("Step {one} is {verb}: {reasons}."),
+        [first @ .., last] => {
+            let first = first.join(", ");
+            format!("Steps {first} and {last} are {verb}, at worst: {reasons}.")
+        }
+        [] => String::new(),
+    }
 }
 
 /// The status that open items leave.

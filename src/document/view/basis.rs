@@ -104,8 +104,9 @@ fn verify(context: &Context) -> String {
     };
     format!(
         "What is needed to check this record is attached to this PDF: the figures (record.json){samples} and \
-         the row of the loop schedule. “asleft audit” with this file holds the attachments against the seal, \
-         computes the figures again from the samples, and holds these pages against the figures."
+         the row of the loop schedule. record.json names the SHA-256 of each samples file; the seal below is the \
+         SHA-256 of record.json itself, without its field provenance.seal and in the canonical form of \
+         RFC 8785. Whoever runs the program of that version on the same logs and schedule gets the same figures."
     )
 }
 

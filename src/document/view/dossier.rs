@@ -1,7 +1,8 @@
 //! The dossier: cover, register, open items, page for operations, settings to enter.
 
 use super::numbers::{bound, capital, listed, number_word, sentence, tidy};
-use super::summary::{ms, slope_unit};
+use super::process::slope_unit;
+use super::summary::ms;
 use super::{
     Context, DocumentView, Entry, Field, RecordView, SignatureView, native, operations, page_name,
     sign_off, status_word,

@@ -1,7 +1,7 @@
 //! The process model: its kind, its figures with their intervals, how well it is known.
 
 use super::numbers::{Cell, Row, Table, TimeUnit, bound, estimate, listed, sentence};
-use super::summary::slope_unit;
+use super::process::slope_unit;
 use super::{Context, Entry, Heading, Plot};
 use crate::display::{self, NO_BREAK};
 use crate::identify::{Reading, Verdict};
@@ -217,7 +217,7 @@ fn notes(context: &Context) -> Vec<String> {
         context.pv_unit
     );
     if fit.widened {
-        notes.push(match fit.gain_ratio {
+        notes.push(match fit.nonlinear_gain() {
             Some(ratio) => format!(
                 "The intervals are widened to cover the spread between steps: the process is nonlinear \
                  over the range tested, {tested} (largest gain {} times the smallest).",
@@ -228,7 +228,7 @@ fn notes(context: &Context) -> Vec<String> {
                  {tested}."
             ),
         });
-    } else if let Some(ratio) = fit.gain_ratio {
+    } else if let Some(ratio) = fit.nonlinear_gain() {
         notes.push(format!(
             "The process is nonlinear over the range tested, {tested}: the largest gain is {} times the \
              smallest.",

@@ -214,7 +214,7 @@ fn see(context: &Context, after: &SettingsBlock) -> String {
         .record
         .model
         .as_ref()
-        .is_some_and(|m| m.fit.gain_ratio.is_some())
+        .is_some_and(|m| m.fit.nonlinear_gain().is_some())
     {
         said.push("Quicker in one part of the range than in the other.".to_owned());
     }

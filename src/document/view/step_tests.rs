@@ -4,7 +4,7 @@ use super::numbers::{
     NONE, TimeUnit, bound, column_decimals, decimals_to_show, decimals_within, grouped, listed,
     sentence, tidy,
 };
-use super::summary::slope_unit;
+use super::process::slope_unit;
 use super::{Context, Heading, Plot, span_of};
 use crate::display;
 use crate::identify::{Step, Verdict};
@@ -155,9 +155,10 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
         dead_time_unit: theta_unit.sign(),
         with_time_constant,
         rows,
-        reasons_below: reasons
-            .iter()
-            .any(|r| r.chars().count() > LONGEST_REASON_BESIDE)
+        reasons_below: reasons.iter().all(String::is_empty)
+            || reasons
+                .iter()
+                .any(|r| r.chars().count() > LONGEST_REASON_BESIDE)
             || context.pv_unit.chars().count() > LONGEST_UNIT_BESIDE,
         reasons,
         note: note(integrates, with_time_constant),
@@ -199,7 +200,6 @@ fn text(context: &Context) -> String {
         text.push_str(&format!(" {on}"));
     }
     for part in [
-        l.conditions.as_deref().map(bound),
         l.tested_by.as_deref().map(|n| format!("by {}", tidy(n))),
         l.witnessed_by
             .as_deref()
@@ -211,7 +211,12 @@ fn text(context: &Context) -> String {
         text.push_str(", ");
         text.push_str(part.trim_end_matches('.'));
     }
-    sentence(&text)
+    match l.conditions.as_deref().map(bound) {
+        Some(conditions) if !conditions.is_empty() => {
+            format!("{} Conditions: {}", sentence(&text), sentence(&conditions))
+        }
+        _ => sentence(&text),
+    }
 }
 
 fn several_days(steps: &[Step]) -> bool {

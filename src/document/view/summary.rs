@@ -1,18 +1,16 @@
 //! Page 1: the verdict, what changed, what the loop does now, what is open, the sign-off.
 
 use super::numbers::{
-    Cell, NONE, Row, Table, TimeUnit, bound, capital, listed, number_word, ratio, runs, sentence,
-    tidy,
+    Cell, Row, Table, TimeUnit, bound, capital, listed, number_word, ratio, tidy,
 };
+use super::open::{open, reasons_withheld};
+use super::process::process_sentences;
 use super::{Context, Entry, Heading, Plot, SignatureView, native, sign_off};
 use crate::display::{self, NO_BREAK};
-use crate::identify::Verdict;
-use crate::model::{Kind, ProcessModel};
 use crate::predict::{Margins, Metrics};
 use crate::record::{OpenCode, Record, SettingsBlock, Status};
 use crate::settings::Native;
 use serde::Serialize;
-use std::collections::BTreeMap;
 
 /// The first page.
 #[derive(Debug, Serialize)]
@@ -390,124 +388,6 @@ fn does(context: &Context) -> Option<Does> {
     })
 }
 
-/// What the process does when OP is moved, in words.
-pub(super) fn process_sentences(context: &Context) -> Option<String> {
-    let block = context.record.model.as_ref()?;
-    let process = block.fit.process();
-    let dead = process.dead_time_s();
-    let op = if context.op_unit == "%" {
-        "percent".to_owned()
-    } else {
-        context.op_unit.clone()
-    };
-    let answers = if dead < 0.05 {
-        "PV answers at once".to_owned()
-    } else {
-        format!("PV answers {} after a move of OP", display::duration(dead))
-    };
-    let rises = if process.gain() < 0.0 {
-        "lowers"
-    } else {
-        "raises"
-    };
-    let gain = &block.gain_engineering;
-    if block.fit.kind.integrates() {
-        let per = slope_unit(process.gain());
-        let (value, interval) = gain_words(gain, per.factor());
-        let rate = format!("{}/{}", context.pv_unit, per.sign());
-        let lag = match process.time_constant_s() {
-            Some(lag) if block.fit.kind == Kind::IntegratingLag => {
-                format!(", with a lag of {}", display::duration(lag))
-            }
-            _ => String::new(),
-        };
-        return Some(format!(
-            "PV moves by {value}{NO_BREAK}{rate} for each {op} of OP ({interval}{NO_BREAK}{rate}) and \
-             does not come to rest by itself. {answers}{lag}."
-        ));
-    }
-    let covers = format!(
-        "{answers} and covers 63{NO_BREAK}% of its change in a further {}.",
-        display::duration(time_to_63_percent(&process))
-    );
-    let (value, interval) = gain_words(gain, 1.0);
-    let unit = &context.pv_unit;
-    let moves = match block.fit.gain_ratio {
-        Some(ratio) => format!(
-            "Each {op} of OP moves PV by {interval}{NO_BREAK}{unit}: the gain varies by a factor of {} over \
-             the range tested, and the settings hold for all of it.",
-            display::fixed(ratio, 1)
-        ),
-        None => format!(
-            "Each {op} of OP {rises} PV by {value}{NO_BREAK}{unit} ({interval}{NO_BREAK}{unit})."
-        ),
-    };
-    Some(format!("{covers} {moves}"))
-}
-
-fn gain_words(gain: &crate::record::EngineeringGain, factor: f64) -> (String, String) {
-    let sign = if gain.value < 0.0 { -1.0 } else { 1.0 };
-    let estimate = crate::quantity::Estimate::new(
-        gain.value * sign * factor,
-        gain.low * sign * factor,
-        gain.high * sign * factor,
-    );
-    super::numbers::estimate(estimate, 1.0)
-}
-
-/// What an integrating process is told in.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub(super) enum SlopeUnit {
-    PerSecond,
-    PerMinute,
-}
-
-impl SlopeUnit {
-    /// As printed after the stroke.
-    pub fn sign(self) -> &'static str {
-        match self {
-            SlopeUnit::PerSecond => "s",
-            SlopeUnit::PerMinute => "min",
-        }
-    }
-
-    /// Units per second in this unit.
-    pub fn factor(self) -> f64 {
-        match self {
-            SlopeUnit::PerSecond => 1.0,
-            SlopeUnit::PerMinute => 60.0,
-        }
-    }
-}
-
-/// Per minute, but for an integrator so fast that 1 % of OP moves the PV through its span within
-/// some minutes.
-pub(super) fn slope_unit(gain_per_s: f64) -> SlopeUnit {
-    if gain_per_s.abs() >= 0.5 {
-        SlopeUnit::PerSecond
-    } else {
-        SlopeUnit::PerMinute
-    }
-}
-
-/// Time after the dead time at which a step answer has covered 63.2 % of its way, s. The answers of
-/// the self-regulating kinds rise without overshoot, so that halving finds it.
-fn time_to_63_percent(process: &ProcessModel) -> f64 {
-    let goal = (1.0 - libm::exp(-1.0)) * process.gain().abs();
-    let lags =
-        process.time_constant_s().unwrap_or(0.0) + process.second_time_constant_s().unwrap_or(0.0);
-    let (mut low, mut high) = (0.0, 4.0 * lags);
-    for _ in 0..60 {
-        let middle = 0.5 * (low + high);
-        if process.step_response(process.dead_time_s() + middle).abs() < goal {
-            low = middle;
-        } else {
-            high = middle;
-        }
-    }
-    high
-}
-
 fn predicted_table(context: &Context, found: &SettingsBlock, after: &SettingsBlock) -> Table {
     let blocks = [found, after];
     let stable = |b: &SettingsBlock| b.margins.is_none_or(|m| m.stable);
@@ -615,110 +495,4 @@ pub(super) fn phase(margins: Option<Margins>) -> Cell {
         .filter(|m| m.stable)
         .and_then(|m| m.phase_margin_deg)
         .map_or_else(Cell::none, |p| Cell::figure(display::fixed(p, 0), "°"))
-}
-
-// ---- what is open
-
-fn open(context: &Context) -> Vec<Entry> {
-    let document = &context.record.document;
-    let mut entries = Vec::new();
-    if document.open_items.is_empty() {
-        entries.push(Entry::new("Open", "None."));
-    }
-    for item in &document.open_items {
-        entries.push(Entry::new(
-            "Open",
-            context
-                .parts
-                .pointing(&bound(&item.text), part_of(item.code)),
-        ));
-    }
-    for remark in &document.remarks {
-        let part = match remark.label.as_str() {
-            "Not met" | "Overridden" => super::SETTINGS,
-            _ => super::STEP_TESTS,
-        };
-        entries.push(Entry::new(
-            tidy(&remark.label),
-            context.parts.pointing(&bound(&remark.text), part),
-        ));
-    }
-    entries
-}
-
-/// The part that shows what an open item is about.
-fn part_of(code: OpenCode) -> &'static str {
-    match code {
-        OpenCode::NoUsableStep | OpenCode::FewSteps => super::STEP_TESTS,
-        OpenCode::TrialDisagrees | OpenCode::TrialOscillates => super::TRIAL,
-        OpenCode::AsLeftMissing | OpenCode::TrialMissing => NONE,
-        _ => super::SETTINGS,
-    }
-}
-
-fn reasons_withheld(context: &Context) -> Vec<Entry> {
-    let record = context.record;
-    let mut entries = Vec::new();
-    for item in &record.document.open_items {
-        if item.code == OpenCode::NoUsableStep {
-            entries.extend(steps_rejected(record, &item.text));
-        } else {
-            entries.push(Entry::new(
-                reason_label(item.code),
-                sentence(&bound(&item.text)),
-            ));
-        }
-    }
-    for remark in &record.document.remarks {
-        entries.push(Entry::new(
-            tidy(&remark.label),
-            sentence(&bound(&remark.text)),
-        ));
-    }
-    if let Some(process) = process_sentences(context) {
-        entries.push(Entry::new("Process", process));
-    }
-    entries
-}
-
-fn reason_label(code: OpenCode) -> &'static str {
-    match code {
-        OpenCode::NoUsableStep | OpenCode::FewSteps => "Test",
-        OpenCode::ActionAgainstProcess => "Action",
-        OpenCode::ScanTooSlow => "Scan",
-        OpenCode::SafetyProcedureMissing => "Protective",
-        OpenCode::InnerLoopWithheld => "Inner loop",
-        OpenCode::NoSolution => "Limits",
-        OpenCode::WrongAim => "Aim",
-        _ => "Also open",
-    }
-}
-
-/// Rejected steps with the same reasons in one line; where no step was found, why.
-fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
-    let mut by_reason: BTreeMap<usize, (Vec<usize>, String)> = BTreeMap::new();
-    for step in record
-        .steps
-        .iter()
-        .filter(|s| s.verdict == Verdict::Rejected)
-    {
-        let reasons: Vec<String> = step.reasons.iter().map(|r| bound(&r.text)).collect();
-        let text = sentence(&reasons.join("; "));
-        match by_reason.values_mut().find(|(_, t)| *t == text) {
-            Some((numbers, _)) => numbers.push(step.number),
-            None => {
-                by_reason.insert(step.number, (vec![step.number], text));
-            }
-        }
-    }
-    if by_reason.is_empty() {
-        return vec![Entry::new("Test", sentence(&bound(item)))];
-    }
-    by_reason
-        .into_values()
-        .map(|(numbers, text)| {
-            let label = if numbers.len() == 1 { "Step" } else { "Steps" };
-            Entry::new(format!("{label}{NO_BREAK}{}", runs(&numbers)), text)
-        })
-        .collect()
 }

@@ -107,7 +107,7 @@ fn table(context: &Context, trial: &Trial) -> Table {
         ));
     }
     rows.push(Row::new(
-        format!("Settling time, ±2{NO_BREAK}%"),
+        "Settling time".to_owned(),
         times(|m| m.settling_time_s, "not settled"),
     ));
     let peaks = both.map(|m| m.peak_deviation_percent * context.pv_per_percent);

@@ -1,0 +1,152 @@
+//! Tests of identification on simulated step tests.
+
+mod intervals;
+mod kinds;
+mod verdicts;
+
+use super::*;
+use crate::quantity::Span;
+use crate::trace::{Clock, Samples};
+
+/// Small seeded generator (G. Marsaglia, J. Statistical Software 8 (2003) 14: xorshift64).
+struct Random(u64);
+
+impl Random {
+    fn new(seed: u64) -> Self {
+        let mut random = Random(seed.wrapping_mul(0x9E37_79B9_7F4A_7C15) | 1);
+        for _ in 0..20 {
+            random.uniform();
+        }
+        random
+    }
+
+    /// In [0, 1).
+    fn uniform(&mut self) -> f64 {
+        self.0 ^= self.0 << 13;
+        self.0 ^= self.0 >> 7;
+        self.0 ^= self.0 << 17;
+        (self.0 >> 11) as f64 / (1_u64 << 53) as f64
+    }
+
+    fn normal(&mut self) -> f64 {
+        let radius = libm::sqrt(-2.0 * libm::log(1.0 - self.uniform()));
+        radius * libm::cos(std::f64::consts::TAU * self.uniform())
+    }
+}
+
+/// A simulated step test.
+#[derive(Clone)]
+struct Test {
+    model: ProcessModel,
+    /// (time, OP) from then on; the first at 0.
+    op: Vec<(f64, f64)>,
+    length_s: f64,
+    interval_s: f64,
+    /// Share of the interval by which sample times are shifted at random.
+    jitter: f64,
+    noise: f64,
+    /// Autocorrelation of the noise from sample to sample.
+    memory: f64,
+    /// Digits of the PV, %; 0 for none.
+    resolution: f64,
+    base: f64,
+    /// Slope of the PV that has nothing to do with the OP, %/s.
+    slope: f64,
+    seed: u64,
+}
+
+impl Test {
+    fn new(model: ProcessModel, op: &[(f64, f64)], length_s: f64) -> Self {
+        Test {
+            model,
+            op: op.to_vec(),
+            length_s,
+            interval_s: 1.0,
+            jitter: 0.0,
+            noise: 0.05,
+            memory: 0.0,
+            resolution: 0.0,
+            base: 50.0,
+            slope: 0.0,
+            seed: 1,
+        }
+    }
+
+    fn samples(&self) -> Samples {
+        let mut random = Random::new(self.seed);
+        let rows = (self.length_s / self.interval_s) as usize;
+        let t_s: Vec<f64> = (0..rows)
+            .map(|k| self.interval_s * (k as f64 + self.jitter * (random.uniform() - 0.5)))
+            .collect();
+        let start = self.op[0].1;
+        let moves: Vec<(f64, f64)> = self.op[1..].iter().map(|m| (m.0, m.1 - start)).collect();
+        let clean = self.model.response_to_held(&moves, &t_s);
+        let mut noise = self.noise * random.normal();
+        let fresh = self.noise * libm::sqrt(1.0 - self.memory * self.memory);
+        let pv = clean
+            .iter()
+            .zip(&t_s)
+            .map(|(y, t)| {
+                noise = self.memory * noise + fresh * random.normal();
+                let pv = self.base + y + self.slope * t + noise;
+                if self.resolution > 0.0 {
+                    self.resolution * libm::round(pv / self.resolution)
+                } else {
+                    pv
+                }
+            })
+            .collect();
+        let op = t_s
+            .iter()
+            .map(|t| {
+                let k = self.op.partition_point(|m| m.0 <= *t);
+                self.op[k.max(1) - 1].1
+            })
+            .collect();
+        Samples {
+            good: vec![true; t_s.len()],
+            t_s,
+            pv,
+            op,
+            ..Samples::default()
+        }
+    }
+
+    fn identify(&self) -> Identification {
+        identify_samples_of(&self.samples(), full())
+    }
+}
+
+fn full() -> Span {
+    Span::new(0.0, 100.0).expect("a range")
+}
+
+fn context(pv_span: Span) -> Context {
+    Context {
+        clock: Clock::Elapsed,
+        pv_span,
+        op_span: full(),
+        bounds: VerdictBounds::default(),
+        not_before_s: None,
+    }
+}
+
+fn identify_samples_of(samples: &Samples, pv_span: Span) -> Identification {
+    let trace = Trace::new(samples, pv_span, full()).expect("a trace");
+    let steps = crate::steps::find(&trace, 1.0).expect("steps");
+    identify(&trace, &steps, &context(pv_span))
+}
+
+fn first_order(gain: f64, tau: f64, theta: f64) -> ProcessModel {
+    ProcessModel::of_kind(Kind::FirstOrder, gain, tau, 0.0, theta)
+}
+
+const UP_AND_BACK: [(f64, f64); 3] = [(0.0, 40.0), (60.0, 45.0), (260.0, 40.0)];
+
+const IN_AND_OUT: [(f64, f64); 5] = [
+    (0.0, 40.0),
+    (60.0, 45.0),
+    (160.0, 40.0),
+    (260.0, 35.0),
+    (360.0, 40.0),
+];
