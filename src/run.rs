@@ -293,9 +293,14 @@ fn each_loop<T: Send + Sync>(
             // Who listens is the thread that started this one; it listens to the end.
             let _ = told.send(index);
             let Ok(row) = &job.loops[index] else { continue };
+            // Set whatever happens: who waits for this loop must not wait for ever.
+            let announced = Announced(&inner[index]);
             let engineered = engineer(job, index, row, &inner, &cache);
             let for_outer = engineered.as_ref().ok();
-            let _ = inner[index].set(for_outer.map(|e| assemble::inner_record(&e.record)));
+            let _ = announced
+                .0
+                .set(for_outer.map(|e| assemble::inner_record(&e.record)));
+            drop(announced);
             if selected.wanted.contains(&index) {
                 let _ = outcomes[index].set(engineered.and_then(|e| finish(row, e)));
             }
@@ -329,6 +334,15 @@ fn each_loop<T: Send + Sync>(
                 .expect("every loop asked for was worked on"),
         })
         .collect()
+}
+
+/// Says at the latest when it goes out of scope, also by a panic, that there is no record to wait for.
+struct Announced<'a>(&'a OnceLock<Option<InnerRecord>>);
+
+impl Drop for Announced<'_> {
+    fn drop(&mut self) {
+        let _ = self.0.set(None);
+    }
 }
 
 fn engineer(
