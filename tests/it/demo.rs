@@ -149,6 +149,10 @@ fn loops_come_out_as_their_stories_ask() {
             codes(record)
         );
     }
+    let withheld = records
+        .values()
+        .filter(|record| record.document.status == Status::Withheld);
+    assert_eq!(withheld.count(), 3, "every other loop gets its settings");
     let analyser = &records["AIC-208"];
     assert_eq!(analyser.document.status, Status::Draft);
     assert_eq!(
