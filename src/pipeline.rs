@@ -4,7 +4,7 @@ use crate::archive::{self, Standing};
 use crate::assemble::{self, InnerRecord, LoopInput, PROGRAM};
 use crate::document::{self, Attachment, AttachmentKind, DossierInput, DossierRecord, Templates};
 use crate::figures::{self, Figure};
-use crate::job::{Job, LoopRow, schedule_row_csv};
+use crate::job::{Job, LogCell, LoopRow, schedule_row_csv};
 use crate::notice::Problem;
 use crate::read::{self, FileCache, LogRead, Source};
 use crate::record::{
@@ -51,9 +51,12 @@ pub fn engineer(
 ) -> Result<Engineered, Vec<Problem>> {
     let mut problems = row.missing_for_record();
     let mut notices = Vec::new();
-    let mut log_of = |request: Option<read::LogRequest>, role| {
-        let read = request.map(|request| read::read_log(&request, cache))?;
-        match read {
+    let mut log_of = |cell: Option<&LogCell>, request: Option<read::LogRequest>, role| {
+        if let Err(missing) = job.find_files(cell?) {
+            problems.extend(missing);
+            return None;
+        }
+        match read::read_log(&request?, cache) {
             Ok(read) => {
                 notices.extend(read.warnings.clone());
                 Some(log_record(role, read))
@@ -64,8 +67,8 @@ pub fn engineer(
             }
         }
     };
-    let test = log_of(job.test_request(row), LogRole::Test);
-    let trial = log_of(job.trial_request(row), LogRole::Trial);
+    let test = log_of(row.test.as_ref(), job.test_request(row), LogRole::Test);
+    let trial = log_of(row.trial.as_ref(), job.trial_request(row), LogRole::Trial);
     let (Some(test), Some(found), true) = (test, row.found, problems.is_empty()) else {
         return Err(problems);
     };

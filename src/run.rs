@@ -408,3 +408,43 @@ fn dossier(
         });
     written.unwrap_or_else(|problems| DossierOutcome::Failed { problems })
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_test_of_which_nothing_can_be_used_says_why() {
+        let folder = tempfile::tempdir().expect("a folder");
+        let root = folder.path().join("job");
+        new_job(&root).expect("a new job");
+        let log = root.join("logs/example-1.csv");
+        let text = std::fs::read_to_string(&log).expect("readable");
+        let stuck: Vec<String> = text
+            .lines()
+            .enumerate()
+            .map(|(line, row)| {
+                let mut cells: Vec<&str> = row.split(',').collect();
+                if line > 0 {
+                    cells[1] = "55.0";
+                }
+                cells.join(",")
+            })
+            .collect();
+        std::fs::write(&log, stuck.join("\n")).expect("written");
+        let report = check(&root, &[]).expect("a job");
+        let LoopOutcome::Ready { status, open_items } = &report.loops[0].outcome else {
+            panic!("{report}");
+        };
+        assert_eq!(*status, crate::record::Status::Withheld);
+        assert!(
+            open_items[0]
+                .starts_with("No step of the test can be used. Steps 1, 2, 3 and 4 are rejected"),
+            "{open_items:?}"
+        );
+        assert!(
+            open_items[0].contains("PV does not change"),
+            "{open_items:?}"
+        );
+    }
+}

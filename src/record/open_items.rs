@@ -87,7 +87,7 @@ fn withholding_items(record: &Record, circumstances: &Circumstances) -> Vec<Open
             OpenCode::NoUsableStep,
             match &record.test.failure {
                 Some(failure) => format!("No step test can be used: {failure}."),
-                None => "No step of the test can be used.".to_owned(),
+                None => no_step_in_words(record),
             },
         )),
         Some(model) if !action_fits(record) => {
@@ -310,6 +310,16 @@ pub fn remarks(record: &Record, circumstances: &Circumstances) -> Vec<Remark> {
         }
     }
     remarks
+}
+
+/// That no step can be used, and why.
+fn no_step_in_words(record: &Record) -> String {
+    let mut text = "No step of the test can be used.".to_owned();
+    for group in steps_alike(record, Verdict::Rejected) {
+        text.push(' ');
+        text.push_str(&steps_in_words(&group, "rejected"));
+    }
+    text
 }
 
 /// Steps of one verdict, those with the same rules behind it together.
