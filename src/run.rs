@@ -118,7 +118,8 @@ pub fn record(
     let mut notices = selected.notices.clone();
     let register = if options.only.is_empty() && !recorded.is_empty() {
         let records: Vec<Record> = recorded.iter().map(|r| r.record.clone()).collect();
-        archive::write_register(&out, &register::to_csv(&records))
+        let missing = not_recorded(&selected, &outcomes);
+        archive::write_register(&out, &register::to_csv(&records, &missing))
             .map_err(|problem| vec![problem])?;
         Some(archive::REGISTER_FILE.to_owned())
     } else {
@@ -376,6 +377,17 @@ fn engineer(
     pipeline::engineer(job, row, inner_record, cache)
 }
 
+/// Tags of the loops asked for that have no record, in the order of the schedule.
+fn not_recorded(selected: &Selected, outcomes: &[Result<Recorded, Vec<Problem>>]) -> Vec<String> {
+    selected
+        .wanted
+        .iter()
+        .zip(outcomes)
+        .filter(|(_, outcome)| outcome.is_err())
+        .map(|(&index, _)| tag_of(&selected.job, index).to_owned())
+        .collect()
+}
+
 /// The dossier of all records that there are, inner loops before the loops that cascade to them.
 fn dossier(
     selected: &Selected,
@@ -392,8 +404,8 @@ fn dossier(
             outcomes[place].as_ref().ok()
         })
         .collect();
-    let complete = outcomes.iter().all(Result::is_ok);
-    let written = pipeline::write_dossier(&selected.job, &records, complete, out, templates)
+    let not_recorded = not_recorded(selected, outcomes);
+    let written = pipeline::write_dossier(&selected.job, &records, &not_recorded, out, templates)
         .and_then(|(dossier, kept, notices)| {
             let document = &dossier.document;
             let names = FileNames::new(&document.number, &document.revision)
