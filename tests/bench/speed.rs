@@ -39,7 +39,10 @@ fn record_demo(out: &Path, only: &[&str], dossier: bool) {
 #[divan::bench(sample_count = 3, sample_size = 1)]
 fn record_the_demo_job(bencher: Bencher) {
     bencher
-        .with_inputs(folder)
+        .with_inputs(|| {
+            comemo::evict(0);
+            folder()
+        })
         .bench_refs(|out| record_demo(out.path(), &[], true));
 }
 
@@ -134,11 +137,12 @@ fn typesettable() -> &'static Record {
     })
 }
 
-/// A record from its figures to the bytes of the PDF, attachments left out.
+/// A record from its figures to the bytes of the PDF, attachments left out; nothing that the typesetter
+/// remembers of an earlier one is used.
 #[divan::bench(sample_count = 10, sample_size = 1)]
 fn typeset_a_record(bencher: Bencher) {
     let record = typesettable();
-    bencher.bench(|| {
+    bencher.with_inputs(|| comemo::evict(0)).bench_values(|()| {
         let figures = figures::draw(record);
         document::typeset_record(record, &figures, &[], &Templates::default()).expect("a PDF")
     });
