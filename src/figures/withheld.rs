@@ -28,7 +28,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         also_pv: None,
         also_op: None,
         top: 24.0 + marks.height(),
-        between: 20.0,
+        between: 23.0,
         op_height: 30.0,
         right: RIGHT_PT,
         most_ticks: [4, 3],
@@ -72,6 +72,8 @@ fn what_was_wrong(step: &Step) -> String {
         match (reason.code, figure(reason)) {
             (ReasonCode::Change, Some(figure)) => format!("change {figure}\u{a0}σ"),
             (ReasonCode::Drift, Some(figure)) => format!("drift {figure}\u{a0}%"),
+            // Words that fit beside the number of a short stretch.
+            (ReasonCode::Saturated, _) => "end of range".to_owned(),
             (ReasonCode::Misfit, Some(figure)) => format!("misfit {figure}\u{a0}%"),
             _ => test::reason_words(reason).to_owned(),
         }
