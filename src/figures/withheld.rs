@@ -7,19 +7,25 @@ use super::trend::{self, Outline, Trend};
 use super::{Figure, narrate};
 use crate::display::fixed;
 use crate::identify::{Reason, ReasonCode, Step, Verdict};
-use crate::record::Record;
+use crate::record::{PageSize, Record};
 
 const WIDTH_MM: f64 = 170.0;
 const HEIGHT_MM: f64 = 50.0;
+/// On US Letter the figure leaves the sign-off its place on the first page.
+const LETTER_HEIGHT_MM: f64 = 45.0;
 
 /// Draws the test; `None` where there is none.
 pub fn draw(record: &Record) -> Option<Figure> {
     let log = record.test_log()?;
-    let width = Canvas::new(WIDTH_MM, HEIGHT_MM).width();
+    let height = match record.document.page {
+        PageSize::A4 => HEIGHT_MM,
+        PageSize::UsLetter => LETTER_HEIGHT_MM,
+    };
+    let width = Canvas::new(WIDTH_MM, height).width();
     let lines = trend::lines(&log.data, width)?;
     let marks = Marks::new(&record.steps, &lines, width, what_was_wrong);
     // Rows of words above the first make the figure taller, not the windows smaller.
-    let canvas_height = HEIGHT_MM + marks.height() / super::canvas::PT_PER_MM;
+    let canvas_height = height + marks.height() / super::canvas::PT_PER_MM;
     let mut canvas = Canvas::new(WIDTH_MM, canvas_height);
     let outline = Outline {
         log,
