@@ -372,7 +372,7 @@ fn register_note(contexts: &[Context], not_recorded: &[String]) -> String {
     notes.push(
         "Settings in each controller’s own form and units: first the gain or band, then the integral time, \
          or with a stroke before the unit the reset rate, then the derivative time where it is used. \
-         Ms of the worst model, settings as left or to enter."
+         Process model: gain in % of PV for 1\u{a0}% of OP. Ms of the worst model, settings as left or to enter."
             .to_owned(),
     );
     if contexts
@@ -434,7 +434,8 @@ fn operations_page(input: &DossierInput, contexts: &[Context]) -> Option<Operati
         );
     Some(Operations {
         intro: format!(
-            "What the new controller settings of {} mean for the control room. Loops not listed work as before.",
+            "What the new controller settings of {} mean for the control room. Loops not listed work as before. After \
+             a change of set point leave it alone for the time shown.",
             input.date.format("%B %Y")
         ),
         rows,

@@ -49,7 +49,7 @@ pub(super) fn row(context: &Context) -> Option<Row> {
         different: different(context, after),
         takes: takes_s.map_or_else(|| "not known".to_owned(), plain_time),
         see: see(context, after),
-        avoid: avoid(context, takes_s),
+        avoid: avoid(context),
     })
 }
 
@@ -104,7 +104,8 @@ fn takes(context: &Context, after: &SettingsBlock) -> Option<f64> {
 /// "15 seconds", "6 minutes", "1 hour 20 minutes": as told across a desk.
 pub(super) fn plain_time(seconds: f64) -> String {
     if seconds < 90.0 {
-        let rounded = (libm::round(seconds / 5.0) * 5.0).max(5.0);
+        // Up, not to the nearest: nobody is to be told to act before the loop is there.
+        let rounded = (libm::ceil(seconds / 5.0) * 5.0).max(5.0);
         return format!("{}{NO_BREAK}seconds", display::fixed(rounded, 0));
     }
     let minutes = libm::round(seconds / 60.0) as usize;
@@ -251,7 +252,7 @@ fn see(context: &Context, after: &SettingsBlock) -> String {
     said.join(" ")
 }
 
-fn avoid(context: &Context, takes_s: Option<f64>) -> String {
+fn avoid(context: &Context) -> String {
     let mut said = Vec::new();
     let l = &context.record.control_loop;
     let open_margins = context
@@ -267,11 +268,6 @@ fn avoid(context: &Context, takes_s: Option<f64>) -> String {
     }
     if l.aim == Aim::Averaging {
         said.push("Do not correct the level by hand while it is within its alarms.".to_owned());
-    } else if let Some(takes_s) = takes_s {
-        said.push(format!(
-            "Do not change the set point again within {}.",
-            plain_time(takes_s)
-        ));
     }
     if !l.outer_loops.is_empty() {
         let outer: Vec<String> = l.outer_loops.iter().map(|t| tidy(t)).collect();
