@@ -481,8 +481,9 @@ mod tests {
         };
         assert_eq!(*status, crate::record::Status::Withheld);
         assert!(
-            open_items[0]
-                .starts_with("No step of the test can be used. Steps 1, 2, 3 and 4 are rejected"),
+            open_items[0].starts_with(
+                "No step of the test can be used. Steps 1\u{a0}to\u{a0}4 are rejected"
+            ),
             "{open_items:?}"
         );
         assert!(
