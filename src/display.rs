@@ -86,6 +86,29 @@ pub fn counted(count: usize, one: &str, many: &str) -> String {
     format!("{count}{NO_BREAK}{}", if count == 1 { one } else { many })
 }
 
+/// Increasing numbers with runs of three and more in short: "1 to 4 and 7".
+pub fn runs(numbers: &[usize]) -> String {
+    let mut parts = Vec::new();
+    let mut from = 0;
+    for end in 1..=numbers.len() {
+        if end < numbers.len() && numbers[end] == numbers[end - 1] + 1 {
+            continue;
+        }
+        let run = &numbers[from..end];
+        match run {
+            [first, _, .., last] if run.len() > 2 => {
+                parts.push(format!("{first}{NO_BREAK}to{NO_BREAK}{last}"))
+            }
+            _ => parts.extend(run.iter().map(ToString::to_string)),
+        }
+        from = end;
+    }
+    match parts.as_slice() {
+        [head @ .., last] if !head.is_empty() => format!("{} and {last}", head.join(", ")),
+        _ => parts.concat(),
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -101,5 +124,15 @@ mod tests {
         assert_eq!(duration(246.0), "4.1\u{a0}min");
         assert_eq!(with_unit("5", "degC"), "5\u{a0}°C");
         assert_eq!(counted(1, "step", "steps"), "1\u{a0}step");
+    }
+
+    #[test]
+    fn runs_of_numbers_are_told_in_short() {
+        assert_eq!(
+            runs(&[1, 2, 3, 4, 7, 9, 10]),
+            "1\u{a0}to\u{a0}4, 7, 9 and 10"
+        );
+        assert_eq!(runs(&[1, 2]), "1 and 2");
+        assert_eq!(runs(&[]), "");
     }
 }

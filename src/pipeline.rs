@@ -138,13 +138,33 @@ pub fn write(
     })
 }
 
-/// Whether the record could be written: what [`write`] would find short of typesetting.
+/// The record that [`write`] would leave in the folder, short of typesetting and writing it.
 ///
 /// # Errors
 /// As [`write`].
-pub fn look(engineered: &Engineered, out: &Path) -> Result<(), Vec<Problem>> {
+pub fn look(engineered: &Engineered, out: &Path) -> Result<Record, Vec<Problem>> {
     let sealed = archive::seal(engineered.record.clone()).map_err(one)?;
-    archive::look(out, &sealed).map(drop).map_err(one)
+    Ok(match archive::look(out, &sealed).map_err(one)? {
+        Standing::Free(_) => sealed,
+        Standing::Issued { kept, .. } => *kept,
+    })
+}
+
+/// Whether the dossier of these records, inner loops first, could be written: what [`write_dossier`] would
+/// find short of typesetting.
+///
+/// # Errors
+/// As [`write_dossier`].
+pub fn look_for_dossier(
+    job: &Job,
+    records: &[Record],
+    not_recorded: &[String],
+    out: &Path,
+) -> Result<(), Vec<Problem>> {
+    let dossier = archive::Dossier::new(dossier_document(job), records, not_recorded, PROGRAM);
+    archive::look_for_dossier(out, &dossier)
+        .map(drop)
+        .map_err(one)
 }
 
 /// Binds and writes the dossier. `records` stand inner loop first.
@@ -154,13 +174,12 @@ pub fn look(engineered: &Engineered, out: &Path) -> Result<(), Vec<Problem>> {
 pub fn write_dossier(
     job: &Job,
     records: &[&Recorded],
-    every_loop_recorded: bool,
+    not_recorded: &[String],
     out: &Path,
     templates: &Templates,
 ) -> Result<(archive::Dossier, bool, Vec<Problem>), Vec<Problem>> {
     let sealed: Vec<Record> = records.iter().map(|r| r.record.clone()).collect();
-    let dossier =
-        archive::Dossier::new(dossier_document(job), &sealed, every_loop_recorded, PROGRAM);
+    let dossier = archive::Dossier::new(dossier_document(job), &sealed, not_recorded, PROGRAM);
     match archive::look_for_dossier(out, &dossier).map_err(one)? {
         Standing::Issued { kept, notice } => Ok((*kept, true, notice.into_iter().collect())),
         Standing::Free(slot) => {
@@ -173,7 +192,7 @@ pub fn write_dossier(
                 })
                 .collect();
             let pdf = document::typeset_dossier(
-                &dossier_input(&dossier.document, job),
+                &dossier_input(&dossier.document, job, not_recorded),
                 &bound,
                 templates,
             )
@@ -397,7 +416,7 @@ fn dossier_document(job: &Job) -> Document {
     document
 }
 
-fn dossier_input(document: &Document, job: &Job) -> DossierInput {
+fn dossier_input(document: &Document, job: &Job, not_recorded: &[String]) -> DossierInput {
     DossierInput {
         number: document.number.clone(),
         title: match &job.manifest.area {
@@ -413,6 +432,7 @@ fn dossier_input(document: &Document, job: &Job) -> DossierInput {
         page: document.page,
         signatures: document.signatures.clone(),
         procedures: document.procedures.clone(),
+        not_recorded: not_recorded.to_vec(),
         program: PROGRAM.to_owned(),
     }
 }
@@ -443,7 +463,7 @@ fn loop_of(job: &Job, row: &LoopRow) -> Loop {
             high: row.controller.op_span.high(),
         },
         action: row.action,
-        left_action: left.and_then(|left| left.action),
+        left_action: row.left_action,
         form: row.controller.form,
         p_as: row.controller.p_as,
         i_as: row.controller.i_as,
@@ -453,7 +473,7 @@ fn loop_of(job: &Job, row: &LoopRow) -> Loop {
         d_filter_n: row.controller.d_filter_n,
         scan_s: row.controller.scan_s,
         pv_filter_s: row.pv_filter_s,
-        left_pv_filter_s: left.and_then(|left| left.pv_filter_s),
+        left_pv_filter_s: row.left_pv_filter_s,
         pv_filter_in_log: row.pv_filter_in_log,
         aim: row.aim,
         derivative: row.derivative,

@@ -88,6 +88,9 @@ pub struct Dossier {
     pub document: Document,
     /// The records bound, in order.
     pub records: Vec<DossierEntry>,
+    /// Tags of the loops of the job that have no record.
+    #[serde(default)]
+    pub not_recorded: Vec<String>,
     /// Where it comes from; the seal is made as that of a record.
     pub provenance: Provenance,
 }
@@ -100,10 +103,10 @@ impl Dossier {
     pub fn new(
         mut document: Document,
         records: &[Record],
-        every_loop_recorded: bool,
+        not_recorded: &[String],
         program: &str,
     ) -> Self {
-        let complete = every_loop_recorded
+        let complete = not_recorded.is_empty()
             && records
                 .iter()
                 .all(|record| record.document.status == Status::ForSignature);
@@ -126,6 +129,7 @@ impl Dossier {
             schema: DOSSIER_SCHEMA.to_owned(),
             document,
             records,
+            not_recorded: not_recorded.to_vec(),
             provenance: Provenance {
                 program: program.to_owned(),
                 seal: String::new(),
@@ -227,12 +231,12 @@ fn look_at<T>(
                     names.json()
                 ),
             )
-            .hint("Bring the JSON back from where it went, or move the PDF out of the folder"));
+            .hint("bring the JSON back from where it went, or move the PDF out of the folder"));
         }
         let folder = folder.to_owned();
         return Ok(Standing::Free(Slot { folder, names }));
     };
-    let move_away = "Bring the file back as it was issued, or move both files out of the folder";
+    let move_away = "bring the file back as it was issued, or move both files out of the folder";
     let old: Value = seal::parsed(&text, &place).map_err(|problem| problem.hint(move_away))?;
     let (old_tag, new_tag) = (&old["loop"]["tag"], &new["loop"]["tag"]);
     if old_tag != new_tag || old["schema"] != new["schema"] {
@@ -242,7 +246,7 @@ fn look_at<T>(
                 format!("the record of {tag}")
             });
         return Err(Problem::error(place, format!("already holds {holds}"))
-            .hint("Give each document its own number, or write to another folder with --out"));
+            .hint("give each document its own number, or write to another folder with --out"));
     }
     if !seal_holds(&old) {
         return Err(Problem::error(place, "was changed after it was sealed").hint(move_away));
@@ -272,7 +276,7 @@ fn look_at<T>(
                 slot.names.pdf()
             ),
         )
-        .hint("Bring the PDF back; where the pair was never handed out, delete this file"));
+        .hint("bring the PDF back; where the pair was never handed out, delete this file"));
     }
     let notice = if changes.is_empty() {
         None
@@ -308,7 +312,7 @@ fn differs(place: Place, changes: &[Difference]) -> Problem {
             listed(changes)
         ),
     )
-    .hint("Give it a new revision, with its date and reason, in the schedule (a dossier: in job.toml)")
+    .hint("give it a new revision, with its date and reason, in the schedule (a dossier: in job.toml)")
 }
 
 fn other_figures(place: Place, old: &Value, changes: &[Difference]) -> Problem {
@@ -322,7 +326,7 @@ fn other_figures(place: Place, old: &Value, changes: &[Difference]) -> Problem {
             listed(changes)
         ),
     )
-    .hint("Give it a new revision in the schedule where the new figures are wanted")
+    .hint("give it a new revision in the schedule where the new figures are wanted")
 }
 
 /// The first differences, one a line, what was handed in before what follows from it.

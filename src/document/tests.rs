@@ -61,9 +61,9 @@ fn a_complete_record_has_its_six_pages() {
             "Controller gain Kc 2.63 %/% 2.38 %/%",
             "Integral time Ti 72 s 216 s",
             "Unchanged: derivative time off, action reverse, PV filter none.",
-            "Entered 2026-03-13 by R. Tan, as recommended.",
+            "Entered 2026-03-13 by R. Tan, as recommended, rounded.",
             "PV answers 24 s after a move of OP and covers 63 % of its change in a further 4.1 min.",
-            "Each percent of OP moves PV by 0.52 to 1.02 °C",
+            "Each percent of OP raises PV by 0.52 to 1.02 °C",
             "Settles after a set-point change not settled 9.3 min",
             "robustness needs 49 s, which is used (see 7).",
             "Accepted for operations",
@@ -75,9 +75,11 @@ fn a_complete_record_has_its_six_pages() {
         &[
             "5 Step tests",
             "Tested 2026-03-11 from 09:05 to 11:14, by A. Quill, witnessed by P. Lind. Conditions: Feed 11.8 to 12.3 t/h.",
-            "1 09:35:00 42 47 98.0 101.8 0.760 3.17 19.0 4.5 accepted",
-            "3 10:15:00 51 46 105.3 101.2 – – – – rejected drift 31 % (bound 20 %)",
+            "1 09:35:00 42 47 98.0 101.8 0.76 3.17 19.0 4.5 accepted",
+            "10:15:00 51 46 105.3 101.2 – – – – rejected",
+            "drift 31 % (bound 20 %)",
             "accepted with reservation",
+            "watched 2.6 τ (bound 3 τ)",
         ],
     );
     holds(
@@ -208,7 +210,7 @@ fn an_integrating_process_is_told_by_its_slope_and_the_controller_in_its_own_uni
             "Controller gain 5 %/% 0.72 %/%",
             "Reset rate 0.20 /min 0.026 /min",
             "Integral time Ti 300 s 2310 s",
-            "PV moves by 0.120 %/min for each percent of OP (0.108 to 0.132 %/min)",
+            "Each percent of OP lowers PV by 0.120 %/min (0.108 to 0.132 %/min)",
             "PV answers 8.0 s after a move of OP.",
         ],
     );

@@ -369,7 +369,8 @@ fn sheet(
             .then_some(record)
             .and_then(|r| r.model.as_ref());
         let pooled_name = names.map(|m| gains.print(m.fit.gain.value));
-        draw_chart(&mut canvas, &upper, &lower, chart, &gains, pooled_name);
+        let upper = (&upper, &upper_axis);
+        draw_chart(&mut canvas, upper, &lower, chart, &gains, pooled_name);
     }
     let mut caption = if charts.len() == 1 {
         format!("The usable step. Bold figure: its gain, {}.", gains.unit)
@@ -437,13 +438,14 @@ fn farthest(charts: &[Chart]) -> usize {
 
 fn draw_chart(
     canvas: &mut Canvas,
-    upper: &Panel,
+    (upper, upper_axis): (&Panel, &axis::Values),
     lower: &Panel,
     chart: &Chart,
     gains: &GainFigure,
     pooled_gain: Option<String>,
 ) {
     let mut taken = Taken::words_of(canvas);
+    taken.add_grid(upper.grid(upper_axis));
     for run in &chart.runs {
         taken.add_paths(&upper.samples(canvas, run, Ink::Middle));
     }

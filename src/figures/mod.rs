@@ -27,6 +27,7 @@ mod withheld;
 
 use crate::record::{Record, Status};
 use canvas::Canvas;
+pub use reading::read_step;
 
 /// One figure, ready to be placed at `width_mm`.
 #[derive(Debug, Clone, PartialEq)]

@@ -9,10 +9,12 @@ use super::response::{Of, Pair, Window, name_both, step_size};
 use super::{Figure, narrate};
 use crate::display::{self, plain, with_unit};
 use crate::predict::Response;
-use crate::record::Record;
+use crate::record::{PageSize, Record};
 
 const WIDTH_MM: f64 = 170.0;
 const HEIGHT_MM: f64 = 86.0;
+/// On US Letter the figure has to end sooner to stay on the page of its settings.
+const LETTER_HEIGHT_MM: f64 = 78.0;
 /// From the left edge of one half to that of the other, pt.
 const HALVES_PT: f64 = 248.0;
 /// Right of each window, for the names at the line ends, pt.
@@ -22,7 +24,11 @@ const NAMES_PT: f64 = 56.0;
 pub fn draw(record: &Record) -> Option<Figure> {
     let pair = Pair::of(record)?;
     let pv = &record.control_loop.pv;
-    let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
+    let height = match record.document.page {
+        PageSize::A4 => HEIGHT_MM,
+        PageSize::UsLetter => LETTER_HEIGHT_MM,
+    };
+    let mut canvas = Canvas::new(WIDTH_MM, height);
     let mut alt = "Four line charts, PV above OP.".to_owned();
     let mut leaves = false;
     for (of, from) in [(Of::SetPoint, 0.0), (Of::Load, HALVES_PT)] {

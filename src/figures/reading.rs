@@ -35,15 +35,24 @@ struct Ruler<'a> {
     time: (f64, f64),
 }
 
-/// Draws the first usable step that has a reading; `None` where there is none.
+/// The step whose reading is drawn and printed: the first accepted one that has a reading, else the
+/// first usable one. A pulse has no end to read.
+pub fn read_step(record: &Record) -> Option<(&Step, &Reading)> {
+    let of = |verdict: Verdict| {
+        record
+            .steps
+            .iter()
+            .filter(move |step| step.verdict == verdict && !step.pulse)
+            .find_map(|step| Some((step, step.reading.as_ref()?)))
+    };
+    of(Verdict::Accepted).or_else(|| of(Verdict::Reservation))
+}
+
+/// Draws the step whose reading is printed; `None` where there is none.
 pub fn draw(record: &Record) -> Option<Figure> {
     let span = Span::new(record.control_loop.pv.low, record.control_loop.pv.high).ok()?;
     let log = record.test_log()?;
-    let (step, reading) = record
-        .steps
-        .iter()
-        .filter(|step| step.verdict != Verdict::Rejected && !step.pulse)
-        .find_map(|step| Some((step, step.reading.as_ref()?)))?;
+    let (step, reading) = read_step(record)?;
     let time = (step.quiet_s[0] - step.at_s, step.window_s[1] - step.at_s);
     if !(time.1 - time.0).is_finite() || time.1 <= time.0 {
         return None;

@@ -17,6 +17,9 @@ const BEFORE: f64 = 0.05;
 /// How far beyond the new response the one as found is followed, in heights of the new one: far
 /// enough to see it swing, not so far that the new one is pressed flat.
 const BEYOND: f64 = 0.9;
+/// A response as found that stays within this is shown whole: a line cut just short of its peak helps
+/// nobody.
+const BEYOND_WHOLE: f64 = 1.5;
 /// The same where the loop as found is unstable: its line leaves the window anyway.
 const BEYOND_UNSTABLE: f64 = 0.4;
 
@@ -147,6 +150,7 @@ impl Window {
                     .zip(column(response))
                     .map(|(&t, &value)| (t, value * factor)),
             );
+            line.extend(at_rest_until(&line, shown_s));
             line
         };
         Some(Window {
@@ -170,10 +174,19 @@ impl Window {
             shown(&self.new).unwrap_or((0.0, 0.0)),
             axis::range(also.iter().copied()),
         );
-        let reach = (new.1 - new.0) * self.beyond;
-        let limits = (new.0 - reach, new.1 + reach);
+        let limits = |beyond: f64| {
+            let reach = (new.1 - new.0) * beyond;
+            (new.0 - reach, new.1 + reach)
+        };
+        let (whole, cut) = (limits(BEYOND_WHOLE), limits(self.beyond));
         let found = shown(&self.found)
-            .map(|(low, high)| (low.max(limits.0), high.min(limits.1)))
+            .map(|(low, high)| {
+                if low >= whole.0 && high <= whole.1 {
+                    (low, high)
+                } else {
+                    (low.max(cut.0), high.min(cut.1))
+                }
+            })
             .filter(|(low, high)| low <= high);
         axis::values(axis::joined(new, found), least, most)
     }
@@ -198,6 +211,21 @@ impl Window {
             .iter()
             .any(|p| p.0 <= self.time.1 && !(panel.y.0..=panel.y.1).contains(&p.1))
     }
+}
+
+/// Where a line ends before the window does and has come to rest: its last value at the window's end.
+fn at_rest_until(line: &[Point], end: f64) -> Option<Point> {
+    /// Part of the line, at its end, that has to lie still, and how still, in parts of its whole range.
+    const STILL_FROM: f64 = 0.9;
+    const STILL: f64 = 0.005;
+    let &(last_t, last) = line.last()?;
+    let (low, high) = axis::range(line.iter().map(|p| p.1))?;
+    let rests = line
+        .iter()
+        .rev()
+        .take_while(|p| p.0 >= STILL_FROM * last_t)
+        .all(|p| (p.1 - last).abs() <= STILL * (high - low));
+    (last_t < end && rests).then_some((end, last))
 }
 
 /// Names both curves in a window: as found beside it, the new one at its end. Where there is no
@@ -230,6 +258,11 @@ pub fn name_both(
     let mut taken = Taken::words_of(canvas);
     taken.add_paths(new);
     taken.add_grid(panel.grid(axis));
+    if let Some(step) = set_point {
+        let (begin, end) = panel.x;
+        let edge = [(begin, 0.0), (0.0, 0.0), (0.0, step), (end, step)];
+        taken.add_paths(&panel.on_sheet(&edge));
+    }
     let sheet = Rect::new(frame.x0, frame.y0 - 9.0, frame.x1, frame.y1 - 1.0);
     let block = Block::line(pair.found_name(), false);
     if !name_curve(canvas, &mut taken, found, &block, sheet) {

@@ -7,7 +7,7 @@ use super::trend::{self, Lines, Outline, Trend};
 use super::{Figure, narrate};
 use crate::display::{fixed, with_unit};
 use crate::identify::{Reason, ReasonCode, Step, Verdict};
-use crate::record::{Log, Record};
+use crate::record::{Log, Record, decisive_reasons};
 
 /// Move of the OP.
 pub const MOVE: Stroke = Stroke::dashed(0.6, 1.4, 1.8);
@@ -271,16 +271,7 @@ fn spots(stretch: Rect, sheet: Rect, pv_foot: f64, size: Point) -> Vec<Rect> {
 
 /// The reason a step was rejected for: the first that is more than a reservation.
 pub fn rejecting_reason(step: &Step) -> Option<&Reason> {
-    let reservation = |reason: &&Reason| {
-        step.checks.iter().any(|check| {
-            check.code == reason.code
-                && reason.bound.is_some()
-                && check.reservation == reason.bound
-                && check.rejected != reason.bound
-        })
-    };
-    let rejecting = step.reasons.iter().find(|reason| !reservation(reason));
-    rejecting.or(step.reasons.first())
+    decisive_reasons(step).first().copied()
 }
 
 /// A reason in a few plain words.

@@ -2,7 +2,7 @@
 
 use super::axis;
 use super::canvas::{Canvas, Ink, Stroke};
-use super::geometry::Rect;
+use super::geometry::{Point, Rect};
 use super::place::{Block, Taken, end_labels, name_curve};
 use super::trend::{self, Outline, Trend};
 use super::{Figure, narrate};
@@ -35,7 +35,10 @@ pub fn draw(record: &Record) -> Option<Figure> {
             let curve = &trial.curve;
             (
                 trend::engineering(&curve.t_s, &curve.pv, pv_span),
-                trend::engineering(&curve.t_s, &curve.op, op_span),
+                held_until_moves(
+                    trend::engineering(&curve.t_s, &curve.op, op_span),
+                    &lines.sp,
+                ),
             )
         });
     let sp = axis::range(lines.sp.iter().map(|p| p.1));
@@ -118,6 +121,28 @@ pub fn draw(record: &Record) -> Option<Figure> {
             .to_owned(),
     };
     Some(Figure::new("trial.svg", &canvas, caption, alt(record, log)))
+}
+
+/// The predicted OP with its jumps where the set point moved: its line holds few points, and one drawn
+/// across a jump would leave before the set point does.
+fn held_until_moves(op: Vec<Point>, set_point: &[Point]) -> Vec<Point> {
+    let mut moves = set_point
+        .windows(2)
+        .filter(|w| w[0].1 != w[1].1)
+        .map(|w| w[1].0)
+        .peekable();
+    let mut line: Vec<Point> = Vec::with_capacity(op.len());
+    for point in op {
+        while let Some(at) = moves.next_if(|&at| at <= point.0) {
+            if let Some(&(from, value)) = line.last()
+                && from < at
+            {
+                line.push((at, value));
+            }
+        }
+        line.push(point);
+    }
+    line
 }
 
 fn alt(record: &Record, log: &Log) -> String {

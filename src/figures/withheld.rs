@@ -7,19 +7,25 @@ use super::trend::{self, Outline, Trend};
 use super::{Figure, narrate};
 use crate::display::fixed;
 use crate::identify::{Reason, ReasonCode, Step, Verdict};
-use crate::record::Record;
+use crate::record::{PageSize, Record};
 
 const WIDTH_MM: f64 = 170.0;
 const HEIGHT_MM: f64 = 50.0;
+/// On US Letter the figure leaves the sign-off its place on the first page.
+const LETTER_HEIGHT_MM: f64 = 45.0;
 
 /// Draws the test; `None` where there is none.
 pub fn draw(record: &Record) -> Option<Figure> {
     let log = record.test_log()?;
-    let width = Canvas::new(WIDTH_MM, HEIGHT_MM).width();
+    let height = match record.document.page {
+        PageSize::A4 => HEIGHT_MM,
+        PageSize::UsLetter => LETTER_HEIGHT_MM,
+    };
+    let width = Canvas::new(WIDTH_MM, height).width();
     let lines = trend::lines(&log.data, width)?;
     let marks = Marks::new(&record.steps, &lines, width, what_was_wrong);
     // Rows of words above the first make the figure taller, not the windows smaller.
-    let canvas_height = HEIGHT_MM + marks.height() / super::canvas::PT_PER_MM;
+    let canvas_height = height + marks.height() / super::canvas::PT_PER_MM;
     let mut canvas = Canvas::new(WIDTH_MM, canvas_height);
     let outline = Outline {
         log,
@@ -28,7 +34,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         also_pv: None,
         also_op: None,
         top: 24.0 + marks.height(),
-        between: 20.0,
+        between: 23.0,
         op_height: 30.0,
         right: RIGHT_PT,
         most_ticks: [4, 3],
@@ -72,6 +78,8 @@ fn what_was_wrong(step: &Step) -> String {
         match (reason.code, figure(reason)) {
             (ReasonCode::Change, Some(figure)) => format!("change {figure}\u{a0}σ"),
             (ReasonCode::Drift, Some(figure)) => format!("drift {figure}\u{a0}%"),
+            // Words that fit beside the number of a short stretch.
+            (ReasonCode::Saturated, _) => "end of range".to_owned(),
             (ReasonCode::Misfit, Some(figure)) => format!("misfit {figure}\u{a0}%"),
             _ => test::reason_words(reason).to_owned(),
         }

@@ -68,10 +68,6 @@ pub struct Left {
     pub on: Option<Day>,
     /// By whom.
     pub entered_by: Option<String>,
-    /// Action, where it was changed.
-    pub action: Option<Action>,
-    /// PV filter, s, where it was changed.
-    pub pv_filter_s: Option<f64>,
 }
 
 /// A log of the loop: which files, and what of them.
@@ -118,6 +114,10 @@ pub struct LoopRow {
     pub found: Option<Native>,
     /// Settings as entered; `None` until they were.
     pub left: Option<Left>,
+    /// Action as left, where it was or is to be changed; it stands also before settings are entered.
+    pub left_action: Option<Action>,
+    /// PV filter as left, s, where it was or is to be changed.
+    pub left_pv_filter_s: Option<f64>,
     /// What the loop is for.
     pub aim: Aim,
     /// Whether the design may use derivative action.
@@ -317,6 +317,8 @@ fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -
     let scan_s = r.needed("scan s", RowReader::above_zero);
     let found = r.native(["found p", "found i", "found d"], warnings);
     let left = read_left(r, warnings);
+    let left_action = r.word("left action", ACTIONS);
+    let left_pv_filter_s = r.not_below_zero("left pv filter s");
     let aim = r.word("aim", AIMS).unwrap_or_default();
     let allowed_deviation = r.above_zero("allowed deviation");
     let expected_load = r.number("expected load").map(f64::abs);
@@ -363,6 +365,8 @@ fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -
         pv_filter_in_log,
         found,
         left,
+        left_action,
+        left_pv_filter_s,
         aim,
         derivative,
         target_s: r.above_zero("target s"),
@@ -484,8 +488,6 @@ fn read_left(r: &mut RowReader<'_>, warnings: &mut Vec<Problem>) -> Option<Left>
     let native = r.native(["left p", "left i", "left d"], warnings);
     let on = r.day("left on");
     let entered_by = r.text("entered by");
-    let action = r.word("left action", ACTIONS);
-    let pv_filter_s = r.not_below_zero("left pv filter s");
     let native = native?;
     if on.is_none() && r.cell("left on").is_empty() {
         warnings.push(Problem::warning(
@@ -497,7 +499,5 @@ fn read_left(r: &mut RowReader<'_>, warnings: &mut Vec<Problem>) -> Option<Left>
         native,
         on,
         entered_by,
-        action,
-        pv_filter_s,
     })
 }

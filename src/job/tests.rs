@@ -116,7 +116,7 @@ fn a_workbook_of_every_kind_of_cell_is_typed() {
             d: 0.0
         }
     );
-    assert_eq!(left.action, Some(Action::Reverse));
+    assert_eq!(row.left_action, Some(Action::Reverse));
     assert_eq!(
         left.on.map(|on| on.to_string()).as_deref(),
         Some("2026-03-16")

@@ -143,26 +143,28 @@ fn raised(record: &Record) -> Vec<Caution> {
         list.push(caution("steps", text));
     }
     if let Some(ratio) = model.nonlinear_gain() {
-        let gains: Vec<f64> = record
-            .steps
-            .iter()
-            .filter(|s| s.verdict != Verdict::Rejected)
-            .filter_map(|s| s.fit.as_ref().map(|fit| fit.gain.value.abs()))
-            .collect();
-        let low = gains.iter().copied().fold(f64::INFINITY, f64::min);
-        let high = gains.iter().copied().fold(0.0, f64::max);
-        let in_units = (l.pv.high - l.pv.low) / (l.op.high - l.op.low);
+        let integrates = model.kind.integrates();
+        let per_minute = if integrates { 60.0 } else { 1.0 };
+        let gains = record.gains_of_steps().map(|[low, high]| {
+            let decimals = significant(high * per_minute, 3)
+                .split_once('.')
+                .map_or(0, |(_, after)| after.len());
+            format!(
+                "{} to {} {}{}/{}",
+                fixed(low * per_minute, decimals),
+                fixed(high * per_minute, decimals),
+                unit(&l.pv.unit),
+                if integrates { "/min" } else { "" },
+                unit(&l.op.unit),
+            )
+        });
         list.push(caution(
             "non-linear gain",
             format!(
-                "The process gain differs {} times between steps ({} to {} {}/{}{}). Where it is low the loop \
-                 is slower than predicted, where it is high it overshoots more.",
-                plain(ratio, 2),
-                significant(low * in_units, 2),
-                significant(high * in_units, 2),
-                unit(&l.pv.unit),
-                unit(&l.op.unit),
-                if model.kind.integrates() { "/s" } else { "" },
+                "The process gain differs by a factor of {} between steps ({}). Where it is low the loop is \
+                 slower than predicted, where it is high it overshoots more.",
+                fixed(ratio, 1),
+                gains.unwrap_or_default(),
             ),
         ));
     }

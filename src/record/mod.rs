@@ -3,8 +3,10 @@
 pub mod cautions;
 pub mod open_items;
 
+pub use open_items::decisive_reasons;
+
 use crate::design::{Aim, Design, DesignBounds};
-use crate::identify::{Advice, Model, Step, Valve, VerdictBounds};
+use crate::identify::{Advice, Model, Step, Valve, Verdict, VerdictBounds};
 use crate::predict::trial::Trial;
 use crate::predict::{Margins, Predicted};
 use crate::settings::{
@@ -476,6 +478,23 @@ impl Record {
     /// The log of the closed-loop trial.
     pub fn trial_log(&self) -> Option<&Log> {
         self.logs.iter().find(|log| log.role == LogRole::Trial)
+    }
+
+    /// The smallest and the largest gain of the usable steps' own fits, in PV units per OP unit (per second
+    /// where the process integrates), without sign; `None` where no step has a fit.
+    pub fn gains_of_steps(&self) -> Option<[f64; 2]> {
+        let l = &self.control_loop;
+        let in_units = ((l.pv.high - l.pv.low) / (l.op.high - l.op.low)).abs();
+        let gains = self
+            .steps
+            .iter()
+            .filter(|step| step.verdict != Verdict::Rejected)
+            .filter_map(|step| step.fit.as_ref())
+            .map(|fit| fit.gain.value.abs() * in_units);
+        gains.fold(None, |ends, gain| match ends {
+            None => Some([gain, gain]),
+            Some([low, high]) => Some([f64::min(low, gain), f64::max(high, gain)]),
+        })
     }
 
     /// The controller as settings are typed into it.

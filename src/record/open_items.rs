@@ -2,8 +2,8 @@
 
 use super::{OpenCode, OpenItem, Record, Remark, Status};
 use crate::design::{LimitName, LimitOutcome, Refusal};
-use crate::display::{counted, duration, plain};
-use crate::identify::{Step, Verdict};
+use crate::display::{counted, duration, plain, runs};
+use crate::identify::{Reason, Step, Verdict};
 use crate::settings::Action;
 
 /// Facts that the open items look at and that the record itself does not hold.
@@ -322,9 +322,31 @@ fn no_step_in_words(record: &Record) -> String {
     text
 }
 
+/// The reasons that decided a step's verdict: of a rejected step those that are more than a
+/// reservation, all of them where none is.
+pub fn decisive_reasons(step: &Step) -> Vec<&Reason> {
+    let reservation = |reason: &Reason| {
+        step.checks.iter().any(|check| {
+            check.code == reason.code
+                && reason.bound.is_some()
+                && check.reservation == reason.bound
+                && check.rejected != reason.bound
+        })
+    };
+    let decisive: Vec<&Reason> = step.reasons.iter().filter(|r| !reservation(r)).collect();
+    if step.verdict != Verdict::Rejected || decisive.is_empty() {
+        step.reasons.iter().collect()
+    } else {
+        decisive
+    }
+}
+
 /// Steps of one verdict, those with the same rules behind it together.
 fn steps_alike(record: &Record, verdict: Verdict) -> Vec<Vec<&Step>> {
-    let codes = |step: &Step| step.reasons.iter().map(|r| r.code).collect::<Vec<_>>();
+    let codes = |step: &Step| {
+        let reasons = decisive_reasons(step).into_iter();
+        reasons.map(|r| r.code).collect::<Vec<_>>()
+    };
     let mut groups: Vec<Vec<&Step>> = Vec::new();
     for step in record.steps.iter().filter(|s| s.verdict == verdict) {
         match groups.iter_mut().find(|g| codes(g[0]) == codes(step)) {
@@ -339,7 +361,7 @@ fn steps_alike(record: &Record, verdict: Verdict) -> Vec<Vec<&Step>> {
 fn steps_in_words(group: &[&Step], verb: &str) -> String {
     // Figures of rules that ask for at least something are worst where lowest, the others where highest.
     let badness = |step: &Step| {
-        step.reasons
+        decisive_reasons(step)
             .first()
             .and_then(|r| Some(r.figure? / r.bound?))
             .map_or(0.0, |ratio| if ratio < 1.0 { 1.0 / ratio } else { ratio })
@@ -349,16 +371,15 @@ fn steps_in_words(group: &[&Step], verb: &str) -> String {
         .copied()
         .max_by(|a, b| badness(a).total_cmp(&badness(b)))
         .unwrap_or(group[0]);
-    let reasons: Vec<&str> = worst.reasons.iter().map(|r| r.text.as_str()).collect();
+    let reasons: Vec<&str> = decisive_reasons(worst)
+        .into_iter()
+        .map(|r| r.text.as_str())
+        .collect();
     let reasons = reasons.join("; ");
-    let numbers: Vec<String> = group.iter().map(|s| s.number.to_string()).collect();
+    let numbers: Vec<usize> = group.iter().map(|s| s.number).collect();
     match numbers.as_slice() {
         [one] => format!("Step {one} is {verb}: {reasons}."),
-        [first @ .., last] => {
-            let first = first.join(", ");
-            format!("Steps {first} and {last} are {verb}, at worst: {reasons}.")
-        }
-        [] => String::new(),
+        several => format!("Steps {} are {verb}, at worst: {reasons}.", runs(several)),
     }
 }
 

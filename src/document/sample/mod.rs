@@ -361,6 +361,7 @@ pub(in crate::document) fn dossier_input() -> DossierInput {
         page: PageSize::A4,
         signatures: signatures(),
         procedures: procedures(),
+        not_recorded: Vec::new(),
         program: "asleft 0.1.0".to_owned(),
     }
 }

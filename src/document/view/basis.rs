@@ -103,8 +103,8 @@ fn verify(context: &Context) -> String {
         format!(", the samples used ({})", samples.join(", "))
     };
     format!(
-        "What is needed to check this record is attached to this PDF: the figures (record.json){samples} and \
-         the row of the loop schedule. record.json names the SHA-256 of each samples file; the seal below is the \
+        "What is needed to check this record is attached to this PDF: record.json with all figures and the \
+         SHA-256 of each file of samples{samples}, and the row of the loop schedule. The seal below is the \
          SHA-256 of record.json itself, without its field provenance.seal and in the canonical form of \
          RFC 8785. Whoever runs the program of that version on the same logs and schedule gets the same figures."
     )
@@ -274,14 +274,11 @@ fn log(log: &Log) -> LogView {
     if let Some(gaps) = gaps(log) {
         used.push_str(&format!("; {gaps}"));
     }
-    let mut lines = vec![
-        format!(
-            "{}, every {}{NO_BREAK}s",
-            capital(&span_of(log, true)),
-            display::plain(log.interval_s, 3)
-        ),
-        used,
-    ];
+    let mut lines = vec![format!(
+        "{}, every {}{NO_BREAK}s: {used}",
+        capital(&span_of(log, true)),
+        display::plain(log.interval_s, 3)
+    )];
     lines.extend(log.notes.iter().map(|note| sentence(&bound(note))));
     LogView {
         role: match log.role {

@@ -19,7 +19,7 @@ pub(super) use dossier::{dossier, inner_first};
 use super::{Attachment, DocumentError};
 use crate::display;
 use crate::figures::Figure;
-use crate::record::{Log, PageSize, Record, SettingsBlock, Signature, Status};
+use crate::record::{Log, OpenCode, PageSize, Record, SettingsBlock, Signature, Status};
 use crate::trace::Moment;
 use chrono::NaiveDateTime;
 use numbers::tidy;
@@ -172,6 +172,12 @@ const TRIAL: &str = "Closed-loop trial";
 const CAUTIONS: &str = "Cautions";
 const BASIS: &str = "Basis";
 
+/// Whether the record is withheld because the controller executes too seldom.
+fn scan_too_slow(record: &Record) -> bool {
+    let items = &record.document.open_items;
+    items.iter().any(|item| item.code == OpenCode::ScanTooSlow)
+}
+
 impl Parts {
     fn of(record: &Record) -> Self {
         let mut titles = Vec::new();
@@ -190,7 +196,10 @@ impl Parts {
         add(WILL_DO, !withheld && modelled && !entered);
         add(OPEN, !withheld);
         add(WHY_NOT, withheld);
-        add(NEXT_TEST, withheld && !record.test.next_time.is_empty());
+        add(
+            NEXT_TEST,
+            withheld && (!record.test.next_time.is_empty() || scan_too_slow(record)),
+        );
         add(SIGN_OFF, true);
         add(STEP_TESTS, !withheld && !record.steps.is_empty());
         add(MODEL, !withheld && modelled);
@@ -223,7 +232,11 @@ impl Parts {
         match self.heading(title) {
             Some(heading) if !text.contains("(see ") => {
                 let bare = text.strip_suffix('.').unwrap_or(&text);
-                format!("{bare} (see{}{}).", display::NO_BREAK, heading.number)
+                let see = format!("see{}{}", display::NO_BREAK, heading.number);
+                match bare.strip_suffix(')') {
+                    Some(open) => format!("{open}; {see})."),
+                    None => format!("{bare} ({see})."),
+                }
             }
             _ => text,
         }

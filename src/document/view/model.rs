@@ -1,10 +1,10 @@
 //! The process model: its kind, its figures with their intervals, how well it is known.
 
-use super::numbers::{Cell, Row, Table, TimeUnit, bound, estimate, listed, sentence};
+use super::numbers::{Cell, Row, Table, TimeUnit, bound, estimate, sentence};
 use super::process::slope_unit;
 use super::{Context, Entry, Heading, Plot};
-use crate::display::{self, NO_BREAK};
-use crate::identify::{Reading, Verdict};
+use crate::display::{self, NO_BREAK, runs};
+use crate::identify::Verdict;
 use crate::model::Kind;
 use crate::quantity::Estimate;
 use serde::Serialize;
@@ -35,7 +35,6 @@ pub(super) fn kind_name(kind: Kind) -> &'static str {
 pub(super) fn model(context: &Context) -> Option<ModelPart> {
     let heading = context.parts.heading(super::MODEL)?;
     let fit = &context.record.model.as_ref()?.fit;
-    let steps: Vec<String> = fit.steps.iter().map(ToString::to_string).collect();
     let shape = match fit.kind {
         Kind::FirstOrder => "one time constant, with dead time",
         Kind::SecondOrder => "two time constants, with dead time",
@@ -44,13 +43,17 @@ pub(super) fn model(context: &Context) -> Option<ModelPart> {
             "PV moves as long as OP is off balance, with one time constant and dead time"
         }
     };
-    let fitted = if steps.len() == 1 { "step" } else { "steps" };
+    let fitted = if fit.steps.len() == 1 {
+        "step"
+    } else {
+        "steps"
+    };
     Some(ModelPart {
         heading,
         kind: format!(
             "{}: {shape}. Fitted to {fitted}{NO_BREAK}{}.",
             kind_name(fit.kind),
-            listed(&steps)
+            runs(&fit.steps)
         ),
         alternatives: fit
             .alternatives
@@ -64,19 +67,6 @@ pub(super) fn model(context: &Context) -> Option<ModelPart> {
     })
 }
 
-/// The step whose reading is printed and drawn: the first accepted one, else the first usable.
-fn read_step<'a>(context: &Context<'a>) -> Option<(usize, &'a Reading)> {
-    let of = |verdict: Verdict| {
-        context
-            .record
-            .steps
-            .iter()
-            .filter(move |s| s.verdict == verdict)
-            .find_map(|s| s.reading.as_ref().map(|r| (s.number, r)))
-    };
-    of(Verdict::Accepted).or_else(|| of(Verdict::Reservation))
-}
-
 fn parameters(context: &Context) -> Table {
     let record = context.record;
     let block = record
@@ -84,7 +74,7 @@ fn parameters(context: &Context) -> Table {
         .as_ref()
         .expect("the part is there only with a model");
     let fit = &block.fit;
-    let read = read_step(context);
+    let read = crate::figures::read_step(record).map(|(step, reading)| (step.number, reading));
     let with_reading = read.is_some();
     let integrates = fit.kind.integrates();
     let slope = slope_unit(fit.gain.value);
@@ -238,12 +228,12 @@ fn notes(context: &Context) -> Vec<String> {
     if let Some(undecided) = &fit.undecided {
         notes.push(sentence(&bound(undecided)));
     }
-    let differing: Vec<String> = record
+    let differing: Vec<usize> = record
         .steps
         .iter()
         .filter(|s| s.verdict != Verdict::Rejected)
         .filter(|s| s.reading.as_ref().is_some_and(|r| r.differs))
-        .map(|s| s.number.to_string())
+        .map(|s| s.number)
         .collect();
     if !differing.is_empty() {
         let steps = if differing.len() == 1 {
@@ -258,7 +248,7 @@ fn notes(context: &Context) -> Vec<String> {
         };
         notes.push(format!(
             "Reading and fit differ by more than 25{NO_BREAK}% on {steps}{NO_BREAK}{}. {cause}",
-            listed(&differing)
+            runs(&differing)
         ));
     }
     notes

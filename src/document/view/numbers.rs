@@ -150,7 +150,10 @@ pub(super) fn estimate(of: Estimate, factor: f64) -> (String, String) {
     let half = scaled.half_width();
     // An interval that is nothing beside the value leaves the rounding to the value.
     let decimals = if half > 1e-4 * scaled.value.abs() {
-        decimals_for(half, 6)
+        // Two figures of the half width where the value has no more than three, else one.
+        let two = decimals_for(half, 6);
+        let three = decimals_of(&display::significant(scaled.value, 3));
+        two.min(three).max(two.saturating_sub(1))
     } else {
         decimals_of(&display::plain(scaled.value, 4))
     };
@@ -296,24 +299,6 @@ pub(super) fn decimals_within(
         .unwrap_or(most)
 }
 
-/// Increasing numbers with runs of three and more in short: "1 to 4, 7".
-pub(super) fn runs(numbers: &[usize]) -> String {
-    let mut parts = Vec::new();
-    let mut from = 0;
-    for end in 1..=numbers.len() {
-        if end < numbers.len() && numbers[end] == numbers[end - 1] + 1 {
-            continue;
-        }
-        let run = &numbers[from..end];
-        match run {
-            [first, _, .., last] if run.len() > 2 => parts.push(format!("{first} to {last}")),
-            _ => parts.extend(run.iter().map(ToString::to_string)),
-        }
-        from = end;
-    }
-    parts.join(", ")
-}
-
 /// Text from people on one line: control characters and runs of space become one space.
 pub(super) fn tidy(text: &str) -> String {
     text.split(|c: char| c.is_control() || c == ' ')
@@ -323,9 +308,10 @@ pub(super) fn tidy(text: &str) -> String {
 }
 
 /// Words that stand after a figure and must not part from it.
-const UNITS: [&str; 27] = [
-    "%", "%/%", "°C", "°F", "°C/%", "s", "ms", "min", "h", "mm", "m", "m³", "m³/h", "t/h", "kg/h",
-    "l/min", "bar", "mbar", "kPa", "Pa", "τ", "θ", "σ", "times", "scans", "points", "samples",
+const UNITS: [&str; 31] = [
+    "%", "%/%", "°C", "°F", "°C/%", "s", "ms", "min", "h", "mm", "m", "m³", "m³/h", "m3", "m3/h",
+    "degC", "degF", "t/h", "kg/h", "l/min", "bar", "mbar", "kPa", "Pa", "τ", "θ", "σ", "times",
+    "scans", "points", "samples",
 ];
 
 /// Words that a figure must not part from when it follows them.
@@ -372,8 +358,6 @@ mod unit_tests {
 
     #[test]
     fn thousands_stand_apart_from_five_digits_on() {
-        assert_eq!(runs(&[1, 2, 3, 4, 7, 9, 10]), "1 to 4, 7, 9, 10");
-        assert_eq!(runs(&[]), "");
         assert_eq!(count(3871), "3871");
         assert_eq!(count(13_871), "13\u{202f}871");
         assert_eq!(grouped("−1234567.25"), "−1\u{202f}234\u{202f}567.25");

@@ -1,11 +1,11 @@
 //! What is open, not met or reserved, and why nothing is recommended.
 
-use super::numbers::{NONE, bound, runs, sentence, tidy};
+use super::numbers::{NONE, bound, sentence, tidy};
 use super::process::process_sentences;
 use super::{Context, Entry};
-use crate::display::NO_BREAK;
+use crate::display::{NO_BREAK, runs};
 use crate::identify::Verdict;
-use crate::record::{OpenCode, Record};
+use crate::record::{OpenCode, Record, decisive_reasons};
 use std::collections::BTreeMap;
 
 /// Open items and remarks, each pointing to its part.
@@ -93,7 +93,10 @@ fn steps_rejected(record: &Record, item: &str) -> Vec<Entry> {
         .iter()
         .filter(|s| s.verdict == Verdict::Rejected)
     {
-        let reasons: Vec<String> = step.reasons.iter().map(|r| bound(&r.text)).collect();
+        let reasons: Vec<String> = decisive_reasons(step)
+            .into_iter()
+            .map(|r| bound(&r.text))
+            .collect();
         let text = sentence(&reasons.join("; "));
         match by_reason.values_mut().find(|(_, t)| *t == text) {
             Some((numbers, _)) => numbers.push(step.number),

@@ -37,8 +37,8 @@ pub(super) fn process_sentences(context: &Context) -> Option<String> {
             _ => String::new(),
         };
         return Some(format!(
-            "PV moves by {value}{NO_BREAK}{rate} for each {op} of OP ({interval}{NO_BREAK}{rate}) and \
-             does not come to rest by itself. {answers}{lag}."
+            "Each {op} of OP {rises} PV by {value}{NO_BREAK}{rate} ({interval}{NO_BREAK}{rate}), and PV does \
+             not come to rest by itself. {answers}{lag}."
         ));
     }
     let covers = format!(
@@ -54,8 +54,9 @@ pub(super) fn process_sentences(context: &Context) -> Option<String> {
     };
     let moves = match block.fit.nonlinear_gain() {
         Some(ratio) => format!(
-            "Each {op} of OP moves PV by {interval}{NO_BREAK}{unit}: the gain varies by a factor of {} over \
+            "Each {op} of OP {rises} PV by {}{NO_BREAK}{unit}: the gain varies by a factor of {} over \
              the range tested{holds}.",
+            gains_of_steps(context),
             display::fixed(ratio, 1)
         ),
         None => format!(
@@ -63,6 +64,21 @@ pub(super) fn process_sentences(context: &Context) -> Option<String> {
         ),
     };
     Some(format!("{covers} {moves}"))
+}
+
+/// The smallest and the largest gain of the usable steps, "0.66 to 1.41", in engineering units.
+fn gains_of_steps(context: &Context) -> String {
+    context
+        .record
+        .gains_of_steps()
+        .map_or_else(String::new, |[low, high]| {
+            let decimals = super::numbers::decimals_of(&display::significant(high, 3));
+            format!(
+                "{} to {}",
+                display::fixed(low, decimals),
+                display::fixed(high, decimals)
+            )
+        })
 }
 
 fn gain_words(gain: &crate::record::EngineeringGain, factor: f64) -> (String, String) {

@@ -130,7 +130,8 @@ fn comes_to(limit: &Limit) -> String {
         }
         LimitName::ScanTime => with(grouped(&display::fixed(figure, 0)), "scans"),
         LimitName::Noise => with(short(), "% sd"),
-        LimitName::OpMove | LimitName::LevelDeviation => with(short(), "%"),
+        LimitName::OpMove => with(short(), "%"),
+        LimitName::LevelDeviation => with(display::significant(figure, 3), "%"),
     }
 }
 
@@ -305,7 +306,7 @@ fn rules(context: &Context, design: &Design) -> Option<Rules> {
                 Some(_) => {}
             }
             if !rule.in_range {
-                remarks.push("model outside the rule’s range".to_owned());
+                remarks.push("outside its range".to_owned());
             }
             row(
                 &tidy(&rule.rule),
@@ -360,11 +361,28 @@ fn time_3(seconds: f64, unit: TimeUnit) -> String {
     display::fixed(value, decimals)
 }
 
+/// Ranges of pages as printers set them: "77–83".
+fn with_en_dashes(text: &str) -> String {
+    let letters: Vec<char> = text.chars().collect();
+    let figure = |at: usize| letters.get(at).is_some_and(char::is_ascii_digit);
+    letters
+        .iter()
+        .enumerate()
+        .map(|(at, &letter)| {
+            if letter == '-' && at > 0 && figure(at - 1) && figure(at + 1) {
+                '–'
+            } else {
+                letter
+            }
+        })
+        .collect()
+}
+
 /// "Lambda: ...; SIMC, ITAE: ...", each source once.
 fn sources(design: &Design) -> String {
     let mut by_source: Vec<(String, Vec<String>)> = Vec::new();
     for rule in &design.rules {
-        let source = tidy(&rule.source);
+        let source = with_en_dashes(&tidy(&rule.source));
         if source.is_empty() {
             continue;
         }

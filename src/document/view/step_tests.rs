@@ -1,21 +1,16 @@
 //! The step tests: the test as logged and the table of its steps.
 
 use super::numbers::{
-    NONE, TimeUnit, bound, column_decimals, decimals_to_show, decimals_within, grouped, listed,
-    sentence, tidy,
+    NONE, TimeUnit, bound, column_decimals, decimals_of, decimals_to_show, decimals_within,
+    grouped, listed, sentence, tidy,
 };
 use super::process::slope_unit;
 use super::{Context, Heading, Plot, span_of};
-use crate::display;
+use crate::display::{self, NO_BREAK, runs};
 use crate::identify::{Step, Verdict};
 use crate::quantity::Estimate;
 use crate::trace::Moment;
 use serde::Serialize;
-
-/// Reasons up to this many characters stand beside the figures of a step on two lines.
-const LONGEST_REASON_BESIDE: usize = 44;
-/// With a longer unit of the PV the figures leave no room beside them.
-const LONGEST_UNIT_BESIDE: usize = 3;
 
 /// The part.
 #[derive(Debug, Serialize)]
@@ -31,10 +26,8 @@ pub(super) struct StepTests {
     /// Whether the steps have a time constant.
     with_time_constant: bool,
     rows: Vec<Vec<String>>,
-    /// The reasons of each step's verdict.
+    /// The reasons of each step's verdict, printed below it.
     reasons: Vec<String>,
-    /// Whether no column is kept for the reasons: they stand below their steps, or there are none.
-    reasons_below: bool,
     note: String,
 }
 
@@ -61,7 +54,12 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
             .collect();
         column_decimals(&widths)
     };
-    let gain_decimals = half(&|f| Some(f.gain), gain_factor);
+    // Three figures of the largest gain, as beside the fits.
+    let largest = fits()
+        .map(|f| (f.gain.value * gain_factor).abs())
+        .fold(0.0, f64::max);
+    let gain_decimals =
+        half(&|f| Some(f.gain), gain_factor).min(decimals_of(&display::significant(largest, 3)));
     let tau_decimals = half(&|f| f.time_constant_s, tau_unit.factor());
     let theta_decimals = half(&|f| Some(f.dead_time_s), theta_unit.factor());
 
@@ -155,17 +153,12 @@ pub(super) fn step_tests(context: &Context) -> Option<StepTests> {
         dead_time_unit: theta_unit.sign(),
         with_time_constant,
         rows,
-        reasons_below: reasons.iter().all(String::is_empty)
-            || reasons
-                .iter()
-                .any(|r| r.chars().count() > LONGEST_REASON_BESIDE)
-            || context.pv_unit.chars().count() > LONGEST_UNIT_BESIDE,
         reasons,
-        note: note(integrates, with_time_constant),
+        note: note(&used, integrates, with_time_constant),
     })
 }
 
-fn note(integrates: bool, with_time_constant: bool) -> String {
+fn note(used: &[&Step], integrates: bool, with_time_constant: bool) -> String {
     let gain = if integrates {
         "Gain (slope of PV)"
     } else {
@@ -176,8 +169,18 @@ fn note(integrates: bool, with_time_constant: bool) -> String {
         names.push("time constant τ".to_owned());
     }
     names.push("dead time θ".to_owned());
+    let pulses: Vec<usize> = used.iter().filter(|s| s.pulse).map(|s| s.number).collect();
+    let pulses = match pulses.as_slice() {
+        [] => String::new(),
+        [one] => format!(" Step{NO_BREAK}{one} is a pulse: OP was moved back."),
+        several => format!(
+            " Steps{NO_BREAK}{} are pulses: OP was moved back.",
+            runs(several)
+        ),
+    };
     format!(
-        "{} of each step’s own fit. Misfit: what it leaves beyond the noise, in percent of the change of PV.",
+        "{} of each step’s own fit. Misfit: what it leaves beyond the noise, in percent of the change of \
+         PV.{pulses}",
         listed(&names)
     )
 }

@@ -64,19 +64,32 @@ pub(super) fn summary(context: &Context) -> Summary {
         open: listing(super::OPEN, open(context)),
         withheld: listing(super::WHY_NOT, reasons_withheld(context)),
         plot: withheld.then(|| context.plot("withheld.svg")).flatten(),
-        next_test: listing(
-            super::NEXT_TEST,
-            context
-                .record
-                .test
-                .next_time
-                .iter()
-                .map(|advice| Entry::new(tidy(&advice.what), bound(&advice.how)))
-                .collect(),
-        ),
+        next_test: listing(super::NEXT_TEST, next_test(context)),
         sign_off: parts.first_of(&[super::SIGN_OFF]),
         signatures: sign_off(&context.record.document.signatures),
     }
+}
+
+/// What to do next time: for the test as its steps advise, and for a controller that is too slow.
+fn next_test(context: &Context) -> Vec<Entry> {
+    let record = context.record;
+    let mut entries: Vec<Entry> = record
+        .test
+        .next_time
+        .iter()
+        .map(|advice| Entry::new(tidy(&advice.what), bound(&advice.how)))
+        .collect();
+    let tau = record.model.as_ref().and_then(|m| m.fit.time_constant_s);
+    if let Some(tau) = tau.filter(|_| super::scan_too_slow(record)) {
+        entries.push(Entry::new(
+            "Execute",
+            format!(
+                "the controller more often than every {}, a quarter of the time constant.",
+                display::duration(tau.value / 4.0)
+            ),
+        ));
+    }
+    entries
 }
 
 // ---- the verdict
@@ -348,6 +361,19 @@ fn standard_rows(
     rows
 }
 
+/// Whether a setting as left is not the recommended one with its last figures rounded off.
+fn rounded_much(settings: &crate::record::AllSettings) -> bool {
+    const ROUNDED: f64 = 0.005;
+    let values = |block: &SettingsBlock| [block.native.p, block.native.i, block.native.d];
+    match (&settings.recommended, &settings.as_left) {
+        (Some(recommended), Some(left)) => values(recommended)
+            .into_iter()
+            .zip(values(left))
+            .any(|(r, l)| (l - r).abs() > ROUNDED * r.abs()),
+        _ => false,
+    }
+}
+
 fn entered(context: &Context) -> Option<String> {
     let l = &context.record.control_loop;
     let settings = &context.record.settings;
@@ -360,6 +386,7 @@ fn entered(context: &Context) -> Option<String> {
         .unwrap_or_default();
     let as_told = match settings.as_left_differs {
         Some(true) => ", not as recommended",
+        Some(false) if rounded_much(settings) => ", as recommended, rounded",
         Some(false) => ", as recommended",
         None => "",
     };

@@ -16,6 +16,7 @@ pub(super) struct TrialPart {
     verdict: String,
     plot: Option<Plot>,
     table: Table,
+    note: &'static str,
 }
 
 pub(super) fn trial(context: &Context) -> Option<TrialPart> {
@@ -27,6 +28,8 @@ pub(super) fn trial(context: &Context) -> Option<TrialPart> {
         verdict: verdict(trial),
         plot: context.plot("trial.svg"),
         table: table(context, trial),
+        note: "Settling here: within ±2\u{a0}% of the step widened by the noise of PV, measured and predicted alike; \
+               elsewhere within ±2\u{a0}%.",
     })
 }
 
@@ -57,7 +60,7 @@ fn text(context: &Context, trial: &Trial) -> String {
         }
         TrialKind::Load => format!(
             "no set-point move; a load that amounts to {}{NO_BREAK}% of OP{at}",
-            display::significant(trial.step_percent.abs(), 2)
+            display::significant(trial.step_percent, 2).replace('-', "−")
         ),
     };
     format!("{logged} in automatic, settings as left; {moved}.")
@@ -111,7 +114,7 @@ fn table(context: &Context, trial: &Trial) -> Table {
         times(|m| m.settling_time_s, "not settled"),
     ));
     let peaks = both.map(|m| m.peak_deviation_percent * context.pv_per_percent);
-    let decimals = decimals_to_show(peaks[0].min(peaks[1]), 10.0);
+    let decimals = decimals_to_show(peaks[0].min(peaks[1]), 30.0);
     rows.push(Row::new(
         if trial.kind == TrialKind::SetPoint {
             "Largest change of PV"
