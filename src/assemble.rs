@@ -5,7 +5,7 @@ use crate::identify::{self, Context, Identification, Model, Step, Verdict};
 use crate::notice::{Place, Problem};
 use crate::predict::simulate::{LoopCase, OperatingPoint};
 use crate::predict::trial::{self, AsLeft};
-use crate::predict::{PvFilter, margins};
+use crate::predict::{Margins, PvFilter, margins};
 use crate::quantity::{Estimate, Span};
 use crate::record::{
     AllSettings, Document, EngineeringGain, LimitsInForce, Log, Loop, ModelBlock, Provenance,
@@ -24,10 +24,52 @@ pub const PROGRAM: &str = concat!("asleft ", env!("CARGO_PKG_VERSION"));
 pub struct InnerRecord {
     /// Its tag.
     pub tag: String,
-    /// When its settings were entered.
+    /// Whether settings were entered.
+    pub entered: bool,
+    /// When they were.
     pub left_on: Option<NaiveDate>,
-    /// Its closed-loop time constant, s; `None` where it is withheld.
-    pub closed_loop_time_constant_s: Option<f64>,
+    /// How fast it is.
+    pub pace: InnerPace,
+}
+
+/// How fast an inner loop is, as its outer loop has to know it.
+#[derive(Debug, Clone, PartialEq)]
+pub enum InnerPace {
+    /// Its closed-loop time constant, s.
+    Known(f64),
+    /// Its record is withheld.
+    Withheld,
+    /// The loop as left is not stable, on the fitted model or on one of the set.
+    Unstable,
+    /// As left it does not reach 63 % of a set-point step.
+    Unknown,
+}
+
+impl InnerPace {
+    /// The closed-loop time constant, s, where it is known.
+    fn seconds(&self) -> Option<f64> {
+        match self {
+            InnerPace::Known(seconds) => Some(*seconds),
+            _ => None,
+        }
+    }
+
+    /// Why the outer loop cannot be designed on it, in words.
+    fn refusal(&self, tag: &str) -> Option<String> {
+        match self {
+            InnerPace::Known(_) => None,
+            InnerPace::Withheld => Some(format!(
+                "The inner loop {tag} is withheld, so this loop cannot be designed on it."
+            )),
+            InnerPace::Unstable => Some(format!(
+                "The inner loop {tag} is not stable with its settings as left, so this loop cannot be designed on it."
+            )),
+            InnerPace::Unknown => Some(format!(
+                "The inner loop {tag} does not come to 63 % of a set-point step with its settings as left: how \
+                 fast it is cannot be told, so this loop cannot be designed on it."
+            )),
+        }
+    }
 }
 
 /// Everything that one record is made from, read and checked.
@@ -75,10 +117,9 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
     let middle = middle_of(&input.controller, pv_tested, op_tested);
 
     let mut circumstances = open_items::Circumstances::default();
-    if let Some(inner) = &input.inner
-        && inner.closed_loop_time_constant_s.is_none()
-    {
-        circumstances.inner_withheld = Some(inner.tag.clone());
+    if let Some(inner) = &input.inner {
+        circumstances.inner_refusal = inner.pace.refusal(&inner.tag);
+        circumstances.inner_order_unknown = order_unknown(&input, inner);
     }
     let designed = fit.as_ref().and_then(|model| {
         designed(
@@ -116,6 +157,7 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
         test: Test {
             noise_sd_percent: identification.noise_sd_percent,
             sigma_percent: identification.sigma_percent,
+            compressed: identification.compressed,
             pv_tested,
             op_tested,
             failure,
@@ -162,7 +204,7 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
         record.settings.as_left_differs = None;
         record.trial = None;
     }
-    record.document.remarks = open_items::remarks(&record);
+    record.document.remarks = open_items::remarks(&record, &circumstances);
     record.cautions = cautions::cautions(&record, &input.site_cautions);
     Ok(record)
 }
@@ -188,9 +230,12 @@ fn identified(input: &LoopInput, trace: &Trace) -> (Identification, Option<Strin
         op_span: input.controller.op_span,
         bounds: input.limits.verdict,
         not_before_s: input.inner.as_ref().and_then(|inner| {
-            let zero = input.test.zero?;
-            let left = inner.left_on?.and_hms_opt(0, 0, 0)?;
-            Some((left - zero).as_seconds_f64())
+            let left = inner.left_on?;
+            match input.test.zero {
+                Some(zero) => Some((left.and_hms_opt(0, 0, 0)? - zero).as_seconds_f64()),
+                // A log without dates: all of it was tested on one day.
+                None => (tested_on(input)? < left).then_some(f64::INFINITY),
+            }
         }),
     };
     match steps::find(trace, input.controller.scan_s) {
@@ -216,7 +261,7 @@ fn designed(
         None => None,
         Some(inner) => Some(InnerLoop {
             tag: inner.tag.clone(),
-            closed_loop_time_constant_s: inner.closed_loop_time_constant_s?,
+            closed_loop_time_constant_s: inner.pace.seconds()?,
         }),
     };
     let request = DesignRequest {
@@ -394,19 +439,27 @@ pub fn inner_record(record: &Record) -> InnerRecord {
     InnerRecord {
         tag: record.control_loop.tag.clone(),
         left_on: record.control_loop.left_on,
-        closed_loop_time_constant_s: closed_loop_time_constant_s(record),
+        entered: record.settings.as_left.is_some(),
+        pace: inner_pace(record),
     }
 }
 
-fn closed_loop_time_constant_s(record: &Record) -> Option<f64> {
-    let design = record.design.as_ref()?;
-    let Some(as_left) = &record.settings.as_left else {
-        return Some(design.closed_loop_time_constant_s);
+fn inner_pace(record: &Record) -> InnerPace {
+    let (Some(design), Some(model), Ok(controller)) =
+        (&record.design, &record.model, record.controller())
+    else {
+        return InnerPace::Withheld;
     };
-    let controller = record.controller().ok()?;
+    let Some(as_left) = &record.settings.as_left else {
+        return InnerPace::Known(design.closed_loop_time_constant_s);
+    };
+    let stable = |margins: &Option<Margins>| margins.is_some_and(|m| m.stable);
+    if !stable(&as_left.margins) || !stable(&as_left.worst_margins) {
+        return InnerPace::Unstable;
+    }
     let (_, left) = sides(&record.control_loop);
     let case = LoopCase {
-        model: &record.model.as_ref()?.fit.process(),
+        model: &model.fit.process(),
         terms: &controller.terms(as_left.native),
         controller: &controller,
         filter: left.filter,
@@ -414,4 +467,38 @@ fn closed_loop_time_constant_s(record: &Record) -> Option<f64> {
         start: middle_of(&controller, record.test.pv_tested, record.test.op_tested),
     };
     case.closed_loop_time_constant_s(design.effective_dead_time_s)
+        .map_or(InnerPace::Unknown, InnerPace::Known)
+}
+
+/// Day of the outer loop's test: of its log, else as the schedule says.
+fn tested_on(input: &LoopInput) -> Option<NaiveDate> {
+    input
+        .test
+        .zero
+        .map(|zero| zero.date())
+        .or(input.control_loop.tested_on)
+}
+
+/// Why it cannot be told whether the test came after the inner loop's settings were entered, where it
+/// cannot.
+fn order_unknown(input: &LoopInput, inner: &InnerRecord) -> Option<String> {
+    if !inner.entered {
+        return None;
+    }
+    let missing = match (inner.left_on, tested_on(input)) {
+        (None, _) => format!(
+            "the schedule does not say when the settings of {} were entered",
+            inner.tag
+        ),
+        (_, None) => "neither the log nor the schedule says when this loop was tested".to_owned(),
+        (Some(left), Some(tested)) if left == tested => format!(
+            "this loop was tested on the day on which the settings of {} were entered",
+            inner.tag
+        ),
+        _ => return None,
+    };
+    Some(format!(
+        "The test holds only if it was made after the settings of {} were entered: {missing}.",
+        inner.tag
+    ))
 }

@@ -45,7 +45,7 @@ pub enum Command {
         /// Look at this loop alone, in a log of many
         #[arg(long)]
         tag: Option<String>,
-        /// Read by the [[log]] rules of this job
+        /// Read by the [[log]] rules of this job [default: the job folder that the log lies in]
         #[arg(long, value_name = "JOB")]
         job: Option<PathBuf>,
     },

@@ -1,6 +1,6 @@
 //! `inspect`: what logs hold, with the moves of the OP that a step test would be made of.
 
-use crate::job::Job;
+use crate::job::{Job, manifest};
 use crate::notice::{Place, Problem};
 use crate::quantity::Span;
 use crate::read::inspect::{InspectRequest, Inspection, LoopInspection, OpMove};
@@ -41,7 +41,8 @@ impl Report for InspectReport {
     }
 }
 
-/// Tells what logs hold. `tag` narrows a log of many loops, `job` lends its `[[log]]` rules.
+/// Tells what logs hold. `tag` narrows a log of many loops, `job` lends its `[[log]]` rules; without it the
+/// job folder that a log lies in does.
 ///
 /// # Errors
 /// Where a log or the job cannot be read; all of them together.
@@ -58,7 +59,11 @@ pub fn inspect(
     let mut found = Vec::new();
     let mut problems = Vec::new();
     for log in logs {
-        match look_at(log, tag, job, &rules, &cache) {
+        let outcome = match (job, job_above(log)) {
+            (None, Some(above)) => look_at(log, tag, Some(&above), &rules_of(&above), &cache),
+            _ => look_at(log, tag, job, &rules, &cache),
+        };
+        match outcome {
             Ok(inspection) => found.push(inspection),
             Err(problem) => problems.push(problem),
         }
@@ -68,6 +73,19 @@ pub fn inspect(
     } else {
         Err(problems)
     }
+}
+
+/// The job folder that a log lies in.
+fn job_above(log: &Path) -> Option<PathBuf> {
+    log.ancestors()
+        .skip(1)
+        .find(|folder| folder.join(manifest::FILE).is_file())
+        .map(Path::to_path_buf)
+}
+
+/// The rules of a job that may still be in the making: none where it cannot be read yet.
+fn rules_of(job: &Path) -> Vec<LogRule> {
+    Job::read(job).map_or_else(|_| Vec::new(), |(job, _)| job.manifest.logs)
 }
 
 fn look_at(
@@ -136,5 +154,31 @@ fn add_moves(found: &mut LoopInspection) {
             found.op_moves = Some(Vec::new());
             found.op_remark = Some(remark);
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_log_in_a_job_folder_is_named_and_read_as_the_job_does() {
+        let folder = tempfile::tempdir().expect("a folder");
+        let root = folder.path().join("job");
+        crate::job::new_job(&root).expect("a new job");
+        let job_file = root.join(manifest::FILE);
+        let mut text = std::fs::read_to_string(&job_file).expect("readable");
+        text.push_str("[[log]]\nfiles = [\"logs/a.csv\"]\ndates = \"dmy\"\n");
+        std::fs::write(&job_file, text).expect("written");
+        let log = root.join("logs/a.csv");
+        let mut rows = String::from("Time,PV,OP\n");
+        for minute in 10..40 {
+            rows.push_str(&format!("03/04/2026 09:{minute}:00,50,40\n"));
+        }
+        std::fs::write(&log, rows).expect("written");
+        let report = inspect(&[log], None, None).expect("readable").to_string();
+        assert!(report.starts_with("logs/a.csv\n"), "{report}");
+        assert!(report.contains("test log = logs/a.csv\n"), "{report}");
+        assert!(report.contains("2026-04-03 09:10:00"), "{report}");
     }
 }

@@ -11,6 +11,7 @@ use std::io::{self, IsTerminal, Write};
 use std::process::ExitCode;
 
 fn main() -> ExitCode {
+    hush_guarded_panics();
     let cli = Cli::parse();
     match run(&cli) {
         Ok(code) => ExitCode::from(code),
@@ -22,6 +23,17 @@ fn main() -> ExitCode {
             ExitCode::from(NOTHING_DONE)
         }
     }
+}
+
+/// Panics that the library catches are told as problems of the file that caused them; nothing else of
+/// them is printed.
+fn hush_guarded_panics() {
+    let usual = std::panic::take_hook();
+    std::panic::set_hook(Box::new(move |panic| {
+        if !asleft::read::is_guarded() {
+            usual(panic);
+        }
+    }));
 }
 
 /// Does what was asked and prints it; the exit code.

@@ -168,9 +168,14 @@ impl fmt::Display for Problem {
 
 /// The known word nearest to one that is not known, where one is near enough to be meant.
 pub fn nearest<'a>(word: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
+    // Nobody means another word by another case.
+    let word = word.to_lowercase();
     known
         .into_iter()
-        .map(|candidate| (strsim::jaro_winkler(word, candidate), candidate))
+        .map(|candidate| {
+            let likeness = strsim::jaro_winkler(&word, &candidate.to_lowercase());
+            (likeness, candidate)
+        })
         .filter(|(likeness, _)| *likeness >= 0.75)
         .max_by(|a, b| a.0.total_cmp(&b.0))
         .map(|(_, candidate)| candidate)
@@ -200,5 +205,6 @@ mod tests {
     fn the_nearest_word_is_found() {
         assert_eq!(nearest("scan", ["scan s", "service"]), Some("scan s"));
         assert_eq!(nearest("xyzzy", ["scan s", "service"]), None);
+        assert_eq!(nearest("tic105", ["TIC-105", "FIC-203"]), Some("TIC-105"));
     }
 }

@@ -4,7 +4,7 @@ use crate::archive::{self, Standing};
 use crate::assemble::{self, InnerRecord, LoopInput, PROGRAM};
 use crate::document::{self, Attachment, AttachmentKind, DossierInput, DossierRecord, Templates};
 use crate::figures::{self, Figure};
-use crate::job::{Job, LoopRow, schedule_row_csv};
+use crate::job::{Job, LogCell, LoopRow, schedule_row_csv};
 use crate::notice::Problem;
 use crate::read::{self, FileCache, LogRead, Source};
 use crate::record::{
@@ -51,9 +51,12 @@ pub fn engineer(
 ) -> Result<Engineered, Vec<Problem>> {
     let mut problems = row.missing_for_record();
     let mut notices = Vec::new();
-    let mut log_of = |request: Option<read::LogRequest>, role| {
-        let read = request.map(|request| read::read_log(&request, cache))?;
-        match read {
+    let mut log_of = |cell: Option<&LogCell>, request: Option<read::LogRequest>, role| {
+        if let Err(missing) = job.find_files(cell?) {
+            problems.extend(missing);
+            return None;
+        }
+        match read::read_log(&request?, cache) {
             Ok(read) => {
                 notices.extend(read.warnings.clone());
                 Some(log_record(role, read))
@@ -64,8 +67,8 @@ pub fn engineer(
             }
         }
     };
-    let test = log_of(job.test_request(row), LogRole::Test);
-    let trial = log_of(job.trial_request(row), LogRole::Trial);
+    let test = log_of(row.test.as_ref(), job.test_request(row), LogRole::Test);
+    let trial = log_of(row.trial.as_ref(), job.trial_request(row), LogRole::Trial);
     let (Some(test), Some(found), true) = (test, row.found, problems.is_empty()) else {
         return Err(problems);
     };
@@ -151,13 +154,12 @@ pub fn look(engineered: &Engineered, out: &Path) -> Result<(), Vec<Problem>> {
 pub fn write_dossier(
     job: &Job,
     records: &[&Recorded],
-    every_loop_recorded: bool,
+    not_recorded: &[String],
     out: &Path,
     templates: &Templates,
 ) -> Result<(archive::Dossier, bool, Vec<Problem>), Vec<Problem>> {
     let sealed: Vec<Record> = records.iter().map(|r| r.record.clone()).collect();
-    let dossier =
-        archive::Dossier::new(dossier_document(job), &sealed, every_loop_recorded, PROGRAM);
+    let dossier = archive::Dossier::new(dossier_document(job), &sealed, not_recorded, PROGRAM);
     match archive::look_for_dossier(out, &dossier).map_err(one)? {
         Standing::Issued { kept, notice } => Ok((*kept, true, notice.into_iter().collect())),
         Standing::Free(slot) => {
@@ -170,7 +172,7 @@ pub fn write_dossier(
                 })
                 .collect();
             let pdf = document::typeset_dossier(
-                &dossier_input(&dossier.document, job),
+                &dossier_input(&dossier.document, job, not_recorded),
                 &bound,
                 templates,
             )
@@ -394,7 +396,7 @@ fn dossier_document(job: &Job) -> Document {
     document
 }
 
-fn dossier_input(document: &Document, job: &Job) -> DossierInput {
+fn dossier_input(document: &Document, job: &Job, not_recorded: &[String]) -> DossierInput {
     DossierInput {
         number: document.number.clone(),
         title: match &job.manifest.area {
@@ -410,6 +412,7 @@ fn dossier_input(document: &Document, job: &Job) -> DossierInput {
         page: document.page,
         signatures: document.signatures.clone(),
         procedures: document.procedures.clone(),
+        not_recorded: not_recorded.to_vec(),
         program: PROGRAM.to_owned(),
     }
 }
@@ -440,7 +443,7 @@ fn loop_of(job: &Job, row: &LoopRow) -> Loop {
             high: row.controller.op_span.high(),
         },
         action: row.action,
-        left_action: left.and_then(|left| left.action),
+        left_action: row.left_action,
         form: row.controller.form,
         p_as: row.controller.p_as,
         i_as: row.controller.i_as,
@@ -450,7 +453,7 @@ fn loop_of(job: &Job, row: &LoopRow) -> Loop {
         d_filter_n: row.controller.d_filter_n,
         scan_s: row.controller.scan_s,
         pv_filter_s: row.pv_filter_s,
-        left_pv_filter_s: left.and_then(|left| left.pv_filter_s),
+        left_pv_filter_s: row.left_pv_filter_s,
         pv_filter_in_log: row.pv_filter_in_log,
         aim: row.aim,
         derivative: row.derivative,

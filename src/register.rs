@@ -2,7 +2,7 @@
 
 use crate::predict::Margins;
 use crate::quantity::{Estimate, round_significant};
-use crate::record::{Record, SettingsBlock};
+use crate::record::{Record, SettingsBlock, Status};
 use crate::settings::Native;
 use serde::Serialize;
 use serde_json::Value;
@@ -31,8 +31,8 @@ type Column = (&'static str, fn(&Record) -> Cell);
 const COLUMNS: &[Column] = &[
     ("document", |r| text(&r.document.number)),
     ("revision", |r| text(&r.document.revision)),
-    ("status", |r| word(&r.document.status)),
-    ("tag", |r| text(&r.control_loop.tag)),
+    (STATUS, |r| word(&r.document.status)),
+    (TAG, |r| text(&r.control_loop.tag)),
     ("service", |r| text(&r.control_loop.service)),
     ("form", |r| word(&r.control_loop.form)),
     ("p as", |r| word(&r.control_loop.p_as)),
@@ -48,6 +48,15 @@ const COLUMNS: &[Column] = &[
     ("left p", |r| proportional(left(r))),
     ("left i", |r| term(left(r), |native| native.i)),
     ("left d", |r| term(left(r), |native| native.d)),
+    ("left was recommended", |r| {
+        left(r).map_or(Cell::Blank, |_| {
+            text(if r.document.status == Status::Withheld {
+                "no: the record is withheld"
+            } else {
+                "yes"
+            })
+        })
+    }),
     ("left differs from recommended", |r| {
         yes_or_no(r.settings.as_left_differs)
     }),
@@ -107,9 +116,13 @@ const COLUMNS: &[Column] = &[
     }),
 ];
 
-/// The register of these records as the bytes of a CSV file, UTF-8 with a byte order mark, one
-/// line per record in the order given, decimal points, and blank where nothing is known.
-pub fn to_csv(records: &[Record]) -> Vec<u8> {
+/// Heading of the column that names the loop, and of the one that says what became of it.
+const TAG: &str = "tag";
+const STATUS: &str = "status";
+
+/// The register of these records, and of the loops that have none (`not_recorded`, by tag), as the bytes of a CSV file, UTF-8 with a byte order mark, one
+/// line per loop in the order given, decimal points, and blank where nothing is known.
+pub fn to_csv(records: &[Record], not_recorded: &[String]) -> Vec<u8> {
     const IN_MEMORY: &str = "memory takes every line";
     let mut writer = csv::Writer::from_writer(BYTE_ORDER_MARK.to_vec());
     writer
@@ -119,6 +132,14 @@ pub fn to_csv(records: &[Record]) -> Vec<u8> {
         writer
             .write_record(COLUMNS.iter().map(|(_, cell)| cell(record).written()))
             .expect(IN_MEMORY);
+    }
+    for tag in not_recorded {
+        let cells = COLUMNS.iter().map(|(heading, _)| match *heading {
+            TAG => not_run(tag),
+            STATUS => "not recorded".to_owned(),
+            _ => String::new(),
+        });
+        writer.write_record(cells).expect(IN_MEMORY);
     }
     writer.into_inner().expect(IN_MEMORY)
 }

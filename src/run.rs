@@ -118,7 +118,8 @@ pub fn record(
     let mut notices = selected.notices.clone();
     let register = if options.only.is_empty() && !recorded.is_empty() {
         let records: Vec<Record> = recorded.iter().map(|r| r.record.clone()).collect();
-        archive::write_register(&out, &register::to_csv(&records))
+        let missing = not_recorded(&selected, &outcomes);
+        archive::write_register(&out, &register::to_csv(&records, &missing))
             .map_err(|problem| vec![problem])?;
         Some(archive::REGISTER_FILE.to_owned())
     } else {
@@ -293,9 +294,14 @@ fn each_loop<T: Send + Sync>(
             // Who listens is the thread that started this one; it listens to the end.
             let _ = told.send(index);
             let Ok(row) = &job.loops[index] else { continue };
+            // Set whatever happens: who waits for this loop must not wait for ever.
+            let announced = Announced(&inner[index]);
             let engineered = engineer(job, index, row, &inner, &cache);
             let for_outer = engineered.as_ref().ok();
-            let _ = inner[index].set(for_outer.map(|e| assemble::inner_record(&e.record)));
+            let _ = announced
+                .0
+                .set(for_outer.map(|e| assemble::inner_record(&e.record)));
+            drop(announced);
             if selected.wanted.contains(&index) {
                 let _ = outcomes[index].set(engineered.and_then(|e| finish(row, e)));
             }
@@ -331,6 +337,15 @@ fn each_loop<T: Send + Sync>(
         .collect()
 }
 
+/// Says at the latest when it goes out of scope, also by a panic, that there is no record to wait for.
+struct Announced<'a>(&'a OnceLock<Option<InnerRecord>>);
+
+impl Drop for Announced<'_> {
+    fn drop(&mut self) {
+        let _ = self.0.set(None);
+    }
+}
+
 fn engineer(
     job: &Job,
     index: usize,
@@ -362,6 +377,17 @@ fn engineer(
     pipeline::engineer(job, row, inner_record, cache)
 }
 
+/// Tags of the loops asked for that have no record, in the order of the schedule.
+fn not_recorded(selected: &Selected, outcomes: &[Result<Recorded, Vec<Problem>>]) -> Vec<String> {
+    selected
+        .wanted
+        .iter()
+        .zip(outcomes)
+        .filter(|(_, outcome)| outcome.is_err())
+        .map(|(&index, _)| tag_of(&selected.job, index).to_owned())
+        .collect()
+}
+
 /// The dossier of all records that there are, inner loops before the loops that cascade to them.
 fn dossier(
     selected: &Selected,
@@ -378,8 +404,8 @@ fn dossier(
             outcomes[place].as_ref().ok()
         })
         .collect();
-    let complete = outcomes.iter().all(Result::is_ok);
-    let written = pipeline::write_dossier(&selected.job, &records, complete, out, templates)
+    let not_recorded = not_recorded(selected, outcomes);
+    let written = pipeline::write_dossier(&selected.job, &records, &not_recorded, out, templates)
         .and_then(|(dossier, kept, notices)| {
             let document = &dossier.document;
             let names = FileNames::new(&document.number, &document.revision)
@@ -393,4 +419,45 @@ fn dossier(
             })
         });
     written.unwrap_or_else(|problems| DossierOutcome::Failed { problems })
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_test_of_which_nothing_can_be_used_says_why() {
+        let folder = tempfile::tempdir().expect("a folder");
+        let root = folder.path().join("job");
+        new_job(&root).expect("a new job");
+        let log = root.join("logs/example-1.csv");
+        let text = std::fs::read_to_string(&log).expect("readable");
+        let stuck: Vec<String> = text
+            .lines()
+            .enumerate()
+            .map(|(line, row)| {
+                let mut cells: Vec<&str> = row.split(',').collect();
+                if line > 0 {
+                    cells[1] = "55.0";
+                }
+                cells.join(",")
+            })
+            .collect();
+        std::fs::write(&log, stuck.join("\n")).expect("written");
+        let report = check(&root, &[]).expect("a job");
+        let LoopOutcome::Ready { status, open_items } = &report.loops[0].outcome else {
+            panic!("{report}");
+        };
+        assert_eq!(*status, crate::record::Status::Withheld);
+        assert!(
+            open_items[0].starts_with(
+                "No step of the test can be used. Steps 1\u{a0}to\u{a0}4 are rejected"
+            ),
+            "{open_items:?}"
+        );
+        assert!(
+            open_items[0].contains("PV does not change"),
+            "{open_items:?}"
+        );
+    }
 }

@@ -107,6 +107,8 @@ pub struct Trace {
     /// OP at the log's own sample times, also where the PV was bad: moves are not lost in a gap.
     op_t_s: Vec<f64>,
     op_all: Vec<f64>,
+    /// Times of all good samples, also of those that were thinned out.
+    pv_t_s: Vec<f64>,
     bad_t_s: Vec<f64>,
     interval_s: f64,
 }
@@ -144,6 +146,7 @@ impl Trace {
             manual: Vec::new(),
             op_t_s: Vec::with_capacity(n),
             op_all: Vec::with_capacity(n),
+            pv_t_s: Vec::new(),
             bad_t_s: Vec::new(),
             interval_s: 0.0,
         };
@@ -181,9 +184,16 @@ impl Trace {
         if trace.t_s.is_empty() {
             return Err(TraceError::Empty);
         }
-        if trace.sp.iter().any(|sp| sp.is_nan()) {
-            trace.sp.clear();
+        // Before its first value the SP is taken as that value: no move is made up of what is not known.
+        match trace.sp.iter().find(|sp| !sp.is_nan()).copied() {
+            Some(first) => {
+                for sp in trace.sp.iter_mut().take_while(|sp| sp.is_nan()) {
+                    *sp = first;
+                }
+            }
+            None => trace.sp.clear(),
         }
+        trace.pv_t_s.clone_from(&trace.t_s);
         trace.interval_s = median_interval(&trace.t_s);
         Ok(trace)
     }
@@ -233,6 +243,11 @@ impl Trace {
         &self.bad_t_s
     }
 
+    /// Times of all good samples as logged, s: of a thinned trace more than its own.
+    pub fn logged_t_s(&self) -> &[f64] {
+        &self.pv_t_s
+    }
+
     /// Median time between good samples, s; 0 for a single sample.
     pub fn interval_s(&self) -> f64 {
         self.interval_s
@@ -260,6 +275,7 @@ impl Trace {
             },
             op_t_s: self.op_t_s.clone(),
             op_all: self.op_all.clone(),
+            pv_t_s: self.pv_t_s.clone(),
             bad_t_s: self.bad_t_s.clone(),
         }
     }

@@ -34,11 +34,16 @@ pub fn prepare(folder: &Path) -> Result<(), Problem> {
         unfinished(folder).map(drop)
     };
     attempt().map_err(|error| {
+        let why = if folder.is_file() {
+            "a file of that name stands in its place".to_owned()
+        } else {
+            error.to_string()
+        };
         Problem::error(
             Place::file(shown(folder)),
-            format!("the records cannot be written to this folder: {error}"),
+            format!("the records cannot be written to this folder: {why}"),
         )
-        .hint("Choose another folder with --out")
+        .hint("choose another folder with --out")
     })
 }
 
@@ -154,6 +159,21 @@ mod tests {
         assert!(!folder.path().join("a.json").exists());
         waiting.finish(folder.path()).expect("renamed");
         assert_eq!(names_in(folder.path()), ["a.json"]);
+    }
+
+    #[test]
+    fn a_file_in_the_place_of_the_folder_is_told() {
+        let folder = tempfile::tempdir().expect("a folder");
+        let place = folder.path().join("records");
+        fs::write(&place, "mine").expect("written");
+        let problem = prepare(&place).expect_err("no folder");
+        assert!(
+            problem
+                .message
+                .ends_with("a file of that name stands in its place"),
+            "{problem}"
+        );
+        assert_eq!(fs::read(&place).expect("still there"), b"mine");
     }
 
     #[test]

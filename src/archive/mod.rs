@@ -88,6 +88,9 @@ pub struct Dossier {
     pub document: Document,
     /// The records bound, in order.
     pub records: Vec<DossierEntry>,
+    /// Tags of the loops of the job that have no record.
+    #[serde(default)]
+    pub not_recorded: Vec<String>,
     /// Where it comes from; the seal is made as that of a record.
     pub provenance: Provenance,
 }
@@ -100,10 +103,10 @@ impl Dossier {
     pub fn new(
         mut document: Document,
         records: &[Record],
-        every_loop_recorded: bool,
+        not_recorded: &[String],
         program: &str,
     ) -> Self {
-        let complete = every_loop_recorded
+        let complete = not_recorded.is_empty()
             && records
                 .iter()
                 .all(|record| record.document.status == Status::ForSignature);
@@ -126,6 +129,7 @@ impl Dossier {
             schema: DOSSIER_SCHEMA.to_owned(),
             document,
             records,
+            not_recorded: not_recorded.to_vec(),
             provenance: Provenance {
                 program: program.to_owned(),
                 seal: String::new(),

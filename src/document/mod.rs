@@ -191,6 +191,8 @@ pub struct DossierInput {
     pub signatures: Vec<Signature>,
     /// Site procedures that govern.
     pub procedures: Vec<Procedure>,
+    /// Tags of the loops of the job that have no record; any makes the dossier a draft.
+    pub not_recorded: Vec<String>,
     /// Program and version.
     pub program: String,
 }

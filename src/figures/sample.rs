@@ -444,6 +444,7 @@ impl Plan {
             test: Test {
                 noise_sd_percent: None,
                 sigma_percent: None,
+                compressed: false,
                 pv_tested: [self.pv.low, self.pv.high],
                 op_tested: [self.op.low, self.op.high],
                 failure: None,

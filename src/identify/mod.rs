@@ -253,6 +253,8 @@ pub struct Identification {
     pub noise_sd_percent: Option<f64>,
     /// max(noise sd, resolution/√12), %; `None` where not assessable.
     pub sigma_percent: Option<f64>,
+    /// Whether the log was compressed, which is why noise is not assessable then.
+    pub compressed: bool,
     /// What to do next time where steps are rejected or weak, one line each: (what, how).
     pub next_time: Vec<Advice>,
     /// Valve dead band; `None`: not assessed.
@@ -463,6 +465,7 @@ fn identify_samples(trace: &Trace, steps: &[OpStep], context: &Context) -> Ident
         model,
         noise_sd_percent: noise.sd,
         sigma_percent: noise.sigma,
+        compressed: noise.compressed,
         next_time,
         valve: None,
     }

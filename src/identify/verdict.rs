@@ -259,6 +259,37 @@ fn change_and_drift(
         false,
         |f, b| format!("drift {f} % (bound {b} %)"),
     );
+    if !grounds.noise.compressed {
+        rest_before(judged, t_s.len());
+    }
+}
+
+/// Samples of the quiet stretch below which the rest before the move is not known well, and below
+/// which it is not known at all.
+const QUIET_SAMPLES: [usize; 2] = [10, 3];
+
+/// Without rest before the move nobody knows what the PV would have done by itself.
+fn rest_before(judged: &mut Judged, samples: usize) {
+    let verdict = if samples < QUIET_SAMPLES[1] {
+        Verdict::Rejected
+    } else if samples < QUIET_SAMPLES[0] {
+        Verdict::Reservation
+    } else {
+        return;
+    };
+    let word = if samples == 1 { "sample" } else { "samples" };
+    judged.worsen(
+        verdict,
+        Reason {
+            code: ReasonCode::Drift,
+            text: format!(
+                "only {samples} {word} at rest before the move (bound {})",
+                QUIET_SAMPLES[0]
+            ),
+            figure: Some(samples as f64),
+            bound: Some(QUIET_SAMPLES[0] as f64),
+        },
+    );
 }
 
 fn watched_and_samples(judged: &mut Judged, step: &OpStep, own: &Candidate, grounds: &Grounds) {
@@ -308,9 +339,14 @@ fn saturation(judged: &mut Judged, step: &OpStep, trace: &Trace) {
         .iter()
         .filter(|pv| at_end(**pv, END_OF_RANGE_PERCENT))
         .count();
-    let op = trace.op()[step.window.clone()]
+    // The OP as logged: it may stand at its end where the PV has no sample.
+    let (from_s, until_s) = window_s(trace, step);
+    let (op_t_s, op_log) = trace.op_log();
+    let op = op_t_s
         .iter()
-        .filter(|op| at_end(**op, 1e-9))
+        .zip(op_log)
+        .filter(|(t, _)| **t >= from_s && **t <= until_s)
+        .filter(|(_, op)| at_end(**op, 1e-9))
         .count();
     judged.checks.push(Check {
         code: ReasonCode::Saturated,
@@ -336,22 +372,30 @@ fn saturation(judged: &mut Judged, step: &OpStep, trace: &Trace) {
 fn bad_samples(judged: &mut Judged, step: &OpStep, grounds: &Grounds, own: Option<&Candidate>) {
     let trace = grounds.trace;
     let t_s = &trace.t_s()[step.window.clone()];
-    let (Some(&first), Some(&last)) = (t_s.first(), t_s.last()) else {
+    if t_s.is_empty() {
         return;
-    };
+    }
+    let (first, last) = window_s(trace, step);
     let bad_t_s = trace.bad_t_s();
-    let within = bad_t_s.partition_point(|t| *t < first)..bad_t_s.partition_point(|t| *t <= last);
-    let bad = within.len() as f64;
+    // Bad samples against the samples as logged: of an analyser's held PV not its refreshes alone.
+    let within = |times: &[f64]| {
+        times.partition_point(|t| *t <= last) - times.partition_point(|t| *t < first)
+    };
+    let bad = within(bad_t_s) as f64;
+    let good = within(trace.logged_t_s()) as f64;
     judged.hold(
         ReasonCode::BadSamples,
-        Some(100.0 * bad / (bad + t_s.len() as f64)),
+        Some(100.0 * bad / (bad + good)),
         grounds.bounds.bad_percent,
         false,
         |f, b| format!("bad samples {f} % (bound {b} %)"),
     );
     let Some(own) = own else { return };
     let limit = 3.0 * trace.interval_s();
-    let longest = t_s
+    // What is missing at the end counts like what is missing between.
+    let mut times = t_s.to_vec();
+    times.push(last);
+    let longest = times
         .windows(2)
         // A compressed log leaves samples out where nothing happened: a gap only if some were bad.
         .filter(|w| w[1] - w[0] > limit && (!grounds.noise.compressed || has_bad(bad_t_s, w)))
@@ -381,7 +425,37 @@ fn bad_samples(judged: &mut Judged, step: &OpStep, grounds: &Grounds, own: Optio
 
 fn has_bad(bad_t_s: &[f64], between: &[f64]) -> bool {
     let next = bad_t_s.partition_point(|t| *t <= between[0]);
-    bad_t_s.get(next).is_some_and(|t| *t < between[1])
+    bad_t_s.get(next).is_some_and(|t| *t <= between[1])
+}
+
+/// First and last second of a step's window, up to the next move also where the PV's last samples are
+/// bad: the OP is logged there too, and stands where the step left it.
+fn window_s(trace: &Trace, step: &OpStep) -> (f64, f64) {
+    let window = step.window.clone();
+    let (Some(&first), Some(&last)) = (
+        trace.t_s().get(window.start),
+        trace.t_s().get(window.end.saturating_sub(1)),
+    ) else {
+        return (step.at_s, step.at_s);
+    };
+    let (op_t_s, op) = trace.op_log();
+    let here = op_t_s.partition_point(|t| *t <= last);
+    let stands = op
+        .get(here.saturating_sub(1))
+        .copied()
+        .unwrap_or(step.op_to);
+    // A tenth of the step is no move of its own.
+    let still = 0.1 * (step.op_to - step.op_from).abs();
+    let until = (here..op.len())
+        .take_while(|&k| (op[k] - stands).abs() <= still)
+        .last()
+        .map_or(last, |k| op_t_s[k]);
+    let next_good = trace
+        .t_s()
+        .get(window.end)
+        .copied()
+        .unwrap_or(f64::INFINITY);
+    (first, if until < next_good { until } else { last })
 }
 
 fn misfit(judged: &mut Judged, step: &OpStep, own: &Candidate, grounds: &Grounds) {

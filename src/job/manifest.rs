@@ -433,7 +433,7 @@ fn read_limits(
             reader.wrong(
                 table,
                 key,
-                &format!("{key} is above 1 for any loop, found {value}"),
+                &format!("{key} has to be above 1, as it is for any loop, found {value}"),
             );
         } else {
             *bound = value;
@@ -525,8 +525,8 @@ mod tests {
                 "job.toml, line 1: at least one [[procedure]] is needed: the cautions defer to it",
                 "job.toml, line 3: \"ownr\" is not a key of [job]\n    did you mean \"owner\"?",
                 "job.toml, line 4: the document number needs {tag} or {n}, else every loop has the same number",
-                "job.toml, line 5: \"revision\" is a text in quotation marks, found a number",
-                "job.toml, line 6: \"date\" is a date such as 2026-03-14, found \"14.3.2026\"",
+                "job.toml, line 5: \"revision\" has to be a text in quotation marks, found a number",
+                "job.toml, line 6: \"date\" has to be a date such as 2026-03-14, found \"14.3.2026\"",
                 "job.toml, line 8: ms is a hard limit and may only be tightened: at most 1.8, found 1.9",
                 "job.toml, line 9: scan is a hard limit and may only be tightened: at least 5, found 2",
             ]

@@ -10,7 +10,7 @@ mod templates;
 mod toml_reader;
 
 use crate::notice::{Place, Problem, nearest};
-use crate::read::{LogRequest, LogRule};
+use crate::read::{self, LogRequest, LogRule};
 use chrono::NaiveDate;
 use std::collections::{BTreeMap, BTreeSet};
 use std::path::{Path, PathBuf};
@@ -83,6 +83,7 @@ impl Job {
             loops: schedule.rows,
         };
         let mut warnings = schedule.warnings;
+        warnings.extend(new::left_as_laid_out(&job.manifest));
         let problems = job.check_manifest(&mut warnings);
         if !problems.is_empty() {
             return Err(problems);
@@ -251,6 +252,47 @@ impl Job {
         row.trial.as_ref().map(|log| self.request(row, log))
     }
 
+    /// Whether the files that the cell names lie in the job folder.
+    ///
+    /// # Errors
+    /// Those that do not, at the cell, with the file that may have been meant.
+    pub fn find_files(&self, log: &LogCell) -> Result<(), Vec<Problem>> {
+        let at_cell = |mut problem: Problem| {
+            problem.message = match problem.place.replace(log.place.clone()) {
+                Some(file) => format!("{file}: {}", problem.message),
+                None => problem.message,
+            };
+            vec![problem]
+        };
+        let references = read::file_references(&log.files).map_err(at_cell)?;
+        let missing: Vec<Problem> = references
+            .iter()
+            .filter(|reference| !self.root.join(&reference.file).exists())
+            .map(|reference| self.missing_file(log, &reference.file))
+            .collect();
+        if missing.is_empty() {
+            Ok(())
+        } else {
+            Err(missing)
+        }
+    }
+
+    fn missing_file(&self, log: &LogCell, file: &str) -> Problem {
+        let mut problem = Problem::error(
+            log.place.clone(),
+            format!("there is no file {file} in the job folder"),
+        );
+        let wanted = file.rsplit('/').next().unwrap_or(file);
+        let there = files_below(&self.root);
+        let names = there
+            .iter()
+            .map(|known| known.rsplit('/').next().unwrap_or(known));
+        problem.hint = nearest(wanted, names)
+            .and_then(|near| there.iter().find(|known| known.ends_with(near)))
+            .map(|near| format!("did you mean {near}?"));
+        problem
+    }
+
     fn request(&self, row: &LoopRow, log: &LogCell) -> LogRequest {
         LogRequest {
             root: self.root.clone(),
@@ -275,6 +317,40 @@ fn tag_of(row: &Result<LoopRow, BadRow>) -> &str {
         Ok(row) => &row.tag,
         Err(bad) => &bad.tag,
     }
+}
+
+/// Files in the folder and in the folders of it, in order of name, with forward slashes: where logs lie.
+fn files_below(root: &Path) -> Vec<String> {
+    let names = |folder: PathBuf| -> Vec<(String, bool)> {
+        std::fs::read_dir(folder)
+            .into_iter()
+            .flatten()
+            .flatten()
+            .filter_map(|entry| {
+                let is_folder = entry.path().is_dir();
+                entry
+                    .file_name()
+                    .into_string()
+                    .ok()
+                    .map(|name| (name, is_folder))
+            })
+            .collect()
+    };
+    let mut files = Vec::new();
+    for (name, is_folder) in names(root.to_path_buf()) {
+        if is_folder {
+            let within = names(root.join(&name)).into_iter();
+            files.extend(
+                within
+                    .filter(|(_, is_folder)| !is_folder)
+                    .map(|(file, _)| format!("{name}/{file}")),
+            );
+        } else {
+            files.push(name);
+        }
+    }
+    files.sort();
+    files
 }
 
 fn read_manifest(folder: &Path) -> Result<Manifest, Vec<Problem>> {

@@ -1,6 +1,7 @@
 //! A new job folder to fill in.
 
 use super::headings::{HEADINGS, Heading};
+use super::manifest::{self, Manifest};
 use crate::notice::{Place, Problem};
 use rust_xlsxwriter::{
     Color, DataValidation, DocProperties, ExcelDateTime, Format, Note, Workbook, Worksheet,
@@ -86,6 +87,28 @@ pub fn new_job(folder: &Path) -> Result<Vec<String>, Problem> {
         written.push(name.to_owned());
     }
     Ok(written)
+}
+
+/// What of `job.toml` still says what a new job says, and would be printed on every record.
+pub(super) fn left_as_laid_out(manifest: &Manifest) -> Option<Problem> {
+    let laid_out = Manifest::read(JOB).expect("the job file of a new job can be read");
+    let procedure = |manifest: &Manifest| manifest.procedures.first().cloned();
+    let same: Vec<&str> = [
+        ("plant", manifest.plant == laid_out.plant),
+        ("owner", manifest.owner == laid_out.owner),
+        ("area", manifest.area == laid_out.area),
+        ("date", manifest.date == laid_out.date),
+        ("procedure", procedure(manifest) == procedure(&laid_out)),
+    ]
+    .into_iter()
+    .filter_map(|(key, is_same)| is_same.then_some(key))
+    .collect();
+    (!same.is_empty()).then(|| {
+        Problem::warning(
+            Place::file(manifest::FILE),
+            format!("as in a new job, to be filled in: {}", same.join(", ")),
+        )
+    })
 }
 
 /// The loop schedule with headings, notes, drop-downs and the example row.
@@ -223,7 +246,11 @@ mod tests {
             ["job.toml", "loops.xlsx", "logs/example-1.csv", "README.txt"]
         );
         let (job, warnings) = Job::read(&root).expect("a job");
-        assert_eq!(warnings, []);
+        let warnings: Vec<String> = warnings.iter().map(ToString::to_string).collect();
+        assert_eq!(
+            warnings,
+            ["job.toml: as in a new job, to be filled in: plant, owner, area, date, procedure"]
+        );
         let row = job.loops[0].as_ref().expect("the example row");
         assert_eq!(row.tag, "EXAMPLE-1");
         assert_eq!(row.missing_for_record(), []);

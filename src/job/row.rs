@@ -68,15 +68,13 @@ pub struct Left {
     pub on: Option<Day>,
     /// By whom.
     pub entered_by: Option<String>,
-    /// Action, where it was changed.
-    pub action: Option<Action>,
-    /// PV filter, s, where it was changed.
-    pub pv_filter_s: Option<f64>,
 }
 
 /// A log of the loop: which files, and what of them.
 #[derive(Debug, Clone, PartialEq)]
 pub struct LogCell {
+    /// Where the files are named.
+    pub place: Place,
     /// Text of the cell: files with their sheets.
     pub files: String,
     /// First moment used.
@@ -116,6 +114,10 @@ pub struct LoopRow {
     pub found: Option<Native>,
     /// Settings as entered; `None` until they were.
     pub left: Option<Left>,
+    /// Action as left, where it was or is to be changed; it stands also before settings are entered.
+    pub left_action: Option<Action>,
+    /// PV filter as left, s, where it was or is to be changed.
+    pub left_pv_filter_s: Option<f64>,
     /// What the loop is for.
     pub aim: Aim,
     /// Whether the design may use derivative action.
@@ -240,7 +242,7 @@ impl LoopRow {
                     tag: if tag.is_empty() {
                         format!("row {row_number}")
                     } else {
-                        tag
+                        tag.replace(char::is_control, " ")
                     },
                     row: row_number,
                     problems: reader.problems,
@@ -266,10 +268,13 @@ impl LoopRow {
             (self.test.is_none(), "test log"),
         ] {
             if is_missing {
-                problems.push(Problem::error(
-                    self.place.clone(),
-                    format!("{} has no {name}, which a record needs", self.tag),
-                ));
+                problems.push(
+                    Problem::error(
+                        self.place.clone(),
+                        format!("{} has no {name}, which a record needs", self.tag),
+                    )
+                    .hint(format!("fill in the column \"{name}\"")),
+                );
             }
         }
         problems
@@ -278,6 +283,15 @@ impl LoopRow {
 
 fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -> Option<LoopRow> {
     let tag = r.needed("tag", RowReader::text);
+    if tag
+        .as_ref()
+        .is_some_and(|tag| tag.contains(char::is_control))
+    {
+        r.wrong(
+            "tag",
+            "the tag holds a line break or another control character",
+        );
+    }
     let service = r.needed("service", RowReader::text);
     let pv_unit = r.needed("pv unit", RowReader::text);
     let pv_low = r.needed("pv low", RowReader::number);
@@ -303,6 +317,8 @@ fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -
     let scan_s = r.needed("scan s", RowReader::above_zero);
     let found = r.native(["found p", "found i", "found d"], warnings);
     let left = read_left(r, warnings);
+    let left_action = r.word("left action", ACTIONS);
+    let left_pv_filter_s = r.not_below_zero("left pv filter s");
     let aim = r.word("aim", AIMS).unwrap_or_default();
     let allowed_deviation = r.above_zero("allowed deviation");
     let expected_load = r.number("expected load").map(f64::abs);
@@ -316,12 +332,12 @@ fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -
             }
         }
         if expected_load == Some(0.0) {
-            r.wrong("expected load", "expected load is above 0, found 0");
+            r.wrong("expected load", "expected load has to be above 0, found 0");
         }
     }
     let pv_scale = r.number("pv scale");
     if pv_scale == Some(0.0) {
-        r.wrong("pv scale", "pv scale is not 0");
+        r.wrong("pv scale", "pv scale must not be 0");
     }
     let test = r.log(["test log", "test from", "test to"]);
     let trial = r.log(["trial log", "trial from", "trial to"]);
@@ -334,6 +350,8 @@ fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -
         quality: r.text("quality column"),
         tag: r.text("tag column"),
     };
+    check_logs(r, test.as_ref(), trial.as_ref());
+    check_columns(r);
     let safety = r.word("safety", YES_NO).unwrap_or(false);
     let pv_filter_in_log = r.word("pv filter in log", YES_NO).unwrap_or(true);
     let derivative = r.word("derivative", YES_NO).unwrap_or(false);
@@ -347,6 +365,8 @@ fn read_row(r: &mut RowReader<'_>, number: usize, warnings: &mut Vec<Problem>) -
         pv_filter_in_log,
         found,
         left,
+        left_action,
+        left_pv_filter_s,
         aim,
         derivative,
         target_s: r.above_zero("target s"),
@@ -410,15 +430,57 @@ fn check_form(
     if p_as == Some(ProportionalUnit::Band) {
         r.wrong(
             "p as",
-            "p as is gain or gain per unit with the form parallel, found \"band\"",
+            "p as has to be gain or gain per unit with the form parallel, found \"band\"",
         );
     }
     if matches!(i_as, Some(IntegralUnit::Seconds | IntegralUnit::Minutes)) {
         let found = r.cell("i as").text();
         r.wrong(
             "i as",
-            format!("i as is 1/s or 1/min with the form parallel (its integral setting is a gain), found \"{found}\""),
+            format!("i as has to be 1/s or 1/min with the form parallel (its integral setting is a gain), found \"{found}\""),
         );
+    }
+}
+
+/// A trial that is the step test again, which it cannot be.
+fn check_logs(r: &mut RowReader<'_>, test: Option<&LogCell>, trial: Option<&LogCell>) {
+    if let (Some(test), Some(trial)) = (test, trial)
+        && (&test.files, test.from, test.to) == (&trial.files, trial.from, trial.to)
+    {
+        r.wrong(
+            "trial log",
+            format!(
+                "the trial log is the test log, {}: the trial comes after the settings were entered",
+                trial.files
+            ),
+        );
+    }
+}
+
+/// Columns of the log named for two things at once.
+fn check_columns(r: &mut RowReader<'_>) {
+    const NAMES: [&str; 5] = [
+        "pv column",
+        "op column",
+        "sp column",
+        "mode column",
+        "quality column",
+    ];
+    let told = r.problems.len();
+    let texts = NAMES.map(|name| r.text(name));
+    // An error value in one of these cells is told where the cell is read.
+    r.problems.truncate(told);
+    for (k, name) in NAMES.iter().enumerate() {
+        let Some(text) = &texts[k] else { continue };
+        if let Some(first) = texts[..k]
+            .iter()
+            .position(|other| other.as_ref() == Some(text))
+        {
+            r.wrong(
+                name,
+                format!("{name} is \"{text}\", which {} is already", NAMES[first]),
+            );
+        }
     }
 }
 
@@ -426,8 +488,6 @@ fn read_left(r: &mut RowReader<'_>, warnings: &mut Vec<Problem>) -> Option<Left>
     let native = r.native(["left p", "left i", "left d"], warnings);
     let on = r.day("left on");
     let entered_by = r.text("entered by");
-    let action = r.word("left action", ACTIONS);
-    let pv_filter_s = r.not_below_zero("left pv filter s");
     let native = native?;
     if on.is_none() && r.cell("left on").is_empty() {
         warnings.push(Problem::warning(
@@ -439,7 +499,5 @@ fn read_left(r: &mut RowReader<'_>, warnings: &mut Vec<Problem>) -> Option<Left>
         native,
         on,
         entered_by,
-        action,
-        pv_filter_s,
     })
 }

@@ -36,6 +36,9 @@ pub const NUMERIC: [&str; 20] = [
     "pv offset",
 ];
 
+/// No range, setting or time of a control loop is outside this, whatever its unit.
+const PLAUSIBLE: std::ops::RangeInclusive<f64> = 1e-12..=1e12;
+
 /// Reads the cells of one row and gathers what is wrong with them.
 pub struct RowReader<'a> {
     pub(super) table: &'a Table,
@@ -116,15 +119,36 @@ impl<'a> RowReader<'a> {
         };
         if found.is_none() {
             let text = self.cell(name).text();
-            self.wrong(name, format!("{name} is a number, found \"{text}\""));
+            let mut problem = Problem::error(
+                self.place(name),
+                format!("{name} has to be a number, found \"{text}\""),
+            );
+            // "0.5 s": the unit is the heading's business.
+            let figures = text.trim_end_matches(|sign: char| !sign.is_ascii_digit());
+            let is_number = [DecimalSign::Point, DecimalSign::Comma]
+                .iter()
+                .any(|sign| number(figures, *sign).is_some());
+            if figures.len() < text.len() && is_number {
+                problem.hint = Some(format!("write {figures} alone, in the unit of the heading"));
+            }
+            self.problems.push(problem);
         }
-        found
+        let found = found?;
+        // Whole numbers of hundreds of figures are typing errors that would fill a page.
+        if found != 0.0 && !PLAUSIBLE.contains(&found.abs()) {
+            self.wrong(
+                name,
+                format!("{name} is out of all proportion, found {found:e}"),
+            );
+            return None;
+        }
+        Some(found)
     }
 
     pub(super) fn above_zero(&mut self, name: &'static str) -> Option<f64> {
         let number = self.number(name)?;
         if number <= 0.0 {
-            self.wrong(name, format!("{name} is above 0, found {number}"));
+            self.wrong(name, format!("{name} has to be above 0, found {number}"));
             return None;
         }
         Some(number)
@@ -133,7 +157,7 @@ impl<'a> RowReader<'a> {
     pub(super) fn not_below_zero(&mut self, name: &'static str) -> Option<f64> {
         let number = self.number(name)?;
         if number < 0.0 {
-            self.wrong(name, format!("{name} is not below 0, found {number}"));
+            self.wrong(name, format!("{name} must not be below 0, found {number}"));
             return None;
         }
         Some(number)
@@ -154,7 +178,7 @@ impl<'a> RowReader<'a> {
                 .map_or(&[][..], |heading| heading.words);
             let mut problem = Problem::error(
                 self.place(name),
-                format!("{name} is {}, found \"{text}\"", shown.join(" or ")),
+                format!("{name} has to be {}, found \"{text}\"", listed(shown)),
             );
             problem.hint = nearest(&text.to_lowercase(), shown.iter().copied())
                 .map(|near| format!("did you mean \"{near}\"?"));
@@ -175,7 +199,7 @@ impl<'a> RowReader<'a> {
             let text = self.cell(name).text();
             self.wrong(
                 name,
-                format!("{name} is a date such as 2026-03-14, found \"{text}\""),
+                format!("{name} has to be a date such as 2026-03-14, found \"{text}\""),
             );
         }
         found
@@ -202,7 +226,7 @@ impl<'a> RowReader<'a> {
                     self.problems.truncate(told);
                     self.wrong(
                         name,
-                        format!("{name} is a date and time such as 2026-03-14 09:05:00, or seconds where the log has no dates, found \"{text}\""),
+                        format!("{name} has to be a date and time such as 2026-03-14 09:05:00, or seconds where the log has no dates, found \"{text}\""),
                     );
                 }
                 day.map(|day| Moment::Dated(whole_day(day)))
@@ -220,10 +244,14 @@ impl<'a> RowReader<'a> {
         let (low, high) = (low?, high?);
         let span = Span::new(low, high).ok();
         if span.is_none() {
-            self.wrong(
-                high_name,
-                format!("{high_name} is above {low_name}, found {low} to {high}"),
+            let mut problem = Problem::error(
+                self.place(high_name),
+                format!(
+                    "{high_name} has to be above {low_name}, found {low_name} {low} and {high_name} {high}"
+                ),
             );
+            problem.hint = (low > high).then(|| "are the two swapped?".to_owned());
+            self.problems.push(problem);
         }
         span
     }
@@ -239,7 +267,7 @@ impl<'a> RowReader<'a> {
         let i = self.not_below_zero(i_name);
         let d = self.not_below_zero(d_name);
         let Some(p) = p else {
-            if i.is_some() || d.is_some() {
+            if self.cell(p_name).is_empty() && (i.is_some() || d.is_some()) {
                 self.wrong(
                     p_name,
                     format!("{p_name} is blank although {i_name} or {d_name} is given"),
@@ -252,7 +280,7 @@ impl<'a> RowReader<'a> {
         if p < 0.0 || (p == 0.0 && !is_parallel) {
             self.wrong(
                 p_name,
-                format!("{p_name} is above 0 (the sign is the action's), found {p}"),
+                format!("{p_name} has to be above 0 (the sign is the action's), found {p}"),
             );
             return None;
         }
@@ -282,6 +310,7 @@ impl<'a> RowReader<'a> {
             self.wrong(to, format!("{to} is not after {from}"));
         }
         Some(LogCell {
+            place: self.place(files),
             files: self.text(files)?,
             from: from_cut,
             to: to_cut,
@@ -296,6 +325,14 @@ impl<'a> RowReader<'a> {
             })
             .filter(|(heading, value)| !(heading.is_empty() && value.is_empty()))
             .collect()
+    }
+}
+
+/// Words as a sentence lists them: "load, set point or averaging".
+fn listed(words: &[&str]) -> String {
+    match words {
+        [first @ .., last] if !first.is_empty() => format!("{} or {last}", first.join(", ")),
+        _ => words.concat(),
     }
 }
 

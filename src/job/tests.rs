@@ -116,7 +116,7 @@ fn a_workbook_of_every_kind_of_cell_is_typed() {
             d: 0.0
         }
     );
-    assert_eq!(left.action, Some(Action::Reverse));
+    assert_eq!(row.left_action, Some(Action::Reverse));
     assert_eq!(
         left.on.map(|on| on.to_string()).as_deref(),
         Some("2026-03-16")
@@ -145,9 +145,9 @@ fn a_row_that_cannot_be_used_does_not_stop_the_others() {
     assert_eq!(
         texts(&bad.problems),
         [
-            "loops.csv, line 2, column \"pv high\": pv high is above pv low, found 100 to 0",
-            "loops.csv, line 2, column \"action\": action is reverse or direct, found \"revers\"\n    did you mean \"reverse\"?",
-            "loops.csv, line 2, column \"scan s\": scan s is above 0, found 0",
+            "loops.csv, line 2, column \"pv high\": pv high has to be above pv low, found pv low 100 and pv high 0\n    are the two swapped?",
+            "loops.csv, line 2, column \"action\": action has to be reverse or direct, found \"revers\"\n    did you mean \"reverse\"?",
+            "loops.csv, line 2, column \"scan s\": scan s has to be above 0, found 0",
         ]
     );
     let row = job.loops[1].as_ref().expect("a good row");
@@ -155,8 +155,8 @@ fn a_row_that_cannot_be_used_does_not_stop_the_others() {
     assert_eq!(
         texts(&row.missing_for_record()),
         [
-            "loops.csv, line 3: TIC-2 has no found p, which a record needs",
-            "loops.csv, line 3: TIC-2 has no test log, which a record needs"
+            "loops.csv, line 3: TIC-2 has no found p, which a record needs\n    fill in the column \"found p\"",
+            "loops.csv, line 3: TIC-2 has no test log, which a record needs\n    fill in the column \"test log\""
         ]
     );
     assert_eq!(
@@ -178,18 +178,22 @@ fn cells_that_cannot_be_are_named() {
         (
             "found p",
             "-2",
-            "found p is above 0 (the sign is the action's), found -2",
+            "found p has to be above 0 (the sign is the action's), found -2",
         ),
-        ("found p", "two", "found p is a number, found \"two\""),
+        (
+            "found p",
+            "two",
+            "found p has to be a number, found \"two\"",
+        ),
         (
             "found p;found i",
             "2;-1",
-            "found i is not below 0, found -1",
+            "found i must not be below 0, found -1",
         ),
         (
             "left p;left on",
             "2;14.03.2026",
-            "left on is a date such as 2026-03-14, found \"14.03.2026\"",
+            "left on has to be a date such as 2026-03-14, found \"14.03.2026\"",
         ),
         (
             "aim;allowed deviation",
@@ -199,7 +203,7 @@ fn cells_that_cannot_be_are_named() {
         (
             "safety",
             "perhaps",
-            "safety is yes or no, found \"perhaps\"",
+            "safety has to be yes or no, found \"perhaps\"",
         ),
         (
             "test log;test from;test to",
@@ -209,9 +213,39 @@ fn cells_that_cannot_be_are_named() {
         (
             "test log;test from",
             "a.csv;monday",
-            "test from is a date and time such as 2026-03-14 09:05:00, or seconds where the log has no dates, found \"monday\"",
+            "test from has to be a date and time such as 2026-03-14 09:05:00, or seconds where the log has no dates, found \"monday\"",
         ),
-        ("pv scale", "0", "pv scale is not 0"),
+        ("pv scale", "0", "pv scale must not be 0"),
+        (
+            "pv filter s",
+            "0.5 s",
+            "pv filter s has to be a number, found \"0.5 s\"\n    write 0.5 alone, in the unit of the heading",
+        ),
+        (
+            "pv filter s",
+            "0,5 s",
+            "write 0,5 alone, in the unit of the heading",
+        ),
+        (
+            "found p;found i",
+            "red;10",
+            "found p has to be a number, found \"red\"",
+        ),
+        (
+            "found p",
+            "1e300",
+            "found p is out of all proportion, found 1e300",
+        ),
+        (
+            "test log;trial log",
+            "a.csv;a.csv",
+            "the trial log is the test log, a.csv",
+        ),
+        (
+            "pv column;op column",
+            "#2;#2",
+            "op column is \"#2\", which pv column is already",
+        ),
         (
             "inner loop",
             "FIC-9",
@@ -233,8 +267,8 @@ fn cells_that_cannot_be_are_named() {
     assert_eq!(
         texts(&job.loops[0].as_ref().expect_err("a bad row").problems),
         [
-            "loops.csv, line 2, column \"p as\": p as is gain or gain per unit with the form parallel, found \"band\"",
-            "loops.csv, line 2, column \"i as\": i as is 1/s or 1/min with the form parallel (its integral setting is a gain), found \"s\""
+            "loops.csv, line 2, column \"p as\": p as has to be gain or gain per unit with the form parallel, found \"band\"",
+            "loops.csv, line 2, column \"i as\": i as has to be 1/s or 1/min with the form parallel (its integral setting is a gain), found \"s\""
         ]
     );
 }
@@ -387,4 +421,42 @@ fn document_numbers_are_file_names_and_each_ones_own() {
         "the document number D-X-1 is that of the dossier"
     );
     assert!(job.loops[2].is_ok());
+}
+
+#[test]
+fn a_log_that_is_not_there_is_told_at_its_cell() {
+    let folder = tempfile::tempdir().expect("a folder");
+    let root = folder.path();
+    std::fs::write(root.join("job.toml"), JOB).expect("written");
+    std::fs::write(
+        root.join("loops.csv"),
+        format!(
+            "{HEADINGS};test log\nTIC-1;Outlet;degC;0;100;reverse;standard;gain;s;1;{}\n",
+            "\"logs/TIC_1.csv;b.csv;logs/there.csv\""
+        ),
+    )
+    .expect("written");
+    std::fs::create_dir(root.join("logs")).expect("a folder");
+    for name in ["logs/tic1.csv", "logs/there.csv"] {
+        std::fs::write(root.join(name), "t,pv,op\n").expect("written");
+    }
+    let (job, _) = Job::read(root).expect("a job");
+    let row = job.loops[0].as_ref().expect("a good row");
+    let log = row.test.as_ref().expect("a log");
+    assert_eq!(
+        texts(&job.find_files(log).expect_err("two are missing")),
+        [
+            "loops.csv, line 2, column \"test log\": there is no file logs/TIC_1.csv in the job folder\n    did you mean logs/tic1.csv?",
+            "loops.csv, line 2, column \"test log\": there is no file b.csv in the job folder"
+        ]
+    );
+    let outside = LogCell {
+        files: "../a.csv".into(),
+        ..log.clone()
+    };
+    assert!(
+        texts(&job.find_files(&outside).expect_err("outside"))[0].starts_with(
+            "loops.csv, line 2, column \"test log\": ../a.csv: a log is named by its place below the job folder"
+        )
+    );
 }

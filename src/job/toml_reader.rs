@@ -108,7 +108,7 @@ impl<'a> Reader<'a> {
         };
         self.problems.push(Problem::error(
             self.at(span),
-            format!("\"{key}\" is {what}, found {found}"),
+            format!("\"{key}\" has to be {what}, found {found}"),
         ));
     }
 
@@ -241,7 +241,10 @@ impl<'a> Reader<'a> {
             self.wrong(
                 table,
                 key,
-                &format!("\"{key}\" is {}, found \"{text}\"", list.join(" or ")),
+                &format!(
+                    "\"{key}\" has to be {}, found \"{text}\"",
+                    list.join(" or ")
+                ),
             );
         }
         found

@@ -8,7 +8,7 @@ const CURVE_POINTS: usize = 400;
 /// Half width of the settling band, part of the step.
 const SETTLED_PART: f64 = 0.02;
 /// Least half width of the settling band, % of span.
-const SETTLED_LEAST_PERCENT: f64 = 0.1;
+pub const SETTLED_LEAST_PERCENT: f64 = 0.1;
 /// The PV counts as settled only where it stays in the band for at least this part of the time
 /// watched: a PV that swings through the band at the very end has not settled.
 const STAYED_PART: f64 = 0.02;
@@ -112,7 +112,7 @@ impl Meter {
             self.highest = self.highest.max(to);
             for (at, part) in [
                 (&mut self.at_10, 0.1),
-                (&mut self.at_63, 1.0 - (-1.0_f64).exp()),
+                (&mut self.at_63, 1.0 - libm::exp(-1.0)),
                 (&mut self.at_90, 0.9),
             ] {
                 if at.is_none() && to >= part {

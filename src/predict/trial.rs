@@ -2,7 +2,9 @@
 
 use crate::display::{fixed, with_unit};
 use crate::model::ProcessModel;
-use crate::predict::measure::{Disturbance, Meter, Sample, Thinner, noise_sd, smoothed};
+use crate::predict::measure::{
+    Disturbance, Meter, SETTLED_LEAST_PERCENT, Sample, Thinner, noise_sd, smoothed,
+};
 use crate::predict::oscillation::{self, Oscillation};
 use crate::predict::simulate::{Inputs, SampledController, run};
 use crate::predict::words::duration;
@@ -62,6 +64,17 @@ pub enum TrialError {
     /// Neither a set-point move nor a load that stands out.
     #[error("no set-point move, and no load disturbance beyond the noise")]
     NothingHappened,
+    /// The set point was moved, by too little to be seen.
+    #[error(
+        "the set point was moved by {size_percent:.1} % of span only; against the noise and wander of this PV \
+         a trial needs {needed_percent:.1} %"
+    )]
+    MoveTooSmall {
+        /// The largest move, % of span.
+        size_percent: f64,
+        /// What would be enough, % of span.
+        needed_percent: f64,
+    },
 }
 
 /// The loop as it was left: what the prediction is made with.
@@ -94,6 +107,8 @@ const LOAD_OVER_NOISE: f64 = 5.0;
 /// The PV is smoothed over this part of the process's dead time plus time constant before figures are
 /// read off it: short against any answer of the loop, long against noise.
 const SMOOTHED_PART: f64 = 0.1;
+/// A set-point move is judged where it is this many times the band that a settled PV strays in.
+const MOVE_OVER_BAND: f64 = 3.0;
 /// A swing exceeds the noise by this: noise alone reaches it once in 100,000 samples.
 const SWING_OVER_NOISE: f64 = 4.5;
 /// Instants at which a load is tried to begin.
@@ -149,6 +164,14 @@ pub fn trial(trace: &Trace, loop_as_left: &AsLeft) -> Result<Trial, TrialError> 
     }
     match chosen {
         Some(k) => {
+            let needed_percent = MOVE_OVER_BAND * run.least_band(moves[k].index);
+            let size_percent = moves[k].size.abs();
+            if size_percent < needed_percent {
+                return Err(TrialError::MoveTooSmall {
+                    size_percent,
+                    needed_percent,
+                });
+            }
             let end = moves.get(k + 1).map_or(run.t_s.len(), |next| next.index);
             Ok(run.set_point_trial(loop_as_left, &moves, k, end))
         }
@@ -300,6 +323,11 @@ impl<'a> Run<'a> {
             });
         }
         meter.metrics()
+    }
+
+    /// Half width of the narrowest settling band before sample `first`, % of span.
+    fn least_band(&self, first: usize) -> f64 {
+        SETTLED_LEAST_PERCENT + (3.0 * self.noise).max(self.wander(first))
     }
 
     /// How far the smoothed PV strays from its mean while the loop is at rest before sample `first`, %

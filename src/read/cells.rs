@@ -114,7 +114,8 @@ impl CellReader<'_> {
             warnings.push(Problem::warning(
                 self.understood.table.place(),
                 format!(
-                    "{total} cells of the {} hold no value ({}); the value before is held",
+                    "{total} {} of the {} without a value ({}); the value before is held",
+                    if total == 1 { "cell" } else { "cells" },
                     Role::name(role),
                     listed.join(", ")
                 ),

@@ -6,6 +6,7 @@ use super::collect::BadCells;
 use super::headings::{Owner, Role, meaning, squash};
 use super::layout::{self, Layout};
 use super::numbers::{DecimalSign, Evidence, Shape, Undecided, shape};
+use super::order::Ordered;
 use super::roles::{self, Roles};
 use super::source::{FileCache, SourceFile};
 use super::stamp::{MICROSECONDS, stamp};
@@ -339,6 +340,7 @@ fn read_table(
         request,
     };
     let samples = reader.samples(&tracks, wanted, &mut warnings)?;
+    warnings.extend(same_moments(main, table.place()));
     if main.newest_first {
         warnings.push(Problem::warning(
             table.place(),
@@ -384,6 +386,21 @@ fn read_table(
     };
     read.describe_sampling();
     Ok(read)
+}
+
+/// Rows lost to a clock coarser than the rows: more of them than the few that a trend writes twice.
+fn same_moments(main: &Ordered, place: Place) -> Option<Problem> {
+    let rows = main.t_us.len() + main.duplicates;
+    (main.duplicates * 20 > rows).then(|| {
+        Problem::warning(
+            place,
+            format!(
+                "{} of {rows} rows bear the same time as another row; of each time the last row alone is used",
+                main.duplicates
+            ),
+        )
+        .hint("export the times with seconds and their fractions; a spreadsheet that saves a csv may drop them")
+    })
 }
 
 /// Rows of data that belong to the loop: all of them, or those that bear its tag.

@@ -251,7 +251,15 @@ fn any_tag(text: &str) -> Option<(String, &str, &str)> {
         let figures = run(at, u8::is_ascii_digit);
         let end_of_figures = at + figures;
         let suffix = run(end_of_figures, u8::is_ascii_alphabetic);
-        if (2..=5).contains(&letters) && (2..=6).contains(&figures) {
+        // A lone figure makes a tag ("FIC-3") only in capitals and set off: "Tank 1" is none.
+        let one_figure = figures == 1
+            && at > start + letters
+            && bytes[at - 1] != b' '
+            && bytes[start..start + letters]
+                .iter()
+                .all(u8::is_ascii_uppercase)
+            && role_of(&text[start..start + letters]).is_none();
+        if (2..=5).contains(&letters) && ((2..=6).contains(&figures) || one_figure) {
             let suffix_text = text[end_of_figures..end_of_figures + suffix].to_uppercase();
             let end = if role_of(&suffix_text).is_some() || suffix > 2 {
                 end_of_figures
@@ -409,7 +417,14 @@ mod tests {
             meaning("Plant.FIC_203.OP", Some("TIC-204")).owner,
             Owner::Other("FIC_203".into())
         );
-        assert_eq!(meaning("PV", Some("TIC-204")).owner, Owner::Nobody);
+        assert_eq!(
+            meaning("FIC-3.PV (kg/h)", Some("TIC-1")).owner,
+            Owner::Other("FIC-3".into())
+        );
+        for nobodys in ["PV", "PV_1", "SP 2", "Tank-1 level", "CH1"] {
+            let owner = meaning(nobodys, Some("TIC-204")).owner;
+            assert_eq!(owner, Owner::Nobody, "{nobodys}");
+        }
         assert_eq!(
             meaning("LIC204PV", None).owner,
             Owner::Other("LIC204".into())

@@ -86,6 +86,20 @@ fn looks_like_data(row: Row<'_>, width: usize, counted: bool) -> bool {
         || ((width == 1 || counted) && numbers > 0 && 2 * numbers >= filled)
 }
 
+/// Whether a row has its times where `sample` has them, and something beside them: a row of a long table
+/// whose value is a word, as the mode is.
+fn is_timed_alike(row: Row<'_>, sample: Row<'_>) -> bool {
+    let times = |row: Row<'_>| -> Vec<usize> {
+        row.cells()
+            .enumerate()
+            .filter(|(_, cell)| look(*cell) == Look::Moment)
+            .map(|(column, _)| column)
+            .collect()
+    };
+    let at = times(row);
+    !at.is_empty() && at == times(sample) && row.width() == sample.width()
+}
+
 /// Finds headings and data; `None` where no rows look like samples. `counted` is a log without a clock.
 pub fn find(
     table: &Table,
@@ -95,8 +109,17 @@ pub fn find(
 ) -> Option<Layout> {
     let rows = table.len();
     let is_data = |index: usize| looks_like_data(table.row(index), table.width(), counted);
-    let data_start = (0..rows.min(ROWS_LOOKED_AT))
-        .find(|&start| (start..rows.min(start + ROWS_ALIKE)).all(is_data))?;
+    let found = (0..rows.min(ROWS_LOOKED_AT)).find(|&start| {
+        is_data(start)
+            && (start + 1..rows.min(start + ROWS_ALIKE))
+                .all(|index| is_data(index) || is_timed_alike(table.row(index), table.row(start)))
+    })?;
+    // A long table may begin with a word: the first row of a mode is no heading.
+    let data_start = (0..found)
+        .rev()
+        .take_while(|&index| is_timed_alike(table.row(index), table.row(found)))
+        .last()
+        .unwrap_or(found);
     let above = data_start.saturating_sub(ROWS_ABOVE)..data_start;
     let heading_row = above
         .clone()

@@ -10,6 +10,7 @@ pub mod clock;
 mod collect;
 mod dates;
 mod extract;
+mod guard;
 pub mod headings;
 pub mod inspect;
 mod join;
@@ -34,6 +35,7 @@ use chrono_tz::Tz;
 use std::collections::BTreeMap;
 use std::path::PathBuf;
 
+pub use guard::is_guarded;
 pub use numbers::DecimalSign;
 pub use roles::RoleFound;
 pub use samples::{read_samples_csv, samples_csv};

@@ -1,5 +1,6 @@
 //! Sheets of workbooks and delimited text as tables of located cells.
 
+use super::guard::guarded;
 use super::text;
 use crate::notice::{Place, Problem};
 use calamine::{Data, DataRef, ExcelDateTime, Reader, Sheets};
@@ -350,8 +351,8 @@ pub(super) fn workbook_tables(
     };
     // A workbook damaged on the way may break the reading library's own expectations: that is a
     // problem of this one file and must not end the run.
-    std::panic::catch_unwind(|| read_workbook(bytes, name, ending))
-        .unwrap_or_else(|_| Err(ReadError::Workbook("it is damaged".to_owned())))
+    guarded(|| read_workbook(bytes, name, ending))
+        .unwrap_or_else(|| Err(ReadError::Workbook("it is damaged".to_owned())))
         .map_err(|error| match error {
             ReadError::Workbook(reason) => unreadable(reason),
             ReadError::Problem(problem) => problem,

@@ -1,7 +1,7 @@
 //! The cautions of a record: the standing ones, those that the data raised, and the site's own.
 
 use super::open_items::{action_fits, few_steps};
-use super::{Caution, OpenCode, Procedure, Record, Status};
+use super::{Caution, Procedure, Record, Status};
 use crate::display::{counted, duration, fixed, plain, significant, unit, with_unit};
 use crate::identify::{ReasonCode, Verdict};
 
@@ -123,25 +123,6 @@ fn raised(record: &Record) -> Vec<Caution> {
              automatic before it is resolved.",
         ));
     }
-    let tau = model.time_constant_s.map(|e| e.value);
-    let misses_process = record
-        .document
-        .open_items
-        .iter()
-        .any(|item| item.code == OpenCode::ScanTooSlow);
-    if let Some(tau) = tau
-        && l.scan_s > tau / 4.0
-        && !misses_process
-    {
-        list.push(caution(
-            "scan time",
-            format!(
-                "The controller executes every {}, which is coarse for a time constant of {}.",
-                duration(l.scan_s),
-                duration(tau)
-            ),
-        ));
-    }
     let weak_sampling: Vec<String> = record
         .steps
         .iter()
@@ -153,7 +134,7 @@ fn raised(record: &Record) -> Vec<Caution> {
         list.push(caution(
             "sampling",
             format!(
-                "The test was logged every {}: few samples for the speed of the process.",
+                "The PV has few samples for the speed of the process (logged every {}).",
                 duration(log.interval_s)
             ),
         ));
@@ -206,8 +187,15 @@ fn raised(record: &Record) -> Vec<Caution> {
     if record.test.sigma_percent.is_none() {
         list.push(caution(
             "noise",
-            "The log was compressed, so the noise of the PV could not be assessed: the rules that compare \
-             with noise were not applied.",
+            format!(
+                "{}, so the noise of the PV could not be assessed: the rules that compare with noise were not \
+                 applied.",
+                if record.test.compressed {
+                    "The log was compressed"
+                } else {
+                    "The log shows too little of the PV at rest"
+                }
+            ),
         ));
     }
     list.extend(

@@ -52,7 +52,7 @@ pub enum OpenCode {
     ScanTooSlow,
     /// Protective loop without its procedure.
     SafetyProcedureMissing,
-    /// The inner loop of the cascade is withheld.
+    /// The inner loop of the cascade is withheld, or no loop to design an outer one on.
     InnerLoopWithheld,
     /// No closed-loop time constant satisfies the limits.
     NoSolution,
@@ -343,6 +343,8 @@ pub struct Test {
     pub noise_sd_percent: Option<f64>,
     /// σ of the rules: the larger of noise and resolution, %; `None` where not assessable.
     pub sigma_percent: Option<f64>,
+    /// Whether the log was compressed, which is why noise is not assessable then.
+    pub compressed: bool,
     /// PV range over the usable steps (or over all where none is), engineering units: low, high.
     pub pv_tested: [f64; 2],
     /// OP range over the same, OP units: low, high.

@@ -11,8 +11,10 @@ use crate::settings::Action;
 pub struct Circumstances {
     /// Why the design recommended nothing, where it did.
     pub refusal: Option<Refusal>,
-    /// Tag of the inner loop, where its record is withheld.
-    pub inner_withheld: Option<String>,
+    /// Why this loop cannot be designed on its inner loop, where it cannot.
+    pub inner_refusal: Option<String>,
+    /// Why it cannot be told whether the test came after the inner loop was left as it is.
+    pub inner_order_unknown: Option<String>,
     /// Why the closed-loop trial's log could not be assessed, where it could not.
     pub trial_failure: Option<String>,
 }
@@ -85,7 +87,7 @@ fn withholding_items(record: &Record, circumstances: &Circumstances) -> Vec<Open
             OpenCode::NoUsableStep,
             match &record.test.failure {
                 Some(failure) => format!("No step test can be used: {failure}."),
-                None => "No step of the test can be used.".to_owned(),
+                None => no_step_in_words(record),
             },
         )),
         Some(model) if !action_fits(record) => {
@@ -116,11 +118,8 @@ fn withholding_items(record: &Record, circumstances: &Circumstances) -> Vec<Open
              It is changed only under the procedure for protective systems.",
         ));
     }
-    if let Some(inner) = &circumstances.inner_withheld {
-        items.push(item(
-            OpenCode::InnerLoopWithheld,
-            format!("The inner loop {inner} is withheld, so this loop cannot be designed on it."),
-        ));
+    if let Some(text) = &circumstances.inner_refusal {
+        items.push(item(OpenCode::InnerLoopWithheld, text.clone()));
     }
     match &circumstances.refusal {
         Some(Refusal::NoSolution { text }) => items.push(item(OpenCode::NoSolution, text.clone())),
@@ -239,7 +238,7 @@ pub fn few_steps(record: &Record) -> Option<String> {
 }
 
 /// What was asked for and not met, overridden limits, reservations and waivers.
-pub fn remarks(record: &Record) -> Vec<Remark> {
+pub fn remarks(record: &Record, circumstances: &Circumstances) -> Vec<Remark> {
     let mut remarks = Vec::new();
     let mut add = |label: &str, text: String| {
         remarks.push(Remark {
@@ -276,6 +275,9 @@ pub fn remarks(record: &Record) -> Vec<Remark> {
                 _ => {}
             }
         }
+    }
+    if let Some(text) = &circumstances.inner_order_unknown {
+        add("Reservation", text.clone());
     }
     if let Some(waiver) = &record.control_loop.waiver
         && let Some(text) = few_steps(record)
@@ -329,6 +331,16 @@ pub fn decisive_reasons(step: &Step) -> Vec<&Reason> {
     }
 }
 
+/// That no step can be used, and why.
+fn no_step_in_words(record: &Record) -> String {
+    let mut text = "No step of the test can be used.".to_owned();
+    for group in steps_alike(record, Verdict::Rejected) {
+        text.push(' ');
+        text.push_str(&steps_in_words(&group, "rejected"));
+    }
+    text
+}
+
 /// Steps of one verdict, those with the same rules behind it together.
 fn steps_alike(record: &Record, verdict: Verdict) -> Vec<Vec<&Step>> {
     let codes = |step: &Step| {
@@ -367,7 +379,15 @@ fn steps_in_words(group: &[&Step], verb: &str) -> String {
     let numbers: Vec<usize> = group.iter().map(|s| s.number).collect();
     match numbers.as_slice() {
         [one] => format!("Step {one} is {verb}: {reasons}."),
-        several => format!("Steps {} are {verb}, at worst: {reasons}.", runs(several)),
+        several => {
+            let texts = |step: &Step| {
+                let reasons = decisive_reasons(step).into_iter();
+                reasons.map(|r| r.text.clone()).collect::<Vec<_>>()
+            };
+            let alike = group.iter().all(|step| texts(step) == texts(worst));
+            let at_worst = if alike { "" } else { ", at worst" };
+            format!("Steps {} are {verb}{at_worst}: {reasons}.", runs(several))
+        }
     }
 }
 

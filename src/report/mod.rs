@@ -522,4 +522,19 @@ The records are in job/records
         assert_eq!(problem["column"], 2);
         assert_eq!(problem["severity"], "error");
     }
+
+    #[test]
+    fn a_tag_neither_spoils_the_columns_nor_steers_the_terminal() {
+        let long = "T".repeat(300);
+        let report = run(vec![failed("A\u{1b}[2J"), failed(&long)]);
+        let text = report.to_string();
+        assert!(!text.contains('\u{1b}'), "{text}");
+        assert!(text.contains(&format!("\n{long}\n")), "{text}");
+        let widths = text.lines().map(|line| line.chars().count());
+        assert_eq!(
+            widths.filter(|width| *width > page::WIDTH).count(),
+            1,
+            "{text}"
+        );
+    }
 }

@@ -17,6 +17,9 @@ const STATUS_WIDTH: usize = 15;
 /// How far advice stands in from the problem it belongs to.
 const HINT_INDENT: usize = 4;
 
+/// A tag longer than this stands on a line of its own.
+const LONGEST_TAG: usize = 24;
+
 /// Text as it grows, wrapped to [`WIDTH`].
 pub struct Page {
     text: String,
@@ -28,7 +31,8 @@ impl Page {
     pub fn new(loops: &[LoopReport]) -> Self {
         let longest = loops
             .iter()
-            .map(|report| report.tag.chars().count())
+            .map(|report| printable(&report.tag).chars().count())
+            .filter(|length| *length <= LONGEST_TAG)
             .chain(["register".len()])
             .max();
         Page {
@@ -87,6 +91,11 @@ impl Page {
 
     /// A line of the list of loops: tag, status, file.
     pub fn row(&mut self, tag: &str, status: &str, rest: &str) {
+        let mut tag = printable(tag);
+        if tag.chars().count() > LONGEST_TAG {
+            self.line(0, &tag);
+            tag.clear();
+        }
         let label = format!("{tag:<0$}{status:<STATUS_WIDTH$}", self.tag_width);
         let indent = label.chars().count();
         self.labelled(&label, indent, rest);

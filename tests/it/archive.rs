@@ -287,7 +287,10 @@ fn the_dossier_keeps_the_same_rule() {
     let record = signed();
     let mut title = record.document.clone();
     title.number = "LM-DOSSIER".into();
-    let bind = |records: &[Record], all| Dossier::new(title.clone(), records, all, "asleft 0.1.0");
+    let bind = |records: &[Record], missing: &[&str]| {
+        let missing: Vec<String> = missing.iter().map(|tag| (*tag).to_owned()).collect();
+        Dossier::new(title.clone(), records, &missing, "asleft 0.1.0")
+    };
     let store = |dossier: &Dossier, pdf: &[u8]| {
         let standing = archive::look_for_dossier(folder.path(), dossier)?;
         if let Standing::Free(slot) = &standing {
@@ -296,15 +299,17 @@ fn the_dossier_keeps_the_same_rule() {
         Ok::<_, Problem>(standing)
     };
 
-    let draft = bind(&[record.clone(), withheld()], true);
+    let draft = bind(&[record.clone(), withheld()], &[]);
     assert_eq!(draft.document.status, Status::Draft);
     assert_eq!(
-        bind(std::slice::from_ref(&record), false).document.status,
+        bind(std::slice::from_ref(&record), &["TIC-9"])
+            .document
+            .status,
         Status::Draft
     );
     store(&draft, b"draft").expect("written");
 
-    let issued = bind(std::slice::from_ref(&record), true);
+    let issued = bind(std::slice::from_ref(&record), &[]);
     assert_eq!(issued.document.status, Status::ForSignature);
     assert!(matches!(store(&issued, b"issued"), Ok(Standing::Free(_))));
     assert!(matches!(
@@ -314,7 +319,7 @@ fn the_dossier_keeps_the_same_rule() {
 
     let mut revised = record.clone();
     revised.document.revision = "1".into();
-    let problem = store(&bind(&[sealed(revised)], true), b"revised").expect_err("issued");
+    let problem = store(&bind(&[sealed(revised)], &[]), b"revised").expect_err("issued");
     assert!(
         problem
             .message

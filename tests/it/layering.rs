@@ -36,6 +36,29 @@ const MAY_IMPORT: &[(&str, &[&[&str]])] = &[
     // Assembly.
     ("report", &[GROUND, &["record"]]),
     ("job", &[GROUND, STAGES, &["record", "archive"]]),
+    ("assemble", &[GROUND, STAGES, &["record"]]),
+    (
+        "pipeline",
+        &[
+            GROUND,
+            STAGES,
+            &[
+                "record", "figures", "document", "archive", "job", "assemble",
+            ],
+        ],
+    ),
+    ("inspect", &[GROUND, &["read", "steps"], &["report", "job"]]),
+    (
+        "run",
+        &[
+            GROUND,
+            STAGES,
+            &[
+                "record", "document", "archive", "register", "report", "job", "assemble",
+                "pipeline",
+            ],
+        ],
+    ),
     // What a person typed is none of the pipeline's business.
     ("cli", &[]),
     // `lib` and `main` put everything together and may import all of it.
@@ -82,7 +105,7 @@ const RESERVED: &[(&[&str], &[&str])] = &[
         &["calamine::", "csv::Reader"],
         &["read/table", "job/schedule"],
     ),
-    (&["csv::Writer"], &["record/", "register.rs"]),
+    (&["csv::Writer"], &["job/schedule", "register.rs"]),
     (&["rust_xlsxwriter::"], &["job/"]),
 ];
 

@@ -2,10 +2,18 @@
 //! `tests/README.md`.
 
 mod archive;
+mod broken;
 mod cli;
+mod demo;
+mod errors;
 mod identify;
 mod layering;
+mod new_user;
+mod plant;
+mod predict;
+mod published;
 mod register;
 mod schema;
 mod support;
 mod synthetic;
+mod twins;

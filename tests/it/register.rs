@@ -4,7 +4,10 @@ use crate::synthetic;
 use asleft::register;
 
 fn lines() -> Vec<Vec<String>> {
-    let bytes = register::to_csv(&[synthetic::signed(), synthetic::withheld()]);
+    let bytes = register::to_csv(
+        &[synthetic::signed(), synthetic::withheld()],
+        &["TIC-9".to_owned()],
+    );
     let text = bytes
         .strip_prefix(b"\xef\xbb\xbf")
         .expect("a byte order mark");
@@ -30,7 +33,9 @@ fn cell(line: usize, heading: &str) -> String {
 
 #[test]
 fn a_line_says_what_the_record_says() {
-    assert_eq!(lines().len(), 3);
+    assert_eq!(lines().len(), 4);
+    assert_eq!(cell(3, "tag"), "TIC-9");
+    assert_eq!(cell(3, "status"), "not recorded");
     for (heading, expected) in [
         ("document", "LM-TIC-1"),
         ("status", "for signature"),

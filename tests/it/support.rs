@@ -45,6 +45,19 @@ pub fn files_below(folder: &Path, ending: &str) -> Vec<PathBuf> {
     found
 }
 
+/// Copies a folder with all that lies in it.
+pub fn copy_folder(from: &Path, to: &Path) {
+    fs::create_dir_all(to).expect("the folder can be made");
+    for name in names_in(from) {
+        let (from, to) = (from.join(&name), to.join(&name));
+        if from.is_dir() {
+            copy_folder(&from, &to);
+        } else {
+            fs::copy(&from, &to).expect("the file can be copied");
+        }
+    }
+}
+
 /// What a run of the program printed, and how it ended.
 pub struct Run {
     /// Exit code.
@@ -57,7 +70,13 @@ pub struct Run {
 
 /// Runs the program with these arguments.
 pub fn asleft(arguments: &[&str]) -> Run {
+    asleft_in(root(), arguments)
+}
+
+/// Runs the program with these arguments in a folder.
+pub fn asleft_in(folder: &Path, arguments: &[&str]) -> Run {
     let output = Command::new(env!("CARGO_BIN_EXE_asleft"))
+        .current_dir(folder)
         .args(arguments)
         .output()
         .expect("the program starts");

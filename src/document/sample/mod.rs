@@ -132,6 +132,7 @@ pub(in crate::document) fn full() -> Record {
         test: Test {
             noise_sd_percent: Some(0.0875),
             sigma_percent: Some(0.0875),
+            compressed: false,
             pv_tested: [97.4, 105.9],
             op_tested: [41.0, 51.0],
             failure: None,
@@ -360,6 +361,7 @@ pub(in crate::document) fn dossier_input() -> DossierInput {
         page: PageSize::A4,
         signatures: signatures(),
         procedures: procedures(),
+        not_recorded: Vec::new(),
         program: "asleft 0.1.0".to_owned(),
     }
 }

@@ -1,6 +1,6 @@
 //! The dossier: cover, register, open items, page for operations, settings to enter.
 
-use super::numbers::{bound, capital, listed, number_word, sentence, tidy};
+use super::numbers::{Cell, bound, capital, listed, number_word, sentence, tidy};
 use super::process::slope_unit;
 use super::summary::ms;
 use super::{
@@ -64,6 +64,8 @@ struct Enter {
 struct EnterLoop {
     tag: String,
     form: String,
+    /// What stands over entering this loop's settings; empty where nothing does.
+    under: String,
     rows: Vec<super::numbers::Row>,
 }
 
@@ -121,9 +123,10 @@ pub(in crate::document) fn dossier(
         .iter()
         .map(|part| Context::new(part.record, part.figures, ""))
         .collect::<Result<_, _>>()?;
-    let complete = contexts
-        .iter()
-        .all(|c| c.record.document.status == Status::ForSignature);
+    let complete = input.not_recorded.is_empty()
+        && contexts
+            .iter()
+            .all(|c| c.record.document.status == Status::ForSignature);
     let status = if complete {
         Status::ForSignature
     } else {
@@ -137,18 +140,18 @@ pub(in crate::document) fn dossier(
     Ok(DossierView {
         document: document(input, status),
         title: tidy(&input.title),
-        header: header(&contexts, complete),
+        header: header(&contexts, &input.not_recorded, complete),
         running: input
             .area
             .as_deref()
             .map_or_else(|| tidy(&input.plant), tidy),
         logo,
-        verdict: verdict(&contexts, complete),
-        counts: counts(&contexts),
+        verdict: verdict(&contexts, &input.not_recorded, complete),
+        counts: counts(&contexts, &input.not_recorded),
         signatures: sign_off(&input.signatures),
         register,
-        register_note: register_note(&contexts),
-        open: open(&contexts),
+        register_note: register_note(&contexts, &input.not_recorded),
+        open: open(&contexts, &input.not_recorded),
         operations: operations_page(input, &contexts),
         enter: enter(input, &contexts),
         records: views,
@@ -222,10 +225,13 @@ fn with_status(contexts: &[Context], status: Status) -> Vec<String> {
 }
 
 /// "3 loops are withheld and 1 is open".
-fn not_complete(contexts: &[Context]) -> String {
+fn not_complete(contexts: &[Context], not_recorded: &[String]) -> String {
     let mut parts = Vec::new();
-    for (status, word) in [(Status::Withheld, "withheld"), (Status::Draft, "open")] {
-        let n = with_status(contexts, status).len();
+    for (n, word) in [
+        (not_recorded.len(), "without a record"),
+        (with_status(contexts, Status::Withheld).len(), "withheld"),
+        (with_status(contexts, Status::Draft).len(), "open"),
+    ] {
         if n == 0 {
             continue;
         }
@@ -240,16 +246,16 @@ fn not_complete(contexts: &[Context]) -> String {
     listed(&parts)
 }
 
-fn header(contexts: &[Context], complete: bool) -> String {
+fn header(contexts: &[Context], not_recorded: &[String], complete: bool) -> String {
     if complete {
         String::new()
     } else {
-        format!("Draft: {}", not_complete(contexts))
+        format!("Draft: {}", not_complete(contexts, not_recorded))
     }
 }
 
-fn verdict(contexts: &[Context], complete: bool) -> Entry {
-    let all = contexts.len();
+fn verdict(contexts: &[Context], not_recorded: &[String], complete: bool) -> Entry {
+    let all = contexts.len() + not_recorded.len();
     if complete {
         let loops = match all {
             1 => "The loop is".to_owned(),
@@ -264,23 +270,21 @@ fn verdict(contexts: &[Context], complete: bool) -> Entry {
         format!(
             "{ready} of {} {verb} for signature; {}.",
             display::counted(all, "loop", "loops"),
-            not_complete(contexts)
+            not_complete(contexts, not_recorded)
         ),
     )
 }
 
-fn counts(contexts: &[Context]) -> Vec<[String; 3]> {
+fn counts(contexts: &[Context], not_recorded: &[String]) -> Vec<[String; 3]> {
     [Status::ForSignature, Status::Draft, Status::Withheld]
         .into_iter()
-        .map(|status| (status, with_status(contexts, status)))
+        .map(|status| (status_word(status), with_status(contexts, status)))
+        .chain([(
+            "Not recorded",
+            not_recorded.iter().map(|tag| tidy(tag)).collect(),
+        )])
         .filter(|(_, tags)| !tags.is_empty())
-        .map(|(status, tags)| {
-            [
-                status_word(status).to_owned(),
-                tags.len().to_string(),
-                tags.join(", "),
-            ]
-        })
+        .map(|(status, tags)| [status.to_owned(), tags.len().to_string(), tags.join(", ")])
         .collect()
 }
 
@@ -304,7 +308,13 @@ fn register_row(context: &Context, view: &RecordView) -> RegisterRow {
         left: settings
             .as_left
             .as_ref()
-            .map(|b| native::short(l, b.native))
+            .map(|b| {
+                let mut typed = native::short(l, b.native);
+                if context.withheld() {
+                    typed.push("not recommended".to_owned());
+                }
+                typed
+            })
             .unwrap_or_default(),
         model: model_in_short(record),
         ms: if context.withheld() {
@@ -351,7 +361,7 @@ fn model_in_short(record: &Record) -> Vec<String> {
     parts
 }
 
-fn register_note(contexts: &[Context]) -> String {
+fn register_note(contexts: &[Context], not_recorded: &[String]) -> String {
     let mut notes = Vec::new();
     if contexts
         .iter()
@@ -371,10 +381,20 @@ fn register_note(contexts: &[Context]) -> String {
     {
         notes.push("Cascade pairs stand together, inner loop first.".to_owned());
     }
+    if !not_recorded.is_empty() {
+        let tags: Vec<String> = not_recorded.iter().map(|tag| tidy(tag)).collect();
+        notes.push(format!("Without a record: {}.", listed(&tags)));
+    }
     notes.join(" ")
 }
 
-fn open(contexts: &[Context]) -> Vec<Entry> {
+fn open(contexts: &[Context], not_recorded: &[String]) -> Vec<Entry> {
+    let missing = not_recorded.iter().map(|tag| {
+        Entry::new(
+            tidy(tag),
+            "There is no record of this loop: it could not be read or made.",
+        )
+    });
     contexts
         .iter()
         .filter(|c| !c.record.document.open_items.is_empty())
@@ -388,6 +408,7 @@ fn open(contexts: &[Context]) -> Vec<Entry> {
                 .collect();
             Entry::new(tidy(&c.record.control_loop.tag), texts.join(" "))
         })
+        .chain(missing)
         .collect()
 }
 
@@ -449,6 +470,16 @@ fn enter(input: &DossierInput, contexts: &[Context]) -> Option<Enter> {
     })
 }
 
+/// What governs a loop that takes part in a protective function, in plain words.
+pub(super) fn protective(context: &Context) -> Option<String> {
+    let l = &context.record.control_loop;
+    let procedure = l.safety_procedure.as_deref().map(tidy);
+    l.safety.then(|| match procedure {
+        Some(procedure) => format!("Protective function: only under {procedure}."),
+        None => "Protective function: only under the procedure for protective systems.".to_owned(),
+    })
+}
+
 /// Settings recommended and not entered; never those of a withheld loop.
 fn enter_loop(context: &Context) -> Option<EnterLoop> {
     let settings = &context.record.settings;
@@ -459,17 +490,38 @@ fn enter_loop(context: &Context) -> Option<EnterLoop> {
     let l = &context.record.control_loop;
     let found = native::settings(l, settings.as_found.native);
     let typed = native::settings(l, recommended.native);
-    let rows = found
+    // What the settings were worked out for goes first: entered without it they would be wrong.
+    let mut rows = Vec::new();
+    if let Some(left) = l.left_action.filter(|left| *left != l.action) {
+        rows.push(super::numbers::Row::new(
+            "Action",
+            vec![
+                Cell::words(native::action(l.action)),
+                Cell::words(native::action(left)).bold(true),
+            ],
+        ));
+    }
+    if let Some(left) = l.left_pv_filter_s.filter(|left| *left != l.pv_filter_s) {
+        rows.push(super::numbers::Row::new(
+            "PV filter",
+            vec![
+                Cell::words(native::filter(l.pv_filter_s)),
+                Cell::words(native::filter(left)).bold(true),
+            ],
+        ));
+    }
+    let settings = found
         .into_iter()
         .zip(typed)
         .filter(|((_, found), (_, typed))| found.text != "off" || typed.text != "off")
         .map(|((named, found), (_, typed))| {
             super::numbers::Row::new(named.label, vec![found, typed.bold(true)])
-        })
-        .collect();
+        });
+    rows.extend(settings);
     Some(EnterLoop {
         tag: tidy(&l.tag),
         form: format!("{} form", capital(native::form(l.form))),
+        under: protective(context).unwrap_or_default(),
         rows,
     })
 }

@@ -4,8 +4,8 @@ use super::Context;
 use super::numbers::{decimals_to_show, lower, tidy};
 use crate::design::Aim;
 use crate::display::{self, NO_BREAK};
-use crate::predict::Metrics;
-use crate::record::SettingsBlock;
+use crate::predict::{Margins, Metrics};
+use crate::record::{OpenCode, SettingsBlock};
 use serde::Serialize;
 
 /// One loop on the page for operations.
@@ -25,10 +25,22 @@ const CALM_OVERSHOOT: f64 = 5.0;
 const SWINGS: f64 = 25.0;
 
 pub(super) fn row(context: &Context) -> Option<Row> {
-    if context.withheld() {
-        return None;
-    }
     let l = &context.record.control_loop;
+    if context.withheld() {
+        // Nothing was recommended; where something was entered all the same, the control room must know.
+        context.record.settings.as_left.as_ref()?;
+        return Some(Row {
+            tag: tidy(&l.tag),
+            service: tidy(&l.service),
+            different: "Changed, though nothing was recommended for it.".to_owned(),
+            takes: "not known".to_owned(),
+            see: "Not known: what it will do could not be worked out.".to_owned(),
+            avoid: with_protective(
+                context,
+                vec!["Do not put it in automatic before the engineer in charge agrees.".to_owned()],
+            ),
+        });
+    }
     let after = context.after()?;
     let takes_s = takes(context, after);
     Some(Row {
@@ -49,13 +61,28 @@ fn oscillates(context: &Context) -> bool {
         .is_some_and(|t| t.oscillation.is_some())
 }
 
+/// Whether the loop is stable with the settings after the work, on every model of the test.
+fn stable(after: &SettingsBlock) -> bool {
+    let stable = |margins: Option<Margins>| margins.is_none_or(|m| m.stable);
+    stable(after.margins) && stable(after.worst_margins)
+}
+
+/// What not to do, with what governs a protective function first.
+fn with_protective(context: &Context, said: Vec<String>) -> String {
+    super::dossier::protective(context)
+        .into_iter()
+        .chain(said)
+        .collect::<Vec<_>>()
+        .join(" ")
+}
+
 fn trial_disagrees(context: &Context) -> bool {
     context.record.trial.as_ref().is_some_and(|t| !t.agrees)
 }
 
 /// How long a change takes, s: as measured where it was, else as predicted.
 fn takes(context: &Context, after: &SettingsBlock) -> Option<f64> {
-    if oscillates(context) || after.margins.is_some_and(|m| !m.stable) {
+    if oscillates(context) || !stable(after) {
         return None;
     }
     let measured = context
@@ -112,6 +139,9 @@ fn different(context: &Context, after: &SettingsBlock) -> String {
     }
     if oscillates(context) {
         return "Changed, but it went on swinging when it was tried.".to_owned();
+    }
+    if !stable(after) {
+        return "Changed, and by the test it may swing without end.".to_owned();
     }
     if trial_disagrees(context) {
         return "Changed, but when it was tried it did not do as expected.".to_owned();
@@ -170,7 +200,7 @@ fn see(context: &Context, after: &SettingsBlock) -> String {
             plain_time(dead)
         ));
     }
-    if oscillates(context) {
+    if oscillates(context) || !stable(after) {
         said.push("Swings that do not die away.".to_owned());
         return said.join(" ");
     }
@@ -225,7 +255,13 @@ fn see(context: &Context, after: &SettingsBlock) -> String {
 fn avoid(context: &Context) -> String {
     let mut said = Vec::new();
     let l = &context.record.control_loop;
-    if oscillates(context) || trial_disagrees(context) {
+    let open_margins = context
+        .record
+        .document
+        .open_items
+        .iter()
+        .any(|item| item.code == OpenCode::AsLeftMargins);
+    if oscillates(context) || trial_disagrees(context) || open_margins {
         said.push(
             "Do not leave it unwatched in automatic until its open item is closed.".to_owned(),
         );
@@ -250,7 +286,7 @@ fn avoid(context: &Context) -> String {
             context.pv_unit
         ));
     }
-    said.join(" ")
+    with_protective(context, said)
 }
 
 #[cfg(test)]

@@ -422,3 +422,50 @@ fn an_open_document_with_date_and_time_apart_is_read() {
     );
     assert_eq!(log.sources[0].sheet.as_deref(), Some("Trend"));
 }
+
+#[test]
+fn a_long_table_with_words_among_its_values_is_read() {
+    // Every third row holds the mode; the log may begin with one.
+    for order in [["PV", "OP", "MODE"], ["MODE", "PV", "OP"]] {
+        let mut text = String::from("Tag,Timestamp,Value\n");
+        for (second, (pv, op)) in [(71.2, 40), (71.25, 40), (71.4, 45), (72.0, 45)]
+            .iter()
+            .enumerate()
+        {
+            for signal in order {
+                let value = match signal {
+                    "PV" => pv.to_string(),
+                    "OP" => op.to_string(),
+                    _ => "MAN".to_owned(),
+                };
+                text.push_str(&format!(
+                    "TIC-204.{signal},2026-03-14T09:05:0{second},{value}\n"
+                ));
+            }
+        }
+        let log = csv(&text).read();
+        assert_four_rows(&log);
+        assert_eq!(log.samples.mode, ["MAN"; 4]);
+    }
+}
+
+#[test]
+fn a_clock_coarser_than_its_rows_is_told() {
+    let rows = |step_s: f64| {
+        let mut text = String::from("Time,TIC-204.PV,TIC-204.OP\n");
+        for k in 0..60 {
+            let second = f64::from(k) * step_s;
+            text.push_str(&format!("2026-03-14 09:05:{second:02.0},{k},40\n"));
+        }
+        csv(&text).read().warnings
+    };
+    assert!(rows(0.95).is_empty(), "a few are no matter");
+    let found = rows(0.5);
+    assert!(
+        found[0]
+            .to_string()
+            .starts_with("a.csv: 29 of 60 rows bear the same time as another row"),
+        "{}",
+        found[0]
+    );
+}

@@ -1,5 +1,6 @@
-//! Published values: rules, margins, forms and facts, each with its source in tests/published.
+//! Rules, margins, forms and facts of a first-order response.
 
+use super::{Case, cases};
 use asleft::design::rules;
 use asleft::model::{Kind, ProcessModel};
 use asleft::predict::Margins;
@@ -9,84 +10,6 @@ use asleft::settings::{
     ActsOn, Controller, DerivativeUnit, EquationForm, IntegralUnit, ProportionalUnit, Standard,
     Terms,
 };
-use serde::Deserialize;
-use std::path::PathBuf;
-
-#[derive(Deserialize)]
-struct Published {
-    case: Vec<Case>,
-}
-
-#[derive(Deserialize)]
-struct Case {
-    name: String,
-    expected: Vec<Expected>,
-    #[serde(flatten)]
-    inputs: toml::Table,
-}
-
-#[derive(Deserialize)]
-struct Expected {
-    quantity: String,
-    value: f64,
-    tolerance: f64,
-}
-
-impl Case {
-    /// An input that is a number; `None` where the case has none of this name.
-    fn maybe(&self, name: &str) -> Option<f64> {
-        self.inputs.get(name).and_then(toml::Value::as_float)
-    }
-
-    fn number(&self, name: &str) -> f64 {
-        self.maybe(name)
-            .unwrap_or_else(|| panic!("{}: no {name}", self.name))
-    }
-
-    fn text(&self, name: &str) -> &str {
-        let value = self.inputs.get(name).and_then(toml::Value::as_str);
-        value.unwrap_or_else(|| panic!("{}: no {name}", self.name))
-    }
-
-    fn numbers(&self, name: &str) -> Vec<f64> {
-        let list = self.inputs.get(name).and_then(toml::Value::as_array);
-        let list = list.unwrap_or_else(|| panic!("{}: no {name}", self.name));
-        let number = |value: &toml::Value| value.as_float().expect("a list of decimals");
-        list.iter().map(number).collect()
-    }
-
-    fn whole(&self, name: &str) -> i64 {
-        let value = self.inputs.get(name).and_then(toml::Value::as_integer);
-        value.unwrap_or_else(|| panic!("{}: no {name}", self.name))
-    }
-
-    /// Holds what was found against every expected value; `quantity` gives the figure of that name. A
-    /// quantity that does not exist is infinite.
-    fn check(&self, quantity: impl Fn(&str) -> f64) {
-        for expected in &self.expected {
-            let found = quantity(&expected.quantity);
-            let equal = found == expected.value;
-            assert!(
-                equal || (found - expected.value).abs() <= expected.tolerance,
-                "{}: {} is {found}, expected {} within {}",
-                self.name,
-                expected.quantity,
-                expected.value,
-                expected.tolerance
-            );
-        }
-    }
-}
-
-fn cases(file: &str) -> Vec<Case> {
-    let path = PathBuf::from(env!("CARGO_MANIFEST_DIR"))
-        .join("tests/published")
-        .join(file);
-    let text = std::fs::read_to_string(path).expect("the published values are there");
-    let published: Published = toml::from_str(&text).expect("the published values are in order");
-    assert!(!published.case.is_empty());
-    published.case
-}
 
 fn margin(margins: &Margins, quantity: &str) -> f64 {
     let value = match quantity {
@@ -354,7 +277,7 @@ fn controller_forms_convert() {
 }
 
 /// Time when a rising response reaches a fraction, by halving.
-fn time_to(model: &ProcessModel, fraction: f64) -> f64 {
+pub(super) fn time_to(model: &ProcessModel, fraction: f64) -> f64 {
     let (mut low, mut high) = (0.0, 1000.0);
     for _ in 0..200 {
         let middle = 0.5 * (low + high);
@@ -381,21 +304,4 @@ fn a_first_order_response_is_the_exact_one() {
         };
         case.check(|_| found);
     }
-}
-
-#[test]
-fn two_lags_reach_63_percent_when_they_must() {
-    let cases = cases("lag_readings.toml");
-    let mut met = 0;
-    for case in &cases {
-        // More lags than the second-order model has are no model of the program.
-        let [first, second] = case.numbers("lags_s")[..] else {
-            continue;
-        };
-        let model = ProcessModel::of_kind(Kind::SecondOrder, 1.0, first, second, 0.0);
-        let found = time_to(&model, case.number("fraction"));
-        case.check(|_| found);
-        met += 1;
-    }
-    assert!(met >= 3, "{met} of {} cases have two lags", cases.len());
 }

@@ -1,0 +1,149 @@
+//! How long the parts of a run take: `cargo bench`, see `tests/README.md`.
+
+use asleft::archive;
+use asleft::document::{self, Templates};
+use asleft::figures;
+use asleft::identify::least_squares::{self, Base, Problem, Window};
+use asleft::job::Job;
+use asleft::model::{Kind, ProcessModel};
+use asleft::read::{self, FileCache, LogRequest};
+use asleft::record::{LogRole, Record};
+use asleft::{RecordOptions, record};
+use divan::Bencher;
+use std::path::{Path, PathBuf};
+use std::sync::OnceLock;
+use tempfile::TempDir;
+
+fn main() {
+    divan::main();
+}
+
+fn demo() -> PathBuf {
+    Path::new(env!("CARGO_MANIFEST_DIR")).join("demo_data")
+}
+
+fn folder() -> TempDir {
+    tempfile::tempdir().expect("a folder for the records")
+}
+
+fn record_demo(out: &Path, only: &[&str], dossier: bool) {
+    let options = RecordOptions {
+        only: only.iter().map(|tag| (*tag).to_owned()).collect(),
+        out: Some(out.to_path_buf()),
+        dossier,
+    };
+    record(&demo(), &options, &mut |_| {}).expect("the demo job can be recorded");
+}
+
+/// The main job: twelve loops read, fitted, designed, typeset and written, with dossier and register.
+#[divan::bench(sample_count = 3, sample_size = 1)]
+fn record_the_demo_job(bencher: Bencher) {
+    bencher
+        .with_inputs(|| {
+            comemo::evict(0);
+            folder()
+        })
+        .bench_refs(|out| record_demo(out.path(), &[], true));
+}
+
+/// The same short of typesetting and writing.
+#[divan::bench(sample_count = 10, sample_size = 1)]
+fn check_the_demo_job() {
+    asleft::check(&demo(), &[]).expect("the demo job can be checked");
+}
+
+/// Every log of the demo job, from the disk to samples.
+#[divan::bench(sample_count = 10, sample_size = 1)]
+fn read_all_logs(bencher: Bencher) {
+    let (job, _) = Job::read(&demo()).expect("a job");
+    let rows = || job.loops.iter().flatten();
+    let requests: Vec<LogRequest> = rows()
+        .filter_map(|row| job.test_request(row))
+        .chain(rows().filter_map(|row| job.trial_request(row)))
+        .collect();
+    bencher.with_inputs(FileCache::new).bench_refs(|cache| {
+        for request in &requests {
+            let read = read::read_log(request, cache).expect("a log");
+            divan::black_box(read);
+        }
+    });
+}
+
+/// 100,000 samples of a second each, seven moves up and down; the noise is a fixed pattern.
+fn long_test(kind: Kind) -> Problem {
+    const SAMPLES: usize = 100_000;
+    let model = ProcessModel::of_kind(
+        kind,
+        if kind.integrates() { 0.002 } else { 1.3 },
+        400.0,
+        120.0,
+        60.0,
+    );
+    let t_s: Vec<f64> = (0..SAMPLES).map(|k| k as f64).collect();
+    let moves: Vec<(f64, f64)> = (1..8)
+        .map(|k| {
+            (
+                12_000.0 * f64::from(k),
+                [5.0, 0.0, -5.0, 0.0][(k as usize - 1) % 4],
+            )
+        })
+        .collect();
+    let answer = model.response_to_held(&moves, &t_s);
+    let pv = answer
+        .iter()
+        .enumerate()
+        // The fractional parts of multiples of the golden ratio fill an interval evenly.
+        .map(|(k, pv)| 50.0 + pv + 0.2 * ((k as f64 * 0.618_033_988_749_895).fract() - 0.5))
+        .collect();
+    Problem::new(vec![Window {
+        t_s,
+        pv,
+        moves,
+        base: Base::Level,
+    }])
+}
+
+/// One fit of 100,000 samples of each kind.
+#[divan::bench(
+    args = [Kind::FirstOrder, Kind::SecondOrder, Kind::Integrating, Kind::IntegratingLag],
+    sample_count = 10,
+    sample_size = 1
+)]
+fn fit_100_000_samples(bencher: Bencher, kind: Kind) {
+    let problem = long_test(kind);
+    bencher.bench(|| least_squares::fit(&problem, kind).expect("a fit"));
+}
+
+/// FIC-203 of the demo job with its samples, for typesetting alone.
+fn typesettable() -> &'static Record {
+    static RECORD: OnceLock<Record> = OnceLock::new();
+    RECORD.get_or_init(|| {
+        let out = folder();
+        record_demo(out.path(), &["FIC-203"], false);
+        let json = out.path().join("LM-200-IC-FIC-203_rev0.json");
+        let mut record = archive::read_record(&json).expect("it was written");
+        let (job, _) = Job::read(&demo()).expect("a job");
+        let found = job.find("FIC-203").expect("it is there");
+        let row = found.as_ref().expect("a row in order");
+        for log in &mut record.logs {
+            let request = match log.role {
+                LogRole::Test => job.test_request(row),
+                LogRole::Trial => job.trial_request(row),
+            };
+            let read = read::read_log(&request.expect("a log"), &FileCache::new());
+            log.data = read.expect("readable").samples;
+        }
+        record
+    })
+}
+
+/// A record from its figures to the bytes of the PDF, attachments left out; nothing that the typesetter
+/// remembers of an earlier one is used.
+#[divan::bench(sample_count = 10, sample_size = 1)]
+fn typeset_a_record(bencher: Bencher) {
+    let record = typesettable();
+    bencher.with_inputs(|| comemo::evict(0)).bench_values(|()| {
+        let figures = figures::draw(record);
+        document::typeset_record(record, &figures, &[], &Templates::default()).expect("a PDF")
+    });
+}
