@@ -312,16 +312,6 @@ pub fn remarks(record: &Record, circumstances: &Circumstances) -> Vec<Remark> {
     remarks
 }
 
-/// That no step can be used, and why.
-fn no_step_in_words(record: &Record) -> String {
-    let mut text = "No step of the test can be used.".to_owned();
-    for group in steps_alike(record, Verdict::Rejected) {
-        text.push(' ');
-        text.push_str(&steps_in_words(&group, "rejected"));
-    }
-    text
-}
-
 /// The reasons that decided a step's verdict: of a rejected step those that are more than a
 /// reservation, all of them where none is.
 pub fn decisive_reasons(step: &Step) -> Vec<&Reason> {
@@ -339,6 +329,16 @@ pub fn decisive_reasons(step: &Step) -> Vec<&Reason> {
     } else {
         decisive
     }
+}
+
+/// That no step can be used, and why.
+fn no_step_in_words(record: &Record) -> String {
+    let mut text = "No step of the test can be used.".to_owned();
+    for group in steps_alike(record, Verdict::Rejected) {
+        text.push(' ');
+        text.push_str(&steps_in_words(&group, "rejected"));
+    }
+    text
 }
 
 /// Steps of one verdict, those with the same rules behind it together.
@@ -379,7 +379,15 @@ fn steps_in_words(group: &[&Step], verb: &str) -> String {
     let numbers: Vec<usize> = group.iter().map(|s| s.number).collect();
     match numbers.as_slice() {
         [one] => format!("Step {one} is {verb}: {reasons}."),
-        several => format!("Steps {} are {verb}, at worst: {reasons}.", runs(several)),
+        several => {
+            let texts = |step: &Step| {
+                let reasons = decisive_reasons(step).into_iter();
+                reasons.map(|r| r.text.clone()).collect::<Vec<_>>()
+            };
+            let alike = group.iter().all(|step| texts(step) == texts(worst));
+            let at_worst = if alike { "" } else { ", at worst" };
+            format!("Steps {} are {verb}{at_worst}: {reasons}.", runs(several))
+        }
     }
 }
 
