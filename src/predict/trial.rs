@@ -1,5 +1,7 @@
 //! The closed-loop trial held against the prediction.
 
+mod agreement;
+
 use crate::display::{fixed, with_unit};
 use crate::model::ProcessModel;
 use crate::predict::measure::{
@@ -7,7 +9,6 @@ use crate::predict::measure::{
 };
 use crate::predict::oscillation::{self, Oscillation};
 use crate::predict::simulate::{Inputs, SampledController, run};
-use crate::predict::words::duration;
 use crate::predict::{Curve, Metrics, PvFilter};
 use crate::settings::{Action, Controller, Terms};
 use crate::trace::Trace;
@@ -96,10 +97,6 @@ pub struct AsLeft<'a> {
 const LEAST_SAMPLES: usize = 30;
 /// Set-point moves smaller than this are none, % of span.
 const LEAST_MOVE_PERCENT: f64 = 0.2;
-/// Measured and predicted settling times agree within this part of the predicted one.
-const SETTLING_AGREES: f64 = 0.5;
-/// Measured and predicted overshoot agree within so many points.
-const OVERSHOOT_AGREES: f64 = 10.0;
 /// A load's misfit agrees up to this, percent.
 const MISFIT_AGREES: f64 = 35.0;
 /// A fitted load stands out where its peak exceeds the noise by this.
@@ -372,7 +369,7 @@ impl<'a> Run<'a> {
         );
         let threshold = (SWING_OVER_NOISE * self.noise).max(0.05 * size.abs());
         let oscillation = self.oscillation(window, threshold, 1);
-        let (agrees, why) = agreement(&measured, &predicted, oscillation.as_ref());
+        let (agrees, why) = agreement::agreement(&measured, &predicted, oscillation.as_ref());
         self.result(
             (TrialKind::SetPoint, self.t_s[index], size),
             (measured, predicted),
@@ -565,54 +562,6 @@ impl<'a> Run<'a> {
         } else {
             0.0
         }
-    }
-}
-
-/// Whether a set-point response agrees with its prediction, and why.
-fn agreement(
-    measured: &Metrics,
-    predicted: &Metrics,
-    oscillation: Option<&Oscillation>,
-) -> (bool, String) {
-    let mut against = Vec::new();
-    match (measured.settling_time_s, predicted.settling_time_s) {
-        (Some(found), Some(expected)) => {
-            if (found - expected).abs() > SETTLING_AGREES * expected {
-                against.push(format!(
-                    "it settles in {}, {} was predicted",
-                    duration(found),
-                    duration(expected)
-                ));
-            }
-        }
-        (None, Some(expected)) => against.push(format!(
-            "it does not settle in the time watched, {} was predicted",
-            duration(expected)
-        )),
-        (_, None) => {
-            against.push("it was not watched for as long as it is predicted to take".to_owned());
-        }
-    }
-    let overshoot = |metrics: &Metrics| metrics.overshoot_percent.unwrap_or(0.0);
-    if (overshoot(measured) - overshoot(predicted)).abs() > OVERSHOOT_AGREES {
-        against.push(format!(
-            "it overshoots by {:.0} %, {:.0} % was predicted",
-            overshoot(measured),
-            overshoot(predicted)
-        ));
-    }
-    if let Some(seen) = oscillation {
-        against.push(seen.text.clone());
-    }
-    if against.is_empty() {
-        let why = "Agrees with the prediction: it settles within ±50 % and overshoots within 10 points of it, and no cycle is seen.";
-        (true, why.to_owned())
-    } else {
-        let why = format!(
-            "Does not agree with the prediction: {}.",
-            against.join("; ")
-        );
-        (false, why)
     }
 }
 

@@ -13,6 +13,7 @@ mod extract;
 mod guard;
 pub mod headings;
 pub mod inspect;
+mod iso;
 mod join;
 pub mod layout;
 pub mod numbers;

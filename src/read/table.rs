@@ -4,7 +4,7 @@ use super::guard::guarded;
 use super::text;
 use crate::notice::{Place, Problem};
 use calamine::{Data, DataRef, ExcelDateTime, Reader, Sheets};
-use chrono::{NaiveDate, NaiveDateTime, NaiveTime};
+use chrono::{NaiveDateTime, NaiveTime};
 use std::io::Cursor;
 
 /// A text record over more lines than this has a quotation mark that was never closed.
@@ -439,11 +439,11 @@ fn push_cell(cells: &mut Vec<(u32, u32, Owned)>, position: (u32, u32), value: &D
         DataRef::SharedString(text) => Owned::Text((*text).to_owned()),
         DataRef::Bool(value) => Owned::Other(Stored::Boolean(*value)),
         DataRef::DateTime(at) => Owned::Other(date_cell(at)),
-        DataRef::DateTimeIso(text) => iso_date(text).map_or_else(
+        DataRef::DateTimeIso(text) => super::iso::date(text).map_or_else(
             || Owned::Text(text.clone()),
             |at| Owned::Other(Stored::Date(at)),
         ),
-        DataRef::DurationIso(text) => iso_duration(text).map_or_else(
+        DataRef::DurationIso(text) => super::iso::duration_s(text).map_or_else(
             || Owned::Text(text.clone()),
             |seconds| Owned::Other(Stored::Duration(seconds)),
         ),
@@ -463,46 +463,6 @@ fn date_cell(at: &ExcelDateTime) -> Stored {
         return Stored::Number(days);
     }
     at.as_datetime().map_or(Stored::Number(days), Stored::Date)
-}
-
-fn iso_date(text: &str) -> Option<NaiveDateTime> {
-    let text = text.trim().trim_end_matches('Z');
-    text.parse::<NaiveDateTime>().ok().or_else(|| {
-        text.parse::<NaiveDate>()
-            .ok()
-            .map(|date| date.and_time(NaiveTime::MIN))
-    })
-}
-
-/// Seconds of an ISO 8601 duration of days, hours, minutes and seconds: `PT09H05M00S`.
-fn iso_duration(text: &str) -> Option<f64> {
-    let mut seconds = 0.0;
-    let mut in_time = false;
-    let mut number = String::new();
-    for letter in text.trim().strip_prefix('P')?.chars() {
-        let factor = match letter {
-            'T' => {
-                in_time = true;
-                continue;
-            }
-            '0'..='9' => {
-                number.push(letter);
-                continue;
-            }
-            '.' | ',' => {
-                number.push('.');
-                continue;
-            }
-            'D' if !in_time => 86_400.0,
-            'H' if in_time => 3600.0,
-            'M' if in_time => 60.0,
-            'S' if in_time => 1.0,
-            _ => return None,
-        };
-        seconds += number.parse::<f64>().ok()? * factor;
-        number.clear();
-    }
-    number.is_empty().then_some(seconds)
 }
 
 fn error_text(error: &calamine::CellErrorType) -> &'static str {
@@ -598,9 +558,12 @@ mod tests {
 
     #[test]
     fn durations_of_open_documents_are_read() {
-        assert_eq!(iso_duration("PT09H05M00S"), Some(32_700.0));
-        assert_eq!(iso_duration("P1DT0H0M0.5S"), Some(86_400.5));
-        assert_eq!(iso_duration("P1M"), None);
-        assert_eq!(iso_date("2026-03-14"), iso_date("2026-03-14T00:00:00"));
+        assert_eq!(super::iso::duration_s("PT09H05M00S"), Some(32_700.0));
+        assert_eq!(super::iso::duration_s("P1DT0H0M0.5S"), Some(86_400.5));
+        assert_eq!(super::iso::duration_s("P1M"), None);
+        assert_eq!(
+            super::iso::date("2026-03-14"),
+            super::iso::date("2026-03-14T00:00:00")
+        );
     }
 }
