@@ -8,6 +8,8 @@ mod view;
 mod world;
 
 #[cfg(test)]
+mod dossier_tests;
+#[cfg(test)]
 mod sample;
 #[cfg(test)]
 mod tests;

@@ -558,12 +558,12 @@ mod tests {
 
     #[test]
     fn durations_of_open_documents_are_read() {
-        assert_eq!(super::iso::duration_s("PT09H05M00S"), Some(32_700.0));
-        assert_eq!(super::iso::duration_s("P1DT0H0M0.5S"), Some(86_400.5));
-        assert_eq!(super::iso::duration_s("P1M"), None);
+        assert_eq!(crate::read::iso::duration_s("PT09H05M00S"), Some(32_700.0));
+        assert_eq!(crate::read::iso::duration_s("P1DT0H0M0.5S"), Some(86_400.5));
+        assert_eq!(crate::read::iso::duration_s("P1M"), None);
         assert_eq!(
-            super::iso::date("2026-03-14"),
-            super::iso::date("2026-03-14T00:00:00")
+            crate::read::iso::date("2026-03-14"),
+            crate::read::iso::date("2026-03-14T00:00:00")
         );
     }
 }

@@ -264,7 +264,7 @@ fn verdict(contexts: &[Context], not_recorded: &[String], complete: bool) -> Ent
         return Entry::new("For signature.", format!("{loops} for signature."));
     }
     let ready = with_status(contexts, Status::ForSignature).len();
-    let verb = if ready == 1 { "is" } else { "are" };
+    let verb = if ready == 1 || all == 1 { "is" } else { "are" };
     Entry::new(
         "Draft.",
         format!(
