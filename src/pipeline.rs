@@ -138,13 +138,33 @@ pub fn write(
     })
 }
 
-/// Whether the record could be written: what [`write`] would find short of typesetting.
+/// The record that [`write`] would leave in the folder, short of typesetting and writing it.
 ///
 /// # Errors
 /// As [`write`].
-pub fn look(engineered: &Engineered, out: &Path) -> Result<(), Vec<Problem>> {
+pub fn look(engineered: &Engineered, out: &Path) -> Result<Record, Vec<Problem>> {
     let sealed = archive::seal(engineered.record.clone()).map_err(one)?;
-    archive::look(out, &sealed).map(drop).map_err(one)
+    Ok(match archive::look(out, &sealed).map_err(one)? {
+        Standing::Free(_) => sealed,
+        Standing::Issued { kept, .. } => *kept,
+    })
+}
+
+/// Whether the dossier of these records, inner loops first, could be written: what [`write_dossier`] would
+/// find short of typesetting.
+///
+/// # Errors
+/// As [`write_dossier`].
+pub fn look_for_dossier(
+    job: &Job,
+    records: &[Record],
+    not_recorded: &[String],
+    out: &Path,
+) -> Result<(), Vec<Problem>> {
+    let dossier = archive::Dossier::new(dossier_document(job), records, not_recorded, PROGRAM);
+    archive::look_for_dossier(out, &dossier)
+        .map(drop)
+        .map_err(one)
 }
 
 /// Binds and writes the dossier. `records` stand inner loop first.

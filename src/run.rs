@@ -59,16 +59,21 @@ pub fn check(folder: &Path, only: &[String]) -> Result<CheckReport, Vec<Problem>
     let selected = select(folder, only)?;
     let out = folder.join(RECORDS_FOLDER);
     let outcomes = each_loop(&selected, &mut |_| {}, |_, engineered| {
-        pipeline::look(&engineered, &out)?;
-        Ok(engineered)
+        let record = pipeline::look(&engineered, &out)?;
+        Ok((engineered, record))
     });
+    let dossier = if only.is_empty() {
+        check_dossier(&selected, &outcomes, &out)
+    } else {
+        Vec::new()
+    };
     let loops = selected
         .wanted
         .iter()
         .zip(outcomes)
         .map(|(&index, outcome)| {
             let (outcome, notices) = match outcome {
-                Ok(engineered) => (
+                Ok((engineered, _)) => (
                     LoopOutcome::Ready {
                         status: engineered.record.document.status,
                         open_items: open_items(&engineered.record),
@@ -84,7 +89,40 @@ pub fn check(folder: &Path, only: &[String]) -> Result<CheckReport, Vec<Problem>
         job: shown(folder),
         notices: selected.notices,
         loops,
+        dossier,
     })
+}
+
+/// What would keep the dossier from being bound.
+fn check_dossier(
+    selected: &Selected,
+    outcomes: &[Result<(Engineered, Record), Vec<Problem>>],
+    out: &Path,
+) -> Vec<Problem> {
+    let records: Vec<Record> = in_binding_order(selected, outcomes)
+        .into_iter()
+        .map(|(_, record)| record.clone())
+        .collect();
+    if records.is_empty() {
+        return Vec::new();
+    }
+    let not_recorded = not_recorded(selected, outcomes);
+    pipeline::look_for_dossier(&selected.job, &records, &not_recorded, out)
+        .err()
+        .unwrap_or_default()
+}
+
+/// What came out well, inner loops before the loops that cascade to them.
+fn in_binding_order<'a, T, E>(selected: &Selected, outcomes: &'a [Result<T, E>]) -> Vec<&'a T> {
+    selected
+        .job
+        .inner_first()
+        .into_iter()
+        .filter_map(|index| {
+            let place = selected.wanted.iter().position(|&k| k == index)?;
+            outcomes[place].as_ref().ok()
+        })
+        .collect()
 }
 
 /// Makes records, dossier and register.
@@ -378,7 +416,7 @@ fn engineer(
 }
 
 /// Tags of the loops asked for that have no record, in the order of the schedule.
-fn not_recorded(selected: &Selected, outcomes: &[Result<Recorded, Vec<Problem>>]) -> Vec<String> {
+fn not_recorded<T, E>(selected: &Selected, outcomes: &[Result<T, E>]) -> Vec<String> {
     selected
         .wanted
         .iter()
@@ -395,15 +433,7 @@ fn dossier(
     out: &Path,
     templates: &Templates,
 ) -> DossierOutcome {
-    let records: Vec<&Recorded> = selected
-        .job
-        .inner_first()
-        .into_iter()
-        .filter_map(|index| {
-            let place = selected.wanted.iter().position(|&k| k == index)?;
-            outcomes[place].as_ref().ok()
-        })
-        .collect();
+    let records = in_binding_order(selected, outcomes);
     let not_recorded = not_recorded(selected, outcomes);
     let written = pipeline::write_dossier(&selected.job, &records, &not_recorded, out, templates)
         .and_then(|(dossier, kept, notices)| {
@@ -424,6 +454,7 @@ fn dossier(
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::report::Report;
 
     #[test]
     fn a_test_of_which_nothing_can_be_used_says_why() {
@@ -459,5 +490,22 @@ mod tests {
             open_items[0].contains("PV does not change"),
             "{open_items:?}"
         );
+    }
+
+    #[test]
+    fn check_tells_what_would_keep_the_dossier_from_being_bound() {
+        let folder = tempfile::tempdir().expect("a folder");
+        let root = folder.path().join("job");
+        new_job(&root).expect("a new job");
+        let report = check(&root, &[]).expect("a job");
+        assert_eq!((report.dossier.len(), report.exit_code()), (0, 0));
+        std::fs::create_dir(root.join(RECORDS_FOLDER)).expect("a folder");
+        let pdf = root.join(RECORDS_FOLDER).join("IC-DOSSIER_rev0.pdf");
+        std::fs::write(pdf, "issued").expect("written");
+        let report = check(&root, &[]).expect("a job");
+        assert_eq!(report.exit_code(), crate::report::SOME_FAILED);
+        assert!(report.to_string().contains("dossier    failed"), "{report}");
+        let narrowed = check(&root, &["EXAMPLE-1".to_owned()]).expect("a job");
+        assert_eq!(narrowed.exit_code(), 0, "{narrowed}");
     }
 }

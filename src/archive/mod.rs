@@ -231,12 +231,12 @@ fn look_at<T>(
                     names.json()
                 ),
             )
-            .hint("Bring the JSON back from where it went, or move the PDF out of the folder"));
+            .hint("bring the JSON back from where it went, or move the PDF out of the folder"));
         }
         let folder = folder.to_owned();
         return Ok(Standing::Free(Slot { folder, names }));
     };
-    let move_away = "Bring the file back as it was issued, or move both files out of the folder";
+    let move_away = "bring the file back as it was issued, or move both files out of the folder";
     let old: Value = seal::parsed(&text, &place).map_err(|problem| problem.hint(move_away))?;
     let (old_tag, new_tag) = (&old["loop"]["tag"], &new["loop"]["tag"]);
     if old_tag != new_tag || old["schema"] != new["schema"] {
@@ -246,7 +246,7 @@ fn look_at<T>(
                 format!("the record of {tag}")
             });
         return Err(Problem::error(place, format!("already holds {holds}"))
-            .hint("Give each document its own number, or write to another folder with --out"));
+            .hint("give each document its own number, or write to another folder with --out"));
     }
     if !seal_holds(&old) {
         return Err(Problem::error(place, "was changed after it was sealed").hint(move_away));
@@ -276,7 +276,7 @@ fn look_at<T>(
                 slot.names.pdf()
             ),
         )
-        .hint("Bring the PDF back; where the pair was never handed out, delete this file"));
+        .hint("bring the PDF back; where the pair was never handed out, delete this file"));
     }
     let notice = if changes.is_empty() {
         None
@@ -312,7 +312,7 @@ fn differs(place: Place, changes: &[Difference]) -> Problem {
             listed(changes)
         ),
     )
-    .hint("Give it a new revision, with its date and reason, in the schedule (a dossier: in job.toml)")
+    .hint("give it a new revision, with its date and reason, in the schedule (a dossier: in job.toml)")
 }
 
 fn other_figures(place: Place, old: &Value, changes: &[Difference]) -> Problem {
@@ -326,7 +326,7 @@ fn other_figures(place: Place, old: &Value, changes: &[Difference]) -> Problem {
             listed(changes)
         ),
     )
-    .hint("Give it a new revision in the schedule where the new figures are wanted")
+    .hint("give it a new revision in the schedule where the new figures are wanted")
 }
 
 /// The first differences, one a line, what was handed in before what follows from it.

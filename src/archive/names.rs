@@ -52,7 +52,7 @@ impl FileNames {
                 "document number \"{number}\", revision \"{revision}\", cannot name a file: {fault}"
             ))
             .hint(
-                "Change `document` or `dossier` in job.toml, or the revision in job.toml or the schedule",
+                "change document or dossier in job.toml, or the revision in job.toml or the schedule",
             )),
         }
     }

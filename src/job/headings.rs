@@ -88,7 +88,7 @@ pub const HEADINGS: &[Heading] = &[
     optional("safety", "Whether the loop takes part in a protective function.").words(YES_NO),
     optional("safety procedure", "The procedure that governs changing it."),
     optional("waiver", "Accepts an open item of the test, with the reason; printed."),
-    optional("test log", "Step test: file below the job folder, file.xlsx#Sheet for one sheet, several with ;"),
+    optional("test log", "Step test, needed for the record: file below the job folder, file.xlsx#Sheet for one sheet, several with ;"),
     optional("test from", "First moment used of the test log."),
     optional("test to", "Last moment used of the test log."),
     optional("trial log", "Closed-loop log after the settings were entered."),

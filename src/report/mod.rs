@@ -127,6 +127,8 @@ pub struct CheckReport {
     pub notices: Vec<Problem>,
     /// Every loop, in the order of the schedule.
     pub loops: Vec<LoopReport>,
+    /// What would keep the dossier from being bound.
+    pub dossier: Vec<Problem>,
 }
 
 /// What `record` did.
@@ -215,13 +217,26 @@ fn counted(count: usize, one: &str) -> String {
     format!("{count} {one}{}", if count == 1 { "" } else { "s" })
 }
 
+impl CheckReport {
+    fn failed_dossier(&self) -> Option<DossierOutcome> {
+        (!self.dossier.is_empty()).then(|| DossierOutcome::Failed {
+            problems: self.dossier.clone(),
+        })
+    }
+}
+
 impl Report for CheckReport {
     fn exit_code(&self) -> u8 {
-        Tally::of(&self.loops).exit_code()
+        let code = Tally::of(&self.loops).exit_code();
+        if code == DONE && !self.dossier.is_empty() {
+            SOME_FAILED
+        } else {
+            code
+        }
     }
 
     fn failures(&self) -> Option<String> {
-        failures(&self.loops, None)
+        failures(&self.loops, self.failed_dossier().as_ref())
     }
 }
 
@@ -265,6 +280,10 @@ impl Display for CheckReport {
         page.problems(0, &self.notices);
         page.loops(&self.loops);
         page.blank();
+        if let Some(dossier) = self.failed_dossier() {
+            page.dossier(&dossier);
+            page.blank();
+        }
         page.line(0, &format!("Would give {}.", Tally::of(&self.loops)));
         page.line(0, "Nothing was written.");
         f.write_str(page.text())

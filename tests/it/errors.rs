@@ -76,7 +76,7 @@ fn mistakes_in_job_schedule_and_log_are_told_together() {
         &[
             "warning job.toml: no log of the schedule fits the pattern \"logs/tic9*.csv\" of a [[log]] table",
             "error logs/word.xlsx, sheet \"Trend\", cell C5: \"forty\" is not a number",
-            "error loops.csv, line 4, column \"scan s\": scan s is above 0, found 0",
+            "error loops.csv, line 4, column \"scan s\": scan s has to be above 0, found 0",
             "Would give 0 records for signature, 1 draft, 0 withheld; 2 loops failed.",
         ],
     );
@@ -87,7 +87,7 @@ fn mistakes_in_job_schedule_and_log_are_told_together() {
         &run,
         &[
             "error job.toml, line 18: \"limitz\" is not a table of job.toml did you mean \"limits\"?",
-            "error loops.csv, line 4, column \"scan s\": scan s is above 0, found 0",
+            "error loops.csv, line 4, column \"scan s\": scan s has to be above 0, found 0",
         ],
     );
 }
@@ -100,7 +100,7 @@ fn one_bad_loop_does_not_stop_the_others() {
         &run,
         &[
             "TIC-1 draft HM-TIC-1_rev0.pdf",
-            "TIC-2 failed error logs/none.csv: there is no such file",
+            "TIC-2 failed error loops.csv, line 3, column \"test log\": there is no file logs/none.csv in the job folder",
             "dossier draft HM-DOSSIER_rev0.pdf",
             "0 records for signature, 1 draft, 0 withheld; 1 loop failed.",
         ],
