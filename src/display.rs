@@ -81,6 +81,21 @@ pub fn with_unit(figure: &str, unit_text: &str) -> String {
     }
 }
 
+/// Text for a cell of a CSV file: one that a spreadsheet would run as a formula gets an apostrophe before
+/// it. A plain number that begins with its sign is none.
+pub fn spreadsheet_cell(text: &str) -> String {
+    // `parse` alone would also take "-inf", which a spreadsheet does not.
+    let plain_number = text
+        .bytes()
+        .all(|b| b.is_ascii_digit() || b"+-.eE".contains(&b))
+        && text.parse::<f64>().is_ok();
+    if text.starts_with(['=', '+', '-', '@', '\t', '\r', '\n']) && !plain_number {
+        format!("'{text}")
+    } else {
+        text.to_owned()
+    }
+}
+
 /// "1 step", "2 steps".
 pub fn counted(count: usize, one: &str, many: &str) -> String {
     format!("{count}{NO_BREAK}{}", if count == 1 { one } else { many })
@@ -124,6 +139,16 @@ mod tests {
         assert_eq!(duration(246.0), "4.1\u{a0}min");
         assert_eq!(with_unit("5", "degC"), "5\u{a0}°C");
         assert_eq!(counted(1, "step", "steps"), "1\u{a0}step");
+    }
+
+    #[test]
+    fn no_cell_is_run_by_a_spreadsheet() {
+        assert_eq!(spreadsheet_cell("=1+1"), "'=1+1");
+        assert_eq!(spreadsheet_cell("@SUM(A1)"), "'@SUM(A1)");
+        assert_eq!(spreadsheet_cell("\t=1"), "'\t=1");
+        assert_eq!(spreadsheet_cell("-inf"), "'-inf");
+        assert_eq!(spreadsheet_cell("-1.5e3"), "-1.5e3");
+        assert_eq!(spreadsheet_cell("TIC-204"), "TIC-204");
     }
 
     #[test]

@@ -1,5 +1,6 @@
 //! The register: one line per record, for spreadsheets. A working list, made anew each run.
 
+use crate::display::spreadsheet_cell;
 use crate::predict::Margins;
 use crate::quantity::{Estimate, round_significant};
 use crate::record::{Record, SettingsBlock, Status};
@@ -135,7 +136,7 @@ pub fn to_csv(records: &[Record], not_recorded: &[String]) -> Vec<u8> {
     }
     for tag in not_recorded {
         let cells = COLUMNS.iter().map(|(heading, _)| match *heading {
-            TAG => not_run(tag),
+            TAG => spreadsheet_cell(tag),
             STATUS => "not recorded".to_owned(),
             _ => String::new(),
         });
@@ -150,27 +151,9 @@ impl Cell {
         match self {
             Cell::Blank => String::new(),
             Cell::Number(value) => value.to_string(),
-            Cell::Text(words) => not_run(words),
+            Cell::Text(words) => spreadsheet_cell(words),
         }
     }
-}
-
-/// Text that a spreadsheet would take for a formula, with an apostrophe before it. A plain number
-/// that begins with its sign is none.
-fn not_run(words: &str) -> String {
-    if words.starts_with(['=', '+', '-', '@', '\t', '\r', '\n']) && !is_plain_number(words) {
-        format!("'{words}")
-    } else {
-        words.to_owned()
-    }
-}
-
-fn is_plain_number(words: &str) -> bool {
-    // `parse` alone would also take "-inf", which a spreadsheet does not.
-    words
-        .bytes()
-        .all(|b| b.is_ascii_digit() || b"+-.eE".contains(&b))
-        && words.parse::<f64>().is_ok()
 }
 
 fn text(words: &str) -> Cell {

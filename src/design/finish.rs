@@ -435,7 +435,7 @@ fn binding_detail(
             duration(basis.recipe.effective_dead_time_s)
         ),
         LimitName::TimeConstant => format!(
-            "The process time constant decides: {below} the process of {} would be driven more than {} times faster than it is.",
+            "The process time constant decides: {below} the process, whose lags count as {}, would be driven more than {} times faster than it is.",
             duration(basis.recipe.time_constant_s.unwrap_or(0.0)),
             words::bound(bounds.time_constant)
         ),

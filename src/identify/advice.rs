@@ -165,7 +165,10 @@ pub(crate) fn next_time(
         });
         match interval {
             Some(s) if s < trace.interval_s() => {
-                say("Log", format!("the PV every {} s or faster.", figure(s)));
+                say(
+                    "Log",
+                    format!("the PV every {} s or faster.", crate::display::plain(s, 2)),
+                );
             }
             // What was logged would do for the process as it is known.
             Some(_) => {}

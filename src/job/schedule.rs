@@ -3,6 +3,7 @@
 use super::headings::{HEADINGS, Heading, of};
 use super::row::LoopRow;
 use super::row_reader::{NUMERIC, RowReader};
+use crate::display::spreadsheet_cell;
 use crate::notice::{Place, Problem, nearest};
 use crate::read::numbers::{DecimalSign, Evidence};
 use crate::read::source::{SourceFile, WORKBOOK_ENDINGS};
@@ -303,16 +304,11 @@ pub fn schedule_row_csv(row: &LoopRow) -> Vec<u8> {
     let mut writer = csv::WriterBuilder::new()
         .terminator(csv::Terminator::Any(b'\n'))
         .from_writer(Vec::new());
-    let guarded = |text: &String| {
-        let runs = text.starts_with(['=', '+', '-', '@']) && text.parse::<f64>().is_err();
-        if runs {
-            format!("'{text}")
-        } else {
-            text.clone()
-        }
-    };
-    let headings = row.as_read.iter().map(|(heading, _)| guarded(heading));
-    let values = row.as_read.iter().map(|(_, value)| guarded(value));
+    let headings = row
+        .as_read
+        .iter()
+        .map(|(heading, _)| spreadsheet_cell(heading));
+    let values = row.as_read.iter().map(|(_, value)| spreadsheet_cell(value));
     writer
         .write_record(headings)
         .and_then(|()| writer.write_record(values))

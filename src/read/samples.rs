@@ -49,16 +49,13 @@ pub fn samples_csv(samples: &Samples, clock: Clock) -> Vec<u8> {
 
 /// A text as a field: quoted where it must be, and never one that a spreadsheet would run.
 fn push_field(text: &mut String, field: &str) {
-    let runs = field.starts_with(['=', '+', '-', '@']);
-    if runs || field.contains(['"', ',', '\n', '\r']) {
+    let cell = crate::display::spreadsheet_cell(field);
+    if cell.contains(['"', ',', '\n', '\r', '\'']) {
         text.push('"');
-        if runs {
-            text.push('\'');
-        }
-        text.push_str(&field.replace('"', "\"\""));
+        text.push_str(&cell.replace('"', "\"\""));
         text.push('"');
     } else {
-        text.push_str(field);
+        text.push_str(&cell);
     }
 }
 
@@ -145,7 +142,7 @@ fn split_fields(line: &str) -> Vec<String> {
     }
     for field in &mut fields {
         if let Some(rest) = field.strip_prefix('\'')
-            && rest.starts_with(['=', '+', '-', '@'])
+            && crate::display::spreadsheet_cell(rest) == *field
         {
             *field = rest.to_owned();
         }
