@@ -2,7 +2,7 @@
 
 use super::open_items::{action_fits, few_steps};
 use super::{Caution, Procedure, Record, Status};
-use crate::display::{counted, duration, fixed, plain, significant, unit, with_unit};
+use crate::display::{counted, fixed, plain, significant, unit, with_unit};
 use crate::identify::{ReasonCode, Verdict};
 
 /// All cautions in the order of printing. `site` are the site's own for this loop.
@@ -123,19 +123,19 @@ fn raised(record: &Record) -> Vec<Caution> {
              automatic before it is resolved.",
         ));
     }
-    let weak_sampling: Vec<String> = record
+    let sampling = record
         .steps
         .iter()
         .filter(|s| s.verdict == Verdict::Reservation)
-        .filter(|s| s.reasons.iter().any(|r| r.code == ReasonCode::Samples))
-        .map(|s| s.number.to_string())
-        .collect();
-    if let (false, Some(log)) = (weak_sampling.is_empty(), record.test_log()) {
+        .flat_map(|s| &s.reasons)
+        .filter(|r| r.code == ReasonCode::Samples)
+        .min_by(|a, b| a.figure.unwrap_or(0.0).total_cmp(&b.figure.unwrap_or(0.0)));
+    if let Some(reason) = sampling {
         list.push(caution(
             "sampling",
             format!(
-                "The PV has few samples for the speed of the process (logged every {}).",
-                duration(log.interval_s)
+                "The PV has few samples for the speed of the process: {}.",
+                reason.text
             ),
         ));
     }
