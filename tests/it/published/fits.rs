@@ -219,3 +219,47 @@ fn a_hand_calculation_and_the_program_agree() {
         }
     }
 }
+
+#[test]
+fn two_points_of_lags_in_series_give_the_published_figures() {
+    for case in cases("two_point_method.toml") {
+        if case.maybe("t63").is_some() {
+            continue;
+        }
+        let lags = case.numbers("lags_s");
+        // The later point is what the program reads, moved from 1 − 1/e to 0.632 along the response; the
+        // earlier one, which the program does not read, is that of the same response.
+        let step = step_of(lags.iter().sum(), 5.0, |t| 10.0 * lags_in_series(&lags, t));
+        let read_s = read_s(&step);
+        let time_to = |part: f64| {
+            let (mut low, mut high) = (0.0, 2.0 * read_s);
+            while high - low > 1e-9 * read_s {
+                let middle = 0.5 * (low + high);
+                if lags_in_series(&lags, middle) < part {
+                    low = middle;
+                } else {
+                    high = middle;
+                }
+            }
+            0.5 * (low + high)
+        };
+        let read_at = lags_in_series(&lags, read_s);
+        assert!((read_s - time_to(read_at)).abs() < 1e-8 * read_s);
+        let t63 = read_s - (time_to(read_at) - time_to(0.632));
+        let tau = 1.5 * (t63 - time_to(0.283));
+        let theta = t63 - tau;
+        for expected in &case.expected {
+            let found = match expected.quantity.as_str() {
+                "tau" => tau,
+                "theta" => theta,
+                other => panic!("no quantity {other}"),
+            };
+            assert!(
+                (found - expected.value).abs() <= expected.tolerance,
+                "{}: {} {found}",
+                case.name,
+                expected.quantity
+            );
+        }
+    }
+}
