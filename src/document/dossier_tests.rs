@@ -95,3 +95,13 @@ fn a_protective_loop_is_entered_under_its_procedure_alone() {
         "{page}"
     );
 }
+
+#[test]
+fn who_approves_is_found_however_the_role_is_written() {
+    let mut input = sample::dossier_input();
+    for signature in &mut input.signatures {
+        signature.role = signature.role.to_lowercase();
+    }
+    let text = text_of(&[sample::full()], &input);
+    assert!(text.contains("Approved by M. Osei"), "{text}");
+}

@@ -163,7 +163,7 @@ fn document(input: &DossierInput, status: Status) -> DocumentView {
         input
             .signatures
             .iter()
-            .find(|s| s.role.starts_with(role))
+            .find(|s| s.role.to_lowercase().starts_with(role))
             .and_then(|s| s.name.as_deref())
             .map(tidy)
             .unwrap_or_default()
@@ -209,7 +209,7 @@ fn document(input: &DossierInput, status: Status) -> DocumentView {
             ],
             vec![
                 Field::new("Created by", creator.unwrap_or_default(), 1),
-                Field::new("Approved by", named("Approved"), 1),
+                Field::new("Approved by", named("approved"), 1),
                 Field::optional("Client", text(&input.client), 4),
             ],
         ],
