@@ -5,6 +5,7 @@
 //! its cells become samples (`extract`). Whatever cannot be read for certain is an error at its
 //! place; whatever had to be decided is reported with its reason.
 
+mod blanks;
 mod cells;
 pub mod clock;
 mod collect;

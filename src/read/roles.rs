@@ -310,11 +310,11 @@ pub fn assign(
             Err(problem) => problems.push(problem),
         }
     }
-    // "Status" is as often that of something else: a column that was only recognised by its
-    // heading has to hold what a quality is.
+    // "Status" is as often that of something else: such a column has to hold what a quality is.
     found.retain(|found| {
         found.role != Role::Quality
             || names.quality.is_some()
+            || squash(&found.heading).contains("QUAL")
             || holds_quality(table, layout, found.column)
     });
     let has = |role: Role| found.iter().any(|found| found.role == role);

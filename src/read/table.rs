@@ -1,5 +1,6 @@
 //! Sheets of workbooks and delimited text as tables of located cells.
 
+use super::blanks;
 use super::guard::guarded;
 use super::text;
 use crate::notice::{Place, Problem};
@@ -240,6 +241,9 @@ impl Table {
         let mut table = Table::new(file, None);
         table.delimiter = Some(char::from(delimiter));
         table.encoding = Some(decoded.encoding);
+        if delimiter == b' ' {
+            return table.filled_from_blanks(body);
+        }
         let mut reader = csv::ReaderBuilder::new()
             .delimiter(delimiter)
             .has_headers(false)
@@ -285,6 +289,19 @@ impl Table {
             table.end_row();
         }
         Ok(table)
+    }
+
+    /// The lines of a text whose columns white space sets apart.
+    fn filled_from_blanks(mut self, text: &str) -> Result<Self, Problem> {
+        for line in blanks::lines(text, &self.file)? {
+            self.begin_row(line.number);
+            for cell in line.cells {
+                let stored = self.store_text(cell).ok_or_else(|| too_large(&self.file))?;
+                self.cells.push(stored);
+            }
+            self.end_row();
+        }
+        Ok(self)
     }
 
     /// A sheet from its cells in any order; positions count from 0 at A1.
