@@ -11,12 +11,6 @@ use crate::notice::{Place, Problem};
 /// Tokens that a moment may be written in: "Sat 14 Mar 2026 9:05:00 AM".
 const TOKENS_OF_A_MOMENT: usize = 6;
 
-/// A line with its number, 1 for the first, and its cells.
-pub(super) struct Line<'a> {
-    pub number: usize,
-    pub cells: Vec<&'a str>,
-}
-
 /// How many columns the lines have that white space sets apart; `None` where it does not: fewer than
 /// two, or not the same in nearly every line.
 pub(super) fn regular_columns<'a>(lines: impl Iterator<Item = &'a str>) -> Option<usize> {
@@ -43,20 +37,17 @@ pub(super) fn commas_are_decimal(line: &str) -> bool {
         })
 }
 
-/// The lines of a text that hold anything.
+/// The same lines with a tab between the columns.
 ///
 /// # Errors
 /// Where a row of values has another number of cells than the others.
-pub(super) fn lines<'a>(text: &'a str, file: &str) -> Result<Vec<Line<'a>>, Problem> {
-    let filled = || {
-        let all = text.lines().enumerate();
-        all.filter(|(_, line)| !line.trim().is_empty())
-    };
-    let counts: Vec<usize> = filled().map(|(_, line)| narrow(line).len()).collect();
+pub(super) fn with_tabs(text: &str, file: &str) -> Result<String, Problem> {
+    let filled = text.lines().filter(|line| !line.trim().is_empty());
+    let counts: Vec<usize> = filled.map(|line| narrow(line).len()).collect();
     let usual = middle(&counts).unwrap_or(1);
-    let mut lines = Vec::with_capacity(counts.len());
+    let mut tabbed = String::with_capacity(text.len());
     let mut has_begun = false;
-    for (index, line) in filled() {
+    for (index, line) in text.lines().enumerate() {
         let mut cells = narrow(line);
         if cells.len() != usual {
             let wide = wide(line);
@@ -76,12 +67,10 @@ pub(super) fn lines<'a>(text: &'a str, file: &str) -> Result<Vec<Line<'a>>, Prob
             .hint("export again with a semicolon or a tab between the columns"));
         }
         has_begun |= is_row && cells.len() == usual;
-        lines.push(Line {
-            number: index + 1,
-            cells,
-        });
+        tabbed.push_str(&cells.join("\t"));
+        tabbed.push('\n');
     }
-    Ok(lines)
+    Ok(tabbed)
 }
 
 /// Whether cells are those of a sample: a time or a number, then a number.
@@ -127,7 +116,7 @@ fn narrow(line: &str) -> Vec<&str> {
             .rposition(|(_, end)| is_moment(&line[start..*end]))
             .unwrap_or(0);
         let end = tokens.get(next + together).map_or(end, |(_, end)| *end);
-        cells.push(bare(&line[start..end]));
+        cells.push(&line[start..end]);
         next += together + 1;
     }
     cells
@@ -139,7 +128,6 @@ fn wide(line: &str) -> Vec<&str> {
         .flat_map(|part| part.split('\t'))
         .map(str::trim)
         .filter(|cell| !cell.is_empty())
-        .map(bare)
         .collect()
 }
 
@@ -157,12 +145,6 @@ fn is_moment(text: &str) -> bool {
     }
     text.contains(':')
         && stamp(text).is_some_and(|stamp| stamp.date.is_some() && stamp.time_us.is_some())
-}
-
-fn bare(cell: &str) -> &str {
-    cell.strip_prefix('"')
-        .and_then(|cell| cell.strip_suffix('"'))
-        .unwrap_or(cell)
 }
 
 #[cfg(test)]
@@ -183,7 +165,7 @@ mod tests {
             ("Date Time PV OP", vec!["Date Time", "PV", "OP"]),
             (
                 "  09:05:00 71.2 \"no data\"",
-                vec!["09:05:00", "71.2", "no data"],
+                vec!["09:05:00", "71.2", "\"no data\""],
             ),
             ("20260314 71.2 40", vec!["20260314", "71.2", "40"]),
         ] {
@@ -202,15 +184,21 @@ mod tests {
     #[test]
     fn a_row_that_lacks_a_value_is_no_other_row() {
         let text = "Time  PV  OP\n0  71.2  40\n1  40\n2  71.3  40\n";
-        let problem = lines(text, "a.txt")
-            .map(drop)
-            .expect_err("a value is missing");
+        let problem = with_tabs(text, "a.txt").expect_err("a value is missing");
         assert_eq!(
             problem.to_string(),
             "a.txt, line 3: the line has 2 values and the others have 3; between blanks nothing tells which column each belongs to\n    \
              export again with a semicolon or a tab between the columns"
         );
         let text = "Trend of 3 signals\n0 71.2 40\n1 71.2 40\n\n2 signals were left out\n";
-        assert_eq!(lines(text, "a.txt").map(|lines| lines.len()), Ok(4));
+        assert_eq!(
+            with_tabs(text, "a.txt").as_deref(),
+            Ok("Trend	of	3	signals
+0	71.2	40
+1	71.2	40
+
+2	signals	were	left	out
+")
+        );
     }
 }
