@@ -4,6 +4,7 @@ use super::collect::BadCells;
 use super::extract::Understood;
 use super::headings::Role;
 use super::numbers::DecimalSign;
+use super::series::Series;
 use super::table::{Cell, Row};
 use super::tracks::{Track, Tracks};
 use super::values::{self, Value};
@@ -59,7 +60,7 @@ impl FileSamples {
         }
     }
 
-    fn push_pv(&mut self, t_us: i64, reading: Reading) {
+    pub fn push_pv(&mut self, t_us: i64, reading: Reading) {
         self.t_us.push(t_us);
         self.pv.push(reading.value);
         self.good.push(reading.bad.is_none());
@@ -69,9 +70,10 @@ impl FileSamples {
 }
 
 /// A value, and why it is bad where it is.
-struct Reading {
-    value: f64,
-    bad: Option<String>,
+#[derive(Debug, Clone)]
+pub(super) struct Reading {
+    pub value: f64,
+    pub bad: Option<String>,
 }
 
 /// Reads the cells of a loop's signals.
@@ -97,13 +99,42 @@ impl CellReader<'_> {
         wanted: (i64, i64),
         warnings: &mut Vec<Problem>,
     ) -> Result<FileSamples, Vec<Problem>> {
+        let roles = &self.understood.roles;
+        if roles.long || !roles.own_times.is_empty() {
+            return Ok(self.series(tracks, wanted, warnings)?.join(wanted.0));
+        }
         let mut bad_cells = BadCells::default();
         let mut lost = BTreeMap::new();
-        let samples = if self.understood.roles.long {
-            self.joined(tracks, wanted, &mut bad_cells, &mut lost)
-        } else {
-            self.side_by_side(tracks, wanted, &mut bad_cells, &mut lost, warnings)
-        };
+        let samples = self.side_by_side(tracks, wanted, &mut bad_cells, &mut lost, warnings);
+        self.tell(bad_cells, lost, warnings)?;
+        Ok(samples)
+    }
+
+    /// The signals within `wanted`, each at its own times; what OP, SP and mode were before is kept, since it
+    /// is still held within.
+    ///
+    /// # Errors
+    /// As [`CellReader::samples`].
+    pub fn series(
+        &self,
+        tracks: &Tracks,
+        wanted: (i64, i64),
+        warnings: &mut Vec<Problem>,
+    ) -> Result<Series, Vec<Problem>> {
+        let mut bad_cells = BadCells::default();
+        let mut lost = BTreeMap::new();
+        let series = self.each_signal(tracks, wanted, &mut bad_cells, &mut lost);
+        self.tell(bad_cells, lost, warnings)?;
+        Ok(series)
+    }
+
+    /// Refuses what cannot be read, warns of what was lost.
+    fn tell(
+        &self,
+        bad_cells: BadCells,
+        lost: BTreeMap<Role, Lost>,
+        warnings: &mut Vec<Problem>,
+    ) -> Result<(), Vec<Problem>> {
         bad_cells.finish(self.understood.table.place())?;
         for (role, Lost(causes)) in lost {
             let total: usize = causes.values().sum();
@@ -121,7 +152,7 @@ impl CellReader<'_> {
                 ),
             ));
         }
-        Ok(samples)
+        Ok(())
     }
 
     fn place(&self, row: Row<'_>, column: usize) -> Place {
@@ -250,10 +281,13 @@ impl CellReader<'_> {
             ..FileSamples::default()
         };
         let mut mode_held = String::new();
-        for (t_us, index) in within(&tracks.pv, wanted) {
+        let Some(pv) = &tracks.pv else {
+            return samples;
+        };
+        for (t_us, index) in within(pv, wanted) {
             let row = table.row(index);
             let is_empty = |column: usize| row.cell(column).is_empty();
-            if own_times && is_empty(tracks.pv.column) {
+            if own_times && is_empty(pv.column) {
                 samples.push_pv(
                     t_us,
                     Reading {
@@ -262,7 +296,7 @@ impl CellReader<'_> {
                     },
                 );
             } else {
-                let reading = self.pv(row, tracks.pv.column, bad_cells);
+                let reading = self.pv(row, pv.column, bad_cells);
                 samples.push_pv(t_us, reading);
             }
             let mut other = |track: &Track, role: Role| {
@@ -294,36 +328,47 @@ impl CellReader<'_> {
 
     /// Whether PV and OP stand in rows of their own.
     fn has_own_times(&self, tracks: &Tracks, wanted: (i64, i64)) -> bool {
-        let Some(op) = &tracks.op else { return false };
+        let (Some(pv), Some(op)) = (&tracks.pv, &tracks.op) else {
+            return false;
+        };
         let (mut rows, mut pv_only, mut op_only) = (0, 0, 0);
-        for (_, index) in within(&tracks.pv, wanted) {
+        for (_, index) in within(pv, wanted) {
             let row = self.understood.table.row(index);
             let has = |column: usize| !matches!(row.cell(column), Cell::Empty);
             rows += 1;
-            pv_only += usize::from(has(tracks.pv.column) && !has(op.column));
-            op_only += usize::from(!has(tracks.pv.column) && has(op.column));
+            pv_only += usize::from(has(pv.column) && !has(op.column));
+            op_only += usize::from(!has(pv.column) && has(op.column));
         }
         let share = |count: usize| count as f64 > OWN_TIMES * rows as f64;
         share(pv_only) && share(op_only)
     }
 
-    /// A long table: PV at its own times, OP, SP and mode held; an OP move between two samples of
-    /// the PV gets a row of its own, without a PV, so that its time is kept.
-    fn joined(
+    fn each_signal(
         &self,
         tracks: &Tracks,
         wanted: (i64, i64),
         bad_cells: &mut BadCells,
         lost: &mut BTreeMap<Role, Lost>,
-    ) -> FileSamples {
+    ) -> Series {
         let table = self.understood.table;
+        let until = (i64::MIN, wanted.1);
+        let is_long = self.understood.roles.long;
+        let pv = tracks.pv.as_ref().map(|track| {
+            within(track, wanted)
+                .map(|(t_us, index)| (t_us, self.pv(table.row(index), track.column, bad_cells)))
+                .collect()
+        });
         let mut series = |track: &Option<Track>, role: Role| -> Option<Vec<(i64, f64)>> {
             let track = track.as_ref()?;
-            // What stood before the cut is still held in it.
-            let until = (i64::MIN, wanted.1);
             let read = |(t_us, index)| {
                 let row = table.row(index);
-                let value = match self.bad_quality(row, bad_cells) {
+                // In a long table each row has its own quality; else the column is that of the PV.
+                let quality = if is_long {
+                    self.bad_quality(row, bad_cells)
+                } else {
+                    None
+                };
+                let value = match quality {
                     None => self.other(row, track.column, role, bad_cells, lost),
                     Some(cause) => {
                         let Lost(causes) = lost.entry(role).or_default();
@@ -341,41 +386,15 @@ impl CellReader<'_> {
                     .collect(),
             )
         };
-        let op = series(&tracks.op, Role::Op).unwrap_or_default();
+        let op = series(&tracks.op, Role::Op);
         let sp = series(&tracks.sp, Role::Sp);
-        let mode: Option<Vec<(i64, String)>> = tracks.mode.as_ref().map(|track| {
-            within(track, (i64::MIN, wanted.1))
+        let mode = tracks.mode.as_ref().map(|track| {
+            within(track, until)
                 .map(|(t_us, index)| (t_us, table.row(index).cell(track.column).text()))
                 .filter(|(_, mode)| !mode.is_empty())
                 .collect()
         });
-        let mut moves: Vec<i64> = op
-            .windows(2)
-            .filter(|pair| pair[1].1 != pair[0].1 && pair[1].0 >= wanted.0)
-            .map(|pair| pair[1].0)
-            .collect();
-        moves.reverse();
-        let mut samples = FileSamples::default();
-        let not_sampled = || Reading {
-            value: f64::NAN,
-            bad: None,
-        };
-        for (t_us, index) in within(&tracks.pv, wanted) {
-            while let Some(at) = moves.pop_if(|at| *at <= t_us) {
-                if at < t_us {
-                    samples.push_pv(at, not_sampled());
-                }
-            }
-            let reading = self.pv(table.row(index), tracks.pv.column, bad_cells);
-            samples.push_pv(t_us, reading);
-        }
-        while let Some(at) = moves.pop() {
-            samples.push_pv(at, not_sampled());
-        }
-        samples.op = held(&samples.t_us, &op, f64::NAN);
-        samples.sp = sp.map(|sp| held(&samples.t_us, &sp, f64::NAN));
-        samples.mode = mode.map(|mode| held(&samples.t_us, &mode, String::new()));
-        samples
+        Series { pv, op, sp, mode }
     }
 }
 
@@ -385,22 +404,6 @@ fn within(track: &Track, wanted: (i64, i64)) -> impl Iterator<Item = (i64, usize
     let first = t_us.partition_point(|t| *t < wanted.0);
     let end = t_us.partition_point(|t| *t <= wanted.1).max(first);
     (first..end).map(|k| (t_us[k], track.rows[track.ordered.rows[k]]))
-}
-
-/// The value that holds at each time: the last one at or before it.
-fn held<T: Clone>(t_us: &[i64], series: &[(i64, T)], before: T) -> Vec<T> {
-    let mut next = 0;
-    t_us.iter()
-        .map(|t| {
-            while series.get(next).is_some_and(|(at, _)| at <= t) {
-                next += 1;
-            }
-            match next {
-                0 => before.clone(),
-                _ => series[next - 1].1.clone(),
-            }
-        })
-        .collect()
 }
 
 fn is_outside(value: f64, span: Option<Span>) -> bool {

@@ -334,3 +334,74 @@ fn offsets_that_change_within_the_log() {
     assert_eq!(log.sources[0].fold, None);
     assert_eq!(log.sources[0].to.to_string(), "2026-10-25 03:04:57");
 }
+
+/// Two files, one after the other, each with the times that `time` writes.
+fn two_files(truth: &Truth, time: impl Fn(usize) -> String) -> Files {
+    let headings = [
+        "Time",
+        "FIC-301.PV",
+        "FIC-301.OP",
+        "FIC-301.SP",
+        "FIC-301.MODE",
+    ];
+    let rows = truth.table(&headings, time);
+    let part =
+        |from: usize, to: usize| delimited(&[&rows[..1], &rows[1 + from..1 + to]].concat(), ";");
+    Files::new("a.csv; b.csv")
+        .with("a.csv", part(0, 100))
+        .with("b.csv", part(100, ROWS))
+}
+
+#[test]
+fn summer_time_that_ends_between_two_files() {
+    let truth = truth();
+    // 03:00 is 02:00 again on 2026-10-25, a Sunday.
+    let from: NaiveDateTime = "2026-10-25T02:55:00".parse().expect("a moment");
+    let shown = |k: usize| {
+        let back = TimeDelta::hours(if k < 100 { 0 } else { -1 });
+        from + TimeDelta::seconds(INTERVAL_S * k as i64) + back
+    };
+    let plain = |k: usize| shown(k).format("%Y-%m-%d %H:%M:%S").to_string();
+    let log = two_files(&truth, plain).read();
+    truth.has_values_of(&log, "taken as the end of summer time");
+    assert_eq!(
+        log.sources[1].fold.as_deref(),
+        Some("the clock goes back by an hour after a.csv ends: taken as the end of summer time")
+    );
+    let zone = LogRule {
+        zone: Some(chrono_tz::Europe::Berlin),
+        ..LogRule::default()
+    };
+    let log = two_files(&truth, plain).rule(zone).read();
+    truth.has_values_of(&log, "known from the zone");
+    let with_offset = |k: usize| {
+        let offset = if k < 100 { "+02:00" } else { "+01:00" };
+        format!("{}{offset}", shown(k).format("%Y-%m-%dT%H:%M:%S"))
+    };
+    let log = two_files(&truth, with_offset).read();
+    truth.has_values_of(&log, "offsets");
+    // The clock of the first file goes on in the second.
+    assert_eq!(log.sources[1].from.to_string(), "2026-10-25 03:00:00");
+}
+
+#[test]
+fn files_that_overlap_by_an_hour_are_no_end_of_summer_time() {
+    // A Saturday; of the hour that both hold the later file's samples stand.
+    let rows = |from: &str, rows: i64, value: &str| {
+        let from: NaiveDateTime = from.parse().expect("a moment");
+        let rows: String = (0..rows)
+            .map(|k| format!("{};{value};40\n", from + TimeDelta::minutes(k)))
+            .collect();
+        format!("Time;PV;OP\n{rows}")
+    };
+    let log = Files::new("a.csv; b.csv")
+        .with("a.csv", rows("2026-03-14T08:00:00", 120, "1"))
+        .with("b.csv", rows("2026-03-14T09:00:00", 120, "2"))
+        .read();
+    assert_eq!(log.samples.t_s.len(), 180);
+    assert_eq!(log.samples.pv[59..61], [1.0, 2.0]);
+    assert_eq!(
+        log.warnings[0].to_string(),
+        "b.csv: the file begins before a.csv ends; of two samples at one moment the later file's is used"
+    );
+}

@@ -2,18 +2,21 @@
 //! for bit at the digits that the form holds. `tests/README.md` lists form and test.
 
 mod clocks;
+mod layouts;
+mod refusals;
 
 mod samples;
 mod text;
 mod workbooks;
 
 use crate::plant::Random;
-use crate::support::{folder, holds_as_kept, root};
+use crate::support::{files_below, folder, holds_as_kept, root};
 use asleft::model::{Kind, ProcessModel};
 use asleft::quantity::Span;
 use asleft::read::{ColumnNames, FileCache, LogRead, LogRequest, LogRule, read_log};
 use asleft::trace::Clock;
 use chrono::{NaiveDateTime, TimeDelta};
+use std::collections::BTreeSet;
 use std::fmt::Write;
 use std::fs;
 use tempfile::TempDir;
@@ -227,4 +230,44 @@ impl Files {
         let texts: Vec<String> = problems.iter().map(ToString::to_string).collect();
         texts.join("\n")
     }
+}
+
+/// The tests of this folder but those of refusals, as `tests/README.md` names them.
+fn tests_of_forms() -> BTreeSet<String> {
+    let files = files_below(&root().join("tests/it/forms"), ".rs");
+    let mut tests = BTreeSet::new();
+    for file in files {
+        let module = file
+            .file_stem()
+            .expect("a name")
+            .to_string_lossy()
+            .into_owned();
+        if ["mod", "refusals"].contains(&module.as_str()) {
+            continue;
+        }
+        let text = fs::read_to_string(&file).expect("a source is text");
+        let mut is_test = false;
+        for line in text.lines() {
+            if is_test && let Some(name) = line.strip_prefix("fn ") {
+                let name = name.split('(').next().unwrap_or_default();
+                tests.insert(format!("{module}::{name}"));
+            }
+            is_test = line == "#[test]";
+        }
+    }
+    tests
+}
+
+#[test]
+fn the_list_of_forms_names_every_test() {
+    let text = fs::read_to_string(root().join("tests/README.md")).expect("the list");
+    let named: BTreeSet<String> = text
+        .split('`')
+        .filter(|part| part.split("::").count() == 2 && !part.starts_with("forms::"))
+        .filter(|part| !part.contains(' '))
+        .map(str::to_owned)
+        .collect();
+    let tests = tests_of_forms();
+    assert!(tests.len() > 30, "{tests:?}");
+    assert_eq!(named, tests);
 }
