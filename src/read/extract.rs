@@ -373,6 +373,7 @@ fn read_table(
         compressed: false,
         gaps: Vec::new(),
         clock_format: moments.format,
+        decimal,
         roles: found,
     };
     let mut read = FileRead {

@@ -18,11 +18,13 @@ mod join;
 pub mod layout;
 pub mod numbers;
 pub mod order;
+mod proposal;
 pub mod roles;
 pub mod samples;
 pub mod source;
 pub mod stamp;
 pub mod table;
+mod tags;
 pub mod text;
 mod tracks;
 pub mod units;
@@ -38,6 +40,7 @@ use std::path::PathBuf;
 
 pub use guard::is_guarded;
 pub use numbers::DecimalSign;
+pub use proposal::Proposal;
 pub use roles::RoleFound;
 pub use samples::{read_samples_csv, samples_csv};
 pub use source::FileCache;
@@ -212,6 +215,8 @@ pub struct Source {
     pub gaps: Vec<Gap>,
     /// How the clock is written.
     pub clock_format: String,
+    /// Decimal sign of its numbers.
+    pub decimal: DecimalSign,
     /// Which column got which role, and why.
     pub roles: Vec<RoleFound>,
 }
