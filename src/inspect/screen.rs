@@ -285,7 +285,11 @@ fn roles(roles: &[RoleFound], table: &TableInspection) -> Vec<(&'static str, Str
             Some(unit) => format!(", in {unit}"),
             None => String::new(),
         };
-        let column = &table.columns[found.column].column;
+        let column = table
+            .columns
+            .iter()
+            .find(|column| column.index == found.column)
+            .map_or("", |column| &column.column);
         let heading = in_quotes(&found.heading);
         lines.push((
             found.role.name(),
@@ -295,9 +299,7 @@ fn roles(roles: &[RoleFound], table: &TableInspection) -> Vec<(&'static str, Str
     let without: Vec<&ColumnFound> = table
         .columns
         .iter()
-        .enumerate()
-        .filter(|(index, _)| !roles.iter().any(|found| found.column == *index))
-        .map(|(_, column)| column)
+        .filter(|column| !roles.iter().any(|found| found.column == column.index))
         .collect();
     if without.is_empty() {
         return lines;

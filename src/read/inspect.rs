@@ -17,12 +17,14 @@ use serde::Serialize;
 use std::collections::BTreeMap;
 use std::path::Path;
 
-/// How many rows are looked at to say what a column holds.
-const ROWS_LOOKED_AT: usize = 20_000;
+/// How many cells are looked at to say what the columns hold: fewer rows of a table that is very wide.
+const CELLS_LOOKED_AT: usize = 2_000_000;
 /// How many columns are tried as the one that is missing.
 const COLUMNS_SUPPOSED: usize = 6;
 /// What a column of measured values holds.
 const NUMBERS: &str = "numbers";
+/// What a column without any cell holds.
+const NOTHING: &str = "nothing";
 
 /// What a file holds.
 #[derive(Debug, Serialize)]
@@ -63,6 +65,9 @@ pub struct TableInspection {
 /// A column of a table.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize)]
 pub struct ColumnFound {
+    /// Position, 0 for the first column of the sheet.
+    #[serde(skip)]
+    pub index: usize,
     /// As a person finds it: `C` in a sheet, `#3` in a text file.
     pub column: String,
     /// Its heading; empty where it has none.
@@ -189,17 +194,17 @@ pub fn inspect(
     cache: &FileCache,
 ) -> Result<Inspection, Problem> {
     let file = cache.open(root, request.file)?;
-    if let Some(sheet) = request.sheet
-        && file.sheet(sheet).is_none()
-    {
-        return Err(Problem::error(
-            Place::file(request.file),
-            format!("there is no sheet \"{sheet}\""),
-        ));
-    }
-    let wanted = |table: &&Table| match (request.sheet, &table.sheet) {
-        (Some(wanted), Some(sheet)) => sheet.trim().to_lowercase() == wanted.trim().to_lowercase(),
-        _ => true,
+    let tables = match request.sheet {
+        Some(sheet) => {
+            let table = file.sheet(sheet).ok_or_else(|| {
+                Problem::error(
+                    Place::file(request.file),
+                    format!("there is no sheet \"{sheet}\""),
+                )
+            })?;
+            vec![table?]
+        }
+        None => file.tables()?,
     };
     let look = Look {
         root,
@@ -209,10 +214,8 @@ pub fn inspect(
     Ok(Inspection {
         file: file.name.clone(),
         sha256: file.sha256.clone(),
-        tables: file
-            .tables
-            .iter()
-            .filter(wanted)
+        tables: tables
+            .into_iter()
             .map(|table| look.at_table(table))
             .collect(),
     })
@@ -559,12 +562,13 @@ fn suppositions(rule: &LogRule) -> [Vec<Supposition>; 3] {
     ]
 }
 
-/// Every column with what it holds.
+/// Every column that has a heading or holds anything.
 fn columns_of(table: &Table, layout: &Layout) -> Vec<ColumnFound> {
     layout
         .headings
         .iter()
         .map(|heading| ColumnFound {
+            index: heading.column,
             column: if table.sheet.is_some() {
                 column_letters(heading.column)
             } else {
@@ -573,6 +577,7 @@ fn columns_of(table: &Table, layout: &Layout) -> Vec<ColumnFound> {
             heading: heading.text.clone(),
             holds: what_it_holds(table, layout, heading.column),
         })
+        .filter(|column| !column.heading.is_empty() || column.holds != NOTHING)
         .collect()
 }
 
@@ -580,7 +585,8 @@ fn what_it_holds(table: &Table, layout: &Layout, column: usize) -> String {
     let (mut numbers, mut moments) = (0, 0);
     let mut range: Option<[f64; 2]> = None;
     let mut word = None;
-    let end = table.len().min(layout.data_start + ROWS_LOOKED_AT);
+    let rows = (CELLS_LOOKED_AT / table.width().max(1)).max(20);
+    let end = table.len().min(layout.data_start + rows);
     for index in layout.data_start..end {
         let value = match table.row(index).cell(column) {
             Cell::Empty => continue,
@@ -605,7 +611,7 @@ fn what_it_holds(table: &Table, layout: &Layout, column: usize) -> String {
         }
     }
     match (numbers, moments, range, word) {
-        (0, 0, _, None) => "nothing".to_owned(),
+        (0, 0, _, None) => NOTHING.to_owned(),
         (0, 0, _, Some(word)) => {
             let word: String = word.chars().take(20).collect();
             format!("text such as \"{word}\"")
