@@ -438,6 +438,7 @@ impl Reading<'_> {
             compressed: false,
             gaps: Vec::new(),
             clock_format: moments.format,
+            decimal,
             roles: found,
         };
         let mut read = FileRead {
