@@ -1,17 +1,19 @@
 //! From located cells to the samples of one loop.
 
 use super::cells::{CellReader, FileSamples};
-use super::clock::{self, ClockRules, Moments, Scale, TimeColumns};
+use super::clock::{self, ClockRules, Moments, NO_TIME, Scale, TimeColumns};
 use super::collect::BadCells;
+use super::columns::{self, Columns};
 use super::headings::{Owner, Role, meaning, squash};
 use super::layout::{self, Layout};
-use super::numbers::{DecimalSign, Evidence, Shape, Undecided, shape};
+use super::numbers::{Shape, Undecided, shape};
 use super::order::Ordered;
 use super::roles::{self, Roles};
+use super::rows::Rows;
 use super::source::{FileCache, SourceFile};
 use super::stamp::{MICROSECONDS, stamp};
 use super::table::{Cell, Table};
-use super::tracks::tracks;
+use super::tracks::{Tracks, tracks};
 use super::{FileReference, LogRead, LogRequest, LogRule, Source, TimeUnit, join, units};
 use crate::notice::{Place, Problem};
 use crate::trace::Moment;
@@ -73,8 +75,8 @@ fn read_file(
         .unwrap_or_default();
     let understood = choose_table(request, &rule, &file, reference)?;
     check_units(request, &understood).map_err(one)?;
-    let decimal = decimal_sign(&understood, &rule).map_err(one)?;
-    read_table(request, &rule, &file, &understood, decimal, before)
+    let columns = read_columns(&understood, &rule).map_err(one)?;
+    read_table(request, &rule, &file, &understood, columns, before)
 }
 
 /// The table of the file that holds the loop: the sheet named, or the only one that can be read.
@@ -229,37 +231,9 @@ fn check_units(request: &LogRequest, understood: &Understood<'_>) -> Result<(), 
     Ok(())
 }
 
-/// The decimal sign of a table: as given, or as its numbers say.
-pub(super) fn decimal_sign(
-    understood: &Understood<'_>,
-    rule: &LogRule,
-) -> Result<DecimalSign, Problem> {
-    if let Some(decimal) = rule.decimal {
-        return Ok(decimal);
-    }
+/// Reads the columns of the loop, and with them the decimal sign of the table.
+fn read_columns(understood: &Understood<'_>, rule: &LogRule) -> Result<Columns, Problem> {
     let table = understood.table;
-    let mut columns: Vec<usize> = [Role::Pv, Role::Op, Role::Sp, Role::Value]
-        .into_iter()
-        .filter_map(|role| understood.roles.column(role))
-        .collect();
-    if let TimeColumns::Single(time) = understood.roles.time {
-        columns.push(time);
-    }
-    columns.sort_unstable();
-    columns.dedup();
-    let mut cells = vec![Cell::Empty; columns.len()];
-    let mut evidence: Evidence<(usize, usize)> = Evidence::default();
-    for index in understood.layout.data_start..table.len() {
-        table.pick(index, &columns, &mut cells);
-        for (cell, &column) in cells.iter().zip(&columns) {
-            if let Cell::Text(text) = cell {
-                evidence.observe(text, || (table.row(index).number, column));
-            }
-        }
-        if evidence.is_full() {
-            break;
-        }
-    }
     let place = |(row, column): (usize, usize)| {
         let heading = &understood.layout.headings[column].text;
         table
@@ -267,7 +241,8 @@ pub(super) fn decimal_sign(
             .row(row)
             .column(column, (!heading.is_empty()).then_some(heading.as_str()))
     };
-    evidence.decide(table.delimiter).map_err(|undecided| match undecided {
+    columns::read(understood, rule, |undecided| {
+        match undecided {
         Undecided::Either { at, text } => Problem::error(
             place(at),
             format!("\"{text}\" may be a number with decimals or with thousands, and no other cell tells which"),
@@ -284,6 +259,7 @@ pub(super) fn decimal_sign(
             ),
         )
         .hint("export again with one decimal sign"),
+    }
     })
 }
 
@@ -292,11 +268,12 @@ fn read_table(
     rule: &LogRule,
     file: &SourceFile,
     understood: &Understood<'_>,
-    decimal: DecimalSign,
+    mut columns: Columns,
     before: Option<&FileRead>,
 ) -> Result<FileRead, Vec<Problem>> {
     let one = |problem: Problem| vec![problem];
     let Understood { table, roles, .. } = understood;
+    let decimal = columns.decimal;
     let mut warnings = Vec::new();
     let rows = rows_of_loop(request, understood);
     if rows.is_empty() {
@@ -323,33 +300,50 @@ fn read_table(
         unit: rule.time_unit.or(heading_unit),
         decimal,
     };
-    let moments = clock::read(table, &rows, roles.time, &clock_rules).map_err(one)?;
+    let moments = match columns.moments(&rows) {
+        Some(moments) => moments,
+        None => clock::read(table, &rows, roles.time, &clock_rules).map_err(one)?,
+    };
     warnings.extend(moments.warnings.iter().cloned());
     let (rows, moments) = timed_rows(understood, rows, moments, &mut warnings)?;
     let scale = moments.scale;
-    let t_us: Vec<i64> = moments.t_us.iter().map(|t| t.unwrap_or_default()).collect();
-    let first_raw = t_us.iter().copied().min().unwrap_or_default();
-    let last_raw = t_us.last().copied().unwrap_or_default();
+    let first_raw = moments.t_us.iter().copied().min().unwrap_or_default();
+    let last_raw = moments.t_us.last().copied().unwrap_or_default();
+    let row_count = rows.len();
     let shift_us = join::carried_shift(before, first_raw);
-    let tracks = tracks(request, rule, understood, &rows, &t_us, scale, shift_us)?;
-    let main = &tracks.pv.ordered;
-    let wanted = join::wanted(request, scale, table, &main.t_us).map_err(one)?;
-    let reader = CellReader {
-        understood,
-        decimal,
-        rule,
+    let tracks = tracks(
         request,
-    };
-    let samples = reader.samples(&tracks, wanted, &mut warnings)?;
-    warnings.extend(same_moments(main, table.place()));
+        rule,
+        understood,
+        &rows,
+        moments.t_us,
+        scale,
+        shift_us,
+    )?;
+    let main = tracks.main();
+    let wanted = join::wanted(request, scale, table, &main.t_us).map_err(one)?;
+    let mut told_of_order: Vec<Problem> = same_moments(main, table.place()).into_iter().collect();
     if main.newest_first {
-        warnings.push(Problem::warning(
+        told_of_order.push(Problem::warning(
             table.place(),
             "rows stand newest first and were read from the last",
         ));
     }
+    let (duplicates, sorted_rows) = (main.duplicates, main.sorted_rows);
+    let (fold, shift_us) = (main.fold.clone(), main.shift_us);
     let mut found = roles.found.clone();
-    found.extend(tracks.named.iter().cloned());
+    if let Tracks::Long(long) = &tracks {
+        found.extend(long.named.iter().cloned());
+    }
+    let reader = CellReader {
+        understood,
+        quality: roles.column(Role::Quality),
+        decimal,
+        rule,
+        request,
+    };
+    let samples = reader.samples(tracks, &mut columns, wanted, &mut warnings)?;
+    warnings.extend(told_of_order);
     let dated = |t_us: i64| {
         if scale.is_dated() {
             Moment::Dated(clock::moment(t_us))
@@ -361,14 +355,14 @@ fn read_table(
         file: file.name.clone(),
         sheet: table.sheet.clone(),
         sha256: file.sha256.clone(),
-        rows: rows.len(),
+        rows: row_count,
         samples: samples.good_count(),
         from: dated(samples.t_us.first().copied().unwrap_or_default()),
         to: dated(samples.t_us.last().copied().unwrap_or_default()),
-        bad: samples.bad_by_cause(),
-        duplicates: main.duplicates,
-        sorted_rows: main.sorted_rows,
-        fold: main.fold.clone(),
+        bad: samples.bad.clone(),
+        duplicates,
+        sorted_rows,
+        fold,
         interval_s: 0.0,
         jitter_s: 0.0,
         compressed: false,
@@ -383,7 +377,7 @@ fn read_table(
         manual_values: rule.manual_values.clone(),
         warnings,
         last_raw,
-        shift_us: main.shift_us,
+        shift_us,
     };
     read.describe_sampling();
     Ok(read)
@@ -405,7 +399,7 @@ fn same_moments(main: &Ordered, place: Place) -> Option<Problem> {
 }
 
 /// Rows of data that belong to the loop: all of them, or those that bear its tag.
-fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Vec<usize> {
+fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Rows {
     let Understood {
         table,
         layout,
@@ -413,14 +407,17 @@ fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Vec<usize>
     } = understood;
     let all = layout.data_start..table.len();
     let Some(column) = roles.column(Role::Tag) else {
-        return all.collect();
+        return Rows::Run(all);
     };
     let mut known: BTreeMap<String, bool> = BTreeMap::new();
     all.filter(|&index| {
-        let text = table.row(index).cell(column).text();
-        if let Some(belongs) = known.get(&text) {
+        let cell = table.cell(index, column);
+        if let Cell::Text(text) = cell
+            && let Some(belongs) = known.get(text)
+        {
             return *belongs;
         }
+        let text = cell.text();
         let named = [
             &request.columns.pv,
             &request.columns.op,
@@ -446,11 +443,11 @@ fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Vec<usize>
 /// time is an error.
 fn timed_rows(
     understood: &Understood<'_>,
-    rows: Vec<usize>,
+    rows: Rows,
     moments: Moments,
     warnings: &mut Vec<Problem>,
-) -> Result<(Vec<usize>, Moments), Vec<Problem>> {
-    if moments.t_us.iter().all(Option::is_some) {
+) -> Result<(Rows, Moments), Vec<Problem>> {
+    if !moments.t_us.contains(&NO_TIME) {
         return Ok((rows, moments));
     }
     let Understood { table, roles, .. } = understood;
@@ -467,8 +464,8 @@ fn timed_rows(
     let mut left_out = 0;
     let mut kept_rows = Vec::with_capacity(rows.len());
     let mut kept_times = Vec::with_capacity(rows.len());
-    for (&index, t_us) in rows.iter().zip(&moments.t_us) {
-        if t_us.is_some() {
+    for (index, t_us) in rows.iter().zip(&moments.t_us) {
+        if *t_us != NO_TIME {
             kept_rows.push(index);
             kept_times.push(*t_us);
             continue;
@@ -508,5 +505,5 @@ fn timed_rows(
         t_us: kept_times,
         ..moments
     };
-    Ok((kept_rows, moments))
+    Ok((kept_rows.into_iter().collect(), moments))
 }

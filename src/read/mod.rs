@@ -8,6 +8,7 @@
 mod cells;
 pub mod clock;
 mod collect;
+mod columns;
 mod dates;
 mod delimited;
 mod extract;
@@ -20,7 +21,7 @@ pub mod layout;
 pub mod numbers;
 pub mod order;
 pub mod roles;
-mod rows;
+pub mod rows;
 pub mod samples;
 mod sheet;
 pub mod source;

@@ -158,6 +158,78 @@ pub fn number(text: &str, sign: DecimalSign) -> Option<f64> {
     finite(text.parse().ok()?, minus)
 }
 
+/// Powers of ten that a double holds exactly.
+const EXACT_POWERS: [f64; 23] = [
+    1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16,
+    1e17, 1e18, 1e19, 1e20, 1e21, 1e22,
+];
+
+/// The number of a text as most exports write it (`-71.25`, `7.125E+01`), and whether the decimal sign
+/// stands in it; `None` where [`number`] has to look.
+///
+/// What it gives is what [`number`] gives: digits below 2^53 and a power of ten up to 10^22 are doubles
+/// themselves, so that one division or multiplication rounds once and to the nearest (W.D. Clinger,
+/// How to Read Floating Point Numbers Accurately, PLDI 1990, section 3).
+pub(super) fn plain(text: &str, sign: DecimalSign) -> Option<(f64, bool)> {
+    // Nineteen digits could overflow what they are counted in.
+    const MOST_LETTERS: usize = 18;
+    let bytes = text.as_bytes();
+    let (is_negative, digits) = match bytes {
+        [b'-', rest @ ..] => (true, rest),
+        all => (false, all),
+    };
+    if digits.len() > MOST_LETTERS || !digits.first()?.is_ascii_digit() {
+        return None;
+    }
+    let point = sign.sign() as u8;
+    let mut mantissa = 0_u64;
+    let mut decimals_from = None;
+    let mut exponent = 0_i32;
+    let mut end = digits.len();
+    for (at, byte) in digits.iter().enumerate() {
+        match byte {
+            b'0'..=b'9' => mantissa = mantissa * 10 + u64::from(byte - b'0'),
+            _ if *byte == point && decimals_from.is_none() => decimals_from = Some(at + 1),
+            b'e' | b'E' => {
+                exponent = plain_exponent(&digits[at + 1..])?;
+                end = at;
+                break;
+            }
+            _ => return None,
+        }
+    }
+    let decimals = decimals_from.map_or(0, |from| end - from);
+    if decimals_from == Some(end) || mantissa >= 1 << 53 {
+        return None;
+    }
+    let power = exponent - decimals as i32;
+    let factor = *EXACT_POWERS.get(power.unsigned_abs() as usize)?;
+    let magnitude = if power < 0 {
+        mantissa as f64 / factor
+    } else {
+        mantissa as f64 * factor
+    };
+    let value = if is_negative { -magnitude } else { magnitude };
+    Some((value, decimals_from.is_some()))
+}
+
+/// One or two digits, perhaps with a sign before them.
+fn plain_exponent(text: &[u8]) -> Option<i32> {
+    let (is_negative, digits) = match text {
+        [b'-', rest @ ..] => (true, rest),
+        [b'+', rest @ ..] => (false, rest),
+        all => (false, all),
+    };
+    let value = match digits {
+        [one @ b'0'..=b'9'] => i32::from(one - b'0'),
+        [ten @ b'0'..=b'9', one @ b'0'..=b'9'] => {
+            10 * i32::from(ten - b'0') + i32::from(one - b'0')
+        }
+        _ => return None,
+    };
+    Some(if is_negative { -value } else { value })
+}
+
 fn finite(magnitude: f64, minus: &str) -> Option<f64> {
     magnitude.is_finite().then_some(if minus.is_empty() {
         magnitude
@@ -204,6 +276,23 @@ impl<W> Default for Evidence<W> {
 }
 
 impl<W: Clone> Evidence<W> {
+    /// Whether a number with this decimal sign was seen: more of them say nothing new.
+    pub(super) fn knows(&self, sign: DecimalSign) -> bool {
+        match sign {
+            DecimalSign::Point => self.point.is_some(),
+            DecimalSign::Comma => self.comma.is_some(),
+        }
+    }
+
+    /// Takes what the texts that follow these said into account.
+    pub(super) fn followed_by(self, later: Self) -> Self {
+        Evidence {
+            point: self.point.or(later.point),
+            comma: self.comma.or(later.comma),
+            either: self.either.or(later.either),
+        }
+    }
+
     /// Takes one text into account.
     pub fn observe(&mut self, text: &str, at: impl FnOnce() -> W) {
         // Most texts of a long log say again what the first ones said.
@@ -258,6 +347,7 @@ impl<W: Clone> Evidence<W> {
 #[cfg(test)]
 mod tests {
     use super::*;
+    use proptest::prelude::*;
 
     #[test]
     fn numbers_read_with_their_sign() {
@@ -290,6 +380,52 @@ mod tests {
             ("--5", Point, None),
         ] {
             assert_eq!(number(text, sign), expected, "{text} with {sign:?}");
+        }
+    }
+
+    proptest! {
+        #![proptest_config(ProptestConfig { failure_persistence: None, ..ProptestConfig::default() })]
+
+        #[test]
+        fn the_quick_way_gives_the_same_double(text in "-?[0-9]{1,17}([.][0-9]{1,8})?([eE][+-]?[0-9]{1,2})?") {
+            if let Some((value, has_sign)) = plain(&text, DecimalSign::Point) {
+                prop_assert_eq!(number(&text, DecimalSign::Point).map(f64::to_bits), Some(value.to_bits()));
+                prop_assert_eq!(has_sign, text.contains('.'));
+            }
+            let comma = text.replace('.', ",");
+            if let Some((value, _)) = plain(&comma, DecimalSign::Comma) {
+                prop_assert_eq!(number(&comma, DecimalSign::Comma).map(f64::to_bits), Some(value.to_bits()));
+            }
+        }
+
+        #[test]
+        fn the_quick_way_takes_nothing_that_is_no_number(text in "[-+0-9.,eE% ]{0,8}") {
+            for sign in [DecimalSign::Point, DecimalSign::Comma] {
+                if let Some((value, _)) = plain(&text, sign) {
+                    prop_assert_eq!(number(&text, sign), Some(value));
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn usual_numbers_go_the_quick_way() {
+        for text in ["0", "71.234", "-40.00", "7.1234E+01", "1e-3"] {
+            assert!(plain(text, DecimalSign::Point).is_some(), "{text}");
+        }
+        for text in [
+            "",
+            "-",
+            ".5",
+            "5.",
+            "1.2.3",
+            "1,5",
+            "+1",
+            "9007199254740993",
+            "1e99",
+            "1e",
+        ] {
+            assert_eq!(plain(text, DecimalSign::Point), None, "{text}");
         }
     }
 

@@ -5,66 +5,89 @@ use super::clock::Scale;
 use super::extract::Understood;
 use super::headings::{Owner, Role, Sureness, meaning, squash};
 use super::order::{self, Ordered};
+use super::rows::Rows;
+use super::table::Cell;
 use super::{LogRequest, LogRule};
 use crate::notice::Problem;
 use std::collections::BTreeMap;
 
 /// One signal of a table: its column, and its rows in order of time.
-#[derive(Debug, Clone)]
+#[derive(Debug)]
 pub(super) struct Track {
     pub column: usize,
+    /// In order of time; `ordered.rows` counts rows of the table.
     pub ordered: Ordered,
-    /// Rows of the table that `ordered.rows` counts in.
-    pub rows: Vec<usize>,
 }
 
 /// The signals of a loop, each in order of time.
-pub(super) struct Tracks {
+pub(super) enum Tracks {
+    /// Side by side: one row holds them all.
+    Wide(WideTracks),
+    /// One after another.
+    Long(LongTracks),
+}
+
+/// Signals of a wide table: columns, and the rows that they share.
+pub(super) struct WideTracks {
+    pub pv: usize,
+    pub op: Option<usize>,
+    pub sp: Option<usize>,
+    pub mode: Option<usize>,
+    /// In order of time; `ordered.rows` counts rows of the table.
+    pub ordered: Ordered,
+}
+
+/// Signals of a long table, each with rows of its own.
+pub(super) struct LongTracks {
     pub pv: Track,
     pub op: Option<Track>,
     pub sp: Option<Track>,
     pub mode: Option<Track>,
-    /// Roles found in the tag column of a long table.
+    /// Roles found in the tag column.
     pub named: Vec<super::RoleFound>,
 }
 
+impl Tracks {
+    /// The rows of the PV in order of time.
+    pub fn main(&self) -> &Ordered {
+        match self {
+            Tracks::Wide(wide) => &wide.ordered,
+            Tracks::Long(long) => &long.pv.ordered,
+        }
+    }
+}
+
+/// Puts the signals of a loop in order. `rows` are its rows in the table, `t_us` their moments.
 pub(super) fn tracks(
     request: &LogRequest,
     rule: &LogRule,
     understood: &Understood<'_>,
-    rows: &[usize],
-    t_us: &[i64],
+    rows: &Rows,
+    t_us: Vec<i64>,
     scale: Scale,
     shift_us: i64,
 ) -> Result<Tracks, Vec<Problem>> {
     let table = understood.table;
-    let ordered = |chosen: &[usize]| {
-        let rows: Vec<usize> = chosen.iter().map(|&k| rows[k]).collect();
-        let times: Vec<i64> = chosen.iter().map(|&k| t_us[k]).collect();
-        let place = |row: usize| table.place().row(table.row(rows[row]).number);
-        order::order(&times, scale, rule.zone, shift_us, place)
-            .map(|ordered| (ordered, rows.clone()))
-            .map_err(|problem| vec![problem])
+    let ordered = |rows: &Rows, t_us: Vec<i64>| -> Result<Ordered, Vec<Problem>> {
+        let place = |k: usize| table.place().row(table.row(rows.get(k)).number);
+        let mut ordered = order::order(t_us, scale, rule.zone, shift_us, place)
+            .map_err(|problem| vec![problem])?;
+        ordered.rows = rows.pick(&ordered.rows);
+        Ok(ordered)
     };
     let roles = &understood.roles;
     if !roles.long {
-        let all: Vec<usize> = (0..rows.len()).collect();
-        let (mut main, main_rows) = ordered(&all)?;
-        count_from_first(&mut [&mut main], scale);
-        let track = |role: Role| {
-            roles.column(role).map(|column| Track {
-                column,
-                ordered: main.clone(),
-                rows: main_rows.clone(),
-            })
-        };
-        return Ok(Tracks {
-            pv: track(Role::Pv).expect("a wide table was given its PV column"),
-            op: track(Role::Op),
-            sp: track(Role::Sp),
-            mode: track(Role::Mode),
-            named: Vec::new(),
-        });
+        let mut ordered = ordered(rows, t_us)?;
+        count_from_first(&mut [&mut ordered], scale);
+        return Ok(Tracks::Wide(WideTracks {
+            pv: roles
+                .column(Role::Pv)
+                .expect("a wide table was given its PV column"),
+            op: roles.column(Role::Op),
+            sp: roles.column(Role::Sp),
+            mode: roles.column(Role::Mode),
+            ordered,
+        }));
     }
     let column = roles
         .column(Role::Value)
@@ -78,10 +101,12 @@ pub(super) fn tracks(
         let Some(text) = texts.get(&role) else {
             return Ok(None);
         };
-        let chosen: Vec<usize> = (0..rows.len())
-            .filter(|&k| table.row(rows[k]).cell(tag_column).text() == *text)
-            .collect();
-        let (ordered, rows) = ordered(&chosen)?;
+        let bears = |row: usize| match table.cell(row, tag_column) {
+            Cell::Text(found) => found == text,
+            cell => cell.text() == *text,
+        };
+        let chosen: Rows = (0..rows.len()).filter(|&k| bears(rows.get(k))).collect();
+        let times = chosen.iter().map(|k| t_us[k]).collect();
         named.push(super::RoleFound {
             role,
             column,
@@ -91,8 +116,7 @@ pub(super) fn tracks(
         });
         Ok(Some(Track {
             column,
-            ordered,
-            rows,
+            ordered: ordered(&rows.pick(&chosen), times)?,
         }))
     };
     let (pv, op, sp, mode) = (
@@ -101,7 +125,7 @@ pub(super) fn tracks(
         track(Role::Sp)?,
         track(Role::Mode)?,
     );
-    let mut tracks = Tracks {
+    let mut tracks = LongTracks {
         pv: pv.expect("the PV's text was found among the tags"),
         op,
         sp,
@@ -115,7 +139,7 @@ pub(super) fn tracks(
         .collect();
     all.insert(0, &mut tracks.pv.ordered);
     count_from_first(&mut all, scale);
-    Ok(tracks)
+    Ok(Tracks::Long(tracks))
 }
 
 /// Times of day without a date count from the first row of the log (that of the first signal).
@@ -136,14 +160,18 @@ fn count_from_first(signals: &mut [&mut Ordered], scale: Scale) {
 fn series_texts(
     request: &LogRequest,
     understood: &Understood<'_>,
-    rows: &[usize],
+    rows: &Rows,
     tag_column: usize,
 ) -> Result<BTreeMap<Role, String>, Vec<Problem>> {
     let table = understood.table;
     let mut texts: Vec<String> = Vec::new();
     let mut seen = std::collections::BTreeSet::new();
-    for &row in rows {
-        let text = table.row(row).cell(tag_column).text();
+    for row in rows.iter() {
+        let cell = table.cell(row, tag_column);
+        if matches!(cell, Cell::Text(text) if seen.contains(text)) {
+            continue;
+        }
+        let text = cell.text();
         if seen.insert(text.clone()) {
             texts.push(text);
         }

@@ -1,0 +1,378 @@
+//! The columns that a loop needs, read in one walk over its table: values, decimal sign, plain moments.
+//!
+//! What most cells hold, a plain number or a plain date with time of day, is read at once. Any other
+//! cell is left for a second look, which knows the decimal sign and can name its place.
+
+use super::LogRule;
+use super::clock::{FARTHEST_US, Moments, TimeColumns, microseconds};
+use super::extract::Understood;
+use super::headings::Role;
+use super::numbers::{DecimalSign, Evidence, Undecided, number, plain};
+use super::rows::Rows;
+use super::stamp::{DateText, Stamp, clock_us, fraction_us, plain_iso};
+use super::table::{Cell, Table};
+use crate::notice::Problem;
+use chrono::NaiveTime;
+use std::ops::Range;
+
+/// How many rows are looked at to guess the decimal sign before all are read.
+const ROWS_LOOKED_AT: usize = 100;
+/// With fewer rows a second thread costs more than it saves.
+const ROWS_WORTH_A_THREAD: usize = 50_000;
+
+/// What one walk over a table gave.
+pub(super) struct Columns {
+    /// Decimal sign of the table.
+    pub decimal: DecimalSign,
+    values: Vec<Values>,
+    moments: Option<Moments>,
+    rows: Range<usize>,
+}
+
+/// Numbers of a column, one for each row of data; NaN where the cell needs a second look.
+struct Values {
+    column: usize,
+    numbers: Vec<f64>,
+}
+
+impl Columns {
+    /// The moments of `rows` where every row of data has a plain one.
+    pub fn moments(&mut self, rows: &Rows) -> Option<Moments> {
+        let moments = self.moments.take()?;
+        if *rows == Rows::Run(self.rows.clone()) {
+            return Some(moments);
+        }
+        let first = self.rows.start;
+        let t_us = rows.iter().map(|row| moments.t_us[row - first]).collect();
+        Some(Moments { t_us, ..moments })
+    }
+
+    /// The numbers of a column in `rows`; NaN where the cell needs a second look.
+    pub fn take(&mut self, column: usize, rows: &Rows) -> Vec<f64> {
+        let values = self
+            .values
+            .iter_mut()
+            .find(|values| values.column == column);
+        let numbers = &mut values.expect("the column of a value was read").numbers;
+        let first = self.rows.start;
+        match rows {
+            Rows::Run(run) if *run == self.rows => std::mem::take(numbers),
+            _ => rows.iter().map(|row| numbers[row - first]).collect(),
+        }
+    }
+}
+
+/// What is asked of a walk.
+struct Walk<'a> {
+    table: &'a Table,
+    /// Columns, ascending.
+    columns: Vec<usize>,
+    /// Of the values, in the order of their roles: places in `columns`.
+    values: Vec<usize>,
+    /// Of the time where one column holds it: place in `columns`.
+    time: Option<usize>,
+    /// See [`bad_numbers`].
+    bad_numbers: Vec<f64>,
+    /// Whether the decimal sign is to be told from the texts.
+    is_open: bool,
+    decimal: DecimalSign,
+}
+
+type Said = Evidence<(usize, usize)>;
+
+/// Reads the columns of a loop.
+///
+/// # Errors
+/// Where the decimal sign cannot be told; `undecided` puts that into words.
+pub(super) fn read(
+    understood: &Understood<'_>,
+    rule: &LogRule,
+    undecided: impl Fn(Undecided<(usize, usize)>) -> Problem,
+) -> Result<Columns, Problem> {
+    let Understood {
+        table,
+        layout,
+        roles,
+    } = understood;
+    let mut values: Vec<usize> = Vec::new();
+    for role in [Role::Pv, Role::Op, Role::Sp, Role::Value] {
+        values.extend(roles.column(role).filter(|column| !values.contains(column)));
+    }
+    let time = match roles.time {
+        TimeColumns::Single(column) => Some(column),
+        TimeColumns::Pair { .. } | TimeColumns::Counted { .. } => None,
+    };
+    let mut columns: Vec<usize> = values.iter().copied().chain(time).collect();
+    columns.sort_unstable();
+    columns.dedup();
+    let place = |column: &usize| columns.binary_search(column).expect("it was put there");
+    let mut walk = Walk {
+        table,
+        values: values.iter().map(place).collect(),
+        time: time.as_ref().map(place),
+        columns,
+        bad_numbers: bad_numbers(rule),
+        is_open: rule.decimal.is_none(),
+        decimal: rule.decimal.unwrap_or(DecimalSign::Point),
+    };
+    let rows = layout.data_start..table.len();
+    if walk.is_open {
+        let head = rows.start..rows.end.min(rows.start + ROWS_LOOKED_AT);
+        walk.decimal = walk
+            .head(head)
+            .decide(table.delimiter)
+            .unwrap_or(walk.decimal);
+    }
+    loop {
+        let (columns, said) = walk.all(rows.clone());
+        if !walk.is_open {
+            return Ok(columns);
+        }
+        let decided = said.decide(table.delimiter).map_err(&undecided)?;
+        if decided == walk.decimal {
+            return Ok(columns);
+        }
+        // The first rows told it wrong; the second walk cannot, for every text was heard.
+        walk.decimal = decided;
+        walk.is_open = false;
+    }
+}
+
+/// Numbers that are, or look like, a text for bad samples: such cells need a second look.
+fn bad_numbers(rule: &LogRule) -> Vec<f64> {
+    let texts = rule.bad_values.iter();
+    texts
+        .flat_map(|text| [DecimalSign::Point, DecimalSign::Comma].map(|sign| number(text, sign)))
+        .flatten()
+        .collect()
+}
+
+impl Walk<'_> {
+    /// What the texts of some rows say of the decimal sign.
+    fn head(&self, rows: Range<usize>) -> Said {
+        let mut said = Said::default();
+        let heard = self.values.iter().chain(&self.time);
+        for (row, &at) in rows.flat_map(|row| heard.clone().map(move |at| (row, at))) {
+            if let Cell::Text(text) = self.table.cell(row, self.columns[at]) {
+                said.observe(text, || (self.table.row(row).number, self.columns[at]));
+            }
+        }
+        said
+    }
+
+    /// Reads all rows, the halves of a long table side by side.
+    fn all(&self, rows: Range<usize>) -> (Columns, Said) {
+        let count = rows.len();
+        let mut numbers: Vec<Vec<f64>> = self.values.iter().map(|_| vec![0.0; count]).collect();
+        let mut t_us = vec![0; if self.time.is_some() { count } else { 0 }];
+        let half = if count < ROWS_WORTH_A_THREAD {
+            count
+        } else {
+            count / 2
+        };
+        let (mut first, mut second) = (Vec::new(), Vec::new());
+        for numbers in &mut numbers {
+            let (head, tail) = numbers.split_at_mut(half);
+            first.push(head);
+            second.push(tail);
+        }
+        let (t_first, t_second) = t_us.split_at_mut(if self.time.is_some() { half } else { 0 });
+        let middle = rows.start + half;
+        let (one, other) = std::thread::scope(|scope| {
+            let other = (half < count)
+                .then(|| scope.spawn(|| self.part(middle..rows.end, second, t_second)));
+            let one = self.part(rows.start..middle, first, t_first);
+            let other = other.map(|thread| match thread.join() {
+                Ok(part) => part,
+                Err(panic) => std::panic::resume_unwind(panic),
+            });
+            (one, other)
+        });
+        let mut kinds = vec![one.kind];
+        let mut said = one.said;
+        if let Some(other) = other {
+            kinds.push(other.kind);
+            said = said.followed_by(other.said);
+        }
+        let of_all =
+            |kind: PlainTime| self.time.is_some() && kinds.iter().all(|k| *k == Some(kind));
+        let moments = if of_all(PlainTime::Text) {
+            Some(Moments::of_plain_text(t_us))
+        } else if of_all(PlainTime::Date) {
+            Some(Moments::of_real_dates(t_us))
+        } else {
+            None
+        };
+        let columns = self.values.iter().map(|at| self.columns[*at]);
+        let columns = Columns {
+            decimal: self.decimal,
+            values: columns
+                .zip(numbers)
+                .map(|(column, numbers)| Values { column, numbers })
+                .collect(),
+            moments,
+            rows,
+        };
+        (columns, said)
+    }
+
+    /// Reads some rows into their places.
+    fn part(&self, rows: Range<usize>, mut numbers: Vec<&mut [f64]>, t_us: &mut [i64]) -> Part {
+        let mut cells = vec![Cell::Empty; self.columns.len()];
+        let mut part = Part {
+            said: Said::default(),
+            kind: None,
+        };
+        let mut are_plain = self.time.is_some();
+        let mut iso = IsoMoments::default();
+        for (k, row) in rows.enumerate() {
+            self.table.pick(row, &self.columns, &mut cells);
+            let knows_sign = part.said.knows(self.decimal);
+            let mut observe = |text: &str, at: usize| {
+                if self.is_open {
+                    let column = self.columns[at];
+                    part.said
+                        .observe(text, || (self.table.row(row).number, column));
+                }
+            };
+            for (numbers, &at) in numbers.iter_mut().zip(&self.values) {
+                numbers[k] = match cells[at] {
+                    Cell::Number(number) if number.is_finite() => number,
+                    Cell::Text(text) => match plain(text, self.decimal) {
+                        Some((number, has_sign)) => {
+                            if has_sign && !knows_sign {
+                                observe(text, at);
+                            }
+                            number
+                        }
+                        None => {
+                            observe(text, at);
+                            f64::NAN
+                        }
+                    },
+                    _ => f64::NAN,
+                };
+                if self.bad_numbers.contains(&numbers[k]) {
+                    numbers[k] = f64::NAN;
+                }
+            }
+            let Some(at) = self.time else { continue };
+            let (t, kind) = match cells[at] {
+                Cell::Text(text) if are_plain => match iso.read(text) {
+                    Some(t) => (t, Some(PlainTime::Text)),
+                    None => {
+                        observe(text, at);
+                        (0, None)
+                    }
+                },
+                Cell::Text(text) => {
+                    observe(text, at);
+                    (0, None)
+                }
+                Cell::Date(date) => (microseconds(date), Some(PlainTime::Date)),
+                _ => (0, None),
+            };
+            are_plain &= kind.is_some() && (k == 0 || part.kind == kind) && t.abs() <= FARTHEST_US;
+            part.kind = kind;
+            t_us[k] = t;
+        }
+        if !are_plain {
+            part.kind = None;
+        }
+        part
+    }
+}
+
+/// How every time of some rows is written.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum PlainTime {
+    /// `2026-03-14T09:05:00`
+    Text,
+    /// A date of a workbook.
+    Date,
+}
+
+/// What some rows gave beside their numbers.
+struct Part {
+    said: Said,
+    /// `None` where the times are not all of one plain kind.
+    kind: Option<PlainTime>,
+}
+
+/// Reads moments such as `2026-03-14T09:05:00.25` one after the other; the day is worked out where it
+/// changes.
+#[derive(Default)]
+struct IsoMoments {
+    day: [u8; 10],
+    day_us: i64,
+}
+
+impl IsoMoments {
+    fn read(&mut self, text: &str) -> Option<i64> {
+        let (day, time) = text.as_bytes().split_first_chunk::<10>()?;
+        if *day != self.day {
+            let Stamp {
+                date: Some(DateText::Known(date)),
+                ..
+            } = plain_iso(text)?
+            else {
+                return None;
+            };
+            self.day = *day;
+            self.day_us = microseconds(date.and_time(NaiveTime::MIN));
+        }
+        let [b'T' | b' ', h, hh, b':', m, mm, b':', s, ss, rest @ ..] = time else {
+            return None;
+        };
+        let two = |ten: &u8, one: &u8| {
+            (ten.is_ascii_digit() && one.is_ascii_digit())
+                .then(|| i64::from(ten - b'0') * 10 + i64::from(one - b'0'))
+        };
+        let time_us = clock_us(two(h, hh)?, two(m, mm)?, two(s, ss)?)?;
+        let fraction = match rest {
+            [] => 0,
+            [b'.', digits @ ..] if digits.iter().all(u8::is_ascii_digit) => {
+                fraction_us(text.get(20..)?)?
+            }
+            _ => return None,
+        };
+        Some(self.day_us + time_us + fraction)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::read::stamp::stamp;
+
+    #[test]
+    fn plain_moments_are_those_of_any_other_way() {
+        let mut iso = IsoMoments::default();
+        for text in [
+            "2026-03-14T09:05:00",
+            "2026-03-14 23:59:60.25",
+            "2026-03-15 00:00:00.1234567",
+            "1999-12-31T23:59:59",
+        ] {
+            let stamp = stamp(text).expect("a moment");
+            let date = stamp
+                .date
+                .and_then(|date| date.date(crate::read::DateOrder::YearFirst));
+            let day = date.expect("a date").and_time(NaiveTime::MIN);
+            let expected = microseconds(day) + stamp.time_us.expect("a time of day");
+            assert_eq!(iso.read(text), Some(expected), "{text}");
+        }
+        for text in [
+            "2026-03-14T09:05:00Z",
+            "2026-03-14T09:75:00",
+            "2026-03-14T09:05:00.",
+            "2026-03-14T09:05",
+            "2026-02-30T09:05:00",
+            "1999-12-31",
+            "14.03.2026 09:05:00",
+            "",
+        ] {
+            assert_eq!(iso.read(text), None, "{text}");
+        }
+    }
+}
