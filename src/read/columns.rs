@@ -5,12 +5,13 @@
 
 use super::LogRule;
 use super::clock::{FARTHEST_US, Moments, TimeColumns, microseconds};
+use super::delimited::Fields;
 use super::extract::Understood;
 use super::headings::Role;
-use super::numbers::{DecimalSign, Evidence, Undecided, number, plain};
+use super::numbers::{DecimalSign, Evidence, Plain, Undecided, begins_plain, number, plain};
 use super::rows::Rows;
 use super::stamp::{DateText, Stamp, clock_us, fraction_us, plain_iso};
-use super::table::{Cell, Table};
+use super::table::{Cell, Table, text_cell};
 use crate::notice::Problem;
 use chrono::NaiveTime;
 use std::ops::Range;
@@ -65,12 +66,12 @@ impl Columns {
 /// What is asked of a walk.
 struct Walk<'a> {
     table: &'a Table,
-    /// Columns, ascending.
-    columns: Vec<usize>,
-    /// Of the values, in the order of their roles: places in `columns`.
+    /// Columns of the values in the order of their roles.
     values: Vec<usize>,
-    /// Of the time where one column holds it: place in `columns`.
+    /// Where one column holds the time.
     time: Option<usize>,
+    /// All of them, ascending.
+    wanted: Vec<Wanted>,
     /// See [`bad_numbers`].
     bad_numbers: Vec<f64>,
     /// Whether the decimal sign is to be told from the texts.
@@ -105,12 +106,16 @@ pub(super) fn read(
     let mut columns: Vec<usize> = values.iter().copied().chain(time).collect();
     columns.sort_unstable();
     columns.dedup();
-    let place = |column: &usize| columns.binary_search(column).expect("it was put there");
+    let wanted = columns.into_iter().map(|column| Wanted {
+        column,
+        value: values.iter().position(|value| *value == column),
+        is_time: time == Some(column),
+    });
     let mut walk = Walk {
         table,
-        values: values.iter().map(place).collect(),
-        time: time.as_ref().map(place),
-        columns,
+        wanted: wanted.collect(),
+        values,
+        time,
         bad_numbers: bad_numbers(rule),
         is_open: rule.decimal.is_none(),
         decimal: rule.decimal.unwrap_or(DecimalSign::Point),
@@ -152,9 +157,9 @@ impl Walk<'_> {
     fn head(&self, rows: Range<usize>) -> Said {
         let mut said = Said::default();
         let heard = self.values.iter().chain(&self.time);
-        for (row, &at) in rows.flat_map(|row| heard.clone().map(move |at| (row, at))) {
-            if let Cell::Text(text) = self.table.cell(row, self.columns[at]) {
-                said.observe(text, || (self.table.row(row).number, self.columns[at]));
+        for (row, &column) in rows.flat_map(|row| heard.clone().map(move |column| (row, column))) {
+            if let Cell::Text(text) = self.table.cell(row, column) {
+                said.observe(text, || (self.table.row(row).number, column));
             }
         }
         said
@@ -203,11 +208,10 @@ impl Walk<'_> {
         } else {
             None
         };
-        let columns = self.values.iter().map(|at| self.columns[*at]);
+        let values = self.values.iter().copied().zip(numbers);
         let columns = Columns {
             decimal: self.decimal,
-            values: columns
-                .zip(numbers)
+            values: values
                 .map(|(column, numbers)| Values { column, numbers })
                 .collect(),
             moments,
@@ -218,68 +222,152 @@ impl Walk<'_> {
 
     /// Reads some rows into their places.
     fn part(&self, rows: Range<usize>, mut numbers: Vec<&mut [f64]>, t_us: &mut [i64]) -> Part {
-        let mut cells = vec![Cell::Empty; self.columns.len()];
         let mut part = Part {
             said: Said::default(),
             kind: None,
         };
         let mut are_plain = self.time.is_some();
         let mut iso = IsoMoments::default();
+        let text_cells = self.table.as_text();
         for (k, row) in rows.enumerate() {
-            self.table.pick(row, &self.columns, &mut cells);
-            let knows_sign = part.said.knows(self.decimal);
-            let mut observe = |text: &str, at: usize| {
-                if self.is_open {
-                    let column = self.columns[at];
-                    part.said
-                        .observe(text, || (self.table.row(row).number, column));
-                }
-            };
-            for (numbers, &at) in numbers.iter_mut().zip(&self.values) {
-                numbers[k] = match cells[at] {
-                    Cell::Number(number) if number.is_finite() => number,
-                    Cell::Text(text) => match plain(text, self.decimal) {
-                        Some((number, has_sign)) => {
-                            if has_sign && !knows_sign {
-                                observe(text, at);
-                            }
-                            number
-                        }
-                        None => {
-                            observe(text, at);
-                            f64::NAN
-                        }
-                    },
-                    _ => f64::NAN,
+            let mut fields = text_cells.map(|cells| cells.fields(row));
+            for wanted in &self.wanted {
+                let column = wanted.column;
+                let found = match &mut fields {
+                    Some(fields) => self.in_text(fields, wanted, &mut iso),
+                    None => self.in_sheet(self.table.cell(row, column), wanted),
                 };
-                if self.bad_numbers.contains(&numbers[k]) {
-                    numbers[k] = f64::NAN;
+                let is_news = match found.heard {
+                    Heard::Nothing => false,
+                    Heard::Sign(_) => !part.said.knows(self.decimal),
+                    Heard::Text(_) => true,
+                };
+                if let (true, Heard::Sign(text) | Heard::Text(text)) =
+                    (is_news && self.is_open, found.heard)
+                {
+                    let at = || (self.table.row(row).number, column);
+                    part.said
+                        .observe(std::str::from_utf8(text).unwrap_or_default(), at);
+                }
+                if let Some(place) = wanted.value {
+                    let is_bad = self.bad_numbers.contains(&found.number);
+                    numbers[place][k] = if is_bad { f64::NAN } else { found.number };
+                }
+                if wanted.is_time {
+                    let (t, kind) = found.moment.map_or((0, None), |(t, kind)| (t, Some(kind)));
+                    let is_alike = k == 0 || part.kind == kind;
+                    are_plain &= kind.is_some() && is_alike && t.abs() <= FARTHEST_US;
+                    part.kind = kind;
+                    t_us[k] = t;
                 }
             }
-            let Some(at) = self.time else { continue };
-            let (t, kind) = match cells[at] {
-                Cell::Text(text) if are_plain => match iso.read(text) {
-                    Some(t) => (t, Some(PlainTime::Text)),
-                    None => {
-                        observe(text, at);
-                        (0, None)
-                    }
-                },
-                Cell::Text(text) => {
-                    observe(text, at);
-                    (0, None)
-                }
-                Cell::Date(date) => (microseconds(date), Some(PlainTime::Date)),
-                _ => (0, None),
-            };
-            are_plain &= kind.is_some() && (k == 0 || part.kind == kind) && t.abs() <= FARTHEST_US;
-            part.kind = kind;
-            t_us[k] = t;
         }
         if !are_plain {
             part.kind = None;
         }
         part
+    }
+
+    /// What the next field of a row of text is, in its column.
+    #[inline]
+    fn in_text<'t>(
+        &self,
+        fields: &mut Fields<'t>,
+        wanted: &Wanted,
+        iso: &mut IsoMoments,
+    ) -> Found<'t> {
+        if !fields.go_to(wanted.column) {
+            return Found::NOTHING;
+        }
+        let rest = fields.rest();
+        if wanted.is_time {
+            if let Some((t, length)) = iso.begins(rest)
+                && fields.pass(length)
+            {
+                return Found {
+                    moment: Some((t, PlainTime::Text)),
+                    ..Found::NOTHING
+                };
+            }
+        } else if fields.delimiter() != self.decimal.sign() as u8
+            && let Some(plain) = begins_plain(rest, self.decimal)
+            && fields.pass(plain.length)
+        {
+            return Found::number(plain, rest);
+        }
+        self.in_sheet(text_cell(fields.take()), wanted)
+    }
+
+    /// What a cell is.
+    fn in_sheet<'t>(&self, cell: Cell<'t>, wanted: &Wanted) -> Found<'t> {
+        match cell {
+            Cell::Number(number) if number.is_finite() => Found {
+                number,
+                ..Found::NOTHING
+            },
+            Cell::Date(date) if wanted.is_time => Found {
+                moment: Some((microseconds(date), PlainTime::Date)),
+                ..Found::NOTHING
+            },
+            Cell::Text(text) => match plain(text, self.decimal) {
+                Some(plain) => Found::number(plain, text.as_bytes()),
+                None => Found {
+                    moment: IsoMoments::default()
+                        .begins(text.as_bytes())
+                        .filter(|(_, length)| wanted.is_time && *length == text.len())
+                        .map(|(t, _)| (t, PlainTime::Text)),
+                    heard: Heard::Text(text.as_bytes()),
+                    ..Found::NOTHING
+                },
+            },
+            _ => Found::NOTHING,
+        }
+    }
+}
+
+/// A column that is wanted.
+struct Wanted {
+    column: usize,
+    /// Place among the values where it holds one.
+    value: Option<usize>,
+    is_time: bool,
+}
+
+/// What a cell plainly is.
+struct Found<'t> {
+    /// NaN where it is no plain number.
+    number: f64,
+    moment: Option<(i64, PlainTime)>,
+    heard: Heard<'t>,
+}
+
+/// What a cell may say of the decimal sign.
+#[derive(Clone, Copy)]
+enum Heard<'t> {
+    Nothing,
+    /// A plain number with the sign that is expected.
+    Sign(&'t [u8]),
+    /// Any other text.
+    Text(&'t [u8]),
+}
+
+impl<'t> Found<'t> {
+    const NOTHING: Found<'static> = Found {
+        number: f64::NAN,
+        moment: None,
+        heard: Heard::Nothing,
+    };
+
+    fn number(plain: Plain, text: &'t [u8]) -> Self {
+        Found {
+            number: plain.value,
+            moment: None,
+            heard: if plain.has_sign {
+                Heard::Sign(&text[..plain.length])
+            } else {
+                Heard::Nothing
+            },
+        }
     }
 }
 
@@ -299,6 +387,9 @@ struct Part {
     kind: Option<PlainTime>,
 }
 
+/// Bytes of a moment up to its seconds.
+const SECONDS_END: usize = 19;
+
 /// Reads moments such as `2026-03-14T09:05:00.25` one after the other; the day is worked out where it
 /// changes.
 #[derive(Default)]
@@ -308,13 +399,16 @@ struct IsoMoments {
 }
 
 impl IsoMoments {
-    fn read(&mut self, text: &str) -> Option<i64> {
-        let (day, time) = text.as_bytes().split_first_chunk::<10>()?;
+    /// The moment that a text begins with, and the bytes that it takes.
+    #[inline]
+    fn begins(&mut self, text: &[u8]) -> Option<(i64, usize)> {
+        let (day, time) = text.split_first_chunk::<10>()?;
         if *day != self.day {
+            let whole = std::str::from_utf8(text.get(..SECONDS_END)?).ok()?;
             let Stamp {
                 date: Some(DateText::Known(date)),
                 ..
-            } = plain_iso(text)?
+            } = plain_iso(whole)?
             else {
                 return None;
             };
@@ -330,13 +424,17 @@ impl IsoMoments {
         };
         let time_us = clock_us(two(h, hh)?, two(m, mm)?, two(s, ss)?)?;
         let fraction = match rest {
-            [] => 0,
-            [b'.', digits @ ..] if digits.iter().all(u8::is_ascii_digit) => {
-                fraction_us(text.get(20..)?)?
+            [b'.', digits @ ..] => {
+                let count = digits
+                    .iter()
+                    .take_while(|byte| byte.is_ascii_digit())
+                    .count();
+                std::str::from_utf8(&digits[..count]).ok()?
             }
-            _ => return None,
+            _ => return Some((self.day_us + time_us, SECONDS_END)),
         };
-        Some(self.day_us + time_us + fraction)
+        let t = self.day_us + time_us + fraction_us(fraction)?;
+        Some((t, SECONDS_END + 1 + fraction.len()))
     }
 }
 
@@ -360,7 +458,11 @@ mod tests {
                 .and_then(|date| date.date(crate::read::DateOrder::YearFirst));
             let day = date.expect("a date").and_time(NaiveTime::MIN);
             let expected = microseconds(day) + stamp.time_us.expect("a time of day");
-            assert_eq!(iso.read(text), Some(expected), "{text}");
+            assert_eq!(
+                iso.begins(text.as_bytes()),
+                Some((expected, text.len())),
+                "{text}"
+            );
         }
         for text in [
             "2026-03-14T09:05:00Z",
@@ -372,7 +474,11 @@ mod tests {
             "14.03.2026 09:05:00",
             "",
         ] {
-            assert_eq!(iso.read(text), None, "{text}");
+            let begins = iso.begins(text.as_bytes());
+            assert!(
+                begins.is_none_or(|(_, length)| length < text.len()),
+                "{text}"
+            );
         }
     }
 }

@@ -164,44 +164,61 @@ const EXACT_POWERS: [f64; 23] = [
     1e17, 1e18, 1e19, 1e20, 1e21, 1e22,
 ];
 
-/// The number of a text as most exports write it (`-71.25`, `7.125E+01`), and whether the decimal sign
-/// stands in it; `None` where [`number`] has to look.
+/// A number as most exports write it, at the beginning of a text.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Plain {
+    /// The number.
+    pub value: f64,
+    /// Whether the decimal sign stands in it.
+    pub has_sign: bool,
+    /// Bytes of the text that it takes.
+    pub length: usize,
+}
+
+/// The number of a text as most exports write it (`-71.25`, `7.125E+01`); `None` where [`number`] has
+/// to look.
+pub(super) fn plain(text: &str, sign: DecimalSign) -> Option<Plain> {
+    begins_plain(text.as_bytes(), sign).filter(|plain| plain.length == text.len())
+}
+
+/// The plain number that a text begins with; `None` where [`number`] has to look.
 ///
 /// What it gives is what [`number`] gives: digits below 2^53 and a power of ten up to 10^22 are doubles
 /// themselves, so that one division or multiplication rounds once and to the nearest (W.D. Clinger,
 /// How to Read Floating Point Numbers Accurately, PLDI 1990, section 3).
-pub(super) fn plain(text: &str, sign: DecimalSign) -> Option<(f64, bool)> {
+#[inline]
+pub(super) fn begins_plain(text: &[u8], sign: DecimalSign) -> Option<Plain> {
     // Nineteen digits could overflow what they are counted in.
     const MOST_LETTERS: usize = 18;
-    let bytes = text.as_bytes();
-    let (is_negative, digits) = match bytes {
-        [b'-', rest @ ..] => (true, rest),
-        all => (false, all),
-    };
-    if digits.len() > MOST_LETTERS || !digits.first()?.is_ascii_digit() {
+    let minus = usize::from(text.first() == Some(&b'-'));
+    let digits = &text[minus..];
+    if !digits.first()?.is_ascii_digit() {
         return None;
     }
     let point = sign.sign() as u8;
     let mut mantissa = 0_u64;
     let mut decimals_from = None;
-    let mut exponent = 0_i32;
-    let mut end = digits.len();
-    for (at, byte) in digits.iter().enumerate() {
+    let mut at = 0;
+    let after = loop {
+        let byte = digits.get(at).copied();
         match byte {
-            b'0'..=b'9' => mantissa = mantissa * 10 + u64::from(byte - b'0'),
-            _ if *byte == point && decimals_from.is_none() => decimals_from = Some(at + 1),
-            b'e' | b'E' => {
-                exponent = plain_exponent(&digits[at + 1..])?;
-                end = at;
-                break;
-            }
-            _ => return None,
+            Some(digit @ b'0'..=b'9') => mantissa = mantissa * 10 + u64::from(digit - b'0'),
+            Some(sign) if sign == point && decimals_from.is_none() => decimals_from = Some(at + 1),
+            other => break other,
         }
-    }
-    let decimals = decimals_from.map_or(0, |from| end - from);
-    if decimals_from == Some(end) || mantissa >= 1 << 53 {
+        at += 1;
+        if at > MOST_LETTERS {
+            return None;
+        }
+    };
+    let decimals = decimals_from.map_or(0, |from| at - from);
+    if decimals_from == Some(at) || mantissa >= 1 << 53 {
         return None;
     }
+    let (exponent, length) = match after {
+        Some(b'e' | b'E') => plain_exponent(&digits[at + 1..])?,
+        _ => (0, 0),
+    };
     let power = exponent - decimals as i32;
     let factor = *EXACT_POWERS.get(power.unsigned_abs() as usize)?;
     let magnitude = if power < 0 {
@@ -209,25 +226,33 @@ pub(super) fn plain(text: &str, sign: DecimalSign) -> Option<(f64, bool)> {
     } else {
         mantissa as f64 * factor
     };
-    let value = if is_negative { -magnitude } else { magnitude };
-    Some((value, decimals_from.is_some()))
+    Some(Plain {
+        value: if minus == 1 { -magnitude } else { magnitude },
+        has_sign: decimals_from.is_some(),
+        length: minus + at + length,
+    })
 }
 
-/// One or two digits, perhaps with a sign before them.
-fn plain_exponent(text: &[u8]) -> Option<i32> {
-    let (is_negative, digits) = match text {
-        [b'-', rest @ ..] => (true, rest),
-        [b'+', rest @ ..] => (false, rest),
-        all => (false, all),
+/// One or two digits, perhaps with a sign before them, behind the letter of an exponent: its value, and
+/// the bytes that it takes with that letter.
+fn plain_exponent(text: &[u8]) -> Option<(i32, usize)> {
+    let (is_negative, signs) = match text.first()? {
+        b'-' => (true, 1),
+        b'+' => (false, 1),
+        _ => (false, 0),
     };
-    let value = match digits {
-        [one @ b'0'..=b'9'] => i32::from(one - b'0'),
-        [ten @ b'0'..=b'9', one @ b'0'..=b'9'] => {
-            10 * i32::from(ten - b'0') + i32::from(one - b'0')
-        }
-        _ => return None,
-    };
-    Some(if is_negative { -value } else { value })
+    let digits = &text[signs..];
+    let count = digits
+        .iter()
+        .take_while(|byte| byte.is_ascii_digit())
+        .count();
+    if !(1..=2).contains(&count) {
+        return None;
+    }
+    let value = digits[..count]
+        .iter()
+        .fold(0, |value, digit| value * 10 + i32::from(digit - b'0'));
+    Some((if is_negative { -value } else { value }, 1 + signs + count))
 }
 
 fn finite(magnitude: f64, minus: &str) -> Option<f64> {
@@ -388,12 +413,12 @@ mod tests {
 
         #[test]
         fn the_quick_way_gives_the_same_double(text in "-?[0-9]{1,17}([.][0-9]{1,8})?([eE][+-]?[0-9]{1,2})?") {
-            if let Some((value, has_sign)) = plain(&text, DecimalSign::Point) {
+            if let Some(Plain { value, has_sign, .. }) = plain(&text, DecimalSign::Point) {
                 prop_assert_eq!(number(&text, DecimalSign::Point).map(f64::to_bits), Some(value.to_bits()));
                 prop_assert_eq!(has_sign, text.contains('.'));
             }
             let comma = text.replace('.', ",");
-            if let Some((value, _)) = plain(&comma, DecimalSign::Comma) {
+            if let Some(Plain { value, .. }) = plain(&comma, DecimalSign::Comma) {
                 prop_assert_eq!(number(&comma, DecimalSign::Comma).map(f64::to_bits), Some(value.to_bits()));
             }
         }
@@ -401,7 +426,7 @@ mod tests {
         #[test]
         fn the_quick_way_takes_nothing_that_is_no_number(text in "[-+0-9.,eE% ]{0,8}") {
             for sign in [DecimalSign::Point, DecimalSign::Comma] {
-                if let Some((value, _)) = plain(&text, sign) {
+                if let Some(Plain { value, .. }) = plain(&text, sign) {
                     prop_assert_eq!(number(&text, sign), Some(value));
                 }
             }

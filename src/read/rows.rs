@@ -72,7 +72,9 @@ pub(super) struct RowNumbers {
 impl RowNumbers {
     /// The next row's index and number.
     pub fn push(&mut self, index: usize, number: usize) {
-        if self.runs.is_empty() || self.get(index) != number {
+        let follows =
+            |(first, begun): &(u32, u32)| *begun as usize + index - *first as usize == number;
+        if !self.runs.last().is_some_and(follows) {
             let small = |n| u32::try_from(n).expect("a file holds fewer than 2^32 lines");
             self.runs.push((small(index), small(number)));
         }
