@@ -7,14 +7,16 @@ use super::headings::Role;
 use super::numbers::DecimalSign;
 use super::order::Ordered;
 use super::rows::Rows;
+use super::series::Series;
 use super::table::Row;
-use super::tracks::{LongTracks, Track, Tracks, WideTracks};
+use super::tracks::{Track, Tracks};
 use super::values::{self, Value};
 use super::{LogRequest, LogRule};
 use crate::notice::{Place, Problem};
 use crate::quantity::Span;
 use std::collections::BTreeMap;
 use std::ops::Range;
+use std::rc::Rc;
 
 /// Samples farther outside the range than this part of it are bad.
 const OUTSIDE_RANGE: f64 = 0.10;
@@ -43,7 +45,7 @@ impl FileSamples {
             .count()
     }
 
-    fn push_pv(&mut self, t_us: i64, reading: Reading) {
+    pub fn push_pv(&mut self, t_us: i64, reading: Reading) {
         self.t_us.push(t_us);
         self.pv.push(reading.value);
         self.good.push(reading.bad.is_none());
@@ -58,14 +60,15 @@ impl FileSamples {
 }
 
 /// A value, and why it is bad where it is.
-struct Reading {
-    value: f64,
-    bad: Option<String>,
+#[derive(Debug, Clone)]
+pub(super) struct Reading {
+    pub value: f64,
+    pub bad: Option<String>,
 }
 
 impl Reading {
     /// Of a time at which the PV was not sampled.
-    const NONE: Reading = Reading {
+    pub const NONE: Reading = Reading {
         value: f64::NAN,
         bad: None,
     };
@@ -104,14 +107,45 @@ impl CellReader<'_> {
         wanted: (i64, i64),
         warnings: &mut Vec<Problem>,
     ) -> Result<FileSamples, Vec<Problem>> {
+        let roles = &self.understood.roles;
+        if roles.long || !roles.own_times.is_empty() {
+            let series = self.series(&tracks, columns, wanted, warnings)?;
+            return Ok(series.join(wanted.0));
+        }
         let mut bad_cells = BadCells::default();
         let mut lost = BTreeMap::new();
-        let samples = match tracks {
-            Tracks::Long(long) => self.joined(&long, columns, wanted, &mut bad_cells, &mut lost),
-            Tracks::Wide(wide) => {
-                self.side_by_side(wide, columns, wanted, &mut bad_cells, &mut lost, warnings)
-            }
-        };
+        let samples =
+            self.side_by_side(tracks, columns, wanted, &mut bad_cells, &mut lost, warnings);
+        self.tell(bad_cells, lost, warnings)?;
+        Ok(samples)
+    }
+
+    /// The signals within `wanted`, each at its own times; what OP, SP and mode were before is kept, since it
+    /// is still held within.
+    ///
+    /// # Errors
+    /// As [`CellReader::samples`].
+    pub fn series(
+        &self,
+        tracks: &Tracks,
+        columns: &mut Columns,
+        wanted: (i64, i64),
+        warnings: &mut Vec<Problem>,
+    ) -> Result<Series, Vec<Problem>> {
+        let mut bad_cells = BadCells::default();
+        let mut lost = BTreeMap::new();
+        let series = self.each_signal(tracks, columns, wanted, &mut bad_cells, &mut lost);
+        self.tell(bad_cells, lost, warnings)?;
+        Ok(series)
+    }
+
+    /// Refuses what cannot be read, warns of what was lost.
+    fn tell(
+        &self,
+        bad_cells: BadCells,
+        lost: BTreeMap<Role, Lost>,
+        warnings: &mut Vec<Problem>,
+    ) -> Result<(), Vec<Problem>> {
         bad_cells.finish(self.understood.table.place())?;
         for (role, Lost(causes)) in lost {
             let total: usize = causes.values().sum();
@@ -129,7 +163,7 @@ impl CellReader<'_> {
                 ),
             ));
         }
-        Ok(samples)
+        Ok(())
     }
 
     fn place(&self, row: Row<'_>, column: usize) -> Place {
@@ -247,7 +281,7 @@ impl CellReader<'_> {
     /// samples.
     fn side_by_side(
         &self,
-        tracks: WideTracks,
+        tracks: Tracks,
         columns: &mut Columns,
         wanted: (i64, i64),
         bad_cells: &mut BadCells,
@@ -255,20 +289,24 @@ impl CellReader<'_> {
         warnings: &mut Vec<Problem>,
     ) -> FileSamples {
         let table = self.understood.table;
-        let Ordered { mut t_us, rows, .. } = tracks.ordered;
+        let column_of = |track: Option<Track>| track.map(|track| track.column);
+        let (op, sp) = (column_of(tracks.op), column_of(tracks.sp));
+        let mode = column_of(tracks.mode);
+        let Some(pv) = tracks.pv else {
+            return FileSamples::default();
+        };
+        let pv_column = pv.column;
+        // Nobody shares the order any more.
+        let Ordered { mut t_us, rows, .. } = Rc::unwrap_or_clone(pv.ordered);
         let within = within(&t_us, wanted);
         let rows = rows.pick(&Rows::Run(within.clone()));
         t_us.truncate(within.end);
         t_us.drain(..within.start);
-        let mut pv = columns.take(tracks.pv, &rows);
-        let mut op = tracks
-            .op
-            .map(|column| (column, columns.take(column, &rows)));
-        let mut sp = tracks
-            .sp
-            .map(|column| (column, columns.take(column, &rows)));
+        let mut pv = columns.take(pv_column, &rows);
+        let mut op = op.map(|column| (column, columns.take(column, &rows)));
+        let mut sp = sp.map(|column| (column, columns.take(column, &rows)));
         let op_numbers = op.as_ref().map(|(column, op)| (*column, op.as_slice()));
-        let own_times = self.has_own_times(&rows, (tracks.pv, &pv), op_numbers);
+        let own_times = self.has_own_times(&rows, (pv_column, &pv), op_numbers);
         if own_times {
             warnings.push(Problem::warning(
                 table.place(),
@@ -277,7 +315,7 @@ impl CellReader<'_> {
         }
         let mut samples = FileSamples {
             good: Vec::with_capacity(rows.len()),
-            mode: tracks.mode.map(|_| Vec::new()),
+            mode: mode.map(|_| Vec::new()),
             ..FileSamples::default()
         };
         let mut mode_held = String::new();
@@ -286,10 +324,10 @@ impl CellReader<'_> {
                 own_times && number.is_nan() && table.cell(row, column).is_empty()
             };
             let at = |column: usize| At { row, column };
-            let reading = if not_sampled(tracks.pv, pv[k]) {
+            let reading = if not_sampled(pv_column, pv[k]) {
                 Reading::NONE
             } else {
-                self.pv(at(tracks.pv), pv[k], bad_cells)
+                self.pv(at(pv_column), pv[k], bad_cells)
             };
             pv[k] = reading.value;
             samples.good.push(reading.bad.is_none());
@@ -301,12 +339,12 @@ impl CellReader<'_> {
                     numbers[k] = self.other(at(*column), numbers[k], role, bad_cells, lost);
                 }
             }
-            if let (Some(mode), Some(column)) = (&mut samples.mode, tracks.mode) {
+            if let (Some(modes), Some(column)) = (&mut samples.mode, mode) {
                 let cell = table.cell(row, column);
                 if !cell.is_empty() {
                     mode_held = cell.text();
                 }
-                mode.push(mode_held.clone());
+                modes.push(mode_held.clone());
             }
         }
         samples.op = op.map_or_else(|| vec![f64::NAN; rows.len()], |(_, op)| op);
@@ -339,26 +377,39 @@ impl CellReader<'_> {
         share(pv_only) && share(op_only)
     }
 
-    /// A long table: PV at its own times, OP, SP and mode held; an OP move between two samples of
-    /// the PV gets a row of its own, without a PV, so that its time is kept.
-    fn joined(
+    /// Each signal on its own.
+    fn each_signal(
         &self,
-        tracks: &LongTracks,
+        tracks: &Tracks,
         columns: &mut Columns,
         wanted: (i64, i64),
         bad_cells: &mut BadCells,
         lost: &mut BTreeMap<Role, Lost>,
-    ) -> FileSamples {
+    ) -> Series {
         let table = self.understood.table;
-        // What stood before the cut is still held in it.
         let until = (i64::MIN, wanted.1);
-        let mut series = |track: &Option<Track>, role: Role| -> Option<Vec<(i64, f64)>> {
-            let track = track.as_ref()?;
-            let numbers = columns.take(track.column, &track.ordered.rows);
+        let is_long = self.understood.roles.long;
+        let pv = tracks.pv.as_ref().map(|Track { column, ordered }| {
+            let numbers = columns.pick(*column, &ordered.rows);
             let read = |k: usize| {
-                let (t_us, row) = (track.ordered.t_us[k], track.ordered.rows.get(k));
-                let column = track.column;
-                let value = match self.bad_quality(row, bad_cells) {
+                let (row, column) = (ordered.rows.get(k), *column);
+                let reading = self.pv(At { row, column }, numbers[k], bad_cells);
+                (ordered.t_us[k], reading)
+            };
+            within(&ordered.t_us, wanted).map(read).collect()
+        });
+        let mut series = |track: &Option<Track>, role: Role| -> Option<Vec<(i64, f64)>> {
+            let Track { column, ordered } = track.as_ref()?;
+            let numbers = columns.pick(*column, &ordered.rows);
+            let read = |k: usize| {
+                let (row, column) = (ordered.rows.get(k), *column);
+                // In a long table each row has its own quality; else the column is that of the PV.
+                let quality = if is_long {
+                    self.bad_quality(row, bad_cells)
+                } else {
+                    None
+                };
+                let value = match quality {
                     None => self.other(At { row, column }, numbers[k], role, bad_cells, lost),
                     Some(cause) => {
                         let Lost(causes) = lost.entry(role).or_default();
@@ -366,9 +417,9 @@ impl CellReader<'_> {
                         f64::NAN
                     }
                 };
-                (t_us, value)
+                (ordered.t_us[k], value)
             };
-            let values: Vec<(i64, f64)> = within(&track.ordered.t_us, until).map(read).collect();
+            let values: Vec<(i64, f64)> = within(&ordered.t_us, until).map(read).collect();
             Some(
                 values
                     .into_iter()
@@ -376,45 +427,20 @@ impl CellReader<'_> {
                     .collect(),
             )
         };
-        let op = series(&tracks.op, Role::Op).unwrap_or_default();
+        let op = series(&tracks.op, Role::Op);
         let sp = series(&tracks.sp, Role::Sp);
-        let mode: Option<Vec<(i64, String)>> = tracks.mode.as_ref().map(|track| {
-            let text = |k: usize| {
-                let row = track.ordered.rows.get(k);
-                (track.ordered.t_us[k], table.cell(row, track.column).text())
-            };
-            within(&track.ordered.t_us, until)
-                .map(text)
+        let mode = tracks.mode.as_ref().map(|Track { column, ordered }| {
+            within(&ordered.t_us, until)
+                .map(|k| {
+                    (
+                        ordered.t_us[k],
+                        table.cell(ordered.rows.get(k), *column).text(),
+                    )
+                })
                 .filter(|(_, mode)| !mode.is_empty())
                 .collect()
         });
-        let mut moves: Vec<i64> = op
-            .windows(2)
-            .filter(|pair| pair[1].1 != pair[0].1 && pair[1].0 >= wanted.0)
-            .map(|pair| pair[1].0)
-            .collect();
-        moves.reverse();
-        let mut samples = FileSamples::default();
-        let Track { column, ordered } = &tracks.pv;
-        let column = *column;
-        let numbers = columns.take(column, &ordered.rows);
-        for k in within(&ordered.t_us, wanted) {
-            let (t_us, row) = (ordered.t_us[k], ordered.rows.get(k));
-            while let Some(at) = moves.pop_if(|at| *at <= t_us) {
-                if at < t_us {
-                    samples.push_pv(at, Reading::NONE);
-                }
-            }
-            let reading = self.pv(At { row, column }, numbers[k], bad_cells);
-            samples.push_pv(t_us, reading);
-        }
-        while let Some(at) = moves.pop() {
-            samples.push_pv(at, Reading::NONE);
-        }
-        samples.op = held(&samples.t_us, &op, f64::NAN);
-        samples.sp = sp.map(|sp| held(&samples.t_us, &sp, f64::NAN));
-        samples.mode = mode.map(|mode| held(&samples.t_us, &mode, String::new()));
-        samples
+        Series { pv, op, sp, mode }
     }
 }
 
@@ -423,22 +449,6 @@ fn within(t_us: &[i64], wanted: (i64, i64)) -> Range<usize> {
     let first = t_us.partition_point(|t| *t < wanted.0);
     let end = t_us.partition_point(|t| *t <= wanted.1).max(first);
     first..end
-}
-
-/// The value that holds at each time: the last one at or before it.
-fn held<T: Clone>(t_us: &[i64], series: &[(i64, T)], before: T) -> Vec<T> {
-    let mut next = 0;
-    t_us.iter()
-        .map(|t| {
-            while series.get(next).is_some_and(|(at, _)| at <= t) {
-                next += 1;
-            }
-            match next {
-                0 => before.clone(),
-                _ => series[next - 1].1.clone(),
-            }
-        })
-        .collect()
 }
 
 fn is_outside(value: f64, span: Option<Span>) -> bool {

@@ -91,6 +91,24 @@ pub struct Moments {
     pub format: String,
     /// What was assumed and should be told.
     pub warnings: Vec<Problem>,
+    /// What the shown clock is ahead of universal time, microseconds, where the log tells it.
+    pub offset_us: Option<i64>,
+    /// Order of day and month, where it had to be found.
+    pub dates: Option<DateOrder>,
+}
+
+impl Moments {
+    /// Shows the moments on a clock that is `offset_us` ahead of universal time, where their own offset is
+    /// known: a later file goes on with the clock of the first.
+    pub fn go_by(&mut self, offset_us: Option<i64>) {
+        let (Some(wanted), Some(own)) = (offset_us, self.offset_us) else {
+            return;
+        };
+        for t_us in self.t_us.iter_mut().filter(|t_us| **t_us != NO_TIME) {
+            *t_us += wanted - own;
+        }
+        self.offset_us = Some(wanted);
+    }
 }
 
 /// One row's time before the whole column is understood.
@@ -255,6 +273,8 @@ fn counted(rows: usize, interval_s: f64) -> Moments {
         scale: Scale::Elapsed,
         format: format!("no clock; one row every {interval_s} s as given in job.toml"),
         warnings: Vec::new(),
+        offset_us: None,
+        dates: None,
     }
 }
 
@@ -274,6 +294,8 @@ impl Moments {
             scale: Scale::Local,
             format: "real dates of the workbook".to_owned(),
             warnings: Vec::new(),
+            offset_us: None,
+            dates: None,
         }
     }
 
@@ -284,6 +306,8 @@ impl Moments {
             scale: Scale::Local,
             format: format!("dates as text, {PLAIN_ORDER}"),
             warnings: Vec::new(),
+            offset_us: None,
+            dates: None,
         }
     }
 }
@@ -312,6 +336,8 @@ fn times_of_day(times: &[RowTime], rules: &ClockRules<'_>) -> Moments {
             "hours, minutes and seconds without a date: counted from the first row".to_owned()
         },
         warnings: Vec::new(),
+        offset_us: None,
+        dates: None,
     }
 }
 
@@ -382,6 +408,8 @@ fn dates_as_text(
             format!("dates as text, {why}")
         },
         warnings: Vec::new(),
+        offset_us: first_offset_us.filter(|_| with_offset > 0),
+        dates: (!dates.is_empty()).then_some(order),
     })
 }
 
@@ -442,6 +470,7 @@ fn plain_numbers(
     let count = what_it_counts(&values, rules.unit);
     let mut warnings = Vec::new();
     let mut zone_offset_us = 0;
+    let is_epoch = matches!(count, Count::Epoch { .. });
     let (scale, format) = match count {
         Count::Serial => (
             Scale::Local,
@@ -494,6 +523,8 @@ fn plain_numbers(
         scale,
         format,
         warnings,
+        offset_us: is_epoch.then_some(zone_offset_us),
+        dates: None,
     }
 }
 

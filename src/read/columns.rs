@@ -48,18 +48,27 @@ impl Columns {
         Some(Moments { t_us, ..moments })
     }
 
-    /// The numbers of a column in `rows`; NaN where the cell needs a second look.
+    /// The numbers of a column in `rows`; NaN where the cell needs a second look. A column that the
+    /// table holds in just that order is given away, not copied.
     pub fn take(&mut self, column: usize, rows: &Rows) -> Vec<f64> {
-        let values = self
-            .values
-            .iter_mut()
-            .find(|values| values.column == column);
-        let numbers = &mut values.expect("the column of a value was read").numbers;
-        let first = self.rows.start;
-        match rows {
-            Rows::Run(run) if *run == self.rows => std::mem::take(numbers),
-            _ => rows.iter().map(|row| numbers[row - first]).collect(),
+        if *rows == Rows::Run(self.rows.clone())
+            && let Some(values) = self
+                .values
+                .iter_mut()
+                .find(|values| values.column == column)
+        {
+            return std::mem::take(&mut values.numbers);
         }
+        self.pick(column, rows)
+    }
+
+    /// The same, and the column stays: in a long table every signal is in it.
+    pub fn pick(&self, column: usize, rows: &Rows) -> Vec<f64> {
+        let values = self.values.iter().find(|values| values.column == column);
+        let numbers = &values.expect("the column of a value was read").numbers;
+        rows.iter()
+            .map(|row| numbers[row - self.rows.start])
+            .collect()
     }
 }
 
@@ -94,6 +103,7 @@ pub(super) fn read(
         table,
         layout,
         roles,
+        ..
     } = understood;
     let mut values: Vec<usize> = Vec::new();
     for role in [Role::Pv, Role::Op, Role::Sp, Role::Value] {
@@ -104,6 +114,11 @@ pub(super) fn read(
         TimeColumns::Pair { .. } | TimeColumns::Counted { .. } => None,
     };
     let mut columns: Vec<usize> = values.iter().copied().chain(time).collect();
+    // What the times of single signals say of the decimal sign is heard as well.
+    columns.extend(roles.own_times.values().filter_map(|time| match time {
+        TimeColumns::Single(column) => Some(*column),
+        TimeColumns::Pair { .. } | TimeColumns::Counted { .. } => None,
+    }));
     columns.sort_unstable();
     columns.dedup();
     let wanted = columns.into_iter().map(|column| Wanted {

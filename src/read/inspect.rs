@@ -172,7 +172,7 @@ fn inspect_table(
     cache: &FileCache,
 ) -> TableInspection {
     let names = ColumnNames::default();
-    let layout = layout::find(table, &names, request.tag, rule.interval_s.is_some());
+    let layout = layout::find(table, &names, request.tag, rule.interval_s.is_some(), false);
     let mut found = TableInspection {
         sheet: table.sheet.clone(),
         delimiter: table.delimiter,
@@ -292,8 +292,8 @@ fn describe(tag: Option<String>, log: LogRead, table: &Table) -> LoopInspection 
         },
     );
     for found in &source.roles {
-        // In a long table the value column is found by itself.
-        if found.role == Role::Value {
+        // In a long table the value column is found by itself, and so are time columns of single signals.
+        if found.role == Role::Value || found.is_time_of_its_own() {
             continue;
         }
         let name = if found.heading.is_empty() {
@@ -356,6 +356,7 @@ impl Inspection {
             let what = match (&table.sheet, table.delimiter) {
                 (Some(sheet), _) => format!("sheet \"{sheet}\""),
                 (None, Some('\t')) => "text, columns apart by tabs".to_owned(),
+                (None, Some(' ')) => "text, columns apart by blanks".to_owned(),
                 (None, Some(sign)) => format!("text, columns apart by {sign}"),
                 (None, None) => "text".to_owned(),
             };

@@ -3,12 +3,15 @@
 use super::cells::FileSamples;
 use super::clock::{Scale, microseconds, moment, moment_text};
 use super::extract::FileRead;
+use super::order::Carried;
+use super::series::Series;
 use super::stamp::MICROSECONDS;
 use super::table::Table;
 use super::values::is_manual;
-use super::{LogRead, LogRequest};
+use super::{LogRead, LogRequest, Source};
 use crate::notice::{Place, Problem};
 use crate::trace::{Clock, Gap, Moment, Samples, longest_unbroken_s, median};
+use chrono::{Datelike, Timelike, Weekday};
 
 const HOUR_US: i64 = 3600 * MICROSECONDS;
 
@@ -78,29 +81,58 @@ pub(super) fn wanted(
     Ok(range)
 }
 
-/// What an earlier file's unfolded summer time adds to the file that begins at `first_raw`.
-pub(super) fn carried_shift(before: Option<&FileRead>, first_raw: i64) -> i64 {
-    let Some(before) = before.filter(|before| before.scale == Scale::Local) else {
-        return 0;
+/// What the file before this one, which begins at `first_raw`, hands on to it.
+pub(super) fn carried(before: Option<&FileRead>, first_raw: i64, in_parts: bool) -> Carried {
+    let Some(before) = before else {
+        return Carried::default();
     };
+    let mut carried = Carried {
+        offset_us: before.offset_us,
+        ..Carried::default()
+    };
+    // Files of different signals do not follow each other.
+    if before.scale != Scale::Local || in_parts {
+        return carried;
+    }
+    if before.shift_us > 0 && first_raw >= before.last_raw {
+        carried.shift_us = before.shift_us;
+    } else if before.shift_us == 0 && goes_back(before, first_raw) {
+        carried.latest_us = before.samples.t_us.last().copied();
+        carried.shift_us = HOUR_US;
+    }
+    carried
+}
+
+/// Whether the clock went back by the hour of summer time between two files: by an hour less an interval,
+/// in the small hours of a Sunday, when summer time ends everywhere. Files that merely overlap by an hour
+/// are read as they stand.
+fn goes_back(before: &FileRead, first_raw: i64) -> bool {
+    const SMALL_HOURS: u32 = 4;
+    let at = moment(first_raw);
     let interval = to_us(before.source.interval_s).max(MICROSECONDS);
     let back = before.last_raw - first_raw;
-    if before.shift_us > 0 && first_raw >= before.last_raw {
-        before.shift_us
-    } else if before.shift_us == 0 && (back - (HOUR_US - interval)).abs() <= interval {
-        // The clock went back between the two files.
-        HOUR_US
-    } else {
-        0
-    }
+    at.weekday() == Weekday::Sun
+        && at.hour() < SMALL_HOURS
+        && (back - (HOUR_US - interval)).abs() <= interval
+}
+
+/// The fold between a file and the one before it, in words.
+pub(super) fn fold_between(before: Option<&FileRead>, carried: Carried) -> Option<String> {
+    let before = before.filter(|_| carried.latest_us.is_some())?;
+    Some(format!(
+        "the clock goes back by an hour after {} ends: taken as the end of summer time",
+        before.source.file
+    ))
 }
 
 impl FileRead {
     /// Works out interval, jitter and whether the file was reported by exception.
     pub(super) fn describe_sampling(&mut self) {
         let samples = &self.samples;
+        let has_pv = |k: usize| !samples.good[k] || samples.pv[k].is_finite();
+        let is_pv = (0..samples.t_us.len()).any(has_pv);
         let t_s = (0..samples.t_us.len())
-            .filter(|&k| !samples.good[k] || samples.pv[k].is_finite())
+            .filter(|&k| !is_pv || has_pv(k))
             .map(|k| to_s(samples.t_us[k] - samples.t_us[0]));
         let mut off: Vec<f64> = intervals(t_s);
         let interval = median(&mut off);
@@ -112,7 +144,8 @@ impl FileRead {
             .filter(|off| **off > IRREGULAR * interval)
             .count();
         self.source.interval_s = interval;
-        self.source.compressed = irregular as f64 > REPORTED_BY_EXCEPTION * off.len() as f64;
+        self.source.compressed =
+            is_pv && irregular as f64 > REPORTED_BY_EXCEPTION * off.len() as f64;
         let covered = libm::ceil(JITTER_COVERS * off.len() as f64) as usize;
         self.source.jitter_s = covered
             .checked_sub(1)
@@ -149,33 +182,140 @@ fn intervals(mut t_s: impl Iterator<Item = f64>) -> Vec<f64> {
     t_s.map(step).collect()
 }
 
+fn place(file: &FileRead) -> Place {
+    let place = Place::file(&file.source.file);
+    match &file.source.sheet {
+        Some(sheet) => place.sheet(sheet),
+        None => place,
+    }
+}
+
+/// Whether the clocks of several files go together.
+fn check_clocks(files: &[FileRead]) -> Result<(), Problem> {
+    let [first, rest @ ..] = files else {
+        return Ok(());
+    };
+    let in_parts = first.series.is_some();
+    for other in rest {
+        let both_elapsed = first.scale == Scale::Elapsed && other.scale == Scale::Elapsed;
+        if !(first.scale.is_dated() && other.scale.is_dated() || in_parts && both_elapsed) {
+            return Err(Problem::error(
+                place(other),
+                "logs without dates cannot be put together: nothing tells how they follow each other",
+            )
+            .hint("give one file per test"));
+        }
+        if first.offset_us.is_some() != other.offset_us.is_some() {
+            let (with, without) = if first.offset_us.is_some() {
+                (first, other)
+            } else {
+                (other, first)
+            };
+            return Err(Problem::error(
+                place(without),
+                format!(
+                    "the times are local and those of {} tell their offset from universal time: nothing tells how they follow each other",
+                    with.source.file
+                ),
+            )
+            .hint("give zone in a [[log]] table of job.toml for the file with local times"));
+        }
+    }
+    Ok(())
+}
+
+/// Files that hold some signals of the loop each, as one: that of the PV with the others' signals, and
+/// where the others came from.
+fn put_together(
+    files: Vec<FileRead>,
+    warnings: &mut Vec<Problem>,
+) -> Result<(Vec<FileRead>, Vec<Source>), Vec<Problem>> {
+    let spans: Vec<_> = files
+        .iter()
+        .map(|file| {
+            file.series.as_ref().map_or((None, None), |series| {
+                (series.span_of_pv(), series.span_of_op())
+            })
+        })
+        .collect();
+    let is_whole = spans.iter().any(|(pv, op)| pv.is_some() && op.is_some());
+    let overlap = |one: (i64, i64), other: (i64, i64)| one.0 <= other.1 && other.0 <= one.1;
+    let mut missing = Vec::new();
+    for (file, (pv, op)) in files.iter().zip(&spans) {
+        let has_its_other = match (pv, op) {
+            (Some(pv), None) => {
+                !is_whole
+                    && spans
+                        .iter()
+                        .filter_map(|(_, op)| *op)
+                        .any(|op| overlap(*pv, op))
+            }
+            (None, Some(op)) => {
+                !is_whole
+                    && spans
+                        .iter()
+                        .filter_map(|(pv, _)| *pv)
+                        .any(|pv| overlap(pv, *op))
+            }
+            _ => true,
+        };
+        if !has_its_other {
+            missing.extend(file.missing.iter().cloned());
+        }
+    }
+    if missing.is_empty() && spans.iter().all(|(pv, _)| pv.is_none()) {
+        missing.extend(files.iter().flat_map(|file| file.missing.iter().cloned()));
+    }
+    if !missing.is_empty() {
+        return Err(missing);
+    }
+    if files.iter().any(|file| file.scale == Scale::Elapsed) {
+        warnings.push(Problem::warning(
+            place(&files[0]),
+            "the files bear no date; their times are taken to count from the same moment",
+        ));
+    }
+    let main = spans
+        .iter()
+        .position(|(pv, _)| pv.is_some())
+        .unwrap_or_default();
+    let from = files
+        .iter()
+        .map(|file| file.wanted_from)
+        .min()
+        .unwrap_or(i64::MIN);
+    let mut files = files;
+    let series = files
+        .iter_mut()
+        .filter_map(|file| file.series.take())
+        .collect();
+    let mut whole = files.remove(main);
+    whole.manual_values.extend(
+        files
+            .iter()
+            .flat_map(|file| file.manual_values.iter().cloned()),
+    );
+    whole.samples = Series::of_files(series).join(from);
+    Ok((
+        vec![whole],
+        files.into_iter().map(|file| file.source).collect(),
+    ))
+}
+
 /// Puts the files of a loop together.
 ///
 /// # Errors
 /// Where their clocks do not go together, or nothing is left.
 pub(super) fn join(mut files: Vec<FileRead>) -> Result<LogRead, Vec<Problem>> {
     let one = |problem: Problem| vec![problem];
-    let place = |file: &FileRead| {
-        let place = Place::file(&file.source.file);
-        match &file.source.sheet {
-            Some(sheet) => place.sheet(sheet),
-            None => place,
-        }
-    };
-    if let [first, rest @ ..] = &files[..]
-        && let Some(other) = rest
-            .iter()
-            .find(|file| !file.scale.is_dated() || !first.scale.is_dated())
-    {
-        return Err(one(Problem::error(
-            place(other),
-            "logs without dates cannot be put together: nothing tells how they follow each other",
-        )
-        .hint("give one file per test")));
-    }
+    check_clocks(&files).map_err(one)?;
     let mut warnings: Vec<Problem> = Vec::new();
     for file in &mut files {
         warnings.append(&mut file.warnings);
+    }
+    let mut others = Vec::new();
+    if files.iter().any(|file| file.series.is_some()) {
+        (files, others) = put_together(files, &mut warnings)?;
     }
     files.retain(|file| !file.samples.t_us.is_empty());
     if files.is_empty() {
@@ -228,7 +368,11 @@ pub(super) fn join(mut files: Vec<FileRead>) -> Result<LogRead, Vec<Problem>> {
             Clock::Elapsed
         },
         samples,
-        sources: files.into_iter().map(|file| file.source).collect(),
+        sources: files
+            .into_iter()
+            .map(|file| file.source)
+            .chain(others)
+            .collect(),
         warnings,
     })
 }

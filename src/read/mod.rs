@@ -5,6 +5,7 @@
 //! its cells become samples (`extract`). Whatever cannot be read for certain is an error at its
 //! place; whatever had to be decided is reported with its reason.
 
+mod blanks;
 mod cells;
 pub mod clock;
 mod collect;
@@ -20,14 +21,18 @@ mod join;
 pub mod layout;
 pub mod numbers;
 pub mod order;
+mod parts;
 pub mod roles;
 pub mod rows;
 pub mod samples;
+mod series;
 mod sheet;
 pub mod source;
 pub mod stamp;
 pub mod table;
 pub mod text;
+mod timed;
+mod times;
 mod tracks;
 pub mod units;
 pub mod values;

@@ -11,7 +11,7 @@ const SORTED_BACK_US: i64 = 60 * MICROSECONDS;
 const HOUR_US: i64 = 3600 * MICROSECONDS;
 
 /// Rows of one signal in order of time, no two at the same moment.
-#[derive(Debug, Default)]
+#[derive(Debug, Clone, Default)]
 pub struct Ordered {
     /// Microseconds, strictly increasing.
     pub t_us: Vec<i64>,
@@ -27,9 +27,22 @@ pub struct Ordered {
     pub newest_first: bool,
     /// What was added to the moments at the end, microseconds.
     pub shift_us: i64,
+    /// What the clock of a known zone is ahead of universal time, microseconds.
+    pub offset_us: Option<i64>,
 }
 
-/// Puts rows in order. `t_us` has one moment per row; `shift_us` is what an earlier file of the
+/// What an earlier file of the same log ended with.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Carried {
+    /// What was added to its moments at the end, microseconds.
+    pub shift_us: i64,
+    /// What its clock is ahead of universal time, microseconds.
+    pub offset_us: Option<i64>,
+    /// Its last moment, where the clock went back after it.
+    pub latest_us: Option<i64>,
+}
+
+/// Puts rows in order. `t_us` has one moment per row; `carried` is what an earlier file of the
 /// same log ended with; `place` names a row.
 ///
 /// # Errors
@@ -38,19 +51,19 @@ pub fn order(
     mut t_us: Vec<i64>,
     scale: Scale,
     zone: Option<Tz>,
-    shift_us: i64,
+    carried: Carried,
     place: impl Fn(usize) -> Place,
 ) -> Result<Ordered, Problem> {
     let zone = zone.filter(|_| scale == Scale::Local);
     // As nearly every log stands.
     if zone.is_none() && t_us.is_sorted_by(|a, b| a < b) {
         for t in &mut t_us {
-            *t += shift_us;
+            *t += carried.shift_us;
         }
         return Ok(Ordered {
             rows: Rows::Run(0..t_us.len()),
             t_us,
-            shift_us,
+            shift_us: carried.shift_us,
             ..Ordered::default()
         });
     }
@@ -58,10 +71,10 @@ pub fn order(
     let interval = usual_interval(&t_us, newest_first);
     let mut ordered = Ordered {
         newest_first,
-        shift_us,
+        shift_us: carried.shift_us,
         ..Ordered::default()
     };
-    let mut first_offset = None;
+    let mut first_offset = carried.offset_us.filter(|_| zone.is_some());
     let mut moments: Vec<(i64, u32)> = Vec::with_capacity(t_us.len());
     let mut latest = i64::MIN;
     let mut latest_raw = i64::MIN;
@@ -70,6 +83,7 @@ pub fn order(
         let raw = t_us[row];
         let mut t = raw + ordered.shift_us;
         if let Some(zone) = zone {
+            let latest = latest.max(carried.latest_us.unwrap_or(i64::MIN));
             let not_before = latest.saturating_sub(first_offset.unwrap_or(0));
             let universal =
                 universal_us(zone, raw, not_before, SORTED_BACK_US).ok_or_else(|| {
@@ -133,6 +147,7 @@ pub fn order(
         let row = u32::try_from(row).expect("a table holds fewer than 2^32 rows");
         moments.push((t, row));
     }
+    ordered.offset_us = first_offset;
     if ordered.sorted_rows > 0 {
         moments.sort_by_key(|(t, _)| *t);
     }
@@ -189,7 +204,7 @@ mod tests {
     const S: i64 = MICROSECONDS;
 
     fn run(t_us: &[i64], scale: Scale) -> Result<Ordered, String> {
-        order(t_us.to_vec(), scale, None, 0, |row| {
+        order(t_us.to_vec(), scale, None, Carried::default(), |row| {
             Place::file("a.csv").row(row + 1)
         })
         .map_err(|problem| problem.to_string())
@@ -234,9 +249,13 @@ mod tests {
         let guessed = run(&local, Scale::Local).expect("unfolded");
         assert!(guessed.fold.is_some());
         let zone = Some(chrono_tz::Europe::Berlin);
-        let known = order(local.clone(), Scale::Local, zone, 0, |row| {
-            Place::file("a.csv").row(row + 1)
-        })
+        let known = order(
+            local.clone(),
+            Scale::Local,
+            zone,
+            Carried::default(),
+            |row| Place::file("a.csv").row(row + 1),
+        )
         .expect("unfolded");
         assert!(known.fold.is_some());
         assert_eq!(guessed.t_us, known.t_us);
@@ -257,11 +276,24 @@ mod tests {
             .collect();
         let berlin = Some(chrono_tz::Europe::Berlin);
         let place = |row| Place::file("a.csv").row(row + 1);
-        let ordered = order(local.clone(), Scale::Local, berlin, 0, place).expect("in order");
+        let ordered = order(
+            local.clone(),
+            Scale::Local,
+            berlin,
+            Carried::default(),
+            place,
+        )
+        .expect("in order");
         assert!(ordered.t_us.windows(2).all(|pair| pair[1] - pair[0] == S));
         let skipped = [at("2026-03-29T02:30:00")];
-        let problem =
-            order(skipped.to_vec(), Scale::Local, berlin, 0, place).expect_err("no such time");
+        let problem = order(
+            skipped.to_vec(),
+            Scale::Local,
+            berlin,
+            Carried::default(),
+            place,
+        )
+        .expect_err("no such time");
         assert!(
             problem
                 .to_string()

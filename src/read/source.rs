@@ -206,7 +206,7 @@ mod tests {
         assert!(
             problem
                 .to_string()
-                .starts_with("a.xlsx: the file is not a readable .xlsx workbook: "),
+                .starts_with("a.xlsx: the file is not a whole .xlsx workbook: it was cut short or damaged on the way, or is of another kind\n"),
             "{problem}"
         );
         let problem =

@@ -1,5 +1,6 @@
 //! Sheets of workbooks and delimited text as tables of located cells.
 
+use super::blanks;
 use super::delimited::{TextCells, Unreadable};
 use super::sheet::SheetCells;
 use super::text::{self, Decoded};
@@ -185,10 +186,15 @@ impl Table {
     /// A delimited text file.
     ///
     /// # Errors
-    /// Where a quotation mark is left open, or the text is beyond what can be addressed.
+    /// Where a quotation mark is left open, the text is beyond what can be addressed, or blanks alone set
+    /// its columns apart and a row lacks a value.
     pub(super) fn of_text(file: &str, decoded: Decoded) -> Result<Self, Problem> {
         let (delimiter, skipped) = text::delimiter(&decoded.text);
-        let cells = TextCells::new(decoded.text, skipped, delimiter);
+        let cells = if delimiter == b' ' {
+            TextCells::new(blanks::with_tabs(&decoded.text, file)?, 0, b'\t')
+        } else {
+            TextCells::new(decoded.text, skipped, delimiter)
+        };
         let cells = cells.map_err(|reason| match reason {
             Unreadable::OpenQuote(line) => Problem::error(
                 Place::file(file).row(line),

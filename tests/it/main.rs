@@ -6,6 +6,7 @@ mod broken;
 mod cli;
 mod demo;
 mod errors;
+mod forms;
 mod identify;
 mod layering;
 mod new_user;
