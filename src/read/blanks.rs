@@ -79,7 +79,7 @@ fn is_row(cells: &[&str]) -> bool {
     cells
         .first()
         .is_some_and(|first| stamp(first).is_some() || is_number(first))
-        && cells[1..].iter().any(|cell| is_number(cell))
+        && cells[1..].iter().any(is_number)
 }
 
 /// Where each run of letters that are no white space begins and ends; a quoted text is one.

@@ -100,7 +100,7 @@ pub fn delimiter(text: &str) -> (u8, usize) {
         (body.iter().all(is_wanted) && blanks::regular_columns(body.iter().copied()).is_some())
             .then_some(b' ')
     };
-    let chosen = is_regular(&[b'\t', b';', b'|'])
+    let chosen = is_regular(b"\t;|")
         .or_else(|| blank(true))
         .or_else(|| is_regular(b","))
         .or_else(|| candidates.into_iter().find(|&sign| regular(sign).is_some()))

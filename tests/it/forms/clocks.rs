@@ -96,7 +96,8 @@ fn two_digit_years_in_the_order_of_the_job() {
 fn fractions_of_a_second() {
     let truth = truth();
     // Every other row a quarter second late, the last digit a millisecond.
-    let moment = |k: usize| at(k) + TimeDelta::milliseconds(if k % 2 == 0 { 0 } else { 251 });
+    let moment =
+        |k: usize| at(k) + TimeDelta::milliseconds(if k.is_multiple_of(2) { 0 } else { 251 });
     let expected: Vec<f64> = (0..ROWS)
         .map(|k| (moment(k) - start()).num_milliseconds() as f64 / 1e3)
         .collect();

@@ -520,11 +520,11 @@ fn a_sheet_for_each_signal() {
         sheet.set_name(format!("FIC-301 {name}")).expect("a name");
         sheet.write_string(0, 0, "Time").expect("written");
         sheet.write_string(0, 1, "Value").expect("written");
-        for k in 0..ROWS {
+        for (k, value) in values.iter().enumerate() {
             sheet
                 .write_string(1 + k as u32, 0, iso(k))
                 .expect("written");
-            let value: f64 = values[k].parse().expect("a number");
+            let value: f64 = value.parse().expect("a number");
             sheet.write_number(1 + k as u32, 1, value).expect("written");
         }
     }
