@@ -242,25 +242,36 @@ fn put_together(
     let overlap = |one: (i64, i64), other: (i64, i64)| one.0 <= other.1 && other.0 <= one.1;
     let mut missing = Vec::new();
     for (file, (pv, op)) in files.iter().zip(&spans) {
-        let has_its_other = match (pv, op) {
-            (Some(pv), None) => {
-                !is_whole
-                    && spans
-                        .iter()
-                        .filter_map(|(_, op)| *op)
-                        .any(|op| overlap(*pv, op))
-            }
-            (None, Some(op)) => {
-                !is_whole
-                    && spans
-                        .iter()
-                        .filter_map(|(pv, _)| *pv)
-                        .any(|pv| overlap(pv, *op))
-            }
-            _ => true,
+        let (own, others, names): ((i64, i64), Vec<(i64, i64)>, [&str; 2]) = match (pv, op) {
+            (Some(pv), None) => (
+                *pv,
+                spans.iter().filter_map(|(_, op)| *op).collect(),
+                ["PV", "OP"],
+            ),
+            (None, Some(op)) => (
+                *op,
+                spans.iter().filter_map(|(pv, _)| *pv).collect(),
+                ["OP", "PV"],
+            ),
+            _ => continue,
         };
-        if !has_its_other {
+        if is_whole || others.is_empty() {
             missing.extend(file.missing.iter().cloned());
+        } else if !others.iter().any(|other| overlap(own, *other)) {
+            let dated = file.scale.is_dated();
+            missing.push(
+                Problem::error(
+                    place(file),
+                    format!(
+                        "it holds the {} from {} to {}, and no file of the loop holds the {} at that time",
+                        names[0],
+                        moment_text(own.0, dated),
+                        moment_text(own.1, dated),
+                        names[1]
+                    ),
+                )
+                .hint("name files of the same time"),
+            );
         }
     }
     if missing.is_empty() && spans.iter().all(|(pv, _)| pv.is_none()) {

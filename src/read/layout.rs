@@ -23,6 +23,8 @@ pub struct Heading {
     pub column: usize,
     /// The text; empty in a log without headings.
     pub text: String,
+    /// Of headings over two rows the text of each.
+    pub rows: Vec<String>,
     /// Unit from the row of units under the headings.
     pub unit_below: Option<String>,
 }
@@ -170,6 +172,9 @@ pub fn find(
         .map(|column| Heading {
             column,
             text: text_of(column),
+            rows: stacked
+                .as_ref()
+                .map_or_else(Vec::new, |(_, stacked)| stacked.rows[column].to_vec()),
             unit_below: unit_rows.clone().find_map(|row| {
                 let text = table.row(row).cell(column).text();
                 let bare = text.trim_matches(['[', ']', '(', ')']).to_owned();
@@ -188,6 +193,8 @@ pub fn find(
 /// Headings over two rows, put together.
 struct Stacked {
     texts: Vec<String>,
+    /// The texts of both rows, column by column.
+    rows: Vec<[String; 2]>,
     /// Columns that have a tag and what of it.
     tagged: usize,
 }
@@ -231,7 +238,16 @@ fn stacked(table: &Table, upper: usize, tag: Option<&str>) -> Option<Stacked> {
         .collect();
     let count = |texts: &[String]| texts.iter().filter(|text| is_tagged(text, tag)).count();
     let tagged = count(&texts);
-    (tagged > count(&first).max(count(&second))).then_some(Stacked { texts, tagged })
+    let is_more = tagged > count(&first).max(count(&second));
+    is_more.then(|| Stacked {
+        texts,
+        rows: first
+            .into_iter()
+            .zip(second)
+            .map(|(first, second)| [first, second])
+            .collect(),
+        tagged,
+    })
 }
 
 /// Whether a heading may stand over several columns: it bears a tag or says what a value is.

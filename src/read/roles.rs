@@ -7,7 +7,7 @@ use super::layout::{Heading, Layout};
 use super::parts::name_the_value;
 use super::stamp::stamp;
 use super::table::{Cell, Table};
-use super::times::{blocks, quality_beside_pv, times_of_blocks};
+use super::times::{blocks, hold_all, quality_beside_pv, times_of_blocks};
 use super::values::is_good;
 use crate::notice::{Problem, nearest};
 use serde::Serialize;
@@ -129,11 +129,15 @@ impl Headings<'_> {
                 })
                 .collect::<Vec<_>>()
         };
-        let matches = if whole.is_empty() {
-            without_unit()
-        } else {
-            whole
+        let one_row = || {
+            headings()
+                .filter(|heading| heading.rows.iter().any(|text| even(text) == even(name)))
+                .collect::<Vec<_>>()
         };
+        let matches = [whole, without_unit(), one_row()]
+            .into_iter()
+            .find(|matches| !matches.is_empty())
+            .unwrap_or_default();
         match matches.as_slice() {
             [one] => Ok(one.column),
             [] => {
@@ -365,6 +369,7 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
             || holds_quality(table, layout, found.column)
     });
     problems.extend(headings.named_twice(&found));
+    let blocks = blocks.filter(|blocks| hold_all(blocks, &found));
     let (time, own_times) = match (time, blocks) {
         (Ok(time), _) => (time, BTreeMap::new()),
         (Err(_), Some(blocks)) => times_of_blocks(&headings, &blocks, &mut found),

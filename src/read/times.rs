@@ -123,6 +123,14 @@ pub(super) fn times_of_blocks(
     (main, own)
 }
 
+/// Whether every signal stands to the right of a time column; else whose time is whose is not known.
+pub(super) fn hold_all(blocks: &[Block], found: &[RoleFound]) -> bool {
+    found
+        .iter()
+        .filter(|found| SIGNALS.contains(&found.role))
+        .all(|found| blocks[0].columns.start <= found.column)
+}
+
 /// Of several columns of quality the only one in the block of the PV.
 pub(super) fn quality_beside_pv(
     headings: &Headings<'_>,

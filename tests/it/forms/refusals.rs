@@ -329,8 +329,6 @@ fn files_that_do_not_make_a_loop() {
     // No OP in any; an OP of another time; a whole log and a later one that lost its OP.
     let no_op = "no column is recognised as the OP; its headings are \"Time\", \"FIC-301.PV\"\n    \
                  name it in the schedule under \"op column\", or the file that holds it beside this one under \"test log\"";
-    let no_pv = "no column is recognised as the PV of FIC-301; its headings are \"Time\", \"FIC-301.OP\"\n    \
-                 name it in the schedule under \"pv column\"";
     let files = Files::new("a.csv; b.csv")
         .with("a.csv", signal("FIC-301.PV", &truth.pv, 0))
         .with("b.csv", signal("FIC-301.PV", &truth.pv, ROWS));
@@ -343,7 +341,10 @@ fn files_that_do_not_make_a_loop() {
         .with("b.csv", signal("FIC-301.OP", &truth.op, ROWS));
     assert_eq!(
         files.refusal(),
-        format!("a.csv, line 1: {no_op}\nb.csv, line 1: {no_pv}")
+        "a.csv: it holds the PV from 2026-03-14 09:05:00 to 2026-03-14 09:14:57, and no file of the loop holds the OP at that time\n    \
+         name files of the same time\n\
+         b.csv: it holds the OP from 2026-03-14 09:15:00 to 2026-03-14 09:24:57, and no file of the loop holds the PV at that time\n    \
+         name files of the same time"
     );
     let files = Files::new("a.csv; b.csv")
         .with("a.csv", delimited(&truth.plain(), ";"))
@@ -401,4 +402,18 @@ fn workbooks_that_are_damaged() {
             )
         );
     }
+}
+
+#[test]
+fn times_to_the_right_of_their_signals() {
+    let truth = truth();
+    let mut text = "FIC-301.PV;Time;FIC-301.OP;Time;Remark\n".to_owned();
+    for k in 0..ROWS {
+        text += &format!("{};{};{};{};-\n", truth.pv[k], iso(k), truth.op[k], iso(k));
+    }
+    assert_eq!(
+        Files::one("trend.csv", text).refusal(),
+        "trend.csv, line 1: 2 columns may be the time: \"Time\" (#2), \"Time\" (#4)\n    \
+         name one in the schedule under \"time column\""
+    );
 }
