@@ -5,7 +5,7 @@ use crate::notice::{Place, Problem};
 use chrono::NaiveDate;
 
 /// Why the order is known where every date has its year first or its month as a word.
-pub(super) const PLAIN_ORDER: &str = "date and time of day";
+pub(super) const PLAIN_ORDER: &str = "the year first or the month as a word";
 
 /// The orders that a date of three numbers can be in.
 fn candidates(date: DateText) -> &'static [DateOrder] {

@@ -414,6 +414,7 @@ impl Reading<'_> {
             compressed: false,
             gaps: Vec::new(),
             clock_format: moments.format,
+            decimal,
             roles: found,
         };
         let mut read = FileRead {

@@ -22,6 +22,7 @@ pub mod layout;
 pub mod numbers;
 pub mod order;
 mod parts;
+mod proposal;
 pub mod roles;
 pub mod rows;
 pub mod samples;
@@ -30,6 +31,7 @@ mod sheet;
 pub mod source;
 pub mod stamp;
 pub mod table;
+mod tags;
 pub mod text;
 mod timed;
 mod times;
@@ -48,6 +50,7 @@ use std::path::PathBuf;
 
 pub use guard::is_guarded;
 pub use numbers::DecimalSign;
+pub use proposal::Proposal;
 pub use roles::RoleFound;
 pub use samples::{read_samples_csv, samples_csv};
 pub use source::FileCache;
@@ -222,6 +225,8 @@ pub struct Source {
     pub gaps: Vec<Gap>,
     /// How the clock is written.
     pub clock_format: String,
+    /// Decimal sign of its numbers.
+    pub decimal: DecimalSign,
     /// Which column got which role, and why.
     pub roles: Vec<RoleFound>,
 }

@@ -13,6 +13,9 @@ use crate::notice::{Problem, nearest};
 use serde::Serialize;
 use std::collections::BTreeMap;
 
+/// Why a column has its role that the schedule names for it.
+pub(super) const NAMED: &str = "named in the schedule";
+
 /// A column that was given a role.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize)]
 pub struct RoleFound {
@@ -298,11 +301,23 @@ pub struct Wanted<'a> {
     pub partial: bool,
 }
 
-/// Gives every column its role.
-///
-/// # Errors
-/// Where a column that is needed is missing, named wrongly or may be one of several.
-pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Roles, Vec<Problem>> {
+/// What the headings of a table tell for one loop, also where they do not tell all.
+#[derive(Debug)]
+pub struct Recognised {
+    /// Where the time stands; `None` where that is not known.
+    time: Option<TimeColumns>,
+    own_times: BTreeMap<Role, TimeColumns>,
+    /// Every column that could be given a role.
+    pub found: Vec<RoleFound>,
+    /// Whether rows bear a tag and a value each.
+    long: bool,
+    missing: Vec<Problem>,
+    /// Roles that are missing, named wrongly or may be one of several columns'.
+    pub problems: Vec<Problem>,
+}
+
+/// Gives columns their roles as far as that can be told.
+pub fn recognise(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Recognised {
     let Wanted {
         names,
         tag,
@@ -327,6 +342,8 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
     };
     // In a long table these may name the signal's own text in the tag column.
     let mut unknown_names = Vec::new();
+    // Which column is the value matters in a long table alone.
+    let mut several_values = Vec::new();
     for (role, name) in [
         (Role::Pv, &names.pv),
         (Role::Op, &names.op),
@@ -337,9 +354,9 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
         (Role::Value, &None),
     ] {
         let outcome = match name {
-            Some(name) => headings.named(name, role).map(|column| {
-                Some(headings.role(role, column, "named in the schedule".to_owned()))
-            }),
+            Some(name) => headings
+                .named(name, role)
+                .map(|column| Some(headings.role(role, column, NAMED.to_owned()))),
             None => headings.recognised(role, tag),
         };
         // Each signal's own quality: that of the PV is wanted.
@@ -358,6 +375,7 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
             {
                 unknown_names.push(problem);
             }
+            Err(problem) if role == Role::Value => several_values.push(problem),
             Err(problem) => problems.push(problem),
         }
     }
@@ -371,17 +389,24 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
     problems.extend(headings.named_twice(&found));
     let blocks = blocks.filter(|blocks| hold_all(blocks, &found));
     let (time, own_times) = match (time, blocks) {
-        (Ok(time), _) => (time, BTreeMap::new()),
-        (Err(_), Some(blocks)) => times_of_blocks(&headings, &blocks, &mut found),
+        (Ok(time), _) => (Some(time), BTreeMap::new()),
+        (Err(_), Some(blocks)) => {
+            let (time, own) = times_of_blocks(&headings, &blocks, &mut found);
+            (Some(time), own)
+        }
         (Err(problem), None) => {
             problems.insert(0, problem);
-            (TimeColumns::Single(0), BTreeMap::new())
+            (None, BTreeMap::new())
         }
     };
     let has = |found: &[RoleFound], role: Role| found.iter().any(|found| found.role == role);
     let is_table_of = |found: &[RoleFound]| has(found, Role::Tag) && has(found, Role::Value);
     if partial && !SIGNALS.iter().any(|&role| has(&found, role)) && !is_table_of(&found) {
         name_the_value(&headings, tag, &mut found);
+    }
+    let is_for_values = partial && !SIGNALS.iter().any(|&role| has(&found, role));
+    if (has(&found, Role::Tag) && !has(&found, Role::Pv)) || is_for_values {
+        problems.append(&mut several_values);
     }
     let long = is_table_of(&found) && !has(&found, Role::Pv);
     let mut missing = Vec::new();
@@ -403,9 +428,34 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
     if !partial || !SIGNALS.iter().any(|&role| has(&found, role)) {
         problems.append(&mut missing);
     }
-    if !problems.is_empty() {
-        return Err(problems);
+    found.sort_by_key(|found| found.role);
+    Recognised {
+        time,
+        own_times,
+        found,
+        long,
+        missing,
+        problems,
     }
+}
+
+/// Gives every column its role.
+///
+/// # Errors
+/// Where a column that is needed is missing, named wrongly or may be one of several.
+pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Roles, Vec<Problem>> {
+    let Wanted { names, tag, .. } = wanted;
+    let Recognised {
+        time,
+        own_times,
+        mut found,
+        long,
+        missing,
+        problems,
+    } = recognise(table, layout, wanted);
+    let Some(time) = time.filter(|_| problems.is_empty()) else {
+        return Err(problems);
+    };
     if !long {
         found.retain(|found| found.role != Role::Value);
         // A tag column beside a PV column narrows the rows; one that was only guessed from a
@@ -419,7 +469,6 @@ pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Role
             found.role != Role::Tag || names.tag.is_some() || holds_tag(found.column)
         });
     }
-    found.sort_by_key(|found| found.role);
     Ok(Roles {
         time,
         found,
@@ -449,7 +498,7 @@ fn time_columns(
     found: &mut Vec<RoleFound>,
 ) -> Result<TimeColumns, Problem> {
     if let Some(name) = &names.time {
-        let why = || "named in the schedule".to_owned();
+        let why = || NAMED.to_owned();
         // A heading may itself hold a plus sign: the whole name is tried first.
         if let Some((date, time)) = name.split_once('+')
             && headings.named(name, Role::Time).is_err()

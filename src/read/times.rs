@@ -18,13 +18,6 @@ pub(super) struct Block {
 /// Why a time column was taken.
 const WHY: &str = "the time column to the left of the signal";
 
-impl RoleFound {
-    /// Whether it is the time column of some signals only.
-    pub(super) fn is_time_of_its_own(&self) -> bool {
-        self.role == Role::Time && self.why == WHY
-    }
-}
-
 /// The blocks of a table; `None` where its time columns do not make at least two, each with signals.
 pub(super) fn blocks(headings: &Headings<'_>) -> Option<Vec<Block>> {
     let width = headings.table.width();

@@ -8,6 +8,7 @@ mod demo;
 mod errors;
 mod forms;
 mod identify;
+mod inspect;
 mod layering;
 mod new_user;
 mod plant;
