@@ -224,6 +224,9 @@ fn check_clocks(files: &[FileRead]) -> Result<(), Problem> {
     Ok(())
 }
 
+/// First and last moment of a signal.
+type Span = Option<(i64, i64)>;
+
 /// Files that hold some signals of the loop each, as one: that of the PV with the others' signals, and
 /// where the others came from.
 fn put_together(
@@ -242,17 +245,12 @@ fn put_together(
     let overlap = |one: (i64, i64), other: (i64, i64)| one.0 <= other.1 && other.0 <= one.1;
     let mut missing = Vec::new();
     for (file, (pv, op)) in files.iter().zip(&spans) {
-        let (own, others, names): ((i64, i64), Vec<(i64, i64)>, [&str; 2]) = match (pv, op) {
-            (Some(pv), None) => (
-                *pv,
-                spans.iter().filter_map(|(_, op)| *op).collect(),
-                ["PV", "OP"],
-            ),
-            (None, Some(op)) => (
-                *op,
-                spans.iter().filter_map(|(pv, _)| *pv).collect(),
-                ["OP", "PV"],
-            ),
+        let spans_of = |of: fn(&(Span, Span)) -> Span| -> Vec<(i64, i64)> {
+            spans.iter().filter_map(of).collect()
+        };
+        let (own, others, names) = match (pv, op) {
+            (Some(pv), None) => (*pv, spans_of(|(_, op)| *op), ["PV", "OP"]),
+            (None, Some(op)) => (*op, spans_of(|(pv, _)| *pv), ["OP", "PV"]),
             _ => continue,
         };
         if is_whole || others.is_empty() {
