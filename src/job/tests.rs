@@ -181,6 +181,11 @@ fn cells_that_cannot_be_are_named() {
             "found p has to be above 0 (the sign is the action's), found -2",
         ),
         (
+            "form;i as;found p;found i;found d",
+            "parallel;1/s;0;0.1;2",
+            "found d has no meaning where found p is 0: its filter follows from both",
+        ),
+        (
             "found p",
             "two",
             "found p has to be a number, found \"two\"",

@@ -2,12 +2,15 @@
 //! `tests/README.md`.
 
 mod archive;
+mod as_found;
 mod broken;
+mod cascade;
 mod cli;
 mod demo;
 mod errors;
 mod identify;
 mod layering;
+mod loops;
 mod new_user;
 mod plant;
 mod predict;
@@ -17,3 +20,4 @@ mod schema;
 mod support;
 mod synthetic;
 mod twins;
+mod withheld;
