@@ -369,7 +369,7 @@ fn no_page_of_a_withheld_loop_holds_a_number_to_enter() {
     let operations = pages
         .iter()
         .map(|page| plain(std::slice::from_ref(page)))
-        .filter(|page| page.contains("For operations"));
+        .filter(|page| page.contains("mean for the control room"));
     for page in operations {
         for (cause, record, secret) in &loops {
             lacks(&page, secret, &format!("{cause:?}: the operations page"));
