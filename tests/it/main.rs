@@ -9,6 +9,7 @@ mod cli;
 mod demo;
 mod errors;
 mod identify;
+mod inspect;
 mod layering;
 mod loops;
 mod new_user;
