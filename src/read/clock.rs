@@ -1,7 +1,8 @@
 //! The time column of a log: which way its dates are written, and the moments of its rows.
 
-use super::dates::date_order;
+use super::dates::{PLAIN_ORDER, date_order};
 use super::numbers::{DecimalSign, number};
+use super::rows::Rows;
 use super::stamp::{DateOrder, DateText, MICROSECONDS, Stamp, stamp};
 use super::table::{Cell, Table};
 use super::units::TimeUnit;
@@ -14,7 +15,10 @@ pub const DAY_US: i64 = 86_400 * MICROSECONDS;
 
 /// No log reaches farther from its clock's zero than 2,800 years; differences of moments within it
 /// cannot overflow.
-const FARTHEST_US: i64 = 1_000_000 * DAY_US;
+pub(super) const FARTHEST_US: i64 = 1_000_000 * DAY_US;
+
+/// In the place of a moment where a row holds no readable time.
+pub const NO_TIME: i64 = i64::MIN;
 
 /// Where the time of a row stands.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -78,9 +82,9 @@ impl Scale {
 /// The moments of a table's rows.
 #[derive(Debug, Clone)]
 pub struct Moments {
-    /// Per row asked for: microseconds since 1970-01-01 on the shown clock, or elapsed; `None`
-    /// where the row holds no readable time.
-    pub t_us: Vec<Option<i64>>,
+    /// Per row asked for: microseconds since 1970-01-01 on the shown clock, or elapsed;
+    /// [`NO_TIME`] where the row holds no readable time.
+    pub t_us: Vec<i64>,
     /// How they are to be understood.
     pub scale: Scale,
     /// How they are written, in words.
@@ -100,7 +104,7 @@ impl Moments {
         let (Some(wanted), Some(own)) = (offset_us, self.offset_us) else {
             return;
         };
-        for t_us in self.t_us.iter_mut().flatten() {
+        for t_us in self.t_us.iter_mut().filter(|t_us| **t_us != NO_TIME) {
             *t_us += wanted - own;
         }
         self.offset_us = Some(wanted);
@@ -193,7 +197,7 @@ fn paired(date: RowTime, time: RowTime) -> RowTime {
 /// Where the order of day and month cannot be told, or no row holds a time.
 pub fn read(
     table: &Table,
-    rows: &[usize],
+    rows: &Rows,
     columns: TimeColumns,
     rules: &ClockRules<'_>,
 ) -> Result<Moments, Problem> {
@@ -203,9 +207,8 @@ pub fn read(
     };
     let times: Vec<RowTime> = rows
         .iter()
-        .map(|&index| {
-            let row = table.row(index);
-            let read = |column| row_time(row.cell(column), rules.decimal);
+        .map(|index| {
+            let read = |column| row_time(table.cell(index, column), rules.decimal);
             match columns {
                 TimeColumns::Pair { date, time } => paired(read(date), read(time)),
                 _ => read(column),
@@ -215,7 +218,7 @@ pub fn read(
     let place = |k: usize| {
         table
             .place()
-            .row(table.row(rows[k]).number)
+            .row(table.row(rows.get(k)).number)
             .column(column, rules.heading)
     };
     let count = |is: fn(&RowTime) -> bool| times.iter().filter(|time| is(time)).count();
@@ -255,7 +258,7 @@ pub fn read(
     };
     if let TimeColumns::Pair { date, .. } = columns
         && matches!(
-            rows.first().map(|&index| table.row(index).cell(date)),
+            rows.iter().next().map(|index| table.cell(index, date)),
             Some(Cell::Date(_))
         )
     {
@@ -263,7 +266,9 @@ pub fn read(
             .clone_into(&mut moments.format);
     }
     for t_us in &mut moments.t_us {
-        *t_us = t_us.filter(|t| t.abs() <= FARTHEST_US);
+        if t_us.saturating_abs() > FARTHEST_US {
+            *t_us = NO_TIME;
+        }
     }
     Ok(moments)
 }
@@ -272,7 +277,7 @@ pub fn read(
 fn counted(rows: usize, interval_s: f64) -> Moments {
     Moments {
         t_us: (0..rows)
-            .map(|k| Some(libm::round(k as f64 * interval_s * 1e6) as i64))
+            .map(|k| libm::round(k as f64 * interval_s * 1e6) as i64)
             .collect(),
         scale: Scale::Elapsed,
         format: format!("no clock; one row every {interval_s} s as given in job.toml"),
@@ -283,19 +288,36 @@ fn counted(rows: usize, interval_s: f64) -> Moments {
 }
 
 fn real_dates(times: &[RowTime]) -> Moments {
-    Moments {
-        t_us: times
-            .iter()
-            .map(|time| match time {
-                RowTime::Cell(at) => Some(microseconds(*at)),
-                _ => None,
-            })
-            .collect(),
-        scale: Scale::Local,
-        format: "real dates of the workbook".to_owned(),
-        warnings: Vec::new(),
-        offset_us: None,
-        dates: None,
+    let t_us = times.iter().map(|time| match time {
+        RowTime::Cell(at) => microseconds(*at),
+        _ => NO_TIME,
+    });
+    Moments::of_real_dates(t_us.collect())
+}
+
+impl Moments {
+    /// The moments of a workbook's own dates.
+    pub(super) fn of_real_dates(t_us: Vec<i64>) -> Self {
+        Moments {
+            t_us,
+            scale: Scale::Local,
+            format: "real dates of the workbook".to_owned(),
+            warnings: Vec::new(),
+            offset_us: None,
+            dates: None,
+        }
+    }
+
+    /// The moments of dates and times of day as text whose order is plain in each.
+    pub(super) fn of_plain_text(t_us: Vec<i64>) -> Self {
+        Moments {
+            t_us,
+            scale: Scale::Local,
+            format: format!("dates as text, {PLAIN_ORDER}"),
+            warnings: Vec::new(),
+            offset_us: None,
+            dates: None,
+        }
     }
 }
 
@@ -312,8 +334,8 @@ fn times_of_day(times: &[RowTime], rules: &ClockRules<'_>) -> Moments {
                     date: None,
                     time_us: Some(time_us),
                     ..
-                }) => Some(base + time_us),
-                _ => None,
+                }) => base.saturating_add(*time_us),
+                _ => NO_TIME,
             })
             .collect(),
         scale: Scale::TimeOfDay { dated },
@@ -367,23 +389,23 @@ fn dates_as_text(
         RowTime::Stamp(stamp) => offset_us(stamp),
         _ => None,
     });
-    let t_us = times
-        .iter()
-        .map(|time| {
-            let RowTime::Stamp(stamp) = time else {
-                return None;
-            };
-            let date = stamp.date?.date(order)?;
-            let local = microseconds(date.and_time(NaiveTime::MIN)) + stamp.time_us.unwrap_or(0);
-            if with_offset == 0 {
-                return Some(local);
-            }
-            // A row without an offset among rows that have one cannot be placed.
-            Some(local - offset_us(stamp)? + first_offset_us?)
-        })
-        .collect();
+    let moment_of = |time: &RowTime| {
+        let RowTime::Stamp(stamp) = time else {
+            return None;
+        };
+        let date = stamp.date?.date(order)?;
+        let local = microseconds(date.and_time(NaiveTime::MIN)) + stamp.time_us.unwrap_or(0);
+        if with_offset == 0 {
+            return Some(local);
+        }
+        // A row without an offset among rows that have one cannot be placed.
+        Some(local - offset_us(stamp)? + first_offset_us?)
+    };
     Ok(Moments {
-        t_us,
+        t_us: times
+            .iter()
+            .map(|time| moment_of(time).unwrap_or(NO_TIME))
+            .collect(),
         scale: if with_offset > 0 {
             Scale::Even
         } else {
@@ -509,8 +531,8 @@ fn plain_numbers(
         t_us: times
             .iter()
             .map(|time| match time {
-                RowTime::Number(number) => Some(to_us(*number)),
-                _ => None,
+                RowTime::Number(number) => to_us(*number),
+                _ => NO_TIME,
             })
             .collect(),
         scale,

@@ -1,13 +1,15 @@
 //! From located cells to the samples of one loop.
 
 use super::cells::{CellReader, FileSamples};
-use super::clock::{self, ClockRules, Moments, Scale, TimeColumns};
+use super::clock::{self, ClockRules, Moments, NO_TIME, Scale, TimeColumns};
 use super::collect::BadCells;
+use super::columns::{self, Columns};
 use super::headings::Role;
 use super::layout::{self, Layout};
-use super::numbers::{DecimalSign, Evidence, Shape, Undecided, shape};
+use super::numbers::{DecimalSign, Shape, Undecided, shape};
 use super::order::Ordered;
 use super::roles::{self, Roles};
+use super::rows::Rows;
 use super::series::Series;
 use super::source::{FileCache, SourceFile};
 use super::stamp::{MICROSECONDS, stamp};
@@ -273,43 +275,9 @@ fn check_units(request: &LogRequest, understood: &Understood<'_>) -> Result<(), 
     Ok(())
 }
 
-/// The decimal sign of a table: as given, or as its numbers say.
-pub(super) fn decimal_sign(
-    understood: &Understood<'_>,
-    rule: &LogRule,
-) -> Result<DecimalSign, Problem> {
-    if let Some(decimal) = rule.decimal {
-        return Ok(decimal);
-    }
+/// Reads the columns of the loop, and with them the decimal sign of the table.
+fn read_columns(understood: &Understood<'_>, rule: &LogRule) -> Result<Columns, Problem> {
     let table = understood.table;
-    let mut columns: Vec<usize> = [Role::Pv, Role::Op, Role::Sp, Role::Value]
-        .into_iter()
-        .filter_map(|role| understood.roles.column(role))
-        .collect();
-    let times = understood.roles.own_times.values();
-    columns.extend(
-        times
-            .chain([&understood.roles.time])
-            .filter_map(|time| match time {
-                TimeColumns::Single(column) => Some(*column),
-                _ => None,
-            }),
-    );
-    columns.sort_unstable();
-    columns.dedup();
-    let mut cells = vec![Cell::Empty; columns.len()];
-    let mut evidence: Evidence<(usize, usize)> = Evidence::default();
-    for index in understood.layout.data_start..table.len() {
-        table.pick(index, &columns, &mut cells);
-        for (cell, &column) in cells.iter().zip(&columns) {
-            if let Cell::Text(text) = cell {
-                evidence.observe(text, || (table.row(index).number, column));
-            }
-        }
-        if evidence.is_full() {
-            break;
-        }
-    }
     let place = |(row, column): (usize, usize)| {
         let heading = &understood.layout.headings[column].text;
         table
@@ -317,7 +285,8 @@ pub(super) fn decimal_sign(
             .row(row)
             .column(column, (!heading.is_empty()).then_some(heading.as_str()))
     };
-    evidence.decide(table.delimiter).map_err(|undecided| match undecided {
+    columns::read(understood, rule, |undecided| {
+        match undecided {
         Undecided::Either { at, text } => Problem::error(
             place(at),
             format!("\"{text}\" may be a number with decimals or with thousands, and no other cell tells which"),
@@ -334,6 +303,7 @@ pub(super) fn decimal_sign(
             ),
         )
         .hint("export again with one decimal sign"),
+    }
     })
 }
 
@@ -356,7 +326,8 @@ impl Reading<'_> {
         } = *self;
         let Understood { table, roles, .. } = understood;
         check_units(request, understood).map_err(one)?;
-        let decimal = decimal_sign(understood, rule).map_err(one)?;
+        let mut columns = read_columns(understood, rule).map_err(one)?;
+        let decimal = columns.decimal;
         let mut warnings = Vec::new();
         let rows = rows_of_loop(request, understood);
         if rows.is_empty() {
@@ -368,49 +339,57 @@ impl Reading<'_> {
                 ),
             )));
         }
-        let moments = self.moments(&rows, roles.time, decimal, rule.dates)?;
+        let moments = match columns.moments(&rows) {
+            Some(moments) => moments,
+            None => self.moments(&rows, roles.time, decimal, rule.dates)?,
+        };
         warnings.extend(moments.warnings.iter().cloned());
         let own = self.own_moments(&rows, &moments, decimal, before)?;
         let (rows, mut moments) = timed_rows(understood, rows, moments, &mut warnings)?;
         moments.go_by(before.and_then(|before| before.offset_us));
         let scale = moments.scale;
-        let t_us: Vec<i64> = moments.t_us.iter().map(|t| t.unwrap_or_default()).collect();
+        let t_us = moments.t_us;
+        let row_count = rows.len();
         let first_raw = t_us.iter().copied().min().unwrap_or_default();
         let last_raw = t_us.last().copied().unwrap_or_default();
         let carried = join::carried(before, first_raw, in_parts);
-        let main = Timed {
-            rows: &rows,
-            t_us: &t_us,
-        };
         let order = Order {
             scale,
             rule,
             carried,
         };
-        let tracks = tracks::tracks(request, understood, main, &own, order)?;
+        let tracks = tracks::tracks(request, understood, Timed { rows, t_us }, own, order)?;
         let main = &tracks.main().ordered;
         let wanted = join::wanted(request, scale, table, &main.t_us).map_err(one)?;
+        let mut told_of_order: Vec<Problem> =
+            same_moments(main, table.place()).into_iter().collect();
+        if main.newest_first {
+            told_of_order.push(Problem::warning(
+                table.place(),
+                "rows stand newest first and were read from the last",
+            ));
+        }
+        let (duplicates, sorted_rows) = (main.duplicates, main.sorted_rows);
+        let (fold, shift_us) = (main.fold.clone(), main.shift_us);
+        let offset_us = moments.offset_us.or(main.offset_us);
+        let missing = tracks.missing.clone();
+        let mut found = roles.found.clone();
+        found.extend(tracks.named.iter().cloned());
         let reader = CellReader {
             understood,
+            quality: roles.column(Role::Quality),
             decimal,
             rule,
             request,
         };
         let (samples, series) = if in_parts {
-            let series = reader.series(&tracks, wanted, &mut warnings)?;
+            let series = reader.series(&tracks, &mut columns, wanted, &mut warnings)?;
             (series.clone().join(wanted.0), Some(series))
         } else {
-            (reader.samples(&tracks, wanted, &mut warnings)?, None)
+            let samples = reader.samples(tracks, &mut columns, wanted, &mut warnings)?;
+            (samples, None)
         };
-        warnings.extend(same_moments(main, table.place()));
-        if main.newest_first {
-            warnings.push(Problem::warning(
-                table.place(),
-                "rows stand newest first and were read from the last",
-            ));
-        }
-        let mut found = roles.found.clone();
-        found.extend(tracks.named.iter().cloned());
+        warnings.extend(told_of_order);
         let dated = |t_us: i64| {
             if scale.is_dated() {
                 Moment::Dated(clock::moment(t_us))
@@ -422,17 +401,14 @@ impl Reading<'_> {
             file: file.name.clone(),
             sheet: table.sheet.clone(),
             sha256: file.sha256.clone(),
-            rows: rows.len(),
+            rows: row_count,
             samples: samples.good_count(),
             from: dated(samples.t_us.first().copied().unwrap_or_default()),
             to: dated(samples.t_us.last().copied().unwrap_or_default()),
-            bad: samples.bad_by_cause(),
-            duplicates: main.duplicates,
-            sorted_rows: main.sorted_rows,
-            fold: main
-                .fold
-                .clone()
-                .or_else(|| join::fold_between(before, carried)),
+            bad: samples.bad.clone(),
+            duplicates,
+            sorted_rows,
+            fold: fold.or_else(|| join::fold_between(before, carried)),
             interval_s: 0.0,
             jitter_s: 0.0,
             compressed: false,
@@ -448,10 +424,10 @@ impl Reading<'_> {
             manual_values: rule.manual_values.clone(),
             warnings,
             last_raw,
-            shift_us: main.shift_us,
-            offset_us: moments.offset_us.or(main.offset_us),
+            shift_us,
+            offset_us,
             series,
-            missing: tracks.missing.clone(),
+            missing,
             wanted_from: wanted.0,
         };
         read.describe_sampling();
@@ -461,7 +437,7 @@ impl Reading<'_> {
     /// The moments of rows by one time column. `dates` is the order of day and month where it is known.
     fn moments(
         &self,
-        rows: &[usize],
+        rows: &Rows,
         time: TimeColumns,
         decimal: DecimalSign,
         dates: Option<DateOrder>,
@@ -494,11 +470,11 @@ impl Reading<'_> {
     /// Rows and times of the signals that have a time column of their own.
     fn own_moments(
         &self,
-        rows: &[usize],
+        rows: &Rows,
         main: &Moments,
         decimal: DecimalSign,
         before: Option<&FileRead>,
-    ) -> Result<BTreeMap<Role, (Vec<usize>, Vec<i64>)>, Vec<Problem>> {
+    ) -> Result<BTreeMap<Role, Timed>, Vec<Problem>> {
         let table = self.understood.table;
         let roles = &self.understood.roles;
         let mut own = BTreeMap::new();
@@ -507,8 +483,8 @@ impl Reading<'_> {
             else {
                 continue;
             };
-            let is_filled = |index: &&usize| !table.cell(**index, column).is_empty();
-            let rows: Vec<usize> = rows.iter().filter(is_filled).copied().collect();
+            let is_filled = |index: &usize| !table.cell(*index, column).is_empty();
+            let rows: Rows = rows.iter().filter(is_filled).collect();
             let dates = self.rule.dates.or(main.dates);
             let mut moments = self.moments(&rows, time, decimal, dates)?;
             if moments.scale != main.scale
@@ -535,15 +511,14 @@ impl Reading<'_> {
                     .or(main.offset_us),
             );
             let mut bad = BadCells::default();
-            let mut t_us = Vec::with_capacity(rows.len());
-            for (&index, moment) in rows.iter().zip(&moments.t_us) {
-                match moment {
-                    Some(moment) => t_us.push(*moment),
-                    None => bad.add(|| not_a_time(self.understood, index, column)),
+            for (index, moment) in rows.iter().zip(&moments.t_us) {
+                if *moment == NO_TIME {
+                    bad.add(|| not_a_time(self.understood, index, column));
                 }
             }
             bad.finish(table.place())?;
-            own.insert(role, (rows, t_us));
+            let t_us = moments.t_us;
+            own.insert(role, Timed { rows, t_us });
         }
         Ok(own)
     }

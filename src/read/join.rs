@@ -10,7 +10,7 @@ use super::table::Table;
 use super::values::is_manual;
 use super::{LogRead, LogRequest, Source};
 use crate::notice::{Place, Problem};
-use crate::trace::{Clock, Gap, Moment, Samples, gaps, median_interval};
+use crate::trace::{Clock, Gap, Moment, Samples, longest_unbroken_s, median};
 use chrono::{Datelike, Timelike, Weekday};
 
 const HOUR_US: i64 = 3600 * MICROSECONDS;
@@ -128,18 +128,17 @@ pub(super) fn fold_between(before: Option<&FileRead>, carried: Carried) -> Optio
 impl FileRead {
     /// Works out interval, jitter and whether the file was reported by exception.
     pub(super) fn describe_sampling(&mut self) {
-        let has_pv = |k: usize| !self.samples.good[k] || self.samples.pv[k].is_finite();
-        let is_pv = (0..self.samples.t_us.len()).any(has_pv);
-        let t_s: Vec<f64> = (0..self.samples.t_us.len())
+        let samples = &self.samples;
+        let has_pv = |k: usize| !samples.good[k] || samples.pv[k].is_finite();
+        let is_pv = (0..samples.t_us.len()).any(has_pv);
+        let t_s = (0..samples.t_us.len())
             .filter(|&k| !is_pv || has_pv(k))
-            .map(|k| to_s(self.samples.t_us[k] - self.samples.t_us[0]))
-            .collect();
-        let interval = median_interval(&t_s);
-        let mut off: Vec<f64> = t_s
-            .windows(2)
-            .map(|pair| (pair[1] - pair[0] - interval).abs())
-            .collect();
-        off.sort_unstable_by(f64::total_cmp);
+            .map(|k| to_s(samples.t_us[k] - samples.t_us[0]));
+        let mut off: Vec<f64> = intervals(t_s);
+        let interval = median(&mut off);
+        for off in &mut off {
+            *off = (*off - interval).abs();
+        }
         let irregular = off
             .iter()
             .filter(|off| **off > IRREGULAR * interval)
@@ -148,28 +147,39 @@ impl FileRead {
         self.source.compressed =
             is_pv && irregular as f64 > REPORTED_BY_EXCEPTION * off.len() as f64;
         let covered = libm::ceil(JITTER_COVERS * off.len() as f64) as usize;
-        self.source.jitter_s = covered.checked_sub(1).map_or(0.0, |k| off[k]);
+        self.source.jitter_s = covered
+            .checked_sub(1)
+            .map_or(0.0, |k| *off.select_nth_unstable_by(k, f64::total_cmp).1);
     }
 }
 
 /// Stretches without a good sample. Where samples come by exception a long silence means that
 /// nothing changed: only one with a bad sample in it is a gap.
 fn gaps_of(samples: &FileSamples, zero_us: i64, compressed: bool) -> Vec<Gap> {
-    let good: Vec<f64> = (0..samples.t_us.len())
-        .filter(|&k| samples.good[k] && samples.pv[k].is_finite())
-        .map(|k| to_s(samples.t_us[k] - zero_us))
-        .collect();
-    let bad: Vec<f64> = (0..samples.t_us.len())
-        .filter(|&k| !samples.good[k])
-        .map(|k| to_s(samples.t_us[k] - zero_us))
-        .collect();
-    gaps(&good)
-        .into_iter()
+    let seconds = |wanted: fn(&FileSamples, usize) -> bool| {
+        (0..samples.t_us.len())
+            .filter(move |&k| wanted(samples, k))
+            .map(move |k| to_s(samples.t_us[k] - zero_us))
+    };
+    let good = || seconds(|samples, k| samples.good[k] && samples.pv[k].is_finite());
+    let limit = longest_unbroken_s(median(&mut intervals(good())));
+    let bad: Vec<f64> = seconds(|samples, k| !samples.good[k]).collect();
+    good()
+        .zip(good().skip(1))
+        .filter(|(from_s, to_s)| to_s - from_s > limit)
+        .map(|(from_s, to_s)| Gap { from_s, to_s })
         .filter(|gap| {
             let first_inside = bad.partition_point(|t| *t <= gap.from_s);
             !compressed || bad.get(first_inside).is_some_and(|t| *t < gap.to_s)
         })
         .collect()
+}
+
+/// Differences of times.
+fn intervals(mut t_s: impl Iterator<Item = f64>) -> Vec<f64> {
+    let mut before = t_s.next();
+    let step = |t: f64| before.replace(t).map_or(0.0, |before| t - before);
+    t_s.map(step).collect()
 }
 
 fn place(file: &FileRead) -> Place {
@@ -214,6 +224,9 @@ fn check_clocks(files: &[FileRead]) -> Result<(), Problem> {
     Ok(())
 }
 
+/// First and last moment of a signal.
+type Span = Option<(i64, i64)>;
+
 /// Files that hold some signals of the loop each, as one: that of the PV with the others' signals, and
 /// where the others came from.
 fn put_together(
@@ -232,17 +245,12 @@ fn put_together(
     let overlap = |one: (i64, i64), other: (i64, i64)| one.0 <= other.1 && other.0 <= one.1;
     let mut missing = Vec::new();
     for (file, (pv, op)) in files.iter().zip(&spans) {
-        let (own, others, names): ((i64, i64), Vec<(i64, i64)>, [&str; 2]) = match (pv, op) {
-            (Some(pv), None) => (
-                *pv,
-                spans.iter().filter_map(|(_, op)| *op).collect(),
-                ["PV", "OP"],
-            ),
-            (None, Some(op)) => (
-                *op,
-                spans.iter().filter_map(|(pv, _)| *pv).collect(),
-                ["OP", "PV"],
-            ),
+        let spans_of = |of: fn(&(Span, Span)) -> Span| -> Vec<(i64, i64)> {
+            spans.iter().filter_map(of).collect()
+        };
+        let (own, others, names) = match (pv, op) {
+            (Some(pv), None) => (*pv, spans_of(|(_, op)| *op), ["PV", "OP"]),
+            (None, Some(op)) => (*op, spans_of(|(pv, _)| *pv), ["OP", "PV"]),
             _ => continue,
         };
         if is_whole || others.is_empty() {
@@ -338,57 +346,29 @@ pub(super) fn join(mut files: Vec<FileRead>) -> Result<LogRead, Vec<Problem>> {
     let dated = files[0].scale.is_dated();
     // Elapsed time keeps its own 0, which the schedule's cuts refer to.
     let zero_us = if dated { files[0].samples.t_us[0] } else { 0 };
-    let mut rows: Vec<(i64, usize, usize)> = Vec::new();
-    for (f, file) in files.iter().enumerate() {
-        rows.extend(
-            file.samples
-                .t_us
-                .iter()
-                .enumerate()
-                .map(|(k, t)| (*t, f, k)),
-        );
-    }
-    if files.len() > 1 {
-        rows.sort_by_key(|(t, f, _)| (*t, *f));
-        // The last of one moment is kept: look from the end.
-        rows.reverse();
-        rows.dedup_by_key(|(t, _, _)| *t);
-        rows.reverse();
-    }
-    let all_have = |has: fn(&FileSamples) -> bool| files.iter().all(|file| has(&file.samples));
-    let has_sp = all_have(|samples| samples.sp.is_some());
-    let has_mode = all_have(|samples| samples.mode.is_some());
-    let mut samples = Samples::default();
-    for &(t_us, f, k) in &rows {
-        let file = &files[f].samples;
-        samples.t_s.push(to_s(t_us - zero_us));
-        samples.pv.push(file.pv[k]);
-        samples.good.push(file.good[k]);
-        samples.op.push(file.op[k]);
-        if has_sp && let Some(sp) = &file.sp {
-            samples.sp.push(sp[k]);
-        }
-        if has_mode && let Some(mode) = &file.mode {
-            samples
-                .manual
-                .push(is_manual(&mode[k], &files[f].manual_values));
-            samples.mode.push(mode[k].clone());
-        }
-    }
-    if samples.sp.iter().all(|sp| sp.is_nan()) {
-        samples.sp.clear();
-    }
-    warn_of_modes(&samples, &place(&files[0]), &mut warnings);
     for file in &mut files {
         file.source.gaps = gaps_of(&file.samples, zero_us, file.source.compressed);
     }
+    let first_place = place(&files[0]);
+    let mut samples = match &mut files[..] {
+        [file] => one_file(
+            std::mem::take(&mut file.samples),
+            zero_us,
+            &file.manual_values,
+        ),
+        several => several_files(several, zero_us),
+    };
+    if samples.sp.iter().all(|sp| sp.is_nan()) {
+        samples.sp = Vec::new();
+    }
+    warn_of_modes(&samples, &first_place, &mut warnings);
     if !samples
         .good
         .iter()
         .zip(&samples.pv)
         .any(|(good, pv)| *good && pv.is_finite())
     {
-        return Err(one(no_good_sample(&files[0], place(&files[0]))));
+        return Err(one(no_good_sample(&files[0], first_place)));
     }
     Ok(LogRead {
         clock: if dated {
@@ -404,6 +384,54 @@ pub(super) fn join(mut files: Vec<FileRead>) -> Result<LogRead, Vec<Problem>> {
             .collect(),
         warnings,
     })
+}
+
+/// The samples of the only file, which its columns become.
+fn one_file(file: FileSamples, zero_us: i64, manual_values: &[String]) -> Samples {
+    let mode = file.mode.unwrap_or_default();
+    Samples {
+        t_s: file.t_us.into_iter().map(|t| to_s(t - zero_us)).collect(),
+        pv: file.pv,
+        good: file.good,
+        op: file.op,
+        sp: file.sp.unwrap_or_default(),
+        manual: mode.iter().map(|m| is_manual(m, manual_values)).collect(),
+        mode,
+    }
+}
+
+/// The samples of several files in order of time; of one moment the later file's.
+fn several_files(files: &[FileRead], zero_us: i64) -> Samples {
+    let mut rows: Vec<(i64, usize, usize)> = Vec::new();
+    for (f, file) in files.iter().enumerate() {
+        let moments = file.samples.t_us.iter().enumerate();
+        rows.extend(moments.map(|(k, t)| (*t, f, k)));
+    }
+    rows.sort_by_key(|(t, f, _)| (*t, *f));
+    // The last of one moment is kept: look from the end.
+    rows.reverse();
+    rows.dedup_by_key(|(t, _, _)| *t);
+    rows.reverse();
+    let all_have = |has: fn(&FileSamples) -> bool| files.iter().all(|file| has(&file.samples));
+    let has_sp = all_have(|samples| samples.sp.is_some());
+    let has_mode = all_have(|samples| samples.mode.is_some());
+    let mut samples = Samples::default();
+    for &(t_us, f, k) in &rows {
+        let file = &files[f].samples;
+        samples.t_s.push(to_s(t_us - zero_us));
+        samples.pv.push(file.pv[k]);
+        samples.good.push(file.good[k]);
+        samples.op.push(file.op[k]);
+        if has_sp && let Some(sp) = &file.sp {
+            samples.sp.push(sp[k]);
+        }
+        if has_mode && let Some(mode) = &file.mode {
+            let is_manual = is_manual(&mode[k], &files[f].manual_values);
+            samples.manual.push(is_manual);
+            samples.mode.push(mode[k].clone());
+        }
+    }
+    samples
 }
 
 /// A mode column none of whose texts means manual: the schedule's words may be missing.

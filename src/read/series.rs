@@ -40,10 +40,6 @@ impl Series {
     pub fn join(self, from: i64) -> FileSamples {
         let op = self.op.unwrap_or_default();
         let mut samples = FileSamples::default();
-        let not_sampled = || Reading {
-            value: f64::NAN,
-            bad: None,
-        };
         if let Some(pv) = self.pv {
             let mut moves: Vec<i64> = op
                 .windows(2)
@@ -54,13 +50,13 @@ impl Series {
             for (t_us, reading) in pv {
                 while let Some(at) = moves.pop_if(|at| *at <= t_us) {
                     if at < t_us {
-                        samples.push_pv(at, not_sampled());
+                        samples.push_pv(at, Reading::NONE);
                     }
                 }
                 samples.push_pv(t_us, reading);
             }
             while let Some(at) = moves.pop() {
-                samples.push_pv(at, not_sampled());
+                samples.push_pv(at, Reading::NONE);
             }
         } else {
             let times: Vec<i64> = if op.is_empty() {
@@ -71,7 +67,7 @@ impl Series {
                 op.iter().map(|(t_us, _)| *t_us).collect()
             };
             for t_us in times.into_iter().filter(|t_us| *t_us >= from) {
-                samples.push_pv(t_us, not_sampled());
+                samples.push_pv(t_us, Reading::NONE);
             }
         }
         samples.op = held(&samples.t_us, &op, f64::NAN);

@@ -166,18 +166,11 @@ impl Table {
         }
     }
 
-    /// The cells of several columns of the n-th row at once, which costs less than one by one.
-    /// `columns` ascend; `cells` has one for each.
-    pub(super) fn pick<'a>(&'a self, index: usize, columns: &[usize], cells: &mut [Cell<'a>]) {
+    /// The rows of a text file; `None` for sheets.
+    pub(super) fn as_text(&self) -> Option<&TextCells> {
         match &self.cells {
-            Cells::Text(text) => {
-                text.pick(index, columns, |k, text| cells[k] = text_cell(text));
-            }
-            Cells::Sheet(sheet) => {
-                for (cell, &column) in cells.iter_mut().zip(columns) {
-                    *cell = sheet.cell(index, column);
-                }
-            }
+            Cells::Text(cells) => Some(cells),
+            Cells::Sheet(_) => None,
         }
     }
 
@@ -230,7 +223,8 @@ impl Table {
     }
 }
 
-fn text_cell(text: &str) -> Cell<'_> {
+/// A trimmed text as a cell.
+pub(super) fn text_cell(text: &str) -> Cell<'_> {
     if text.is_empty() {
         Cell::Empty
     } else {

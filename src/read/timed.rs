@@ -1,17 +1,18 @@
 //! The rows of a loop in a table, and those of them that bear a time.
 
 use super::LogRequest;
-use super::clock::{Moments, TimeColumns};
+use super::clock::{Moments, NO_TIME, TimeColumns};
 use super::collect::BadCells;
 use super::extract::Understood;
 use super::headings::{Owner, Role, meaning, squash};
 use super::numbers::{Shape, shape};
+use super::rows::Rows;
 use super::table::Cell;
 use crate::notice::Problem;
 use std::collections::BTreeMap;
 
 /// Rows of data that belong to the loop: all of them, or those that bear its tag.
-pub(super) fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Vec<usize> {
+pub(super) fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Rows {
     let Understood {
         table,
         layout,
@@ -20,14 +21,17 @@ pub(super) fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) ->
     } = understood;
     let all = layout.data_start..table.len();
     let Some(column) = roles.column(Role::Tag) else {
-        return all.collect();
+        return Rows::Run(all);
     };
     let mut known: BTreeMap<String, bool> = BTreeMap::new();
     all.filter(|&index| {
-        let text = table.row(index).cell(column).text();
-        if let Some(belongs) = known.get(&text) {
+        let cell = table.cell(index, column);
+        if let Cell::Text(text) = cell
+            && let Some(belongs) = known.get(text)
+        {
             return *belongs;
         }
+        let text = cell.text();
         let named = [
             &request.columns.pv,
             &request.columns.op,
@@ -53,11 +57,11 @@ pub(super) fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) ->
 /// time is an error.
 pub(super) fn timed_rows(
     understood: &Understood<'_>,
-    rows: Vec<usize>,
+    rows: Rows,
     moments: Moments,
     warnings: &mut Vec<Problem>,
-) -> Result<(Vec<usize>, Moments), Vec<Problem>> {
-    if moments.t_us.iter().all(Option::is_some) {
+) -> Result<(Rows, Moments), Vec<Problem>> {
+    if !moments.t_us.contains(&NO_TIME) {
         return Ok((rows, moments));
     }
     let Understood { table, roles, .. } = understood;
@@ -74,8 +78,8 @@ pub(super) fn timed_rows(
     let mut left_out = 0;
     let mut kept_rows = Vec::with_capacity(rows.len());
     let mut kept_times = Vec::with_capacity(rows.len());
-    for (&index, t_us) in rows.iter().zip(&moments.t_us) {
-        if t_us.is_some() {
+    for (index, t_us) in rows.iter().zip(&moments.t_us) {
+        if *t_us != NO_TIME {
             kept_rows.push(index);
             kept_times.push(*t_us);
             continue;
@@ -104,7 +108,7 @@ pub(super) fn timed_rows(
         t_us: kept_times,
         ..moments
     };
-    Ok((kept_rows, moments))
+    Ok((kept_rows.into_iter().collect(), moments))
 }
 
 /// A row with a value whose time cannot be read.

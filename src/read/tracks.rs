@@ -5,17 +5,19 @@ use super::clock::{DAY_US, Scale, TimeColumns};
 use super::extract::Understood;
 use super::headings::{Owner, Role, Sureness, meaning, squash};
 use super::order::{self, Carried, Ordered};
+use super::rows::Rows;
+use super::table::Cell;
 use super::{LogRequest, LogRule};
 use crate::notice::Problem;
 use std::collections::BTreeMap;
+use std::rc::Rc;
 
 /// One signal of a table: its column, and its rows in order of time.
-#[derive(Debug, Clone)]
+#[derive(Debug)]
 pub(super) struct Track {
     pub column: usize,
-    pub ordered: Ordered,
-    /// Rows of the table that `ordered.rows` counts in.
-    pub rows: Vec<usize>,
+    /// In order of time; `ordered.rows` counts rows of the table. Signals side by side share it.
+    pub ordered: Rc<Ordered>,
 }
 
 /// The signals of a loop, each in order of time.
@@ -42,10 +44,10 @@ impl Tracks {
 }
 
 /// Rows with their times: rows of the table, and microseconds of each.
-#[derive(Debug, Clone, Copy)]
-pub(super) struct Timed<'a> {
-    pub rows: &'a [usize],
-    pub t_us: &'a [i64],
+#[derive(Debug, Clone, Default)]
+pub(super) struct Timed {
+    pub rows: Rows,
+    pub t_us: Vec<i64>,
 }
 
 /// What puts the rows of a signal in order.
@@ -64,17 +66,17 @@ pub(super) struct Order<'a> {
 pub(super) fn tracks(
     request: &LogRequest,
     understood: &Understood<'_>,
-    main: Timed<'_>,
-    own: &BTreeMap<Role, (Vec<usize>, Vec<i64>)>,
+    main: Timed,
+    mut own: BTreeMap<Role, Timed>,
     order: Order<'_>,
 ) -> Result<Tracks, Vec<Problem>> {
     let table = understood.table;
-    let Timed { rows, t_us } = main;
     let scale = order.scale;
     let roles = &understood.roles;
-    let in_order = |rows: Vec<usize>, times: &[i64], time: TimeColumns| {
-        let place = |row: usize| {
-            let place = table.place().row(table.row(rows[row]).number);
+    let in_order = |timed: Timed, time: TimeColumns| {
+        let Timed { rows, t_us } = timed;
+        let place = |k: usize| {
+            let place = table.place().row(table.row(rows.get(k)).number);
             let (TimeColumns::Single(column) | TimeColumns::Pair { time: column, .. }) = time
             else {
                 return place;
@@ -82,25 +84,22 @@ pub(super) fn tracks(
             let heading = &understood.layout.headings[column].text;
             place.column(column, (!heading.is_empty()).then_some(heading.as_str()))
         };
-        order::order(times, scale, order.rule.zone, order.carried, place)
-            .map(|ordered| (ordered, rows.clone()))
-            .map_err(|problem| vec![problem])
+        let mut ordered = order::order(t_us, scale, order.rule.zone, order.carried, place)
+            .map_err(|problem| vec![problem])?;
+        ordered.rows = rows.pick(&ordered.rows);
+        Ok::<_, Vec<Problem>>(Rc::new(ordered))
     };
     if !roles.long {
-        let (ordered, rows) = in_order(rows.to_vec(), t_us, roles.time)?;
-        let track = |role: Role| -> Result<Option<Track>, Vec<Problem>> {
+        let shared = in_order(main, roles.time)?;
+        let mut track = |role: Role| -> Result<Option<Track>, Vec<Problem>> {
             let Some(column) = roles.column(role) else {
                 return Ok(None);
             };
-            let (ordered, rows) = match own.get(&role) {
-                Some((rows, t_us)) => in_order(rows.clone(), t_us, roles.time_of(role))?,
-                None => (ordered.clone(), rows.clone()),
+            let ordered = match own.remove(&role) {
+                Some(timed) => in_order(timed, roles.time_of(role))?,
+                None => Rc::clone(&shared),
             };
-            Ok(Some(Track {
-                column,
-                ordered,
-                rows,
-            }))
+            Ok(Some(Track { column, ordered }))
         };
         let mut tracks = Tracks {
             pv: track(Role::Pv)?,
@@ -119,21 +118,23 @@ pub(super) fn tracks(
     let tag_column = roles
         .column(Role::Tag)
         .expect("a long table has a tag column");
-    let (texts, missing) = series_texts(request, understood, rows)?;
+    let Timed { rows, t_us } = main;
+    let (texts, missing) = series_texts(request, understood, &rows)?;
     let mut named = Vec::new();
     let mut track = |role: Role| -> Result<Option<Track>, Vec<Problem>> {
         let Some(text) = texts.get(&role) else {
             return Ok(None);
         };
-        let chosen: Vec<usize> = (0..rows.len())
-            .filter(|&k| table.row(rows[k]).cell(tag_column).text() == *text)
-            .collect();
-        let times: Vec<i64> = chosen.iter().map(|&k| t_us[k]).collect();
-        let (ordered, rows) = in_order(
-            chosen.iter().map(|&k| rows[k]).collect(),
-            &times,
-            roles.time,
-        )?;
+        let bears = |row: usize| match table.cell(row, tag_column) {
+            Cell::Text(found) => found == text,
+            cell => cell.text() == *text,
+        };
+        let chosen: Rows = (0..rows.len()).filter(|&k| bears(rows.get(k))).collect();
+        let timed = Timed {
+            rows: rows.pick(&chosen),
+            t_us: chosen.iter().map(|k| t_us[k]).collect(),
+        };
+        let ordered = in_order(timed, roles.time)?;
         named.push(super::RoleFound {
             role,
             column,
@@ -141,11 +142,7 @@ pub(super) fn tracks(
             unit: None,
             why: format!("{} rows bear this tag", chosen.len()),
         });
-        Ok(Some(Track {
-            column,
-            ordered,
-            rows,
-        }))
+        Ok(Some(Track { column, ordered }))
     };
     let (pv, op, sp, mode) = (
         track(Role::Pv)?,
@@ -188,7 +185,7 @@ impl Tracks {
             } else {
                 0
             };
-            for t_us in &mut track.ordered.t_us {
+            for t_us in &mut Rc::make_mut(&mut track.ordered).t_us {
                 *t_us += days - zero;
             }
         }
@@ -202,7 +199,7 @@ pub(super) type Texts = (BTreeMap<Role, String>, Vec<Problem>);
 pub(super) fn series_texts(
     request: &LogRequest,
     understood: &Understood<'_>,
-    rows: &[usize],
+    rows: &Rows,
 ) -> Result<Texts, Vec<Problem>> {
     let table = understood.table;
     let tag_column = understood
@@ -211,8 +208,12 @@ pub(super) fn series_texts(
         .expect("a long table has a tag column");
     let mut texts: Vec<String> = Vec::new();
     let mut seen = std::collections::BTreeSet::new();
-    for &row in rows {
-        let text = table.row(row).cell(tag_column).text();
+    for row in rows.iter() {
+        let cell = table.cell(row, tag_column);
+        if matches!(cell, Cell::Text(text) if seen.contains(text)) {
+            continue;
+        }
+        let text = cell.text();
         if seen.insert(text.clone()) {
             texts.push(text);
         }

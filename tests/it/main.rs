@@ -2,7 +2,9 @@
 //! `tests/README.md`.
 
 mod archive;
+mod as_found;
 mod broken;
+mod cascade;
 mod cli;
 mod demo;
 mod errors;
@@ -10,6 +12,7 @@ mod forms;
 mod identify;
 mod inspect;
 mod layering;
+mod loops;
 mod new_user;
 mod plant;
 mod predict;
@@ -19,3 +22,4 @@ mod schema;
 mod support;
 mod synthetic;
 mod twins;
+mod withheld;
