@@ -17,6 +17,7 @@ mod new_user;
 mod plant;
 mod predict;
 mod published;
+mod reading;
 mod register;
 mod schema;
 mod support;
