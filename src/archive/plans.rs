@@ -223,7 +223,7 @@ mod tests {
         let appended = format!("{text}\n5 0 obj\n%%EOF");
         assert_eq!(look_into(appended.into_bytes()), Found::ChangedPlan);
         assert_eq!(look_into(b"%PDF-1.7\n%%EOF".to_vec()), Found::Other);
-        assert_eq!(look_into(text[1..].as_bytes().to_vec()), Found::Other);
+        assert_eq!(look_into(text.as_bytes()[1..].to_vec()), Found::Other);
         assert_eq!(look_into(Vec::new()), Found::Other);
         assert!(seal_plan(b"%PDF-1.7".to_vec()).is_err());
     }

@@ -197,7 +197,7 @@ fn from(basis: &Basis) -> String {
         .tested_on
         .map_or_else(String::new, |day| format!(", tested {day}"));
     format!(
-        "{} revision {} of {}{tested}. It holds for the loop as it was then: valve, transmitter, filter and scan unchanged.",
+        "{} revision {} of {}{tested}; for a loop that is unchanged since.",
         tidy(&basis.number),
         tidy(&basis.revision),
         basis.date
@@ -369,16 +369,17 @@ fn watch(plan: &Plan) -> String {
     let second = process.is_some_and(|process| process.second_time_constant_s().is_some());
     let lag = process.is_some_and(|process| process.time_constant_s().is_some());
     let rule = match (plan.integrating, second, lag) {
-        (false, _, _) if plan.is_watched_for_hands() => "time to read, write and move",
+        (false, _, _) if plan.is_watched_for_hands() => {
+            "more than the process needs: time to read, write and move"
+        }
         (false, true, _) => "θ + 4 (τ + τ₂), rounded up",
         (false, false, _) => "θ + 4 τ, rounded up",
         (true, _, true) => "at least θ + 4 τ and 5 θ, and as long as the noise asks for",
         (true, _, false) => "at least 5 θ, and as long as the noise asks for",
     };
     format!(
-        "{} after each move ({rule}), and as long with PV at rest before the first. In all {}.",
-        time(times.watch_s),
-        time(times.total_s)
+        "{} after each move ({rule}), and as long with PV at rest before the first.",
+        time(times.watch_s)
     )
 }
 
