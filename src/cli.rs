@@ -8,7 +8,9 @@ Exit codes:
   0  done; every loop got its record (one that recommends no settings is a record) or its plan
   1  nothing could be done, nothing was written
   2  the command was not understood
-  3  some loops could not be recorded or planned, the others were";
+  3  some loops could not be recorded or planned, the others were
+
+inspect ends with 1 where no log could be read, with 3 where some could not";
 
 /// Reads step-test logs, fits and tunes each control loop, and typesets its loop-tuning record.
 #[derive(Debug, Parser)]
@@ -51,7 +53,7 @@ pub enum Command {
         #[arg(long, value_name = "DIR")]
         records: Option<PathBuf>,
     },
-    /// Tell what a log holds: its columns, its clock, its gaps, the moves of the OP
+    /// Tell what a log holds: its columns, clock, gaps, moves of the OP, and the schedule line for it
     #[command(
         after_help = "Examples:\n  asleft inspect unit-200/logs/tic204.xlsx\n  asleft inspect --job unit-200 --tag TIC-204 unit-200/logs/all.csv"
     )]
