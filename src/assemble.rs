@@ -162,6 +162,7 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
             op_tested,
             failure,
             next_time: identification.next_time,
+            valve_not_assessed: identification.valve_not_assessed,
         },
         steps: identification.steps,
         model: fit

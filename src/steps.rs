@@ -140,7 +140,7 @@ fn manual_stretches(trace: &Trace) -> Result<Vec<(f64, f64)>, StepsError> {
 }
 
 /// Robust standard deviation of the OP's sample-to-sample jitter, %; 0 for an OP that stands still.
-fn jitter(values: &[f64]) -> f64 {
+pub(crate) fn jitter(values: &[f64]) -> f64 {
     let mut changes: Vec<f64> = values.windows(2).map(|w| (w[1] - w[0]).abs()).collect();
     if changes.is_empty() {
         return 0.0;

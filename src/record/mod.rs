@@ -353,6 +353,9 @@ pub struct Test {
     pub failure: Option<String>,
     /// What to do at the next test.
     pub next_time: Vec<Advice>,
+    /// Why the dead band of the valve is not assessable, in words; `None` where it was assessed, or where
+    /// there is no model.
+    pub valve_not_assessed: Option<String>,
 }
 
 /// Gain in engineering units.
@@ -453,7 +456,7 @@ pub struct Record {
     pub steps: Vec<Step>,
     /// Model; `None` where no step is usable.
     pub model: Option<ModelBlock>,
-    /// Valve dead band; `None`: not assessed.
+    /// Valve dead band; `None`: not assessable.
     pub valve: Option<Valve>,
     /// Design; `None` in a withheld record.
     pub design: Option<Design>,

@@ -96,6 +96,7 @@ fn record() -> Record {
                 what: "Move".into(),
                 how: "the OP by at least 3 %".into(),
             }],
+            valve_not_assessed: None,
         },
         steps: vec![step()],
         model: Some(model()),
@@ -103,6 +104,9 @@ fn record() -> Record {
             dead_band_percent: 0.4,
             low: 0.2,
             high: 0.6,
+            open: false,
+            in_fit: true,
+            start_percent: -0.2,
         }),
         design: Some(design()),
         settings: AllSettings {
@@ -320,6 +324,7 @@ fn model() -> ModelBlock {
             residual_autocorrelation: 0.3,
             effective_samples: 2.1,
             widened: false,
+            direction_ratio: None,
             gain_ratio: None,
             undecided: None,
             alternatives: vec![Alternative {

@@ -137,6 +137,7 @@ pub(in crate::document) fn full() -> Record {
             op_tested: [41.0, 51.0],
             failure: None,
             next_time: Vec::new(),
+            valve_not_assessed: None,
         },
         steps,
         model: Some(model()),
@@ -144,6 +145,9 @@ pub(in crate::document) fn full() -> Record {
             dead_band_percent: 0.4,
             low: 0.3,
             high: 0.6,
+            open: false,
+            in_fit: true,
+            start_percent: -0.2,
         }),
         design: Some(design()),
         settings: AllSettings {

@@ -2,6 +2,7 @@
 
 mod intervals;
 mod kinds;
+mod valve;
 mod verdicts;
 
 use super::*;
@@ -52,6 +53,10 @@ struct Test {
     base: f64,
     /// Slope of the PV that has nothing to do with the OP, %/s.
     slope: f64,
+    /// Play of the valve, % of OP.
+    dead_band: f64,
+    /// Share of the play that lies before the first move.
+    slack: f64,
     seed: u64,
 }
 
@@ -68,6 +73,8 @@ impl Test {
             resolution: 0.0,
             base: 50.0,
             slope: 0.0,
+            dead_band: 0.0,
+            slack: 0.0,
             seed: 1,
         }
     }
@@ -78,8 +85,7 @@ impl Test {
         let t_s: Vec<f64> = (0..rows)
             .map(|k| self.interval_s * (k as f64 + self.jitter * (random.uniform() - 0.5)))
             .collect();
-        let start = self.op[0].1;
-        let moves: Vec<(f64, f64)> = self.op[1..].iter().map(|m| (m.0, m.1 - start)).collect();
+        let moves = self.valve_moves();
         let clean = self.model.response_to_held(&moves, &t_s);
         let mut noise = self.noise * random.normal();
         let fresh = self.noise * libm::sqrt(1.0 - self.memory * self.memory);
@@ -110,6 +116,42 @@ impl Test {
             op,
             ..Samples::default()
         }
+    }
+
+    /// The valve's own moves: with play it stands until the OP has run through it.
+    fn valve_moves(&self) -> Vec<(f64, f64)> {
+        let start = self.op[0].1;
+        let way = self.op.get(1).map_or(1.0, |m| (m.1 - start).signum());
+        // How far the OP may still go up and down before the valve follows.
+        let (mut up, mut down) = if way > 0.0 {
+            (
+                self.slack * self.dead_band,
+                (1.0 - self.slack) * self.dead_band,
+            )
+        } else {
+            (
+                (1.0 - self.slack) * self.dead_band,
+                self.slack * self.dead_band,
+            )
+        };
+        let (mut op, mut valve) = (start, 0.0);
+        self.op[1..]
+            .iter()
+            .map(|&(at, to)| {
+                let change = to - op;
+                op = to;
+                let (ahead, behind) = if change > 0.0 {
+                    (&mut up, &mut down)
+                } else {
+                    (&mut down, &mut up)
+                };
+                let lost = ahead.min(change.abs());
+                *ahead -= lost;
+                *behind += lost;
+                valve += change - lost.copysign(change);
+                (at, valve)
+            })
+            .collect()
     }
 
     fn identify(&self) -> Identification {
