@@ -7,6 +7,7 @@ pub mod covariance;
 mod descent;
 pub mod least_squares;
 mod noise;
+mod outliers;
 mod pass;
 mod pooled;
 mod profile;
@@ -23,6 +24,7 @@ use crate::steps::OpStep;
 use crate::trace::{Moment, Trace};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+use std::borrow::Cow;
 
 pub use bounds::VerdictBounds;
 
@@ -257,6 +259,8 @@ pub struct Identification {
     pub sigma_percent: Option<f64>,
     /// Whether the log was compressed, which is why noise is not assessable then.
     pub compressed: bool,
+    /// Samples that stand apart from their neighbours and were left out.
+    pub outliers: usize,
     /// What to do next time where steps are rejected or weak, one line each: (what, how).
     pub next_time: Vec<Advice>,
     /// Valve dead band; `None`: not assessable.
@@ -327,6 +331,14 @@ impl Model {
 const NONLINEAR_RATIO: f64 = 1.2;
 
 impl Model {
+    /// Whether the two time constants cannot be told apart: a double lag.
+    pub fn double_lag(&self) -> bool {
+        match (self.time_constant_s, self.second_time_constant_s) {
+            (Some(longer), Some(shorter)) => longer.low <= shorter.high,
+            _ => false,
+        }
+    }
+
     /// Largest gain of a step over the smallest, where the process is non-linear enough to say so.
     pub fn nonlinear_gain(&self) -> Option<f64> {
         self.gain_ratio.filter(|ratio| *ratio >= NONLINEAR_RATIO)
@@ -368,17 +380,36 @@ pub struct Context {
 /// steps; each usable step's fit is then given in that kind. A PV that is held between refreshes is
 /// thinned to them first.
 pub fn identify(trace: &Trace, steps: &[OpStep], context: &Context) -> Identification {
-    match trace.refreshes() {
-        Some(keep) => {
-            let steps: Vec<OpStep> = steps.iter().map(|s| on_refreshes(s, &keep)).collect();
-            pass::identify_samples(&trace.thinned(&keep), &steps, context)
-        }
-        None => pass::identify_samples(trace, steps, context),
+    let (mut trace, mut steps) = (Cow::Borrowed(trace), Cow::Borrowed(steps));
+    if let Some(keep) = trace.refreshes() {
+        (trace, steps) = thinned(&trace, &steps, &keep);
+    }
+    let mut outliers = 0;
+    // A compressed log holds a single sample where the PV went there and back.
+    if !noise::is_compressed(&trace)
+        && let Some(keep) = outliers::without(&trace)
+    {
+        outliers = trace.len() - keep.len();
+        (trace, steps) = thinned(&trace, &steps, &keep);
+    }
+    Identification {
+        outliers,
+        ..pass::identify_samples(&trace, &steps, context)
     }
 }
 
-/// A step with its ranges in the thinned samples.
-fn on_refreshes(step: &OpStep, keep: &[usize]) -> OpStep {
+/// A trace with some of its samples, and its steps in these.
+fn thinned<'a>(
+    trace: &Trace,
+    steps: &[OpStep],
+    keep: &[usize],
+) -> (Cow<'a, Trace>, Cow<'a, [OpStep]>) {
+    let steps = steps.iter().map(|step| in_kept(step, keep)).collect();
+    (Cow::Owned(trace.thinned(keep)), Cow::Owned(steps))
+}
+
+/// A step with its ranges in the samples that were kept.
+fn in_kept(step: &OpStep, keep: &[usize]) -> OpStep {
     let at = |index: usize| keep.partition_point(|k| *k < index);
     let range = |range: &std::ops::Range<usize>| at(range.start)..at(range.end);
     OpStep {

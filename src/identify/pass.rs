@@ -138,6 +138,7 @@ pub(crate) fn identify_samples(
         noise_sd_percent: noise.sd,
         sigma_percent: noise.sigma,
         compressed: noise.compressed,
+        outliers: 0,
         next_time,
         valve: findings.valve,
         valve_not_assessed: findings.not_assessed,

@@ -2,6 +2,7 @@
 
 mod intervals;
 mod kinds;
+mod scenarios;
 mod valve;
 mod verdicts;
 
