@@ -158,6 +158,7 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
             noise_sd_percent: identification.noise_sd_percent,
             sigma_percent: identification.sigma_percent,
             compressed: identification.compressed,
+            outliers: identification.outliers,
             pv_tested,
             op_tested,
             failure,

@@ -446,6 +446,7 @@ impl Plan {
                 noise_sd_percent: None,
                 sigma_percent: None,
                 compressed: false,
+                outliers: 0,
                 pv_tested: [self.pv.low, self.pv.high],
                 op_tested: [self.op.low, self.op.high],
                 failure: None,

@@ -83,6 +83,13 @@ pub struct Reason {
     pub bound: Option<f64>,
 }
 
+impl Reason {
+    /// Whether it is that the PV moved before the step, and not that too little of its rest was seen.
+    pub(crate) fn is_slope(&self) -> bool {
+        self.code == ReasonCode::Drift && self.text.starts_with(verdict::DRIFT)
+    }
+}
+
 /// The 63.2 % construction on one step (self-regulating), or its slopes (integrating).
 #[derive(Debug, Clone, PartialEq, Serialize, Deserialize, JsonSchema)]
 pub struct Reading {
@@ -378,7 +385,7 @@ pub struct Context {
 ///
 /// Each step is fitted and judged with its own best kind; the pooled kind is chosen over the usable
 /// steps; each usable step's fit is then given in that kind. A PV that is held between refreshes is
-/// thinned to them first.
+/// thinned to them first, and samples that stand apart from their neighbours are left out.
 pub fn identify(trace: &Trace, steps: &[OpStep], context: &Context) -> Identification {
     let (mut trace, mut steps) = (Cow::Borrowed(trace), Cow::Borrowed(steps));
     if let Some(keep) = trace.refreshes() {

@@ -36,7 +36,8 @@ pub(crate) fn without(trace: &Trace) -> Option<Vec<usize>> {
     }
     let limit = (APART * usual).max(DIGITS * digit);
     let moving = moving(trace);
-    let stays = |k: &usize| apart[*k] <= limit || moving[*k];
+    let near: Vec<bool> = apart.iter().map(|apart| *apart <= limit).collect();
+    let stays = |k: &usize| near[*k] || moving[*k] || between(trace, &near, *k) <= limit;
     let keep: Vec<usize> = (0..pv.len()).filter(stays).collect();
     let left_out = pv.len() - keep.len();
     (left_out > 0 && left_out as f64 <= MOST_PART * pv.len() as f64).then_some(keep)
@@ -48,6 +49,22 @@ fn apart(pv: &[f64], k: usize) -> f64 {
     let mut beside: Vec<f64> = pv[near].to_vec();
     let middle = beside.len() / 2;
     (pv[k] - *beside.select_nth_unstable_by(middle, f64::total_cmp).1).abs()
+}
+
+/// How far a sample is from the line between the nearest that do not stand apart: on a slope two spikes
+/// nearby draw the median away.
+fn between(trace: &Trace, near: &[bool], k: usize) -> f64 {
+    let (t_s, pv) = (trace.t_s(), trace.pv());
+    let left = (0..k).rev().find(|j| near[*j]);
+    let right = (k + 1..pv.len()).find(|j| near[*j]);
+    match (left, right) {
+        (Some(a), Some(b)) => {
+            let part = (t_s[k] - t_s[a]) / (t_s[b] - t_s[a]);
+            (pv[k] - pv[a] - part * (pv[b] - pv[a])).abs()
+        }
+        (Some(a), None) | (None, Some(a)) => (pv[k] - pv[a]).abs(),
+        (None, None) => 0.0,
+    }
 }
 
 /// Robust standard deviation of what samples usually are apart, 0 values left out: of five samples one is

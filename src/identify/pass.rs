@@ -6,7 +6,7 @@ use super::least_squares::{Point, Problem};
 use super::noise::{self, Noise};
 use super::pooled::{self, Fitted};
 use super::verdict::{self, Grounds, Judged};
-use super::{Context, Identification, Model, ReasonCode, Step, Verdict};
+use super::{Context, Identification, Model, Reason, ReasonCode, Step, Verdict};
 use super::{advice, reading, valve};
 use crate::model::Kind;
 use crate::steps::OpStep;
@@ -148,19 +148,21 @@ pub(crate) fn identify_samples(
 /// What the usable steps tell of the valve. A level that goes on moving after a move back, which the valve
 /// lost, counts as drift and rejects the next step: such steps tell of the valve all the same.
 fn findings(ground: &Ground, pass: &Pass) -> valve::Findings {
+    let integrates = |w: &Work| w.own.is_some_and(Kind::integrates);
+    let levels = pass
+        .work
+        .iter()
+        .any(|w| w.judged.verdict != Verdict::Rejected && integrates(w));
+    let drifts_alone = |w: &&Work| {
+        // A single step of a level may pass for a settling process that was not watched for long.
+        let passes = |r: &Reason| r.code == ReasonCode::Watched && !integrates(w);
+        let mut reasons = w.judged.reasons.iter();
+        (levels || integrates(w)) && reasons.all(|r| r.is_slope() || passes(r))
+    };
     let telling: Vec<&Work> = pass
         .work
         .iter()
-        .filter(|w| {
-            let drifts = |w: &Work| {
-                w.own.is_some_and(Kind::integrates)
-                    && w.judged
-                        .reasons
-                        .iter()
-                        .all(|r| r.code == ReasonCode::Drift && r.text.starts_with("drift"))
-            };
-            w.judged.verdict != Verdict::Rejected || drifts(w)
-        })
+        .filter(|w| w.judged.verdict != Verdict::Rejected || drifts_alone(w))
         .collect();
     let usable: Vec<&Fitted> = telling.iter().filter_map(|w| w.fitted.as_ref()).collect();
     let own_kinds: Vec<Kind> = telling.iter().filter_map(|w| w.own).collect();
@@ -226,7 +228,7 @@ fn fit_and_judge(ground: &Ground, k: usize) -> Work {
             let own = fitted.of(kind);
             grounds.explained_slope =
                 before.map_or(0.0, |b| explained_slope(trace, b, moved, own.fit.gains[0]));
-            verdict::judge(step, Ok((own, &fitted.window.moves)), &grounds)
+            verdict::judge(step, Ok((own, fitted.window.own_moves())), &grounds)
         }
         (Err(why), _) => verdict::judge(step, Err(why.clone()), &grounds),
         (Ok(_), None) => verdict::judge(step, Err("no kind fits".to_owned()), &grounds),

@@ -12,6 +12,8 @@ use crate::trace::Trace;
 const END_OF_RANGE_PERCENT: f64 = 0.05;
 /// Samples after the move of an integrating process: fewer are a reservation, or rejected.
 const INTEGRATING_SAMPLES: [f64; 2] = [20.0, 10.0];
+/// How the reason begins that a PV moved before the step.
+pub(crate) const DRIFT: &str = "drift";
 /// A gap in an integrating process's window above this part of it rejects.
 const INTEGRATING_GAP: f64 = 0.2;
 
@@ -260,7 +262,7 @@ fn change_and_drift(
         drift,
         grounds.bounds.drift_percent,
         false,
-        |f, b| format!("drift {f} % (bound {b} %)"),
+        |f, b| format!("{DRIFT} {f} % (bound {b} %)"),
     );
     if !grounds.noise.compressed {
         rest_before(judged, t_s.len());

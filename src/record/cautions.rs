@@ -184,6 +184,19 @@ fn raised(record: &Record) -> Vec<Caution> {
             ),
         ));
     }
+    if record.test.outliers > 0 {
+        let stood = counted(
+            record.test.outliers,
+            "sample of the PV",
+            "samples of the PV",
+        );
+        list.push(caution(
+            "spikes",
+            format!(
+                "{stood} stood apart from their neighbours and were left out of readings and fits."
+            ),
+        ));
+    }
     if record.document.status != Status::Withheld && !record.test.next_time.is_empty() {
         let advice: Vec<String> = record
             .test

@@ -345,6 +345,8 @@ pub struct Test {
     pub sigma_percent: Option<f64>,
     /// Whether the log was compressed, which is why noise is not assessable then.
     pub compressed: bool,
+    /// Samples of the PV that stood apart from their neighbours, spikes, and were left out of readings and fits.
+    pub outliers: usize,
     /// PV range over the usable steps (or over all where none is), engineering units: low, high.
     pub pv_tested: [f64; 2],
     /// OP range over the same, OP units: low, high.

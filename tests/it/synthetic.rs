@@ -89,6 +89,7 @@ fn record() -> Record {
             noise_sd_percent: Some(0.04),
             sigma_percent: Some(0.05),
             compressed: false,
+            outliers: 0,
             pv_tested: [71.2, 76.9],
             op_tested: [40.0, 45.0],
             failure: None,

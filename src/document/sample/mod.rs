@@ -133,6 +133,7 @@ pub(in crate::document) fn full() -> Record {
             noise_sd_percent: Some(0.0875),
             sigma_percent: Some(0.0875),
             compressed: false,
+            outliers: 0,
             pv_tested: [97.4, 105.9],
             op_tested: [41.0, 51.0],
             failure: None,

@@ -232,6 +232,11 @@ fn notes(context: &Context) -> Vec<String> {
             display::fixed(ratio, 1)
         ));
     }
+    if fit.double_lag() {
+        notes.push(
+            "The two time constants cannot be told apart: the process is a double lag.".to_owned(),
+        );
+    }
     if let Some(ratio) = fit.direction_ratio {
         notes.push(format!(
             "The gain of upward moves is {} times that of downward moves.",

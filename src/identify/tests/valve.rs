@@ -20,7 +20,10 @@ fn in_out(dead_band: f64) -> Test {
 }
 
 fn valve(found: &Identification) -> Valve {
-    found.valve.expect("a dead band, or that there is none")
+    found.valve.unwrap_or_else(|| {
+        let reasons: Vec<_> = found.steps.iter().map(|s| &s.reasons).collect();
+        panic!("{:?}: {reasons:?}", found.valve_not_assessed)
+    })
 }
 
 /// Runs a test with many seeds and holds the share of intervals that contain the dead band, and the gain.
