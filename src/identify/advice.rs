@@ -199,12 +199,19 @@ pub(crate) fn next_time(
     };
     if advice.is_empty() && !(directions(true) && directions(false)) {
         let size = needed.unwrap_or(0.0).max(largest);
-        advice.push(Advice {
-            what: "Move".to_owned(),
-            how: format!(
+        let how = if size > 0.0 {
+            format!(
                 "OP by about {} in both directions.",
                 op_text(unit(rounded_up(size)), context)
-            ),
+            )
+        } else {
+            "OP by hand with the loop in manual, twice in one direction and then back, each time until the PV \
+             is steady; log the mode with it."
+                .to_owned()
+        };
+        advice.push(Advice {
+            what: "Move".to_owned(),
+            how,
         });
     }
     advice

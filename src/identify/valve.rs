@@ -136,7 +136,7 @@ pub(crate) fn assess(
     if !reverses(steps, &usable) {
         return Findings {
             direction_ratio: None,
-            ..Findings::none("the test has no reversal that the PV answers")
+            ..Findings::none("the test has no reversal, pulses not counted, that the PV answers")
         };
     }
     if usable.len() < 2 {
