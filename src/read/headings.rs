@@ -294,7 +294,11 @@ pub fn meaning(text: &str, tag: Option<&str>) -> Meaning {
     } else if squash(after).is_empty() && role_in("", before).is_none() {
         Some((Role::Pv, Sureness::BareTag))
     } else {
-        role_in(before, after)
+        match role_in(before, after) {
+            // "TIC-204 value"
+            Some((Role::Value, _)) => Some((Role::Pv, Sureness::BareTag)),
+            role => role,
+        }
     };
     // "Minutes" and "Elapsed seconds" carry their unit in the word itself.
     if unit.is_none() && matches!(role, Some((Role::Time, _))) {
@@ -328,6 +332,15 @@ fn role_in(before: &str, after: &str) -> Option<(Role, Sureness)> {
             None => others |= follows,
         }
     }
+    let sureness = if others {
+        Sureness::Among
+    } else {
+        Sureness::Exact
+    };
+    // The time of a signal that has a time column of its own.
+    if roles.contains(&Role::Time) {
+        return Some((Role::Time, sureness));
+    }
     // "SET POINT" and the like in several words.
     let together = trailing
         .iter()
@@ -337,18 +350,34 @@ fn role_in(before: &str, after: &str) -> Option<(Role, Sureness)> {
     if let Some(role) = role_of(&together) {
         return Some((role, Sureness::Exact));
     }
-    let sureness = if others {
-        Sureness::Among
-    } else {
-        Sureness::Exact
-    };
     match roles.as_slice() {
         [] => (trailing == ["T"] && leading.is_empty()).then_some((Role::Time, Sureness::Among)),
         [role] => Some((*role, sureness)),
         // The quality of the PV; that of another signal is no business of the PV's.
         [Role::Pv, Role::Quality] | [Role::Quality, Role::Pv] => Some((Role::Quality, sureness)),
-        [Role::Time, Role::Time] => Some((Role::Time, sureness)),
         _ => None,
+    }
+}
+
+/// The name before the usual word at the end of a heading ("EXAMPLE-1" of "U200/EXAMPLE-1.PV"), for tags
+/// that are not of the usual kind; `None` where no figure stands in it.
+pub fn name_before_role(text: &str) -> Option<(&str, Role)> {
+    let is_apart = |letter: char| !letter.is_alphanumeric() && letter != '-';
+    let (proper, _) = split_unit(text);
+    let mut rest = proper.trim_end();
+    loop {
+        let at = rest.rfind(is_apart)?;
+        let (before, word) = rest.split_at(at);
+        let word = word.trim_start_matches(is_apart).to_uppercase();
+        rest = before.trim_end_matches(is_apart);
+        if let Some(role) = role_of(&word).filter(|role| *role != Role::Value) {
+            let name = rest.rsplit(['/', '\\', '.', ':', '!']).next()?.trim();
+            let has_figure = name.bytes().any(|byte| byte.is_ascii_digit());
+            return (has_figure && !name.contains(char::is_whitespace)).then_some((name, role));
+        }
+        if !is_silent(&word) {
+            return None;
+        }
     }
 }
 
@@ -376,6 +405,7 @@ mod tests {
             ("U200/TIC-204.PV.Value", Some((Role::Pv, Exact))),
             ("TIC-204", Some((Role::Pv, BareTag))),
             ("TIC-204 [degC]", Some((Role::Pv, BareTag))),
+            ("TIC-204 Value", Some((Role::Pv, BareTag))),
             ("TIC-204.PV raw", Some((Role::Pv, Among))),
             ("TIC-204.PV.Quality", Some((Role::Quality, Exact))),
             ("Quality TIC-204", Some((Role::Quality, Exact))),
@@ -388,6 +418,9 @@ mod tests {
             ("Timestamp", Some((Role::Time, Exact))),
             ("Date/Time", Some((Role::Time, Exact))),
             ("Time (s)", Some((Role::Time, Exact))),
+            ("TIC-204.PV Time", Some((Role::Time, Exact))),
+            ("TIC-204.OP Timestamp", Some((Role::Time, Exact))),
+            ("Timestamp TIC-204.OP", Some((Role::Time, Exact))),
             ("TIC-2041.PV", None),
             ("TIC-204A.PV", None),
             ("XTIC-204.PV", None),
@@ -395,6 +428,22 @@ mod tests {
             ("Remarks", None),
         ] {
             assert_eq!(role(text, "TIC-204"), expected, "{text}");
+        }
+    }
+
+    #[test]
+    fn a_name_of_any_kind_stands_before_the_usual_word() {
+        for (text, expected) in [
+            ("EXAMPLE-1.PV", Some(("EXAMPLE-1", Role::Pv))),
+            ("U200/EXAMPLE-1/OP [%]", Some(("EXAMPLE-1", Role::Op))),
+            ("Reactor2.SP.Value", Some(("Reactor2", Role::Sp))),
+            ("LOOP_7_PV", Some(("LOOP_7", Role::Pv))),
+            ("Process value", None),
+            ("Tank 1 PV", None),
+            ("PV", None),
+            ("CH1", None),
+        ] {
+            assert_eq!(name_before_role(text), expected, "{text}");
         }
     }
 

@@ -5,9 +5,11 @@
 //! its cells become samples (`extract`). Whatever cannot be read for certain is an error at its
 //! place; whatever had to be decided is reported with its reason.
 
+mod blanks;
 mod cells;
 pub mod clock;
 mod collect;
+mod columns;
 mod dates;
 mod delimited;
 mod extract;
@@ -19,14 +21,20 @@ mod join;
 pub mod layout;
 pub mod numbers;
 pub mod order;
+mod parts;
+mod proposal;
 pub mod roles;
-mod rows;
+pub mod rows;
 pub mod samples;
+mod series;
 mod sheet;
 pub mod source;
 pub mod stamp;
 pub mod table;
+mod tags;
 pub mod text;
+mod timed;
+mod times;
 mod tracks;
 pub mod units;
 pub mod values;
@@ -42,6 +50,7 @@ use std::path::PathBuf;
 
 pub use guard::is_guarded;
 pub use numbers::DecimalSign;
+pub use proposal::Proposal;
 pub use roles::RoleFound;
 pub use samples::{read_samples_csv, samples_csv};
 pub use source::FileCache;
@@ -216,6 +225,8 @@ pub struct Source {
     pub gaps: Vec<Gap>,
     /// How the clock is written.
     pub clock_format: String,
+    /// Decimal sign of its numbers.
+    pub decimal: DecimalSign,
     /// Which column got which role, and why.
     pub roles: Vec<RoleFound>,
 }

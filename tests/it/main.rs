@@ -2,12 +2,17 @@
 //! `tests/README.md`.
 
 mod archive;
+mod as_found;
 mod broken;
+mod cascade;
 mod cli;
 mod demo;
 mod errors;
+mod forms;
 mod identify;
+mod inspect;
 mod layering;
+mod loops;
 mod new_user;
 mod plant;
 mod predict;
@@ -17,3 +22,4 @@ mod schema;
 mod support;
 mod synthetic;
 mod twins;
+mod withheld;
