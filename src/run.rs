@@ -18,7 +18,7 @@ use std::sync::atomic::{AtomicUsize, Ordering};
 use std::sync::mpsc;
 
 /// Folder of the records in the job folder.
-const RECORDS_FOLDER: &str = "records";
+pub(crate) const RECORDS_FOLDER: &str = "records";
 
 /// What `record` is asked for.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -32,11 +32,11 @@ pub struct RecordOptions {
 }
 
 /// A job with the loops that this run is about.
-struct Selected {
-    job: Job,
-    notices: Vec<Problem>,
+pub(crate) struct Selected {
+    pub job: Job,
+    pub notices: Vec<Problem>,
     /// Places in `job.loops`, in the order of the schedule.
-    wanted: Vec<usize>,
+    pub wanted: Vec<usize>,
 }
 
 /// Lays out a job folder.
@@ -77,6 +77,7 @@ pub fn check(folder: &Path, only: &[String]) -> Result<CheckReport, Vec<Problem>
                     LoopOutcome::Ready {
                         status: engineered.record.document.status,
                         open_items: open_items(&engineered.record),
+                        next_time: next_time(&engineered.record),
                     },
                     engineered.notices,
                 ),
@@ -174,6 +175,7 @@ pub fn record(
                     LoopOutcome::Written {
                         status: document.status,
                         open_items: open_items(&recorded.record),
+                        next_time: next_time(&recorded.record),
                         pdf: names.pdf(),
                         json: names.json(),
                         kept: recorded.kept,
@@ -205,7 +207,7 @@ pub fn record(
     })
 }
 
-fn shown(path: &Path) -> String {
+pub(crate) fn shown(path: &Path) -> String {
     path.display().to_string().replace('\\', "/")
 }
 
@@ -218,7 +220,19 @@ fn open_items(record: &Record) -> Vec<String> {
         .collect()
 }
 
-fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Problem>) -> LoopReport {
+fn next_time(record: &Record) -> Vec<String> {
+    let advice = record.test.next_time.iter();
+    advice
+        .map(|advice| format!("{} {}", advice.what, advice.how))
+        .collect()
+}
+
+pub(crate) fn loop_report(
+    job: &Job,
+    index: usize,
+    outcome: LoopOutcome,
+    notices: Vec<Problem>,
+) -> LoopReport {
     LoopReport {
         tag: tag_of(job, index).to_owned(),
         outcome,
@@ -226,7 +240,7 @@ fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Probl
     }
 }
 
-fn tag_of(job: &Job, index: usize) -> &str {
+pub(crate) fn tag_of(job: &Job, index: usize) -> &str {
     match &job.loops[index] {
         Ok(row) => &row.tag,
         Err(bad) => &bad.tag,
@@ -234,7 +248,7 @@ fn tag_of(job: &Job, index: usize) -> &str {
 }
 
 /// Reads the job and picks the loops asked for.
-fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
+pub(crate) fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
     let (job, notices) = Job::read(folder)?;
     let tags: Vec<&str> = (0..job.loops.len()).map(|k| tag_of(&job, k)).collect();
     let unknown: Vec<Problem> = only
@@ -476,7 +490,10 @@ mod tests {
             .collect();
         std::fs::write(&log, stuck.join("\n")).expect("written");
         let report = check(&root, &[]).expect("a job");
-        let LoopOutcome::Ready { status, open_items } = &report.loops[0].outcome else {
+        let LoopOutcome::Ready {
+            status, open_items, ..
+        } = &report.loops[0].outcome
+        else {
             panic!("{report}");
         };
         assert_eq!(*status, crate::record::Status::Withheld);
