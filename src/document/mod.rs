@@ -13,6 +13,8 @@ mod dossier_tests;
 mod sample;
 #[cfg(test)]
 mod tests;
+#[cfg(test)]
+mod text_tests;
 
 use crate::figures::Figure;
 use crate::record::{PageSize, Procedure, Record, Signature};
@@ -24,9 +26,15 @@ use typst_layout::PagedDocument;
 use typst_pdf::{PdfOptions, PdfStandard, PdfStandards, Timestamp};
 use world::DocumentWorld;
 
+pub use world::Alphabet;
+
 /// Layout results older than this many documents are forgotten. Kept that long they speed up the
 /// next record by a quarter; kept for ever they fill the memory of a job with hundreds of loops.
 const KEEP_LAYOUTS: usize = 5;
+
+/// What to do about a character that no font has.
+pub const FONT_HINT: &str = "write the text with other characters, or put a font that has it (.otf, .ttf, .otc, .ttc) \
+                             into the folder that job.toml names as its template";
 
 /// Why a document could not be typeset.
 #[derive(Debug, Clone, PartialEq, Eq, Error)]
@@ -71,10 +79,7 @@ impl DocumentError {
     /// What to do about it, where something can be done.
     pub fn hint(&self) -> Option<&'static str> {
         match self {
-            DocumentError::MissingCharacter { .. } => Some(
-                "write the text with other characters, or put a font that has it into the job's \
-                 template folder and name it in rules.typ",
-            ),
+            DocumentError::MissingCharacter { .. } => Some(FONT_HINT),
             DocumentError::TemplateEncoding { .. } => Some("save the file as UTF-8"),
             _ => None,
         }
@@ -82,7 +87,7 @@ impl DocumentError {
 }
 
 /// The site's own templates by file name, each in the place of the project's file of that name.
-/// Fonts (`.otf`, `.ttf`) are added to the project's; `logo.svg` or `logo.png` is printed on the
+/// Fonts (`.otf`, `.ttf`, and collections of them) draw what the project's cannot; `logo.svg` or `logo.png` is printed on the
 /// first page.
 #[derive(Debug, Clone, PartialEq, Eq, Default)]
 pub struct Templates {
@@ -276,14 +281,16 @@ impl LaidOut {
         main: &str,
         view: &impl serde::Serialize,
         templates: &Templates,
-        figures: &[&Figure],
+        figures: &[(String, &Figure)],
         mut files: Vec<(String, Bytes)>,
     ) -> Result<Self, DocumentError> {
         let data = serde_json::to_vec(view).map_err(|e| DocumentError::Record(e.to_string()))?;
         files.push(("view.json".to_owned(), Bytes::new(data)));
-        let world = DocumentWorld::new(main, templates, files)?;
-        for figure in figures {
+        let mut world = DocumentWorld::new(main, templates, files)?;
+        for (folder, figure) in figures {
             pages::check_figure(&world, figure)?;
+            // The same few names in every document.
+            world.add_figure(&format!("{folder}/{}", figure.name), &figure.svg)?;
         }
         let document = world.lay_out()?;
         pages::check_glyphs(&document)?;
@@ -323,7 +330,6 @@ fn lay_out_record(
     let mut files = Vec::new();
     let mut view = view::record(record, figures, "plots", "record")?;
     view.logo = templates.logo();
-    embed(&mut files, figures, "plots");
     for attachment in attachments {
         view.attach(attachment, attachment.name.clone());
         files.push((
@@ -335,7 +341,7 @@ fn lay_out_record(
         "record.typ",
         &view,
         templates,
-        &figures.iter().collect::<Vec<_>>(),
+        &placed(figures, "plots").collect::<Vec<_>>(),
         files,
     )
 }
@@ -348,6 +354,7 @@ fn lay_out_dossier(
     let mut files = Vec::new();
     let mut names = BTreeSet::new();
     let ordered = view::inner_first(records);
+    let mut figures = Vec::new();
     let mut views = Vec::with_capacity(ordered.len());
     for (index, part) in ordered.iter().enumerate() {
         let folder = format!("plots/{index}");
@@ -358,7 +365,7 @@ fn lay_out_dossier(
             &format!("record-{index}"),
         )?;
         view.logo = templates.logo();
-        embed(&mut files, part.figures, &folder);
+        figures.extend(placed(part.figures, &folder));
         for attachment in part.attachments {
             let mut name = format!(
                 "{}-{}",
@@ -375,18 +382,13 @@ fn lay_out_dossier(
         views.push(view);
     }
     let view = view::dossier(dossier, &ordered, views, templates.logo())?;
-    let figures: Vec<&Figure> = ordered.iter().flat_map(|part| part.figures).collect();
     LaidOut::new("dossier.typ", &view, templates, &figures, files)
 }
 
-/// Puts figures beside the templates, under the same few names in every document.
-fn embed(files: &mut Vec<(String, Bytes)>, figures: &[Figure], folder: &str) {
-    for figure in figures {
-        files.push((
-            format!("{folder}/{}", figure.name),
-            Bytes::from_string(figure.svg.clone()),
-        ));
-    }
+/// Figures with the folder they lie in.
+fn placed<'a>(figures: &'a [Figure], folder: &str) -> impl Iterator<Item = (String, &'a Figure)> {
+    let folder = folder.to_owned();
+    figures.iter().map(move |figure| (folder.clone(), figure))
 }
 
 /// A tag as part of a file name.

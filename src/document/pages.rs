@@ -90,10 +90,7 @@ pub(super) fn check_figure(world: &DocumentWorld, figure: &Figure) -> Result<(),
     while let Some(open) = rest.find('>') {
         let after = &rest[open + 1..];
         let text = &after[..after.find('<').unwrap_or(after.len())];
-        if let Some(character) = text
-            .chars()
-            .find(|c| !c.is_control() && !world.can_draw(*c))
-        {
+        if let Some(character) = world.undrawable(text) {
             return Err(DocumentError::MissingCharacter {
                 text: text.trim().to_owned(),
                 character,

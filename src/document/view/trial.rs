@@ -153,7 +153,11 @@ fn table(context: &Context, trial: &Trial) -> Table {
         ],
     ));
     Table {
-        heads: vec![String::new(), "Measured".to_owned(), "Predicted".to_owned()],
+        heads: vec![
+            "Measure".to_owned(),
+            "Measured".to_owned(),
+            "Predicted".to_owned(),
+        ],
         rows,
     }
 }
