@@ -10,6 +10,8 @@ mod world;
 #[cfg(test)]
 mod dossier_tests;
 #[cfg(test)]
+mod golden_tests;
+#[cfg(test)]
 mod sample;
 #[cfg(test)]
 mod tests;
@@ -26,6 +28,7 @@ use typst_layout::PagedDocument;
 use typst_pdf::{PdfOptions, PdfStandard, PdfStandards, Timestamp};
 use world::DocumentWorld;
 
+pub use pages::{PageLayout, Placed};
 pub use world::Alphabet;
 
 /// Layout results older than this many documents are forgotten. Kept that long they speed up the
@@ -204,6 +207,16 @@ pub struct DossierInput {
     pub program: String,
 }
 
+/// A document typeset.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Typeset {
+    /// The PDF.
+    pub pdf: Vec<u8>,
+    /// What the typesetter warns of, with file, line and column of the template: a font family that is not
+    /// there, a name that is out of use. The project's own templates give none.
+    pub warnings: Vec<String>,
+}
+
 /// Typesets one record: PDF/A-3a and PDF/UA-1, with the attachments in it.
 ///
 /// # Errors
@@ -213,7 +226,7 @@ pub fn typeset_record(
     figures: &[Figure],
     attachments: &[Attachment],
     templates: &Templates,
-) -> Result<Vec<u8>, DocumentError> {
+) -> Result<Typeset, DocumentError> {
     let laid_out = lay_out_record(record, figures, attachments, templates)?;
     let document = &record.document;
     laid_out.export(
@@ -238,6 +251,37 @@ pub fn record_page_texts(
     Ok(texts)
 }
 
+/// Where everything stands on the pages of a record.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn record_layout(
+    record: &Record,
+    figures: &[Figure],
+    templates: &Templates,
+) -> Result<Vec<PageLayout>, DocumentError> {
+    let laid_out = lay_out_record(record, figures, &[], templates)?;
+    let layout = pages::layout(&laid_out.document);
+    comemo::evict(KEEP_LAYOUTS);
+    Ok(layout)
+}
+
+/// The files that a record is typeset from, by name: what Typst needs beside the fonts to make its pages.
+/// `record.typ` is the one to begin with.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn record_sources(
+    record: &Record,
+    figures: &[Figure],
+    attachments: &[Attachment],
+    templates: &Templates,
+) -> Result<BTreeMap<String, Vec<u8>>, DocumentError> {
+    Ok(lay_out_record(record, figures, attachments, templates)?
+        .world
+        .files())
+}
+
 /// Typesets a dossier: cover, register, open items, page for operations, settings to enter, and
 /// every record, inner loops before the loops that cascade to them.
 ///
@@ -247,7 +291,7 @@ pub fn typeset_dossier(
     dossier: &DossierInput,
     records: &[DossierRecord],
     templates: &Templates,
-) -> Result<Vec<u8>, DocumentError> {
+) -> Result<Typeset, DocumentError> {
     lay_out_dossier(dossier, records, templates)?.export(
         &format!("{} revision {}", dossier.number, dossier.revision),
         dossier.date,
@@ -270,10 +314,26 @@ pub fn dossier_page_texts(
     Ok(texts)
 }
 
+/// Where everything stands on the pages of a dossier.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn dossier_layout(
+    dossier: &DossierInput,
+    records: &[DossierRecord],
+    templates: &Templates,
+) -> Result<Vec<PageLayout>, DocumentError> {
+    let laid_out = lay_out_dossier(dossier, records, templates)?;
+    let layout = pages::layout(&laid_out.document);
+    comemo::evict(KEEP_LAYOUTS);
+    Ok(layout)
+}
+
 /// A document laid out, ready to be exported.
 struct LaidOut {
     world: DocumentWorld,
     document: PagedDocument,
+    warnings: Vec<String>,
 }
 
 impl LaidOut {
@@ -292,13 +352,22 @@ impl LaidOut {
             // The same few names in every document.
             world.add_figure(&format!("{folder}/{}", figure.name), &figure.svg)?;
         }
-        let document = world.lay_out()?;
+        let (document, warnings) = world.lay_out()?;
         pages::check_glyphs(&document)?;
-        Ok(LaidOut { world, document })
+        Ok(LaidOut {
+            world,
+            document,
+            warnings,
+        })
     }
 
     /// The PDF, with an identifier and a date that are the document's own.
-    fn export(self, ident: &str, date: NaiveDate, program: &str) -> Result<Vec<u8>, DocumentError> {
+    fn export(
+        mut self,
+        ident: &str,
+        date: NaiveDate,
+        program: &str,
+    ) -> Result<Typeset, DocumentError> {
         let midnight = u8::try_from(date.month())
             .ok()
             .zip(u8::try_from(date.day()).ok())
@@ -315,9 +384,10 @@ impl LaidOut {
         };
         let pdf = typst_pdf::pdf(&self.document, &options)
             .map_err(|diagnostics| DocumentError::Export(self.world.told(&diagnostics)));
+        let warnings = std::mem::take(&mut self.warnings);
         drop(self);
         comemo::evict(KEEP_LAYOUTS);
-        pdf
+        pdf.map(|pdf| Typeset { pdf, warnings })
     }
 }
 

@@ -228,9 +228,11 @@ fn a_record_is_a_pdf_with_its_attachments_and_the_same_bytes_twice() {
         )
         .expect("a record is typeset")
     };
-    let pdf = typeset();
+    let first = typeset();
+    assert_eq!(first.warnings, [""; 0]);
+    let pdf = first.pdf;
     assert!(pdf.starts_with(b"%PDF-1.7"));
-    assert_eq!(pdf, typeset());
+    assert_eq!(pdf, typeset().pdf);
     let has = |needle: &[u8]| pdf.windows(needle.len()).any(|w| w == needle);
     for needle in [
         "record.json",
@@ -277,7 +279,7 @@ fn the_letter_page_has_the_same_words() {
 }
 
 /// A dossier of every kind of record, the outer loop of a cascade before its inner one.
-fn dossier_records() -> Vec<Record> {
+pub(super) fn dossier_records() -> Vec<Record> {
     let mut outer = sample::full();
     outer.control_loop.tag = "TIC-202".to_owned();
     outer.control_loop.inner_loop = Some("FIC-203".to_owned());
@@ -370,8 +372,10 @@ fn a_dossier_opens_with_what_each_reader_needs() {
     );
     holds(&pages[10], &["TIC-202 Column", "Page 1 of 6"]);
 
-    let pdf = typeset_dossier(&sample::dossier_input(), &parts, &templates)
+    let typeset = typeset_dossier(&sample::dossier_input(), &parts, &templates)
         .expect("a dossier is typeset");
+    assert_eq!(typeset.warnings, [""; 0]);
+    let pdf = typeset.pdf;
     let has = |needle: &[u8]| pdf.windows(needle.len()).any(|w| w == needle);
     assert!(has(b"FIC-203-record.json") && has(b"TIC-202-record.json"));
 }

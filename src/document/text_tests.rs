@@ -187,6 +187,20 @@ fn a_wrong_template_is_reported_with_file_line_and_hint() {
 }
 
 #[test]
+fn what_the_typesetter_warns_of_is_handed_on_with_its_place() {
+    let templates = overriding(
+        "trial.typ",
+        "#let trial(t) = {\n  text(font: \"No Such Family\")[Trial.]\n}\n",
+    );
+    let typeset = typeset_record(&sample::full(), &sample::figures(), &[], &templates)
+        .expect("a record is typeset");
+    assert_eq!(
+        typeset.warnings,
+        ["trial.typ:2:13: unknown font family: no such family"]
+    );
+}
+
+#[test]
 fn a_site_may_replace_one_template_and_add_a_logo() {
     let mut files = BTreeMap::from([(
         "trial.typ".to_owned(),
@@ -204,5 +218,5 @@ fn a_site_may_replace_one_template_and_add_a_logo() {
     lacks(&pages, &["8 Closed-loop trial"]);
     let pdf = typeset_record(&sample::full(), &sample::figures(), &[], &templates)
         .expect("a record with a logo is typeset");
-    assert!(pdf.starts_with(b"%PDF"));
+    assert!(pdf.pdf.starts_with(b"%PDF"));
 }

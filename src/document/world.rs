@@ -3,7 +3,7 @@
 
 use super::{DocumentError, Templates};
 use crate::record::Record;
-use std::collections::HashMap;
+use std::collections::{BTreeMap, HashMap};
 use std::sync::LazyLock;
 use typst::diag::{FileError, FileResult, SourceDiagnostic};
 use typst::foundations::{Bytes, Datetime, Duration};
@@ -265,6 +265,20 @@ impl DocumentWorld {
         Ok(world)
     }
 
+    /// Name and content of every file, templates and data.
+    pub(super) fn files(&self) -> BTreeMap<String, Vec<u8>> {
+        let sources = SHARED
+            .sources
+            .iter()
+            .chain(&self.sources)
+            .map(|(id, source)| (file_name(*id), source.text().as_bytes().to_vec()));
+        let files = self
+            .files
+            .iter()
+            .map(|(id, bytes)| (file_name(*id), bytes.to_vec()));
+        sources.chain(files).collect()
+    }
+
     fn fonts(&self) -> &[Font] {
         match &self.own_fonts {
             Some((fonts, _)) => fonts,
@@ -292,11 +306,18 @@ impl DocumentWorld {
         undrawable(self.fonts(), text)
     }
 
-    /// Lays the document out.
-    pub(super) fn lay_out(&self) -> Result<PagedDocument, DocumentError> {
-        typst::compile::<PagedDocument>(self)
+    /// Lays the document out; with it what Typst warns of.
+    pub(super) fn lay_out(&self) -> Result<(PagedDocument, Vec<String>), DocumentError> {
+        let compiled = typst::compile::<PagedDocument>(self);
+        let document = compiled
             .output
-            .map_err(|diagnostics| DocumentError::Template(self.told(&diagnostics)))
+            .map_err(|diagnostics| DocumentError::Template(self.told(&diagnostics)))?;
+        let warnings = compiled
+            .warnings
+            .iter()
+            .map(|warning| self.told(std::slice::from_ref(warning)))
+            .collect();
+        Ok((document, warnings))
     }
 
     /// Typst's diagnostics as it reports them: file, line, column, message, hints.

@@ -9,6 +9,7 @@ mod errors;
 mod identify;
 mod layering;
 mod new_user;
+mod paper;
 mod plant;
 mod predict;
 mod published;
