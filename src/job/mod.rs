@@ -358,7 +358,7 @@ fn files_below(root: &Path) -> Vec<String> {
 fn read_manifest(folder: &Path) -> Result<Manifest, Vec<Problem>> {
     let place = || Place::file(manifest::FILE);
     match std::fs::read(folder.join(manifest::FILE)) {
-        Ok(bytes) => Manifest::read(&crate::read::text::decode(&bytes).text),
+        Ok(bytes) => Manifest::read(&crate::read::text::decode(bytes).text),
         Err(error) if error.kind() == std::io::ErrorKind::NotFound => Err(vec![
             Problem::error(place(), "there is no such file in the job folder")
                 .hint("`asleft new` lays out a job folder"),

@@ -74,7 +74,8 @@ pub fn read_file(file: &SourceFile) -> Result<Schedule, Vec<Problem>> {
                 .cells()
                 .any(|cell| of(&cell.text()).is_some_and(|heading| heading.name == "tag"))
     };
-    let filled = || file.tables.iter().filter(|table| !table.is_empty());
+    let tables = file.tables().map_err(|problem| vec![problem])?;
+    let filled = || tables.iter().copied().filter(|table| !table.is_empty());
     let Some(table) = filled().find(has_tag).or_else(|| filled().next()) else {
         return Err(vec![Problem::error(
             Place::file(&file.name),

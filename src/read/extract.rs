@@ -86,11 +86,7 @@ pub(super) fn choose_table<'a>(
 ) -> Result<Understood<'a>, Vec<Problem>> {
     if let Some(sheet) = &reference.sheet {
         let table = file.sheet(sheet).ok_or_else(|| {
-            let names: Vec<String> = file
-                .tables
-                .iter()
-                .filter_map(|table| table.sheet.as_ref().map(|name| format!("\"{name}\"")))
-                .collect();
+            let names: Vec<String> = file.sheets().map(|name| format!("\"{name}\"")).collect();
             vec![Problem::error(
                 Place::file(&file.name),
                 format!(
@@ -99,11 +95,13 @@ pub(super) fn choose_table<'a>(
                 ),
             )]
         })?;
+        let table = table.map_err(|problem| vec![problem])?;
         return understand(request, rule, table);
     }
     let mut readable = Vec::new();
     let mut refused = Vec::new();
-    for table in file.tables.iter().filter(|table| !table.is_empty()) {
+    let tables = file.tables().map_err(|problem| vec![problem])?;
+    for table in tables.into_iter().filter(|table| !table.is_empty()) {
         match understand(request, rule, table) {
             Ok(understood) => readable.push(understood),
             Err(problems) => refused.push((table, problems)),
@@ -247,12 +245,15 @@ pub(super) fn decimal_sign(
     if let TimeColumns::Single(time) = understood.roles.time {
         columns.push(time);
     }
+    columns.sort_unstable();
+    columns.dedup();
+    let mut cells = vec![Cell::Empty; columns.len()];
     let mut evidence: Evidence<(usize, usize)> = Evidence::default();
     for index in understood.layout.data_start..table.len() {
-        let row = table.row(index);
-        for &column in &columns {
-            if let Cell::Text(text) = row.cell(column) {
-                evidence.observe(text, || (row.number, column));
+        table.pick(index, &columns, &mut cells);
+        for (cell, &column) in cells.iter().zip(&columns) {
+            if let Cell::Text(text) = cell {
+                evidence.observe(text, || (table.row(index).number, column));
             }
         }
         if evidence.is_full() {

@@ -141,22 +141,20 @@ pub fn inspect(
     let rule = extract::rule_for(request.rules, request.file)
         .cloned()
         .unwrap_or_default();
-    if let Some(sheet) = request.sheet
-        && file.sheet(sheet).is_none()
-    {
-        return Err(Problem::error(
-            crate::notice::Place::file(request.file),
-            format!("there is no sheet \"{sheet}\""),
-        ));
-    }
-    let wanted = |table: &&Table| match (request.sheet, &table.sheet) {
-        (Some(wanted), Some(sheet)) => sheet.trim().to_lowercase() == wanted.trim().to_lowercase(),
-        _ => true,
+    let tables = match request.sheet {
+        Some(sheet) => {
+            let table = file.sheet(sheet).ok_or_else(|| {
+                Problem::error(
+                    crate::notice::Place::file(request.file),
+                    format!("there is no sheet \"{sheet}\""),
+                )
+            })?;
+            vec![table?]
+        }
+        None => file.tables()?,
     };
-    let tables = file
-        .tables
-        .iter()
-        .filter(wanted)
+    let tables = tables
+        .into_iter()
         .map(|table| inspect_table(root, request, &rule, table, cache))
         .collect();
     Ok(Inspection {

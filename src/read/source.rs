@@ -1,6 +1,8 @@
 //! Files of the job, each read once.
 
-use super::table::{Table, workbook_tables};
+use super::table::Table;
+use super::text;
+use super::workbook::Workbook;
 use crate::notice::{Place, Problem};
 use sha2::{Digest, Sha256};
 use std::collections::BTreeMap;
@@ -17,8 +19,16 @@ pub struct SourceFile {
     pub name: String,
     /// SHA-256 of the file, hexadecimal.
     pub sha256: String,
-    /// Its sheets in order, or the one table of a text file.
-    pub tables: Vec<Table>,
+    tables: Vec<Part>,
+    /// Kept until every sheet was read.
+    workbook: Mutex<Option<Workbook>>,
+}
+
+/// A sheet, or the one table of a text file.
+#[derive(Debug)]
+struct Part {
+    sheet: Option<String>,
+    table: OnceLock<Result<Table, Problem>>,
 }
 
 impl SourceFile {
@@ -58,7 +68,7 @@ impl SourceFile {
             .to_ascii_lowercase();
         let zipped = bytes.starts_with(b"PK\x03\x04");
         let compound = bytes.starts_with(&[0xD0, 0xCF, 0x11, 0xE0]);
-        let tables = if WORKBOOK_ENDINGS.contains(&ending.as_str()) {
+        if WORKBOOK_ENDINGS.contains(&ending.as_str()) {
             if compound && ending != "xls" {
                 return Err(Problem::error(
                     Place::file(name),
@@ -66,31 +76,81 @@ impl SourceFile {
                 )
                 .hint("save it without a password"));
             }
-            workbook_tables(bytes, name, &ending)?
-        } else if zipped || compound || bytes.starts_with(b"%PDF") {
+            let workbook = Workbook::open(bytes, name, &ending)?;
+            let sheets = workbook.sheets().into_iter().map(|sheet| Part {
+                sheet: Some(sheet),
+                table: OnceLock::new(),
+            });
+            return Ok(SourceFile {
+                name: name.to_owned(),
+                sha256,
+                tables: sheets.collect(),
+                workbook: Mutex::new(Some(workbook)),
+            });
+        }
+        if zipped || compound || bytes.starts_with(b"%PDF") {
             return Err(Problem::error(
                 Place::file(name),
                 format!("the name ends in \".{ending}\", but the file is not text"),
             )
             .hint("give a workbook (.xlsx, .xlsm, .xlsb, .xls, .ods) or a text file (.csv)"));
-        } else {
-            vec![Table::from_text(name, &bytes)?]
-        };
+        }
+        let table = Table::of_text(name, text::decode(bytes))?;
         Ok(SourceFile {
             name: name.to_owned(),
             sha256,
-            tables,
+            tables: vec![Part {
+                sheet: None,
+                table: OnceLock::from(Ok(table)),
+            }],
+            workbook: Mutex::new(None),
         })
     }
 
-    /// The table of that sheet, ignoring case.
-    pub fn sheet(&self, sheet: &str) -> Option<&Table> {
-        self.tables.iter().find(|table| {
-            table
-                .sheet
-                .as_ref()
-                .is_some_and(|name| name.trim().to_lowercase() == sheet.trim().to_lowercase())
-        })
+    /// Names of its sheets in order; none for a text file.
+    pub fn sheets(&self) -> impl Iterator<Item = &str> {
+        self.tables.iter().filter_map(|part| part.sheet.as_deref())
+    }
+
+    /// Its sheets in order, or the one table of a text file.
+    ///
+    /// # Errors
+    /// Where one of them is damaged.
+    pub fn tables(&self) -> Result<Vec<&Table>, Problem> {
+        self.tables.iter().map(|part| self.table(part)).collect()
+    }
+
+    /// The table of that sheet, ignoring case; `None` where there is none. No other sheet is read.
+    ///
+    /// # Errors
+    /// Where it is damaged.
+    pub fn sheet(&self, sheet: &str) -> Option<Result<&Table, Problem>> {
+        let even = |name: &str| name.trim().to_lowercase();
+        let part = self
+            .tables
+            .iter()
+            .find(|part| part.sheet.as_deref().map(even) == Some(even(sheet)))?;
+        Some(self.table(part))
+    }
+
+    fn table<'a>(&'a self, part: &'a Part) -> Result<&'a Table, Problem> {
+        let workbook = || {
+            self.workbook
+                .lock()
+                .unwrap_or_else(std::sync::PoisonError::into_inner)
+        };
+        let read = || {
+            let mut workbook = workbook();
+            let workbook = workbook
+                .as_mut()
+                .expect("a workbook is kept until every sheet was read");
+            workbook.read(part.sheet.as_deref().unwrap_or_default())
+        };
+        let table = part.table.get_or_init(read);
+        if self.tables.iter().all(|part| part.table.get().is_some()) {
+            workbook().take();
+        }
+        table.as_ref().map_err(Clone::clone)
     }
 }
 

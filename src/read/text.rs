@@ -15,15 +15,12 @@ pub struct Decoded {
 }
 
 /// Decodes UTF-8, UTF-16 (with or without a byte order mark) or, where the bytes are neither,
-/// Windows-1252, which every byte sequence is.
-pub fn decode(bytes: &[u8]) -> Decoded {
+/// Windows-1252, which every byte sequence is. What is UTF-8 already stays where it is.
+pub fn decode(bytes: Vec<u8>) -> Decoded {
     let decoded = |text: std::borrow::Cow<'_, str>, encoding| Decoded {
         text: text.into_owned(),
         encoding,
     };
-    if let Some(rest) = bytes.strip_prefix(&[0xEF, 0xBB, 0xBF]) {
-        return decoded(String::from_utf8_lossy(rest), "UTF-8");
-    }
     if let Some(rest) = bytes.strip_prefix(&[0xFF, 0xFE]) {
         return decoded(UTF_16LE.decode_without_bom_handling(rest).0, "UTF-16");
     }
@@ -39,18 +36,27 @@ pub fn decode(bytes: &[u8]) -> Decoded {
             .count()
     };
     if head.len() >= 4 && zeros_at(1) * 4 > head.len() {
-        return decoded(UTF_16LE.decode_without_bom_handling(bytes).0, "UTF-16");
+        return decoded(UTF_16LE.decode_without_bom_handling(&bytes).0, "UTF-16");
     }
     if head.len() >= 4 && zeros_at(0) * 4 > head.len() {
-        return decoded(UTF_16BE.decode_without_bom_handling(bytes).0, "UTF-16");
+        return decoded(UTF_16BE.decode_without_bom_handling(&bytes).0, "UTF-16");
     }
-    match std::str::from_utf8(bytes) {
-        Ok(text) => Decoded {
-            text: text.to_owned(),
-            encoding: "UTF-8",
-        },
-        Err(_) => decoded(
-            WINDOWS_1252.decode_without_bom_handling(bytes).0,
+    let is_marked = bytes.starts_with(&[0xEF, 0xBB, 0xBF]);
+    match String::from_utf8(bytes) {
+        Ok(mut text) => {
+            if is_marked {
+                text.drain(..'\u{feff}'.len_utf8());
+            }
+            Decoded {
+                text,
+                encoding: "UTF-8",
+            }
+        }
+        Err(error) if is_marked => {
+            decoded(String::from_utf8_lossy(&error.as_bytes()[3..]), "UTF-8")
+        }
+        Err(error) => decoded(
+            WINDOWS_1252.decode_without_bom_handling(error.as_bytes()).0,
             "Windows-1252",
         ),
     }
@@ -139,7 +145,7 @@ mod tests {
             (utf16(true, false), "UTF-16"),
             (windows, "Windows-1252"),
         ] {
-            let decoded = decode(&bytes);
+            let decoded = decode(bytes);
             assert_eq!(decoded.text, text);
             assert_eq!(decoded.encoding, encoding);
         }

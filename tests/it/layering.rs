@@ -101,10 +101,8 @@ const RESERVED: &[(&[&str], &[&str])] = &[
         &["document/"],
     ),
     (&["plotters::"], &["figures/"]),
-    (
-        &["calamine::", "csv::Reader"],
-        &["read/table", "job/schedule"],
-    ),
+    (&["calamine::"], &["read/workbook"]),
+    (&["csv::Reader"], &[]),
     (&["csv::Writer"], &["job/schedule", "register.rs"]),
     (&["rust_xlsxwriter::"], &["job/"]),
 ];
