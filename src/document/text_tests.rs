@@ -196,7 +196,7 @@ fn what_the_typesetter_warns_of_is_handed_on_with_its_place() {
         .expect("a record is typeset");
     assert_eq!(
         typeset.warnings,
-        ["trial.typ:2:13: unknown font family: no such family"]
+        ["trial.typ:2:14: unknown font family: no such family"]
     );
 }
 

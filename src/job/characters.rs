@@ -36,7 +36,7 @@ impl Job {
         let Ok(bytes) = std::fs::read(self.root.join(manifest::FILE)) else {
             return Vec::new();
         };
-        text::decode(&bytes)
+        text::decode(bytes)
             .text
             .lines()
             .enumerate()
