@@ -8,6 +8,7 @@ use super::place::{Block, LINE_PT, Taken};
 use super::{Figure, narrate, trend};
 use crate::display::{fixed, plain, unit, with_unit};
 use crate::identify::{Step, StepFit, Verdict};
+use crate::model::ProcessModel;
 use crate::quantity::{Span, round_significant};
 use crate::record::{Log, Record};
 
@@ -98,6 +99,18 @@ fn shown_time(record: &Record, usable: &[(&Step, &StepFit)]) -> Option<(f64, f64
     (end > 0.0).then(|| (-quiet.min(end / 4.0), end))
 }
 
+/// Answers to a held OP of a process that had settled at the first of its moves, or, where it
+/// integrates, begins there.
+fn settled_answers(model: &ProcessModel, moves: &[Point], times: &[f64]) -> Vec<f64> {
+    let first = moves.first().map_or(0.0, |m| m.1);
+    if model.kind().integrates() {
+        return model.response_to_held(moves, times);
+    }
+    let from_first: Vec<Point> = moves.iter().map(|m| (m.0, m.1 - first)).collect();
+    let answers = model.response_to_held(&from_first, times);
+    answers.iter().map(|a| a + model.gain() * first).collect()
+}
+
 fn chart<'a>(
     record: &Record,
     log: &Log,
@@ -115,10 +128,16 @@ fn chart<'a>(
         Shown::PerPercent => pv_span.width() / 100.0 / moved,
         Shown::Change => pv_span.width() / 100.0,
     };
-    // The fit was made from the OP as measured, so it is drawn from that.
+    // The fit was made from the OP as measured, what a settling PV still answers to included, so it is
+    // drawn from that.
+    let since = if fit.kind.integrates() {
+        from
+    } else {
+        from - (to - from)
+    };
     let mut moves: Vec<Point> = Vec::new();
     for (&t, &op) in data.t_s.iter().zip(&data.op) {
-        if t < from || t >= to || !op.is_finite() {
+        if t < since || t >= to || !op.is_finite() {
             continue;
         }
         let deviation = op_span.percent(op) - op_from;
@@ -143,7 +162,7 @@ fn chart<'a>(
     let process = fit.process();
     let rest = |t: f64| fit.bias_percent + fit.drift_percent_per_s * t;
     let times: Vec<f64> = runs.iter().flatten().map(|p| p.0).collect();
-    let mut fitted = process.response_to_held(&moves, &times).into_iter();
+    let mut fitted = settled_answers(&process, &moves, &times).into_iter();
     let residual = runs
         .iter()
         .map(|run| {
@@ -160,11 +179,11 @@ fn chart<'a>(
                 .collect()
         })
         .collect();
-    let curve = |model: &crate::model::ProcessModel, end: f64| -> Vec<Point> {
+    let curve = |model: &ProcessModel, end: f64| -> Vec<Point> {
         let (begin, end) = ((from - step.at_s).max(time.0), end.min(time.1));
         let each = (end - begin) / (CURVE_POINTS - 1) as f64;
         let times: Vec<f64> = (0..CURVE_POINTS).map(|k| begin + each * k as f64).collect();
-        let values = model.response_to_held(&moves, &times);
+        let values = settled_answers(model, &moves, &times);
         times
             .into_iter()
             .zip(values)

@@ -38,10 +38,19 @@ pub struct Window {
     pub t_s: Vec<f64>,
     /// PV, %.
     pub pv: Vec<f64>,
-    /// The OP as logged: (time, deviation from its value at rest from then on, %), in order.
+    /// The OP as logged: (time, deviation from its value at rest from then on, %), in order. A first
+    /// time of −∞ tells where it had stood since ever: a self-regulating process has settled there.
     pub moves: Vec<(f64, f64)>,
     /// What the PV stands on.
     pub base: Base,
+}
+
+impl Window {
+    /// The moves made within the window; those before it are history.
+    pub(crate) fn own_moves(&self) -> &[(f64, f64)] {
+        let first = self.t_s.first().copied().unwrap_or(f64::NEG_INFINITY);
+        &self.moves[self.moves.partition_point(|m| m.0 < first)..]
+    }
 }
 
 /// What to fit.

@@ -482,7 +482,7 @@ fn fit_and_judge(
             let own = fitted.of(kind);
             grounds.explained_slope =
                 before.map_or(0.0, |b| explained_slope(trace, b, step, own.fit.gains[0]));
-            verdict::judge(step, Ok((own, &fitted.window.moves)), &grounds)
+            verdict::judge(step, Ok((own, fitted.window.own_moves())), &grounds)
         }
         (Err(why), _) => verdict::judge(step, Err(why.clone()), &grounds),
         (Ok(_), None) => verdict::judge(step, Err("no kind fits".to_owned()), &grounds),

@@ -350,20 +350,26 @@ fn member(label: String, kind: Kind, gain: f64, values: &[f64], interval_s: f64)
     }
 }
 
-/// The window of a step for a fit: times from the move, the OP as logged from its level before.
+/// The window of a step for a fit: times from the move, the OP as logged less its level before.
+///
+/// The PV may not have come to rest after what the OP did before the window: its history is in the
+/// moves, as far back as the window is long. What was done earlier than that is taken as over.
 pub(crate) fn window(trace: &Trace, step: &OpStep) -> Window {
     let t_s = &trace.t_s()[step.window.clone()];
     let mut moves = Vec::new();
     if let (Some(&first), Some(&last)) = (t_s.first(), t_s.last()) {
         let (times, values) = trace.op_log();
-        // Held from the sample at or before the window's first.
-        let start = times.partition_point(|t| *t <= first).saturating_sub(1);
+        let since = first - (last - first);
+        let start = times.partition_point(|t| *t <= since);
         let end = times.partition_point(|t| *t <= last);
-        let mut before = step.op_from;
+        let mut before = values[start.saturating_sub(1)];
+        if before != step.op_from {
+            moves.push((f64::NEG_INFINITY, before - step.op_from));
+        }
         for k in start..end {
             if values[k] != before {
                 before = values[k];
-                moves.push((times[k].max(first) - step.at_s, before - step.op_from));
+                moves.push((times[k] - step.at_s, before - step.op_from));
             }
         }
     }

@@ -133,6 +133,27 @@ impl Chain {
         }
     }
 
+    /// Every lag at the OP deviation `op`, as if held there since ever. An integral is counted so that
+    /// the OP's moves up to second 0 (`ahead`, %·s, is yet to come of them) leave it at 0.
+    fn settle(&mut self, op: f64, ahead: f64) {
+        self.states = [op; 4];
+        let lag = if self.kind == Kind::IntegratingLag {
+            self.tau
+        } else {
+            0.0
+        };
+        self.integral = -(ahead + lag * op);
+    }
+
+    /// The answer `ahead_s` seconds before the first move, settled at the OP deviation `op`.
+    fn settled_before(&self, ahead_s: f64, op: f64) -> Answer {
+        let mut answer = self.answer(op);
+        if self.kind.integrates() {
+            answer.value -= op * ahead_s;
+        }
+        answer
+    }
+
     fn answer(&self, op: f64) -> Answer {
         let [one, two, three, four] = self.states;
         let (tau, tau2) = (self.tau, self.tau2);
@@ -215,8 +236,21 @@ fn two_lags(h_s: f64, tau: f64, tau2: f64) -> Coefficients {
     }
 }
 
+/// ∫ of the held OP deviation between two times, %·s; the later one may come first.
+fn integral(moves: &[(f64, f64)], from: f64, to: f64) -> f64 {
+    if to < from {
+        return -integral(moves, to, from);
+    }
+    let ends = moves.iter().skip(1).map(|m| m.0).chain([f64::INFINITY]);
+    moves
+        .iter()
+        .zip(ends)
+        .map(|(&(begin, op), end)| op * (end.min(to) - begin.max(from)).max(0.0))
+        .sum()
+}
+
 /// Calls `take` with the answer at each of the increasing `times_s` to `moves` (time, OP deviation
-/// from then on); at rest before the first.
+/// from then on); at rest before the first, or settled at the first where that one is at −∞.
 pub(crate) fn answers(
     kind: Kind,
     point: &Point,
@@ -228,10 +262,17 @@ pub(crate) fn answers(
     let mut op = 0.0;
     let mut now = f64::NAN;
     let mut next = 0;
+    if let [(f64::NEG_INFINITY, since_ever), rest @ ..] = moves {
+        op = *since_ever;
+        let first = rest.first().map_or(0.0, |m| m.0);
+        now = first + point.dead_time_s;
+        chain.settle(op, integral(moves, first, 0.0));
+        next = 1;
+    }
     for (row, &t) in times_s.iter().enumerate() {
         while next < moves.len() && moves[next].0 + point.dead_time_s <= t {
             let at = moves[next].0 + point.dead_time_s;
-            if next > 0 {
+            if now.is_finite() {
                 chain.advance(at - now, op);
             }
             now = at;
@@ -240,6 +281,11 @@ pub(crate) fn answers(
         }
         if next == 0 {
             take(row, Answer::default());
+            continue;
+        }
+        if t < now {
+            // Before the first move after rest: settled.
+            take(row, chain.settled_before(now - t, op));
             continue;
         }
         chain.advance(t - now, op);
@@ -286,6 +332,40 @@ mod tests {
                     assert!((a.value - e).abs() < 1e-9, "{kind:?} {} {e}", a.value);
                 }
             }
+        }
+    }
+
+    #[test]
+    fn a_process_that_stood_since_ever_has_settled() {
+        for kind in Kind::ALL {
+            let point = points()[3];
+            let long_ago = -1e4;
+            let from = |first: f64| {
+                let moves = [(first, 2.5), MOVES[0], MOVES[1], MOVES[2]];
+                let mut found = Vec::new();
+                answers(kind, &point, &moves, &times(), |_, a| found.push(a));
+                found
+            };
+            let (ever, long) = (from(f64::NEG_INFINITY), from(long_ago));
+            // An integral of long ago differs by what it had gathered by second 0.
+            let gathered = if kind.integrates() { 1e4 * 2.5 } else { 0.0 };
+            for (a, b) in ever.iter().zip(&long) {
+                assert!((b.value - gathered - a.value).abs() < 1e-7, "{kind:?}");
+                for k in 0..3 {
+                    assert!((b.slopes[k] - a.slopes[k]).abs() < 1e-7, "{kind:?} {k}");
+                }
+                assert!((b.rate - a.rate).abs() < 1e-9, "{kind:?}");
+            }
+        }
+    }
+
+    #[test]
+    fn an_integral_counts_from_second_0() {
+        for kind in [Kind::Integrating, Kind::IntegratingLag] {
+            let moves = [(f64::NEG_INFINITY, 2.0), (-40.0, 3.0), (-30.0, 0.0)];
+            answers(kind, &points()[0], &moves, &[100.0], |_, a| {
+                assert!(a.value.abs() < 1e-7, "{kind:?} {}", a.value);
+            });
         }
     }
 

@@ -25,7 +25,7 @@ const PIECES: usize = 6;
 
 /// The times that bound a search.
 struct Scales {
-    /// Longest time watched after the first move of a window, s.
+    /// Longest time watched after the first move made within a window, s.
     watched_s: f64,
     /// Median sampling interval, s.
     interval_s: f64,
@@ -35,7 +35,11 @@ fn scales(problem: &Problem) -> Option<Scales> {
     let watched_s = problem
         .windows
         .iter()
-        .filter_map(|w| Some(w.t_s.last()? - w.moves.first()?.0))
+        .filter_map(|w| {
+            let first = w.own_moves().first().or(w.moves.last())?;
+            Some(w.t_s.last()? - first.0)
+        })
+        .filter(|watched_s| watched_s.is_finite())
         .fold(0.0, f64::max);
     let mut intervals: Vec<f64> = problem
         .windows

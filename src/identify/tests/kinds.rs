@@ -72,6 +72,24 @@ fn a_flipped_sign_flips_the_gain_alone() {
 }
 
 #[test]
+fn a_move_made_before_the_pv_had_settled_does_no_harm() {
+    // The second move comes two time constants after the first: an eighth of the change is yet to come.
+    let op = [(0.0, 40.0), (60.0, 45.0), (105.0, 42.0)];
+    let test = Test {
+        noise: 1e-4,
+        ..Test::new(first_order(1.5, 20.0, 5.0), &op, 205.0)
+    };
+    let samples = test.samples();
+    let trace = Trace::new(&samples, full(), full()).expect("a trace");
+    let steps = crate::steps::find(&trace, 1.0).expect("steps");
+    let second = pooled::window(&trace, &steps[1]);
+    let fit = least_squares::fit(&Problem::new(vec![second]), Kind::FirstOrder).expect("a fit");
+    assert!((fit.gains[0] - 1.5).abs() < 1e-3, "{:?}", fit.gains);
+    // The level is the one that belongs to the OP before the second move.
+    assert!((fit.bases[0].0 - 57.5).abs() < 1e-3, "{:?}", fit.bases);
+}
+
+#[test]
 fn a_gain_that_differs_between_steps_widens_the_interval() {
     let mut samples = Test::new(first_order(1.0, 20.0, 5.0), &UP_AND_BACK, 460.0).samples();
     // The answer to the second move is half as large.

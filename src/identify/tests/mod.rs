@@ -45,7 +45,7 @@ struct Test {
     /// Share of the interval by which sample times are shifted at random.
     jitter: f64,
     noise: f64,
-    /// Autocorrelation of the noise from sample to sample.
+    /// Autocorrelation of the noise over one interval.
     memory: f64,
     /// Digits of the PV, %; 0 for none.
     resolution: f64,
@@ -79,15 +79,23 @@ impl Test {
             .map(|k| self.interval_s * (k as f64 + self.jitter * (random.uniform() - 0.5)))
             .collect();
         let start = self.op[0].1;
-        let moves: Vec<(f64, f64)> = self.op[1..].iter().map(|m| (m.0, m.1 - start)).collect();
+        // The OP moves at a sample, so that the log shows when.
+        let seen = |t: f64| t_s[t_s.partition_point(|s| *s < t).min(rows - 1)];
+        let moves: Vec<(f64, f64)> = self.op[1..]
+            .iter()
+            .map(|m| (seen(m.0), m.1 - start))
+            .collect();
         let clean = self.model.response_to_held(&moves, &t_s);
         let mut noise = self.noise * random.normal();
-        let fresh = self.noise * libm::sqrt(1.0 - self.memory * self.memory);
+        let mut before = t_s[0];
         let pv = clean
             .iter()
             .zip(&t_s)
             .map(|(y, t)| {
-                noise = self.memory * noise + fresh * random.normal();
+                // Kept of the noise since the sample before: its memory runs on in time.
+                let kept = libm::pow(self.memory, (t - before) / self.interval_s);
+                before = *t;
+                noise = kept * noise + self.noise * libm::sqrt(1.0 - kept * kept) * random.normal();
                 let pv = self.base + y + self.slope * t + noise;
                 if self.resolution > 0.0 {
                     self.resolution * libm::round(pv / self.resolution)
