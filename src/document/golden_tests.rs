@@ -13,7 +13,7 @@ fn holds_as_kept(name: &str, pages: &[String]) {
         text.push_str(&format!("---- page {}\n{}\n", index + 1, page.trim_end()));
     }
     // A no-break space is seen nowhere in a difference.
-    let text = text.replace('\u{a0}', " ").replace('\u{202f}', " ");
+    let text = text.replace(['\u{a0}', '\u{202f}'], " ");
     let path = Path::new(env!("CARGO_MANIFEST_DIR")).join(format!("tests/golden/{name}.txt"));
     if std::env::var_os("ASLEFT_ACCEPT").is_some() {
         std::fs::write(&path, text).expect("the kept file can be written");

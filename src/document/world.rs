@@ -100,10 +100,8 @@ fn is_font(name: &str) -> bool {
 /// The first character of the text that none of the fonts can draw.
 fn undrawable(fonts: &[Font], text: &str) -> Option<char> {
     text.chars().find(|&character| {
-        !(character.is_control() || is_unseen(character))
-            && !fonts
-                .iter()
-                .any(|font| font.info().coverage.contains(character as u32))
+        let drawn = |font: &Font| font.info().coverage.contains(character as u32);
+        !(character.is_control() || is_unseen(character) || fonts.iter().any(drawn))
     })
 }
 
