@@ -1,5 +1,8 @@
 //! How long the parts of a run take: `cargo bench`, see `tests/README.md`.
 
+mod alone;
+
+use alone::Alone;
 use asleft::archive;
 use asleft::document::{self, Templates};
 use asleft::figures;
@@ -12,6 +15,7 @@ use asleft::{RecordOptions, record};
 use divan::Bencher;
 use std::path::{Path, PathBuf};
 use std::sync::OnceLock;
+use std::time::Instant;
 use tempfile::TempDir;
 
 fn main() {
@@ -112,6 +116,46 @@ fn long_test(kind: Kind) -> Problem {
 fn fit_100_000_samples(bencher: Bencher, kind: Kind) {
     let problem = long_test(kind);
     bencher.bench(|| least_squares::fit(&problem, kind).expect("a fit"));
+}
+
+/// Pairs of runs that are compared, and how much longer a record may take than its typesetting.
+const PAIRS: usize = 21;
+const MOST_TIMES_THE_TYPESETTER: f64 = 1.33;
+
+/// A record beside Typst alone on the same files: view, figures, layout and PDF against layout and PDF. Both in
+/// turn, nothing remembered, so that what else the machine does meets both alike.
+#[divan::bench(sample_count = 1, sample_size = 1)]
+#[expect(clippy::print_stderr, reason = "the ratio is what is measured")]
+fn a_record_beside_the_typesetter_alone() {
+    let record = typesettable();
+    let figures = figures::draw(record);
+    let templates = Templates::default();
+    let sources = document::record_sources(record, &figures, &[], &templates).expect("sources");
+    let alone = Alone::new(sources);
+    let mut ratios: Vec<f64> = (0..PAIRS)
+        .map(|_| {
+            comemo::evict(0);
+            let start = Instant::now();
+            let figures = figures::draw(record);
+            let whole = document::typeset_record(record, &figures, &[], &templates).expect("a PDF");
+            let whole_s = start.elapsed().as_secs_f64();
+            drop(whole);
+            comemo::evict(0);
+            let start = Instant::now();
+            let pages = alone.pdf();
+            let alone_s = start.elapsed().as_secs_f64();
+            drop(pages);
+            whole_s / alone_s
+        })
+        .collect();
+    ratios.sort_by(f64::total_cmp);
+    let median = ratios[PAIRS / 2];
+    eprintln!(
+        "a record takes {median:.2} times as long as the typesetter alone (of {PAIRS} pairs {:.2} to {:.2})",
+        ratios[PAIRS / 4],
+        ratios[3 * PAIRS / 4]
+    );
+    assert!(median < MOST_TIMES_THE_TYPESETTER, "{median}");
 }
 
 /// FIC-203 of the demo job with its samples, for typesetting alone.

@@ -13,6 +13,7 @@ mod inspect;
 mod layering;
 mod loops;
 mod new_user;
+mod paper;
 mod plant;
 mod predict;
 mod published;
