@@ -81,13 +81,7 @@ pub fn engineer(
         test,
         trial,
         limits: limits_of(job, row),
-        site_cautions: job
-            .manifest
-            .cautions
-            .iter()
-            .filter(|caution| caution.loops.is_empty() || caution.loops.contains(&row.tag))
-            .map(|caution| caution.text.clone())
-            .collect(),
+        site_cautions: site_cautions(job, row),
         inner,
     };
     Ok(Engineered {
@@ -218,7 +212,8 @@ fn template_warning(text: String) -> Problem {
     }
 }
 
-fn document_problem(job: &Job, error: &document::DocumentError) -> Problem {
+/// What kept a document from being typeset, with the job's own templates in mind.
+pub fn document_problem(job: &Job, error: &document::DocumentError) -> Problem {
     let problem = Problem::general(error.to_string());
     match (error.hint(), &job.manifest.template) {
         (Some(hint), _) => problem.hint(hint),
@@ -400,7 +395,8 @@ fn job_document(job: &Job) -> Document {
     }
 }
 
-fn document_of(job: &Job, row: &LoopRow) -> Document {
+/// The title block of a loop's document.
+pub fn document_of(job: &Job, row: &LoopRow) -> Document {
     let identity = job.document(row);
     let mut document = job_document(job);
     document.revisions.push(Revision {
@@ -447,7 +443,18 @@ fn dossier_input(document: &Document, job: &Job, not_recorded: &[String]) -> Dos
     }
 }
 
-fn loop_of(job: &Job, row: &LoopRow) -> Loop {
+/// The site's own cautions for a loop.
+pub fn site_cautions(job: &Job, row: &LoopRow) -> Vec<String> {
+    job.manifest
+        .cautions
+        .iter()
+        .filter(|caution| caution.loops.is_empty() || caution.loops.contains(&row.tag))
+        .map(|caution| caution.text.clone())
+        .collect()
+}
+
+/// The loop as its row of the schedule describes it.
+pub fn loop_of(job: &Job, row: &LoopRow) -> Loop {
     let left = row.left.as_ref();
     let particulars = [
         ("controller", &row.controller_name),

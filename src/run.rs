@@ -18,7 +18,7 @@ use std::sync::atomic::{AtomicUsize, Ordering};
 use std::sync::mpsc;
 
 /// Folder of the records in the job folder.
-const RECORDS_FOLDER: &str = "records";
+pub(crate) const RECORDS_FOLDER: &str = "records";
 
 /// What `record` is asked for.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -32,12 +32,12 @@ pub struct RecordOptions {
 }
 
 /// A job with the loops that this run is about.
-struct Selected {
-    job: Job,
-    notices: Vec<Problem>,
+pub(crate) struct Selected {
+    pub job: Job,
+    pub notices: Vec<Problem>,
     /// Places in `job.loops`, in the order of the schedule.
-    wanted: Vec<usize>,
-    templates: Templates,
+    pub wanted: Vec<usize>,
+    pub templates: Templates,
 }
 
 /// Lays out a job folder.
@@ -214,7 +214,7 @@ pub fn record(
     })
 }
 
-fn shown(path: &Path) -> String {
+pub(crate) fn shown(path: &Path) -> String {
     path.display().to_string().replace('\\', "/")
 }
 
@@ -227,7 +227,12 @@ fn open_items(record: &Record) -> Vec<String> {
         .collect()
 }
 
-fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Problem>) -> LoopReport {
+pub(crate) fn loop_report(
+    job: &Job,
+    index: usize,
+    outcome: LoopOutcome,
+    notices: Vec<Problem>,
+) -> LoopReport {
     LoopReport {
         tag: tag_of(job, index).to_owned(),
         outcome,
@@ -235,7 +240,7 @@ fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Probl
     }
 }
 
-fn tag_of(job: &Job, index: usize) -> &str {
+pub(crate) fn tag_of(job: &Job, index: usize) -> &str {
     match &job.loops[index] {
         Ok(row) => &row.tag,
         Err(bad) => &bad.tag,
@@ -243,7 +248,7 @@ fn tag_of(job: &Job, index: usize) -> &str {
 }
 
 /// Reads the job and picks the loops asked for.
-fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
+pub(crate) fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
     let (mut job, notices) = Job::read(folder)?;
     let templates = Templates::new(job.template_files()?);
     let alphabet = Alphabet::new(&templates);

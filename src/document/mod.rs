@@ -1,4 +1,4 @@
-//! The documents: records and dossiers typeset as PDF.
+//! The documents: records, dossiers and plans typeset as PDF.
 //!
 //! The pages hold only what the record holds: `view` turns it into finished strings, the templates
 //! place them. The same record, figures, attachments and templates give the same bytes.
@@ -19,6 +19,7 @@ mod tests;
 mod text_tests;
 
 use crate::figures::Figure;
+use crate::plan::Plan;
 use crate::record::{PageSize, Procedure, Record, Signature};
 use chrono::{Datelike, NaiveDate};
 use std::collections::{BTreeMap, BTreeSet};
@@ -329,6 +330,25 @@ pub fn dossier_layout(
     Ok(layout)
 }
 
+/// Typesets the plan of a step test: PDF/A-3a and PDF/UA-1; the seal among its keywords is still to be made.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn typeset_plan(plan: &Plan, templates: &Templates) -> Result<Vec<u8>, DocumentError> {
+    lay_out_plan(plan, templates)?.export(&plan.number, plan.date, plan.program)
+}
+
+/// The plain text of each page of a plan.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn plan_page_texts(plan: &Plan, templates: &Templates) -> Result<Vec<String>, DocumentError> {
+    let laid_out = lay_out_plan(plan, templates)?;
+    let texts = pages::texts(&laid_out.document);
+    comemo::evict(KEEP_LAYOUTS);
+    Ok(texts)
+}
+
 /// A document laid out, ready to be exported.
 struct LaidOut {
     world: DocumentWorld,
@@ -459,6 +479,12 @@ fn lay_out_dossier(
 fn placed<'a>(figures: &'a [Figure], folder: &str) -> impl Iterator<Item = (String, &'a Figure)> {
     let folder = folder.to_owned();
     figures.iter().map(move |figure| (folder.clone(), figure))
+}
+
+fn lay_out_plan(plan: &Plan, templates: &Templates) -> Result<LaidOut, DocumentError> {
+    let mut view = view::plan::plan(plan);
+    view.logo = templates.logo();
+    LaidOut::new("plan.typ", &view, templates, &[], Vec::new())
 }
 
 /// A tag as part of a file name.

@@ -28,6 +28,7 @@ const TEMPLATES: &[(&str, &str)] = &[
     ("basis.typ", include_str!("../../templates/basis.typ")),
     ("pages.typ", include_str!("../../templates/pages.typ")),
     ("record.typ", include_str!("../../templates/record.typ")),
+    ("plan.typ", include_str!("../../templates/plan.typ")),
     ("cover.typ", include_str!("../../templates/cover.typ")),
     ("register.typ", include_str!("../../templates/register.typ")),
     (

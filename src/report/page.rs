@@ -150,6 +150,10 @@ impl Page {
                 self.row(&report.tag, in_words(*status), &file(pdf, *kept));
                 self.open_items(indent, open_items);
             }
+            LoopOutcome::Planned { pdf, summary, .. } => {
+                self.row(&report.tag, "planned", pdf);
+                self.line(indent, summary);
+            }
             LoopOutcome::Failed { problems } => {
                 self.row(&report.tag, "failed", "");
                 self.problems(indent, problems);
