@@ -158,10 +158,12 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
             noise_sd_percent: identification.noise_sd_percent,
             sigma_percent: identification.sigma_percent,
             compressed: identification.compressed,
+            outliers: identification.outliers,
             pv_tested,
             op_tested,
             failure,
             next_time: identification.next_time,
+            valve_not_assessed: identification.valve_not_assessed,
         },
         steps: identification.steps,
         model: fit

@@ -41,7 +41,6 @@ pub fn plan_sheets(
 ) -> Result<PlanReport, Vec<Problem>> {
     let mut selected = run::select(folder, &options.only)?;
     refuse_clashes(&mut selected.job);
-    let templates = Templates::new(selected.job.template_files()?);
     let records = options
         .records
         .clone()
@@ -62,7 +61,7 @@ pub fn plan_sheets(
                 of: selected.wanted.len(),
                 now: run::tag_of(&selected.job, index).to_owned(),
             });
-            one_loop(&selected, index, &earlier, &out, &templates)
+            one_loop(&selected, index, &earlier, &out, &selected.templates)
         })
         .collect();
     let mut notices = selected.notices.clone();

@@ -86,6 +86,7 @@ pub fn check(folder: &Path, only: &[String]) -> Result<CheckReport, Vec<Problem>
                     LoopOutcome::Ready {
                         status: engineered.record.document.status,
                         open_items: open_items(&engineered.record),
+                        next_time: next_time(&engineered.record),
                     },
                     engineered.notices,
                 ),
@@ -183,6 +184,7 @@ pub fn record(
                     LoopOutcome::Written {
                         status: document.status,
                         open_items: open_items(&recorded.record),
+                        next_time: next_time(&recorded.record),
                         pdf: names.pdf(),
                         json: names.json(),
                         kept: recorded.kept,
@@ -224,6 +226,13 @@ fn open_items(record: &Record) -> Vec<String> {
         .open_items
         .iter()
         .map(|item| item.text.clone())
+        .collect()
+}
+
+fn next_time(record: &Record) -> Vec<String> {
+    let advice = record.test.next_time.iter();
+    advice
+        .map(|advice| format!("{} {}", advice.what, advice.how))
         .collect()
 }
 
@@ -497,7 +506,10 @@ mod tests {
             .collect();
         std::fs::write(&log, stuck.join("\n")).expect("written");
         let report = check(&root, &[]).expect("a job");
-        let LoopOutcome::Ready { status, open_items } = &report.loops[0].outcome else {
+        let LoopOutcome::Ready {
+            status, open_items, ..
+        } = &report.loops[0].outcome
+        else {
             panic!("{report}");
         };
         assert_eq!(*status, crate::record::Status::Withheld);

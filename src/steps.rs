@@ -114,9 +114,15 @@ pub fn find(trace: &Trace, scan_s: f64) -> Result<Vec<OpStep>, StepsError> {
 }
 
 /// First and last second of each stretch in manual; the whole log where no mode was logged.
+///
+/// Where no mode was logged, stretches in which the OP follows the PV are a controller's.
 fn manual_stretches(trace: &Trace) -> Result<Vec<(f64, f64)>, StepsError> {
     let t_s = trace.t_s();
-    let Some(manual) = trace.manual() else {
+    let by_hand = match trace.manual() {
+        Some(_) => None,
+        None => by_hand(trace),
+    };
+    let Some(manual) = trace.manual().or(by_hand.as_deref()) else {
         let (op_t_s, _) = trace.op_log();
         return Ok(vec![(op_t_s[0], op_t_s[op_t_s.len() - 1])]);
     };
@@ -133,14 +139,84 @@ fn manual_stretches(trace: &Trace) -> Result<Vec<(f64, f64)>, StepsError> {
             _ => {}
         }
     }
+    if stretches.is_empty() && by_hand.is_some() {
+        return Err(StepsError::ClosedLoop);
+    }
     if stretches.is_empty() {
         return Err(StepsError::NeverManual);
     }
     Ok(stretches)
 }
 
+/// Samples looked at together for whether the OP follows the PV.
+const BLOCK: usize = 30;
+/// Part of a block's samples at which a controller's output has changed, at least.
+const CHANGING: f64 = 0.4;
+/// Correlation of the OP's changes with those of the PV from which they are a controller's: what it makes of
+/// the PV's noise. Of an OP that has nothing to do with them one block in ten thousand has it.
+const FOLLOWS: f64 = 0.7;
+
+/// Whether each sample was taken with the OP left alone or moved by hand; `None` where all were, as far as
+/// PV and OP can tell.
+fn by_hand(trace: &Trace) -> Option<Vec<bool>> {
+    let changes = |values: &[f64]| -> Vec<f64> { values.windows(2).map(|w| w[1] - w[0]).collect() };
+    let (op, pv) = (changes(trace.op()), changes(trace.pv()));
+    let follows = |block: Range<usize>| {
+        let op = &op[block.clone()];
+        let changed = op.iter().filter(|d| d.abs() > 1e-9).count();
+        let lagged = block.start.saturating_sub(1)..block.end - 1;
+        changed as f64 >= CHANGING * op.len() as f64
+            && (correlation(op, &pv[block]).abs() > FOLLOWS
+                || (lagged.len() == op.len() && correlation(op, &pv[lagged]).abs() > FOLLOWS))
+    };
+    let count = op.len() / BLOCK;
+    let blocks: Vec<bool> = (0..count)
+        .map(|k| follows(k * BLOCK..(k + 1) * BLOCK))
+        .collect();
+    // One block alone is chance, and one between two of a controller's belongs to it.
+    let near = |k: usize| k > 0 && blocks[k - 1] || k + 1 < count && blocks[k + 1];
+    let between = |k: usize| k > 0 && k + 1 < count && blocks[k - 1] && blocks[k + 1];
+    let controller: Vec<bool> = (0..count)
+        .map(|k| blocks[k] && near(k) || between(k))
+        .collect();
+    if !controller.contains(&true) {
+        return None;
+    }
+    let mut by_hand = vec![true; trace.len()];
+    for block in (0..count).filter(|k| controller[*k]) {
+        // Up to where the OP is left alone on either side.
+        let still = |k: &usize| op.get(*k).is_none_or(|d| d.abs() <= 1e-9);
+        let mut from = block * BLOCK;
+        while from > 0 && !still(&(from - 1)) {
+            from -= 1;
+        }
+        let end = ((block + 1) * BLOCK..op.len())
+            .find(still)
+            .unwrap_or(op.len());
+        by_hand[from..=end].fill(false);
+    }
+    Some(by_hand)
+}
+
+/// Correlation of two series about their means; 0 where one does not change.
+fn correlation(a: &[f64], b: &[f64]) -> f64 {
+    let mean = |values: &[f64]| values.iter().sum::<f64>() / values.len().max(1) as f64;
+    let (mean_a, mean_b) = (mean(a), mean(b));
+    let (mut aa, mut bb, mut ab) = (0.0, 0.0, 0.0);
+    for (x, y) in a.iter().zip(b) {
+        aa += (x - mean_a) * (x - mean_a);
+        bb += (y - mean_b) * (y - mean_b);
+        ab += (x - mean_a) * (y - mean_b);
+    }
+    if aa > 0.0 && bb > 0.0 {
+        ab / libm::sqrt(aa * bb)
+    } else {
+        0.0
+    }
+}
+
 /// Robust standard deviation of the OP's sample-to-sample jitter, %; 0 for an OP that stands still.
-fn jitter(values: &[f64]) -> f64 {
+pub(crate) fn jitter(values: &[f64]) -> f64 {
     let mut changes: Vec<f64> = values.windows(2).map(|w| (w[1] - w[0]).abs()).collect();
     if changes.is_empty() {
         return 0.0;

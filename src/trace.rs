@@ -282,6 +282,19 @@ impl Trace {
 }
 
 impl Trace {
+    /// The same samples with other values of the OP, percent: one for each that was logged, in order.
+    pub fn with_op_log(&self, op: Vec<f64>) -> Trace {
+        let held = |t: &f64| {
+            let here = self.op_t_s.partition_point(|logged| logged <= t);
+            op[here.saturating_sub(1)]
+        };
+        Trace {
+            op: self.t_s.iter().map(held).collect(),
+            op_all: op,
+            ..self.clone()
+        }
+    }
+
     /// Indices of the good samples at which the PV was refreshed, where it is held for several
     /// samples between refreshes (an analyser's cycle); `None` where each sample stands for itself.
     ///

@@ -41,6 +41,7 @@ fn model(process: ProcessModel, set: &[(&str, ProcessModel)]) -> Model {
         residual_autocorrelation: 0.0,
         effective_samples: 100.0,
         widened: false,
+        direction_ratio: None,
         gain_ratio: None,
         undecided: None,
         alternatives: Vec::new(),

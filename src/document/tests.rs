@@ -133,7 +133,7 @@ fn a_draft_shows_what_to_enter_and_says_draft_on_every_page() {
         &pages,
         &["As left", "Closed-loop trial Logged", "Entered 2026"],
     );
-    holds(&pages[2], &["Valve dead band not assessed"]);
+    holds(&pages[2], &["Valve dead band not assessable"]);
 }
 
 #[test]

@@ -11,6 +11,7 @@ use crate::identify::{Step, StepFit, Verdict};
 use crate::model::ProcessModel;
 use crate::quantity::{Span, round_significant};
 use crate::record::{Log, Record};
+use crate::trace::Samples;
 
 const WIDTH_MM: f64 = 170.0;
 /// The step's own fit.
@@ -99,6 +100,52 @@ fn shown_time(record: &Record, usable: &[(&Step, &StepFit)]) -> Option<(f64, f64
     (end > 0.0).then(|| (-quiet.min(end / 4.0), end))
 }
 
+/// What drove the process, % of OP: the OP as logged, or the valve's position where the fits have its dead
+/// band taken off.
+fn driven(record: &Record, data: &Samples, op_span: Span) -> Vec<f64> {
+    let percent = data.op.iter().map(|op| op_span.percent(*op));
+    let Some(valve) = record.valve.filter(|valve| valve.in_fit) else {
+        return percent.collect();
+    };
+    // The OP is held where a row leaves it out; before its first value there is none.
+    let unknown = data.op.iter().take_while(|op| !op.is_finite()).count();
+    let held: Vec<f64> = percent
+        .skip(unknown)
+        .scan(f64::NAN, |held, op| {
+            if op.is_finite() {
+                *held = op;
+            }
+            Some(*held)
+        })
+        .collect();
+    let mut driven = vec![f64::NAN; unknown];
+    driven.extend(valve.positions(&held));
+    driven
+}
+
+/// Where the drive stood before a step, and by how much the step moved it, %.
+fn driven_by(
+    record: &Record,
+    t_s: &[f64],
+    driven: &[f64],
+    step: &Step,
+    op_span: Span,
+) -> (f64, f64) {
+    let (from, to) = (op_span.percent(step.op_from), op_span.percent(step.op_to));
+    let at = |rows: usize| {
+        let row = rows.checked_sub(1)?;
+        driven.get(row).copied().filter(|p| p.is_finite())
+    };
+    let before = at(t_s.partition_point(|t| *t < step.at_s));
+    let end = at(t_s.partition_point(|t| *t <= step.window_s[1]));
+    match (before, end) {
+        (Some(before), Some(end)) if record.valve.is_some_and(|v| v.in_fit) && !step.pulse => {
+            (before, end - before)
+        }
+        _ => (from, to - from),
+    }
+}
+
 /// Answers to a held OP of a process that had settled at the first of its moves, or, where it
 /// integrates, begins there.
 fn settled_answers(model: &ProcessModel, moves: &[Point], times: &[f64]) -> Vec<f64> {
@@ -122,8 +169,8 @@ fn chart<'a>(
 ) -> Option<Chart<'a>> {
     let data = &log.data;
     let (from, to) = (step.quiet_s[0].min(step.at_s), step.window_s[1]);
-    let op_from = op_span.percent(step.op_from);
-    let moved = op_span.percent(step.op_to) - op_from;
+    let driven = driven(record, data, op_span);
+    let (op_from, moved) = driven_by(record, &data.t_s, &driven, step, op_span);
     let scale = match shown {
         Shown::PerPercent => pv_span.width() / 100.0 / moved,
         Shown::Change => pv_span.width() / 100.0,
@@ -136,11 +183,11 @@ fn chart<'a>(
         from - (to - from)
     };
     let mut moves: Vec<Point> = Vec::new();
-    for (&t, &op) in data.t_s.iter().zip(&data.op) {
+    for (&t, &op) in data.t_s.iter().zip(&driven) {
         if t < since || t >= to || !op.is_finite() {
             continue;
         }
-        let deviation = op_span.percent(op) - op_from;
+        let deviation = op - op_from;
         if moves
             .last()
             .is_none_or(|last| last.1 != deviation && t - step.at_s > last.0)

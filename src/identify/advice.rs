@@ -1,17 +1,22 @@
 //! What to do next time where steps are rejected or weak.
 
 use super::choice::Candidate;
+use super::covariance;
 use super::noise::Noise;
 use super::pooled::Fitted;
 use super::verdict::{Judged, arrived_s, stands_out, watched_until_s};
 use super::words::{figure, rounded_up, time_text};
 use super::{Advice, Context, Model, ReasonCode, Verdict};
+use crate::quantity::Estimate;
 use crate::trace::Trace;
 
 /// A good step moves the PV by this many times its noise.
 const CHANGE_SIGMAS: f64 = 20.0;
 /// Time constants to watch after the dead time.
 const WATCH_LAGS: f64 = 4.0;
+/// A time constant known from a poor test is taken as long as its interval says, but no more than this
+/// many times its value.
+const MOST_LONGER: f64 = 1.5;
 /// Samples to log for each time constant.
 const LOG_PER_LAG: f64 = 20.0;
 /// No move should end nearer to the end of the range than this, %.
@@ -32,10 +37,12 @@ fn known(
 ) -> Option<Known> {
     if let Some(model) = model {
         let lag_s = model.time_constant_s.map(|e| e.value);
+        // What is to be waited for may be as long as the interval says.
+        let longest = |e: Option<Estimate>| e.map_or(0.0, |e| e.high.min(MOST_LONGER * e.value));
         return Some(Known {
             gain: model.gain.value,
             integrates: model.kind.integrates(),
-            lags_s: lag_s.unwrap_or(0.0) + model.second_time_constant_s.map_or(0.0, |e| e.value),
+            lags_s: longest(model.time_constant_s) + longest(model.second_time_constant_s),
             lag_s,
             theta_s: model.dead_time_s.value,
         });
@@ -61,7 +68,13 @@ fn known(
     Some(Known {
         gain: best.fit.gains[0],
         integrates: kind.integrates(),
-        lags_s: if has_lag { tau + tau2 } else { 0.0 },
+        lags_s: if has_lag {
+            let sd = covariance::logarithmic(&best.fit, 1.0, 1.0).matrix[1][1];
+            let longer = libm::exp(covariance::TWO_SIDED_95 * libm::sqrt(sd.max(0.0)));
+            (tau + tau2) * longer.min(MOST_LONGER)
+        } else {
+            0.0
+        },
         lag_s: has_lag.then_some(tau),
         theta_s: best.fit.point.dead_time_s,
     })
@@ -186,12 +199,19 @@ pub(crate) fn next_time(
     };
     if advice.is_empty() && !(directions(true) && directions(false)) {
         let size = needed.unwrap_or(0.0).max(largest);
-        advice.push(Advice {
-            what: "Move".to_owned(),
-            how: format!(
+        let how = if size > 0.0 {
+            format!(
                 "OP by about {} in both directions.",
                 op_text(unit(rounded_up(size)), context)
-            ),
+            )
+        } else {
+            "OP by hand with the loop in manual, twice in one direction and then back, each time until the PV \
+             is steady; log the mode with it."
+                .to_owned()
+        };
+        advice.push(Advice {
+            what: "Move".to_owned(),
+            how,
         });
     }
     advice

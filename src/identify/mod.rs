@@ -7,10 +7,14 @@ pub mod covariance;
 mod descent;
 pub mod least_squares;
 mod noise;
+mod outliers;
+mod pass;
 mod pooled;
+mod profile;
 mod reading;
 mod response;
 mod search;
+mod valve;
 mod verdict;
 mod words;
 
@@ -20,13 +24,9 @@ use crate::steps::OpStep;
 use crate::trace::{Moment, Trace};
 use schemars::JsonSchema;
 use serde::{Deserialize, Serialize};
+use std::borrow::Cow;
 
 pub use bounds::VerdictBounds;
-use choice::Candidate;
-use least_squares::Problem;
-use noise::Noise;
-use pooled::Fitted;
-use verdict::{Grounds, Judged};
 
 /// Verdict on a step.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize, JsonSchema)]
@@ -81,6 +81,13 @@ pub struct Reason {
     pub figure: Option<f64>,
     /// The bound it was held against.
     pub bound: Option<f64>,
+}
+
+impl Reason {
+    /// Whether it is that the PV moved before the step, and not that too little of its rest was seen.
+    pub(crate) fn is_slope(&self) -> bool {
+        self.code == ReasonCode::Drift && self.text.starts_with(verdict::DRIFT)
+    }
 }
 
 /// The 63.2 % construction on one step (self-regulating), or its slopes (integrating).
@@ -236,6 +243,8 @@ pub struct Model {
     pub widened: bool,
     /// Largest gain of a usable step over the smallest, where their intervals do not meet; `None` where they agree.
     pub gain_ratio: Option<f64>,
+    /// Gain of upward moves over that of downward moves, where the direction explains that gains differ.
+    pub direction_ratio: Option<f64>,
     /// Where the kind is not decided by the data: in words, why, and what was designed for.
     pub undecided: Option<String>,
     /// The kinds not chosen.
@@ -257,10 +266,14 @@ pub struct Identification {
     pub sigma_percent: Option<f64>,
     /// Whether the log was compressed, which is why noise is not assessable then.
     pub compressed: bool,
+    /// Samples that stand apart from their neighbours and were left out.
+    pub outliers: usize,
     /// What to do next time where steps are rejected or weak, one line each: (what, how).
     pub next_time: Vec<Advice>,
-    /// Valve dead band; `None`: not assessed.
+    /// Valve dead band; `None`: not assessable.
     pub valve: Option<Valve>,
+    /// Why the dead band is not assessable, in words.
+    pub valve_not_assessed: Option<String>,
 }
 
 /// Advice for the next test.
@@ -277,10 +290,16 @@ pub struct Advice {
 pub struct Valve {
     /// OP move lost on reversal, %.
     pub dead_band_percent: f64,
-    /// Low end of the 95 % interval.
+    /// Low end of the 95 % interval; 0 where the test shows none.
     pub low: f64,
     /// High end of the 95 % interval.
     pub high: f64,
+    /// Whether the test bounds it from below alone: `high` is then the smallest move, which the valve followed.
+    pub open: bool,
+    /// Whether gains and fits are those of the valve's own moves, the dead band taken off the OP's.
+    pub in_fit: bool,
+    /// Position of the valve less the OP at the beginning of the log, % of OP.
+    pub start_percent: f64,
 }
 
 impl Model {
@@ -319,6 +338,14 @@ impl Model {
 const NONLINEAR_RATIO: f64 = 1.2;
 
 impl Model {
+    /// Whether the two time constants cannot be told apart: a double lag.
+    pub fn double_lag(&self) -> bool {
+        match (self.time_constant_s, self.second_time_constant_s) {
+            (Some(longer), Some(shorter)) => longer.low <= shorter.high,
+            _ => false,
+        }
+    }
+
     /// Largest gain of a step over the smallest, where the process is non-linear enough to say so.
     pub fn nonlinear_gain(&self) -> Option<f64> {
         self.gain_ratio.filter(|ratio| *ratio >= NONLINEAR_RATIO)
@@ -358,218 +385,44 @@ pub struct Context {
 ///
 /// Each step is fitted and judged with its own best kind; the pooled kind is chosen over the usable
 /// steps; each usable step's fit is then given in that kind. A PV that is held between refreshes is
-/// thinned to them first.
+/// thinned to them first, and samples that stand apart from their neighbours are left out.
 pub fn identify(trace: &Trace, steps: &[OpStep], context: &Context) -> Identification {
-    match trace.refreshes() {
-        Some(keep) => {
-            let steps: Vec<OpStep> = steps.iter().map(|s| on_refreshes(s, &keep)).collect();
-            identify_samples(&trace.thinned(&keep), &steps, context)
-        }
-        None => identify_samples(trace, steps, context),
+    let (mut trace, mut steps) = (Cow::Borrowed(trace), Cow::Borrowed(steps));
+    if let Some(keep) = trace.refreshes() {
+        (trace, steps) = thinned(&trace, &steps, &keep);
+    }
+    let mut outliers = 0;
+    // A compressed log holds a single sample where the PV went there and back.
+    if !noise::is_compressed(&trace)
+        && let Some(keep) = outliers::without(&trace)
+    {
+        outliers = trace.len() - keep.len();
+        (trace, steps) = thinned(&trace, &steps, &keep);
+    }
+    Identification {
+        outliers,
+        ..pass::identify_samples(&trace, &steps, context)
     }
 }
 
-/// A step with its ranges in the thinned samples.
-fn on_refreshes(step: &OpStep, keep: &[usize]) -> OpStep {
+/// A trace with some of its samples, and its steps in these.
+fn thinned<'a>(
+    trace: &Trace,
+    steps: &[OpStep],
+    keep: &[usize],
+) -> (Cow<'a, Trace>, Cow<'a, [OpStep]>) {
+    let steps = steps.iter().map(|step| in_kept(step, keep)).collect();
+    (Cow::Owned(trace.thinned(keep)), Cow::Owned(steps))
+}
+
+/// A step with its ranges in the samples that were kept.
+fn in_kept(step: &OpStep, keep: &[usize]) -> OpStep {
     let at = |index: usize| keep.partition_point(|k| *k < index);
     let range = |range: &std::ops::Range<usize>| at(range.start)..at(range.end);
     OpStep {
         window: range(&step.window),
         quiet: range(&step.quiet),
         ..step.clone()
-    }
-}
-
-/// A step through fit and verdict.
-struct Work {
-    fitted: Option<Fitted>,
-    own: Option<Kind>,
-    judged: Judged,
-}
-
-impl Work {
-    fn own(&self) -> Option<(&Fitted, &Candidate)> {
-        let fitted = self.fitted.as_ref()?;
-        Some((fitted, fitted.of(self.own?)))
-    }
-}
-
-fn identify_samples(trace: &Trace, steps: &[OpStep], context: &Context) -> Identification {
-    let noise = noise::assess(trace, steps);
-    let mut work: Vec<Work> = Vec::new();
-    for (k, step) in steps.iter().enumerate() {
-        let before = k.checked_sub(1).map(|b| &steps[b]);
-        work.push(fit_and_judge(trace, step, before, &noise, context));
-    }
-    compare_signs(&mut work, steps);
-    let usable: Vec<&Fitted> = work
-        .iter()
-        .filter(|w| w.judged.verdict != Verdict::Rejected)
-        .filter_map(|w| w.fitted.as_ref())
-        .collect();
-    let own_kinds: Vec<Kind> = work
-        .iter()
-        .filter(|w| w.judged.verdict != Verdict::Rejected)
-        .filter_map(|w| w.own)
-        .collect();
-    let watched_s = usable
-        .iter()
-        .map(|f| watched_s(trace, &f.step))
-        .fold(0.0, f64::max);
-    let model = if usable.is_empty() {
-        None
-    } else {
-        pooled::model(trace, &usable, &own_kinds, &noise, watched_s)
-    };
-    let for_advice: Vec<_> = work.iter().map(|w| (w.own(), &w.judged)).collect();
-    let next_time = advice::next_time(trace, context, &noise, model.as_ref(), &for_advice, steps);
-    let kind = model.as_ref().map(|m| m.kind);
-    Identification {
-        steps: work
-            .iter()
-            .zip(steps)
-            .map(|(work, step)| finished(trace, step, work, kind, &noise, context))
-            .collect(),
-        model,
-        noise_sd_percent: noise.sd,
-        sigma_percent: noise.sigma,
-        compressed: noise.compressed,
-        next_time,
-        valve: None,
-    }
-}
-
-fn watched_s(trace: &Trace, step: &OpStep) -> f64 {
-    verdict::watched_until_s(trace, step) - verdict::arrived_s(trace, step)
-}
-
-fn fit_and_judge(
-    trace: &Trace,
-    step: &OpStep,
-    before: Option<&OpStep>,
-    noise: &Noise,
-    context: &Context,
-) -> Work {
-    let window = pooled::window(trace, step);
-    let fitted = if step.quiet.is_empty() {
-        Err("there are no samples before the move".to_owned())
-    } else {
-        choice::of_step(&Problem::new(vec![window.clone()]))
-            .map(|candidates| Fitted {
-                step: step.clone(),
-                window,
-                candidates,
-            })
-            .map_err(|error| error.to_string())
-    };
-    let own = fitted.as_ref().ok().map(|fitted| {
-        choice::choose(
-            &fitted.candidates,
-            watched_s(trace, step),
-            trace.interval_s(),
-        )
-        .kind
-    });
-    let mut grounds = Grounds {
-        trace,
-        noise,
-        bounds: &context.bounds,
-        not_before_s: context.not_before_s,
-        explained_slope: 0.0,
-    };
-    let judged = match (&fitted, own) {
-        (Ok(fitted), Some(kind)) => {
-            let own = fitted.of(kind);
-            grounds.explained_slope =
-                before.map_or(0.0, |b| explained_slope(trace, b, step, own.fit.gains[0]));
-            verdict::judge(step, Ok((own, fitted.window.own_moves())), &grounds)
-        }
-        (Err(why), _) => verdict::judge(step, Err(why.clone()), &grounds),
-        (Ok(_), None) => verdict::judge(step, Err("no kind fits".to_owned()), &grounds),
-    };
-    Work {
-        fitted: fitted.ok(),
-        own,
-        judged,
-    }
-}
-
-/// Slope of an integrating PV that the move before explains, % per s: that of its quiet stretch and
-/// what its move added. A level driven on purpose does not drift.
-fn explained_slope(trace: &Trace, before: &OpStep, step: &OpStep, gain_per_s: f64) -> f64 {
-    let contiguous = before.window.end >= step.quiet.start && before.quiet.len() >= 3;
-    if !contiguous {
-        return 0.0;
-    }
-    let quiet = before.quiet.clone();
-    let slope = noise::line(&trace.t_s()[quiet.clone()], &trace.pv()[quiet]).slope;
-    slope + gain_per_s * (step.op_from - before.op_from)
-}
-
-fn compare_signs(work: &mut [Work], steps: &[OpStep]) {
-    let mut compared: Vec<(&mut Judged, f64, f64)> = work
-        .iter_mut()
-        .zip(steps)
-        .filter_map(|(work, step)| {
-            let gain = work.fitted.as_ref()?.of(work.own?).fit.gains[0];
-            Some((&mut work.judged, gain, step.op_to - step.op_from))
-        })
-        .collect();
-    verdict::compare_signs(&mut compared);
-}
-
-/// A step as the record holds it; `kind` is that of the model.
-fn finished(
-    trace: &Trace,
-    step: &OpStep,
-    work: &Work,
-    kind: Option<Kind>,
-    noise: &Noise,
-    context: &Context,
-) -> Step {
-    let usable = work.judged.verdict != Verdict::Rejected;
-    let fit = work
-        .fitted
-        .as_ref()
-        .zip(kind)
-        .filter(|_| usable)
-        .map(|(fitted, kind)| {
-            pooled::step_fit(
-                fitted.of(kind),
-                &fitted.window.pv,
-                noise,
-                trace.interval_s(),
-            )
-        });
-    let integrates = kind.or(work.own).is_some_and(Kind::integrates);
-    let mut reading = reading::read(trace, step, noise, integrates);
-    if let (Some(reading), Some(fit)) = (&mut reading, &fit) {
-        reading.differs = reading::differs(reading, fit, trace.interval_s());
-    }
-    let (from, to) = reading::ends(trace, step);
-    let seconds = |range: &std::ops::Range<usize>| {
-        let times = &trace.t_s()[range.clone()];
-        [
-            times.first().copied().unwrap_or(step.at_s),
-            times.last().copied().unwrap_or(step.at_s),
-        ]
-    };
-    Step {
-        number: step.number,
-        at: context.clock.at(step.at_s),
-        at_s: step.at_s,
-        op_from: context.op_span.engineering(step.op_from),
-        op_to: context.op_span.engineering(step.op_to),
-        pv_from: context.pv_span.engineering(from),
-        pv_to: context.pv_span.engineering(to),
-        window_s: seconds(&step.window),
-        quiet_s: seconds(&step.quiet),
-        pulse: step.pulse,
-        verdict: work.judged.verdict,
-        reasons: work.judged.reasons.clone(),
-        checks: work.judged.checks.clone(),
-        reading,
-        fit,
     }
 }
 

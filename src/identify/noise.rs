@@ -45,7 +45,7 @@ pub(crate) fn assess(trace: &Trace, steps: &[OpStep]) -> Noise {
 
 /// Whether the log was thinned by exception reporting: intervals of many lengths, and hardly ever
 /// the same value twice, since a sample was stored because the PV had moved.
-fn is_compressed(trace: &Trace) -> bool {
+pub(crate) fn is_compressed(trace: &Trace) -> bool {
     let mut intervals: Vec<f64> = trace.t_s().windows(2).map(|w| w[1] - w[0]).collect();
     if intervals.len() < 10 {
         return false;

@@ -74,14 +74,17 @@ pub(crate) fn figures(fit: &Fit, covariance: &LogCovariance) -> Figures {
     }
 }
 
-/// The fit of one step as the record holds it.
+/// The fit of one step as the record holds it; `gain_sd` is a doubt of ln gain that the samples of the
+/// step do not show.
 pub(crate) fn step_fit(
     candidate: &Candidate,
     pv: &[f64],
     noise: &Noise,
     interval_s: f64,
+    gain_sd: f64,
 ) -> StepFit {
-    let covariance = covariance::logarithmic(&candidate.fit, 1.0, interval_s);
+    let mut covariance = covariance::logarithmic(&candidate.fit, 1.0, interval_s);
+    covariance.matrix[0][0] += gain_sd * gain_sd;
     let figures = figures(&candidate.fit, &covariance);
     let (bias_percent, drift_percent_per_s) = candidate.fit.bases[0];
     StepFit {
@@ -210,13 +213,15 @@ fn fit_all(
     Some((candidates, choice))
 }
 
-/// The model over all usable steps; `None` where no fit of them succeeds.
+/// The model over all usable steps; `None` where no fit of them succeeds. `gain_sd` is a doubt of ln gain
+/// that all steps share.
 pub(crate) fn model(
     trace: &Trace,
     usable: &[&Fitted],
     own_kinds: &[Kind],
     noise: &Noise,
     watched_s: f64,
+    gain_sd: f64,
 ) -> Option<Model> {
     let interval_s = trace.interval_s();
     let (candidates, choice) = fit_all(usable, own_kinds, watched_s, interval_s)?;
@@ -226,6 +231,7 @@ pub(crate) fn model(
     let mut covariance = covariance::logarithmic(fit, repeated, interval_s);
     let spread = spread(usable, pooled, &covariance);
     covariance::stretch(&mut covariance.matrix, &spread.factors);
+    covariance.matrix[0][0] += gain_sd * gain_sd;
     let figures = figures(fit, &covariance);
     let gains = usable.iter().map(|f| f.of(fit.kind).fit.gains[0].abs());
     let largest = gains.clone().fold(0.0, f64::max);
@@ -249,6 +255,7 @@ pub(crate) fn model(
         residual_autocorrelation: fit.memory.autocorrelation,
         effective_samples: fit.rows as f64 / fit.memory.factor / repeated,
         widened: spread.widened,
+        direction_ratio: None,
         gain_ratio: spread.gains_disagree.then(|| largest / smallest),
         undecided: choice.undecided,
         alternatives: choice.alternatives,

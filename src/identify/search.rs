@@ -72,7 +72,7 @@ fn bounds(problem: &Problem, scales: &Scales) -> Bounds {
 }
 
 /// About `rows` samples of a problem, dense after each move and thin where little happens.
-fn thinned(problem: &Problem, rows: usize) -> Problem {
+pub(crate) fn thinned(problem: &Problem, rows: usize) -> Problem {
     let budget = (rows / problem.windows.len().max(1)).max(40);
     let windows = problem
         .windows

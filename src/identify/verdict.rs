@@ -12,6 +12,8 @@ use crate::trace::Trace;
 const END_OF_RANGE_PERCENT: f64 = 0.05;
 /// Samples after the move of an integrating process: fewer are a reservation, or rejected.
 const INTEGRATING_SAMPLES: [f64; 2] = [20.0, 10.0];
+/// How the reason begins that a PV moved before the step.
+pub(crate) const DRIFT: &str = "drift";
 /// A gap in an integrating process's window above this part of it rejects.
 const INTEGRATING_GAP: f64 = 0.2;
 
@@ -105,6 +107,8 @@ pub(crate) struct Grounds<'a> {
     pub noise: &'a Noise,
     pub bounds: &'a VerdictBounds,
     pub not_before_s: Option<f64>,
+    /// What the step moved the valve by, % of OP: the OP's own move where no dead band is known.
+    pub change_op: f64,
     /// Slope of the PV that earlier moves of the OP explain, % per s; 0 where nothing is known.
     pub explained_slope: f64,
 }
@@ -139,6 +143,7 @@ pub(crate) fn change_percent(
     step: &OpStep,
     own: &Candidate,
     moves: &[(f64, f64)],
+    change_op: f64,
 ) -> f64 {
     let model = own.fit.process();
     let gain = model.gain();
@@ -152,7 +157,7 @@ pub(crate) fn change_percent(
             .iter()
             .fold(0.0_f64, |most, pv| most.max(pv.abs()));
     }
-    let change_op = (step.op_to - step.op_from).abs();
+    let change_op = change_op.abs();
     if own.fit.kind.integrates() {
         let watched = watched_until_s(trace, step) - arrived_s(trace, step);
         gain.abs() * change_op * (watched - model.dead_time_s()).max(0.0)
@@ -229,7 +234,7 @@ fn change_and_drift(
     grounds: &Grounds,
 ) {
     let trace = grounds.trace;
-    let change = change_percent(trace, step, own, moves);
+    let change = change_percent(trace, step, own, moves, grounds.change_op);
     judged.hold(
         ReasonCode::Change,
         grounds.noise.sigma.filter(|s| *s > 0.0).map(|s| change / s),
@@ -246,7 +251,7 @@ fn change_and_drift(
     } else {
         let slope = line(t_s, pv).slope;
         if own.fit.kind.integrates() {
-            let bend = own.fit.gains[0].abs() * (step.op_to - step.op_from).abs();
+            let bend = own.fit.gains[0].abs() * grounds.change_op.abs();
             Some(100.0 * (slope - grounds.explained_slope).abs() / bend)
         } else {
             Some(100.0 * slope.abs() * (t_s[t_s.len() - 1] - t_s[0]) / change)
@@ -257,7 +262,7 @@ fn change_and_drift(
         drift,
         grounds.bounds.drift_percent,
         false,
-        |f, b| format!("drift {f} % (bound {b} %)"),
+        |f, b| format!("{DRIFT} {f} % (bound {b} %)"),
     );
     if !grounds.noise.compressed {
         rest_before(judged, t_s.len());

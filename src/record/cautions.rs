@@ -3,7 +3,7 @@
 use super::open_items::{action_fits, few_steps};
 use super::{Caution, Procedure, Record, Status};
 use crate::display::{counted, fixed, plain, significant, unit, with_unit};
-use crate::identify::{ReasonCode, Verdict};
+use crate::identify::{ReasonCode, Valve, Verdict};
 
 /// All cautions in the order of printing. `site` are the site's own for this loop.
 pub fn cautions(record: &Record, site: &[String]) -> Vec<Caution> {
@@ -177,20 +177,45 @@ fn raised(record: &Record) -> Vec<Caution> {
             ),
         ));
     }
-    if let Some(valve) = record.valve
-        && valve.dead_band_percent > 1.0
-    {
+    list.extend(dead_band(record, model.kind.integrates()));
+    if let Some(ratio) = model.direction_ratio {
+        let (strong, weak, factor) = if ratio > 1.0 {
+            ("upward", "downward", ratio)
+        } else {
+            ("downward", "upward", 1.0 / ratio)
+        };
         list.push(caution(
-            "dead band",
+            "direction",
             format!(
-                "The valve loses {} % of OP on reversal{}.",
-                plain(valve.dead_band_percent, 2),
-                if model.kind.integrates() {
-                    ": with integral action this integrating process will cycle"
-                } else {
-                    ""
-                }
+                "The PV answers to {strong} moves of OP {} times as much as to {weak} ones. The loop will settle \
+                 differently from above and from below.",
+                fixed(factor, 1),
             ),
+        ));
+    }
+    if record.test.outliers > 0 {
+        let stood = counted(
+            record.test.outliers,
+            "sample of the PV",
+            "samples of the PV",
+        );
+        list.push(caution(
+            "spikes",
+            format!(
+                "{stood} stood apart from their neighbours and were left out of readings and fits."
+            ),
+        ));
+    }
+    if record.document.status != Status::Withheld && !record.test.next_time.is_empty() {
+        let advice: Vec<String> = record
+            .test
+            .next_time
+            .iter()
+            .map(|advice| format!("{} {}", advice.what, advice.how))
+            .collect();
+        list.push(caution(
+            "next test",
+            format!("At the next test: {}", advice.join(" ")),
         ));
     }
     if record.test.sigma_percent.is_none() {
@@ -216,6 +241,53 @@ fn raised(record: &Record) -> Vec<Caution> {
     );
     list.extend(after_design(record));
     list
+}
+
+/// A dead band, in % of OP, above which a valve deserves a caution whatever the steps were.
+const LARGE_DEAD_BAND_PERCENT: f64 = 1.0;
+
+/// The caution on a dead band that is large, or large against the steps.
+fn dead_band(record: &Record, integrates: bool) -> Option<Caution> {
+    let valve = record.valve.filter(Valve::is_seen)?;
+    let op_width = record.control_loop.op.high - record.control_loop.op.low;
+    let smallest = record
+        .steps
+        .iter()
+        .filter(|step| step.verdict != Verdict::Rejected)
+        .map(|step| 100.0 * ((step.op_to - step.op_from) / op_width).abs())
+        .fold(f64::INFINITY, f64::min);
+    let large = valve.dead_band_percent > LARGE_DEAD_BAND_PERCENT;
+    let against_steps = valve.dead_band_percent > 0.5 * smallest;
+    if !large && !against_steps {
+        return None;
+    }
+    let lost = if valve.open {
+        format!("at least {} %", plain(valve.low, 2))
+    } else {
+        format!(
+            "{} % ({} to {} %)",
+            plain(valve.dead_band_percent, 2),
+            plain(valve.low, 2),
+            plain(valve.high, 2)
+        )
+    };
+    let steps = if against_steps {
+        format!(
+            ", more than half of the smallest step ({} %)",
+            plain(smallest, 2)
+        )
+    } else {
+        String::new()
+    };
+    let cycles = if integrates {
+        ": with integral action this integrating process will cycle"
+    } else {
+        ""
+    };
+    Some(caution(
+        "dead band",
+        format!("The valve loses {lost} of OP on reversal{steps}{cycles}."),
+    ))
 }
 
 /// Cautions on the settings entered and on the trial.

@@ -346,6 +346,8 @@ pub struct Test {
     pub sigma_percent: Option<f64>,
     /// Whether the log was compressed, which is why noise is not assessable then.
     pub compressed: bool,
+    /// Samples of the PV that stood apart from their neighbours, spikes, and were left out of readings and fits.
+    pub outliers: usize,
     /// PV range over the usable steps (or over all where none is), engineering units: low, high.
     pub pv_tested: [f64; 2],
     /// OP range over the same, OP units: low, high.
@@ -354,6 +356,9 @@ pub struct Test {
     pub failure: Option<String>,
     /// What to do at the next test.
     pub next_time: Vec<Advice>,
+    /// Why the dead band of the valve is not assessable, in words; `None` where it was assessed, or where
+    /// there is no model.
+    pub valve_not_assessed: Option<String>,
 }
 
 /// Gain in engineering units.
@@ -454,7 +459,7 @@ pub struct Record {
     pub steps: Vec<Step>,
     /// Model; `None` where no step is usable.
     pub model: Option<ModelBlock>,
-    /// Valve dead band; `None`: not assessed.
+    /// Valve dead band; `None`: not assessable.
     pub valve: Option<Valve>,
     /// Design; `None` in a withheld record.
     pub design: Option<Design>,

@@ -63,6 +63,8 @@ pub enum LoopOutcome {
         status: Status,
         /// What would keep it from being signed, one sentence each.
         open_items: Vec<String>,
+        /// What to do at the next test where this one was rejected or weak, one sentence each.
+        next_time: Vec<String>,
     },
     /// Recorded.
     Written {
@@ -70,6 +72,8 @@ pub enum LoopOutcome {
         status: Status,
         /// What keeps it from being signed, one sentence each.
         open_items: Vec<String>,
+        /// What to do at the next test where this one was rejected or weak, one sentence each.
+        next_time: Vec<String>,
         /// Name of the PDF in the folder of the records.
         pdf: String,
         /// Name of the JSON beside it.
@@ -478,6 +482,7 @@ mod tests {
             outcome: LoopOutcome::Written {
                 status,
                 open_items: Vec::new(),
+                next_time: Vec::new(),
                 pdf: format!("LM-{tag}_rev0.pdf"),
                 json: format!("LM-{tag}_rev0.json"),
                 kept,

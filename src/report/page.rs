@@ -136,19 +136,26 @@ impl Page {
     pub fn one_loop(&mut self, report: &LoopReport) {
         let indent = self.tag_width;
         match &report.outcome {
-            LoopOutcome::Ready { status, open_items } => {
+            LoopOutcome::Ready {
+                status,
+                open_items,
+                next_time,
+            } => {
                 self.row(&report.tag, in_words(*status), "");
-                self.open_items(indent, open_items);
+                self.entries(indent, "open", open_items);
+                self.entries(indent, "advice", next_time);
             }
             LoopOutcome::Written {
                 status,
                 open_items,
+                next_time,
                 pdf,
                 kept,
                 ..
             } => {
                 self.row(&report.tag, in_words(*status), &file(pdf, *kept));
-                self.open_items(indent, open_items);
+                self.entries(indent, "open", open_items);
+                self.entries(indent, "advice", next_time);
             }
             LoopOutcome::Planned { pdf, summary, .. } => {
                 self.row(&report.tag, "planned", pdf);
@@ -162,9 +169,9 @@ impl Page {
         self.problems(indent, &report.notices);
     }
 
-    fn open_items(&mut self, indent: usize, open_items: &[String]) {
-        for item in open_items {
-            self.entry(indent, "open", item);
+    fn entries(&mut self, indent: usize, name: &str, sentences: &[String]) {
+        for sentence in sentences {
+            self.entry(indent, name, sentence);
         }
     }
 

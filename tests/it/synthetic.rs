@@ -89,6 +89,7 @@ fn record() -> Record {
             noise_sd_percent: Some(0.04),
             sigma_percent: Some(0.05),
             compressed: false,
+            outliers: 0,
             pv_tested: [71.2, 76.9],
             op_tested: [40.0, 45.0],
             failure: None,
@@ -96,6 +97,7 @@ fn record() -> Record {
                 what: "Move".into(),
                 how: "the OP by at least 3 %".into(),
             }],
+            valve_not_assessed: None,
         },
         steps: vec![step()],
         model: Some(model()),
@@ -103,6 +105,9 @@ fn record() -> Record {
             dead_band_percent: 0.4,
             low: 0.2,
             high: 0.6,
+            open: false,
+            in_fit: true,
+            start_percent: -0.2,
         }),
         design: Some(design()),
         settings: AllSettings {
@@ -320,6 +325,7 @@ fn model() -> ModelBlock {
             residual_autocorrelation: 0.3,
             effective_samples: 2.1,
             widened: false,
+            direction_ratio: None,
             gain_ratio: None,
             undecided: None,
             alternatives: vec![Alternative {

@@ -441,6 +441,7 @@ pub(in crate::document) fn model() -> ModelBlock {
             residual_autocorrelation: 0.2,
             effective_samples: 900.0,
             widened: true,
+            direction_ratio: None,
             gain_ratio: Some(1.96),
             undecided: None,
             alternatives: vec![Alternative {

@@ -151,21 +151,28 @@ fn parameters(context: &Context) -> Table {
         }
         Row::new(label, cells)
     };
+    let of_valve = |value: Cell, interval: Cell| plain_row("Valve dead band", value, interval);
     rows.push(match &record.valve {
+        Some(valve) if !valve.is_seen() => of_valve(
+            Cell::words(format!(
+                "less than {}{NO_BREAK}%",
+                display::significant(valve.high, 2)
+            )),
+            Cell::words(""),
+        ),
+        Some(valve) if valve.open => of_valve(
+            Cell::words(format!(
+                "at least {}{NO_BREAK}%",
+                display::significant(valve.low, 2)
+            )),
+            Cell::words(""),
+        ),
         Some(valve) => {
             let of = Estimate::new(valve.dead_band_percent, valve.low, valve.high);
             let (value, interval) = estimate(of, 1.0);
-            plain_row(
-                "Valve dead band",
-                Cell::figure(value, "%"),
-                Cell::figure(interval, "%"),
-            )
+            of_valve(Cell::figure(value, "%"), Cell::figure(interval, "%"))
         }
-        None => plain_row(
-            "Valve dead band",
-            Cell::words("not assessed"),
-            Cell::words(""),
-        ),
+        None => of_valve(Cell::words("not assessable"), Cell::words("")),
     });
     rows.push(match fit.noise_sd_percent {
         Some(noise) => plain_row(
@@ -225,6 +232,30 @@ fn notes(context: &Context) -> Vec<String> {
             display::fixed(ratio, 1)
         ));
     }
+    if fit.double_lag() {
+        notes.push(
+            "The two time constants cannot be told apart: the process is a double lag.".to_owned(),
+        );
+    }
+    if let Some(ratio) = fit.direction_ratio {
+        notes.push(format!(
+            "The gain of upward moves is {} times that of downward moves.",
+            display::fixed(ratio, 2)
+        ));
+    }
+    match (&record.valve, &record.test.valve_not_assessed) {
+        (Some(valve), _) if valve.in_fit => notes.push(
+            "Gains and fits are those of the valve's own moves: the dead band is taken off the moves of OP."
+                .to_owned(),
+        ),
+        (Some(valve), _) if valve.open && valve.is_seen() => notes.push(
+            "Of the dead band the test tells the least it can be: how much of it lay before the first move \
+             is not known. Gains are those of the OP's moves."
+                .to_owned(),
+        ),
+        (None, Some(why)) => notes.push(format!("Valve dead band: {why}.")),
+        _ => {}
+    }
     if let Some(undecided) = &fit.undecided {
         notes.push(sentence(&bound(undecided)));
     }
@@ -243,6 +274,8 @@ fn notes(context: &Context) -> Vec<String> {
         };
         let cause = if fit.kind == Kind::SecondOrder {
             "The reading counts the second time constant as waiting."
+        } else if record.valve.is_some_and(|valve| valve.in_fit) {
+            "The reading knows nothing of the dead band of the valve."
         } else {
             "Usual causes: a process of higher order, drift or noise."
         };

@@ -235,7 +235,11 @@ fn see(context: &Context, after: &SettingsBlock) -> String {
         Some(ratio) if ratio < 0.67 => said.push("The output moves less than before.".to_owned()),
         _ => {}
     }
-    if let Some(valve) = context.record.valve.filter(|v| v.dead_band_percent > 1.0) {
+    if let Some(valve) = context
+        .record
+        .valve
+        .filter(|v| v.is_seen() && v.dead_band_percent > 1.0)
+    {
         said.push(format!(
             "The output moves by about {}{NO_BREAK}% before the valve turns round.",
             display::fixed(valve.dead_band_percent, 0)

@@ -7,7 +7,8 @@ fn fit_of(test: &Test) -> (least_squares::Fit, f64) {
     let trace = Trace::new(&test.samples(), full(), full()).expect("a trace");
     let steps = crate::steps::find(&trace, 1.0).expect("steps");
     let kind = test.model.kind();
-    let mut problem = Problem::new(steps.iter().map(|s| pooled::window(&trace, s)).collect());
+    let mut problem =
+        least_squares::Problem::new(steps.iter().map(|s| pooled::window(&trace, s)).collect());
     if kind.integrates() {
         for window in &mut problem.windows {
             window.base = least_squares::Base::LevelAndSlope;

@@ -83,7 +83,8 @@ fn a_move_made_before_the_pv_had_settled_does_no_harm() {
     let trace = Trace::new(&samples, full(), full()).expect("a trace");
     let steps = crate::steps::find(&trace, 1.0).expect("steps");
     let second = pooled::window(&trace, &steps[1]);
-    let fit = least_squares::fit(&Problem::new(vec![second]), Kind::FirstOrder).expect("a fit");
+    let fit = least_squares::fit(&least_squares::Problem::new(vec![second]), Kind::FirstOrder)
+        .expect("a fit");
     assert!((fit.gains[0] - 1.5).abs() < 1e-3, "{:?}", fit.gains);
     // The level is the one that belongs to the OP before the second move.
     assert!((fit.bases[0].0 - 57.5).abs() < 1e-3, "{:?}", fit.bases);

@@ -2,6 +2,8 @@
 
 mod intervals;
 mod kinds;
+mod scenarios;
+mod valve;
 mod verdicts;
 
 use super::*;
@@ -52,6 +54,10 @@ struct Test {
     base: f64,
     /// Slope of the PV that has nothing to do with the OP, %/s.
     slope: f64,
+    /// Play of the valve, % of OP.
+    dead_band: f64,
+    /// Share of the play that lies before the first move.
+    slack: f64,
     seed: u64,
 }
 
@@ -68,6 +74,8 @@ impl Test {
             resolution: 0.0,
             base: 50.0,
             slope: 0.0,
+            dead_band: 0.0,
+            slack: 0.0,
             seed: 1,
         }
     }
@@ -78,12 +86,12 @@ impl Test {
         let t_s: Vec<f64> = (0..rows)
             .map(|k| self.interval_s * (k as f64 + self.jitter * (random.uniform() - 0.5)))
             .collect();
-        let start = self.op[0].1;
         // The OP moves at a sample, so that the log shows when.
         let seen = |t: f64| t_s[t_s.partition_point(|s| *s < t).min(rows - 1)];
-        let moves: Vec<(f64, f64)> = self.op[1..]
+        let moves: Vec<(f64, f64)> = self
+            .valve_moves()
             .iter()
-            .map(|m| (seen(m.0), m.1 - start))
+            .map(|m| (seen(m.0), m.1))
             .collect();
         let clean = self.model.response_to_held(&moves, &t_s);
         let mut noise = self.noise * random.normal();
@@ -118,6 +126,42 @@ impl Test {
             op,
             ..Samples::default()
         }
+    }
+
+    /// The valve's own moves: with play it stands until the OP has run through it.
+    fn valve_moves(&self) -> Vec<(f64, f64)> {
+        let start = self.op[0].1;
+        let way = self.op.get(1).map_or(1.0, |m| (m.1 - start).signum());
+        // How far the OP may still go up and down before the valve follows.
+        let (mut up, mut down) = if way > 0.0 {
+            (
+                self.slack * self.dead_band,
+                (1.0 - self.slack) * self.dead_band,
+            )
+        } else {
+            (
+                (1.0 - self.slack) * self.dead_band,
+                self.slack * self.dead_band,
+            )
+        };
+        let (mut op, mut valve) = (start, 0.0);
+        self.op[1..]
+            .iter()
+            .map(|&(at, to)| {
+                let change = to - op;
+                op = to;
+                let (ahead, behind) = if change > 0.0 {
+                    (&mut up, &mut down)
+                } else {
+                    (&mut down, &mut up)
+                };
+                let lost = ahead.min(change.abs());
+                *ahead -= lost;
+                *behind += lost;
+                valve += change - lost.copysign(change);
+                (at, valve)
+            })
+            .collect()
     }
 
     fn identify(&self) -> Identification {
