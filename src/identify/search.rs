@@ -1,7 +1,7 @@
 //! The search for the best fit: starts from a coarse grid on few samples, then more samples, then
 //! all, then the pieces between which the dead time makes corners.
 
-use super::descent::{Bounds, Prepared};
+use super::descent::{Bounds, Prepared, usual_interval};
 use super::least_squares::{Fit, FitError, Point, Problem, Window};
 use crate::model::Kind;
 
@@ -41,16 +41,10 @@ fn scales(problem: &Problem) -> Option<Scales> {
         })
         .filter(|watched_s| watched_s.is_finite())
         .fold(0.0, f64::max);
-    let mut intervals: Vec<f64> = problem
-        .windows
-        .iter()
-        .flat_map(|w| w.t_s.windows(2).map(|p| p[1] - p[0]))
-        .collect();
-    if intervals.is_empty() || watched_s <= 0.0 {
+    if problem.rows() <= problem.windows.len() || watched_s <= 0.0 {
         return None;
     }
-    let middle = intervals.len() / 2;
-    let interval_s = *intervals.select_nth_unstable_by(middle, f64::total_cmp).1;
+    let interval_s = usual_interval(problem);
     Some(Scales {
         watched_s,
         interval_s,
@@ -321,6 +315,17 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
         }
     }
     Ok(all.finish(problem, found.0, None))
+}
+
+/// Sum of squares, % ², of what samples bring beyond the ones before, for noise that has `rho` in common
+/// over the usual interval: the least that one kind leaves near a fit of it.
+pub(crate) fn whitened_rss(problem: &Problem, fit: &Fit, rho: f64) -> f64 {
+    let Some(scales) = scales(problem) else {
+        return fit.rss;
+    };
+    let mut prepared = Prepared::whitened(problem, fit.kind, rho);
+    let bounds = bounds(problem, &scales);
+    prepared.descend(fit.point, &bounds, ROUGHLY).1
 }
 
 /// The fit of one gain for all windows with the dynamics of a fit of one gain for each.

@@ -6,9 +6,7 @@ use alone::Alone;
 use asleft::archive;
 use asleft::document::{self, Templates};
 use asleft::figures;
-use asleft::identify::least_squares::{self, Base, Problem, Window};
 use asleft::job::Job;
-use asleft::model::{Kind, ProcessModel};
 use asleft::read::{self, FileCache, LogRequest};
 use asleft::record::{LogRole, Record};
 use asleft::{RecordOptions, record};
@@ -71,51 +69,6 @@ fn read_all_logs(bencher: Bencher) {
             divan::black_box(read);
         }
     });
-}
-
-/// 100,000 samples of a second each, seven moves up and down; the noise is a fixed pattern.
-fn long_test(kind: Kind) -> Problem {
-    const SAMPLES: usize = 100_000;
-    let model = ProcessModel::of_kind(
-        kind,
-        if kind.integrates() { 0.002 } else { 1.3 },
-        400.0,
-        120.0,
-        60.0,
-    );
-    let t_s: Vec<f64> = (0..SAMPLES).map(|k| k as f64).collect();
-    let moves: Vec<(f64, f64)> = (1..8)
-        .map(|k| {
-            (
-                12_000.0 * f64::from(k),
-                [5.0, 0.0, -5.0, 0.0][(k as usize - 1) % 4],
-            )
-        })
-        .collect();
-    let answer = model.response_to_held(&moves, &t_s);
-    let pv = answer
-        .iter()
-        .enumerate()
-        // The fractional parts of multiples of the golden ratio fill an interval evenly.
-        .map(|(k, pv)| 50.0 + pv + 0.2 * ((k as f64 * 0.618_033_988_749_895).fract() - 0.5))
-        .collect();
-    Problem::new(vec![Window {
-        t_s,
-        pv,
-        moves,
-        base: Base::Level,
-    }])
-}
-
-/// One fit of 100,000 samples of each kind.
-#[divan::bench(
-    args = [Kind::FirstOrder, Kind::SecondOrder, Kind::Integrating, Kind::IntegratingLag],
-    sample_count = 10,
-    sample_size = 1
-)]
-fn fit_100_000_samples(bencher: Bencher, kind: Kind) {
-    let problem = long_test(kind);
-    bencher.bench(|| least_squares::fit(&problem, kind).expect("a fit"));
 }
 
 /// Pairs of runs that are compared, and how much longer a record may take than its typesetting.
