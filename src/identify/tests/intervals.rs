@@ -11,6 +11,7 @@ fn fit_of(test: &Test) -> least_squares::Fit {
         shared: pooled::shared(steps.iter()),
         ..Problem::new(steps.iter().map(|s| pooled::window(&trace, s)).collect())
     };
+    problem.shared = pooled::shared(steps.iter());
     if kind.integrates() {
         for window in &mut problem.windows {
             window.base = least_squares::Base::LevelAndSlope;
@@ -21,8 +22,7 @@ fn fit_of(test: &Test) -> least_squares::Fit {
         let tau2 = test.model.second_time_constant_s();
         least_squares::Point::new(test.model.dead_time_s(), tau, tau2)
     };
-    let fit = search::fit(&problem, kind, &[start(1.1), start(1.6)]).expect("a fit");
-    fit
+    search::fit(&problem, kind, &[start(1.1), start(1.6)]).expect("a fit")
 }
 
 /// Runs a test with many seeds and holds the share of 95 % intervals that contain the truth.
