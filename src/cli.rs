@@ -8,7 +8,9 @@ Exit codes:
   0  done; every loop got its record (one that recommends no settings is a record)
   1  nothing could be done, nothing was written
   2  the command was not understood
-  3  some loops could not be recorded, the others were";
+  3  some loops could not be recorded, the others were
+
+inspect ends with 1 where no log could be read, with 3 where some could not";
 
 /// Reads step-test logs, fits and tunes each control loop, and typesets its loop-tuning record.
 #[derive(Debug, Parser)]
@@ -34,7 +36,7 @@ pub enum Command {
         /// The folder to make; refused where it holds anything
         folder: PathBuf,
     },
-    /// Tell what a log holds: its columns, its clock, its gaps, the moves of the OP
+    /// Tell what a log holds: its columns, clock, gaps, moves of the OP, and the schedule line for it
     #[command(
         after_help = "Examples:\n  asleft inspect unit-200/logs/tic204.xlsx\n  asleft inspect --job unit-200 --tag TIC-204 unit-200/logs/all.csv"
     )]

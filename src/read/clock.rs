@@ -235,6 +235,15 @@ pub fn read(
     } else {
         plain_numbers(table, column, &times, rules)
     };
+    if let TimeColumns::Pair { date, .. } = columns
+        && matches!(
+            rows.first().map(|&index| table.row(index).cell(date)),
+            Some(Cell::Date(_))
+        )
+    {
+        "real dates of the workbook, the time of day in a column beside them"
+            .clone_into(&mut moments.format);
+    }
     for t_us in &mut moments.t_us {
         *t_us = t_us.filter(|t| t.abs() <= FARTHEST_US);
     }
@@ -425,7 +434,7 @@ fn plain_numbers(
     let (scale, format) = match count {
         Count::Serial => (
             Scale::Local,
-            "serial dates of a spreadsheet (days since 1899-12-30)".to_owned(),
+            "serial dates of a spreadsheet (days since 1899-12-30, told by the size of the numbers)".to_owned(),
         ),
         Count::Epoch { per_second, name } => {
             let format = match (rules.zone, values.first()) {
@@ -433,13 +442,19 @@ fn plain_numbers(
                     let at = moment(libm::round(first / per_second * 1e6) as i64);
                     let offset = zone.offset_from_utc_datetime(&at).fix();
                     zone_offset_us = i64::from(offset.local_minus_utc()) * MICROSECONDS;
-                    format!("{name}, shown in the time of {zone}")
+                    format!("{name} (told by the size of the numbers), shown in the time of {zone}")
                 }
-                _ => format!("{name}, universal time"),
+                _ => format!("{name} (told by the size of the numbers), universal time"),
             };
             (Scale::Even, format)
         }
-        Count::Elapsed(unit) => (Scale::Elapsed, format!("elapsed {}", unit.description())),
+        Count::Elapsed(unit) => (
+            Scale::Elapsed,
+            format!(
+                "elapsed {}, as the heading or job.toml gives the unit",
+                unit.description()
+            ),
+        ),
         Count::Bare => {
             warnings.push(
                 Problem::warning(

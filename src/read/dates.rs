@@ -71,7 +71,10 @@ pub fn date_order(
     place: impl Fn(usize) -> Place,
 ) -> Result<(DateOrder, String), Problem> {
     let Some((_, first)) = dates.first().copied() else {
-        return Ok((DateOrder::YearFirst, "date and time of day".to_owned()));
+        return Ok((
+            DateOrder::YearFirst,
+            "the year first or the month as a word".to_owned(),
+        ));
     };
     if let Some(order) = given {
         return Ok((

@@ -374,6 +374,7 @@ fn read_table(
         compressed: false,
         gaps: Vec::new(),
         clock_format: moments.format,
+        decimal,
         roles: found,
     };
     let mut read = FileRead {

@@ -352,6 +352,28 @@ fn role_in(before: &str, after: &str) -> Option<(Role, Sureness)> {
     }
 }
 
+/// The name before the usual word at the end of a heading ("EXAMPLE-1" of "U200/EXAMPLE-1.PV"), for tags
+/// that are not of the usual kind; `None` where no figure stands in it.
+pub fn name_before_role(text: &str) -> Option<(&str, Role)> {
+    let is_apart = |letter: char| !letter.is_alphanumeric() && letter != '-';
+    let (proper, _) = split_unit(text);
+    let mut rest = proper.trim_end();
+    loop {
+        let at = rest.rfind(is_apart)?;
+        let (before, word) = rest.split_at(at);
+        let word = word.trim_start_matches(is_apart).to_uppercase();
+        rest = before.trim_end_matches(is_apart);
+        if let Some(role) = role_of(&word).filter(|role| *role != Role::Value) {
+            let name = rest.rsplit(['/', '\\', '.', ':', '!']).next()?.trim();
+            let has_figure = name.bytes().any(|byte| byte.is_ascii_digit());
+            return (has_figure && !name.contains(char::is_whitespace)).then_some((name, role));
+        }
+        if !is_silent(&word) {
+            return None;
+        }
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -395,6 +417,22 @@ mod tests {
             ("Remarks", None),
         ] {
             assert_eq!(role(text, "TIC-204"), expected, "{text}");
+        }
+    }
+
+    #[test]
+    fn a_name_of_any_kind_stands_before_the_usual_word() {
+        for (text, expected) in [
+            ("EXAMPLE-1.PV", Some(("EXAMPLE-1", Role::Pv))),
+            ("U200/EXAMPLE-1/OP [%]", Some(("EXAMPLE-1", Role::Op))),
+            ("Reactor2.SP.Value", Some(("Reactor2", Role::Sp))),
+            ("LOOP_7_PV", Some(("LOOP_7", Role::Pv))),
+            ("Process value", None),
+            ("Tank 1 PV", None),
+            ("PV", None),
+            ("CH1", None),
+        ] {
+            assert_eq!(name_before_role(text), expected, "{text}");
         }
     }
 

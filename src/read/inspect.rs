@@ -3,15 +3,28 @@
 use super::extract;
 use super::headings::{Owner, Role, meaning};
 use super::layout::{self, Layout};
+use super::numbers::{DecimalSign, Shape, number, shape};
+use super::proposal::{self, Proposal};
+use super::roles::{self, RoleFound};
 use super::source::FileCache;
-use super::table::Table;
-use super::{ColumnNames, FileReference, LogRead, LogRequest, LogRule, RoleFound};
-use crate::notice::{Problem, column_letters};
+use super::stamp::{DateOrder, stamp};
+use super::table::{Cell, Table};
+use super::tags::{TagFound, tags_in};
+use super::{ColumnNames, FileReference, LogRead, LogRequest, LogRule};
+use crate::notice::{Place, Problem, column_letters};
 use crate::trace::Moment;
 use serde::Serialize;
 use std::collections::BTreeMap;
-use std::fmt::Write;
 use std::path::Path;
+
+/// How many cells are looked at to say what the columns hold: fewer rows of a table that is very wide.
+const CELLS_LOOKED_AT: usize = 2_000_000;
+/// How many columns are tried as the one that is missing.
+const COLUMNS_SUPPOSED: usize = 6;
+/// What a column of measured values holds.
+const NUMBERS: &str = "numbers";
+/// What a column without any cell holds.
+const NOTHING: &str = "nothing";
 
 /// What a file holds.
 #[derive(Debug, Serialize)]
@@ -37,12 +50,39 @@ pub struct TableInspection {
     pub rows: usize,
     /// Row or line of the headings, 1 for the first.
     pub heading_row: Option<usize>,
-    /// Headings in order; empty where a column has none.
-    pub headings: Vec<String>,
+    /// Every column.
+    pub columns: Vec<ColumnFound>,
     /// The loops that can be read.
     pub loops: Vec<LoopInspection>,
-    /// What could not be decided, in words.
-    pub undecided: Vec<String>,
+    /// Tags that are no loop: those that have a PV alone or an OP alone.
+    pub others: Vec<OtherTag>,
+    /// Where no loop can be read: the roles that could be given all the same, and why.
+    pub roles: Vec<RoleFound>,
+    /// What could not be decided, with what to do about it.
+    pub undecided: Vec<Problem>,
+}
+
+/// A column of a table.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize)]
+pub struct ColumnFound {
+    /// Position, 0 for the first column of the sheet.
+    #[serde(skip)]
+    pub index: usize,
+    /// As a person finds it: `C` in a sheet, `#3` in a text file.
+    pub column: String,
+    /// Its heading; empty where it has none.
+    pub heading: String,
+    /// What its cells are, in words.
+    pub holds: String,
+}
+
+/// A tag that is no loop by itself.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize)]
+pub struct OtherTag {
+    /// The tag.
+    pub tag: String,
+    /// What it lacks.
+    pub lacks: &'static str,
 }
 
 /// A stretch without a good sample.
@@ -61,8 +101,10 @@ pub struct OpMove {
     pub at: Moment,
     /// OP before, in its own unit.
     pub from: f64,
-    /// OP after, in its own unit.
+    /// OP after, in its own unit; of a pulse its furthest level.
     pub to: f64,
+    /// Whether the OP came back at once.
+    pub pulse: bool,
 }
 
 /// What a log holds of one loop.
@@ -72,8 +114,16 @@ pub struct LoopInspection {
     pub tag: Option<String>,
     /// Which column got which role, and why.
     pub roles: Vec<RoleFound>,
-    /// How the clock is written.
+    /// How the clock is written, and how that is known.
     pub clock: String,
+    /// Decimal sign of the numbers that are text.
+    pub decimal: char,
+    /// What was supposed where the file does not tell: keys of a `[[log]]` table of `job.toml`, or a cell
+    /// of the schedule. Any one of them makes it readable; what follows holds for the first. Empty where
+    /// nothing had to be supposed.
+    pub supposed: Vec<String>,
+    /// What is not decided until one of these stands there.
+    pub undecided: Vec<Problem>,
     /// First moment.
     pub from: Moment,
     /// Last moment.
@@ -100,16 +150,20 @@ pub struct LoopInspection {
     pub gaps: Vec<GapFound>,
     /// Lowest and highest good PV.
     pub pv_range: [f64; 2],
-    /// Lowest and highest OP.
-    pub op_range: [f64; 2],
+    /// Lowest and highest OP; `None` where the column holds no value.
+    pub op_range: Option<[f64; 2]>,
+    /// Lowest and highest SP; `None` where it was not logged.
+    pub sp_range: Option<[f64; 2]>,
+    /// Words of the mode column with how often each stands there.
+    pub modes: BTreeMap<String, usize>,
     /// Moves of the OP; `None` until looked for, empty where there are none.
     pub op_moves: Option<Vec<OpMove>>,
     /// What is remarkable about them, in words.
     pub op_remark: Option<String>,
-    /// Cells of the schedule that would read it, by heading.
-    pub schedule: BTreeMap<String, String>,
+    /// Cells of the schedule that would read it; `None` where the name of the file stands against any.
+    pub schedule: Option<Proposal>,
     /// What should be told.
-    pub warnings: Vec<String>,
+    pub warnings: Vec<Problem>,
     /// The samples, for finding the OP's moves.
     #[serde(skip)]
     pub log: LogRead,
@@ -120,6 +174,8 @@ pub struct LoopInspection {
 pub struct InspectRequest<'a> {
     /// File as it is to be printed, below `root`.
     pub file: &'a str,
+    /// The file as a job would name it.
+    pub file_in_job: &'a str,
     /// Sheet; all where `None`.
     pub sheet: Option<&'a str>,
     /// Tag; every loop where `None`.
@@ -138,14 +194,11 @@ pub fn inspect(
     cache: &FileCache,
 ) -> Result<Inspection, Problem> {
     let file = cache.open(root, request.file)?;
-    let rule = extract::rule_for(request.rules, request.file)
-        .cloned()
-        .unwrap_or_default();
     let tables = match request.sheet {
         Some(sheet) => {
             let table = file.sheet(sheet).ok_or_else(|| {
                 Problem::error(
-                    crate::notice::Place::file(request.file),
+                    Place::file(request.file),
                     format!("there is no sheet \"{sheet}\""),
                 )
             })?;
@@ -153,328 +206,418 @@ pub fn inspect(
         }
         None => file.tables()?,
     };
-    let tables = tables
-        .into_iter()
-        .map(|table| inspect_table(root, request, &rule, table, cache))
-        .collect();
+    let look = Look {
+        root,
+        request,
+        cache,
+    };
     Ok(Inspection {
         file: file.name.clone(),
         sha256: file.sha256.clone(),
-        tables,
+        tables: tables
+            .into_iter()
+            .map(|table| look.at_table(table))
+            .collect(),
     })
 }
 
-fn inspect_table(
-    root: &Path,
-    request: &InspectRequest<'_>,
-    rule: &LogRule,
-    table: &Table,
-    cache: &FileCache,
-) -> TableInspection {
-    let names = ColumnNames::default();
-    let layout = layout::find(table, &names, request.tag, rule.interval_s.is_some());
-    let mut found = TableInspection {
-        sheet: table.sheet.clone(),
-        delimiter: table.delimiter,
-        encoding: table.encoding,
-        rows: table.len(),
-        heading_row: None,
-        headings: Vec::new(),
-        loops: Vec::new(),
-        undecided: Vec::new(),
-    };
-    let Some(layout) = layout else {
-        found.undecided.push(if table.is_empty() {
-            "it holds no cells".to_owned()
-        } else {
-            "no rows of times and numbers were found: not a log".to_owned()
-        });
-        return found;
-    };
-    found.heading_row = layout.heading_row.map(|row| table.row(row).number);
-    found.headings = layout
-        .headings
-        .iter()
-        .map(|heading| heading.text.clone())
-        .collect();
-    let tags: Vec<Option<String>> = match request.tag {
-        Some(tag) => vec![Some(tag.to_owned())],
-        None => tags_in(table, &layout),
-    };
-    for tag in tags {
-        let log_request = LogRequest {
-            root: root.to_path_buf(),
-            tag: tag.clone(),
-            rules: request.rules.to_vec(),
+/// One look at one file.
+struct Look<'a> {
+    root: &'a Path,
+    request: &'a InspectRequest<'a>,
+    cache: &'a FileCache,
+}
+
+impl Look<'_> {
+    fn at_table(&self, table: &Table) -> TableInspection {
+        let rule = extract::rule_for(self.request.rules, self.request.file)
+            .cloned()
+            .unwrap_or_default();
+        let names = ColumnNames::default();
+        let counted = rule.interval_s.is_some();
+        let layout = layout::find(table, &names, self.request.tag, counted);
+        let mut found = TableInspection {
+            sheet: table.sheet.clone(),
+            delimiter: table.delimiter,
+            encoding: table.encoding,
+            rows: table.len(),
+            heading_row: None,
+            columns: Vec::new(),
+            loops: Vec::new(),
+            others: Vec::new(),
+            roles: Vec::new(),
+            undecided: Vec::new(),
+        };
+        let Some(layout) = layout else {
+            found.undecided.push(if table.is_empty() {
+                Problem::error(table.place(), "it holds no cells")
+            } else {
+                Problem::error(
+                    table.place(),
+                    "no rows of times and numbers were found: not a log",
+                )
+                .hint("a log has one row per sample, with its time and values")
+            });
+            return found;
+        };
+        found.heading_row = layout.heading_row.map(|row| table.row(row).number);
+        found.columns = columns_of(table, &layout);
+        let tags = match self.request.tag {
+            Some(_) => Vec::new(),
+            None => tags_in(table, &layout),
+        };
+        self.add_loops(&mut found, table, &rule, &tags);
+        if found.loops.is_empty() {
+            let tag = self
+                .request
+                .tag
+                .or(tags.first().map(|found| found.tag.as_str()));
+            found.roles = roles::recognise(table, &layout, &names, tag, rule.interval_s).found;
+        }
+        found
+    }
+
+    /// Reads every loop that the tags may stand for; a table without tags may hold one.
+    fn add_loops(
+        &self,
+        found: &mut TableInspection,
+        table: &Table,
+        rule: &LogRule,
+        tags: &[TagFound],
+    ) {
+        let mut incomplete = Vec::new();
+        for tag in tags {
+            match self.at_loop(table, rule, Some(&tag.tag), true) {
+                Ok(one) => found.loops.push(one),
+                Err(_) if !(tag.has_pv && tag.has_op) => incomplete.push(tag),
+                Err(problems) => found.undecided.extend(problems),
+            }
+        }
+        found.others = incomplete
+            .iter()
+            .map(|tag| OtherTag {
+                tag: tag.tag.clone(),
+                lacks: if tag.has_pv { "OP" } else { "PV" },
+            })
+            .collect();
+        if found.loops.is_empty() && found.undecided.is_empty() {
+            // No tag has both: the file may still hold one loop whose headings bear no common tag.
+            let tag = match (self.request.tag, tags) {
+                (Some(tag), _) => Some(tag),
+                (None, [only]) => Some(only.tag.as_str()),
+                _ => None,
+            };
+            match self.at_loop(table, rule, tag, false) {
+                Ok(one) => found.loops.push(one),
+                Err(problems) => found.undecided.extend(problems),
+            }
+        }
+    }
+
+    /// One loop, read as it is or, where it reads in several ways, in the first of them. `own` leaves
+    /// columns that do not bear the tag out of account.
+    fn at_loop(
+        &self,
+        table: &Table,
+        rule: &LogRule,
+        tag: Option<&str>,
+        own: bool,
+    ) -> Result<LoopInspection, Vec<Problem>> {
+        let as_it_is = Supposition {
+            rules: self.request.rules.to_vec(),
+            ..Supposition::default()
+        };
+        let problems = match self.read(table, tag, &as_it_is) {
+            Ok(log) => return Ok(self.describe(tag, table, log, &as_it_is)),
+            Err(problems) => problems,
+        };
+        // As little as makes it readable: the order of day and month alone, the decimal sign alone, both;
+        // then a column.
+        let columns = self.columns_supposed(table, rule, tag, own);
+        for ways in suppositions(rule).into_iter().chain([columns]) {
+            let mut readable = ways
+                .into_iter()
+                .filter_map(|way| Some((self.read(table, tag, &way).ok()?, way)));
+            if let Some((log, first)) = readable.next() {
+                let mut one = self.describe(tag, table, log, &first);
+                one.supposed = vec![first.line];
+                one.supposed.extend(readable.map(|(_, way)| way.line));
+                one.undecided = problems;
+                return Ok(one);
+            }
+        }
+        Err(problems)
+    }
+
+    /// Columns of numbers that may be the PV or the OP, where the one is missing and the other is not.
+    fn columns_supposed(
+        &self,
+        table: &Table,
+        rule: &LogRule,
+        tag: Option<&str>,
+        own: bool,
+    ) -> Vec<Supposition> {
+        let names = ColumnNames::default();
+        let Some(layout) = layout::find(table, &names, tag, rule.interval_s.is_some()) else {
+            return Vec::new();
+        };
+        let found = roles::recognise(table, &layout, &names, tag, rule.interval_s).found;
+        let has = |role: Role| found.iter().any(|found| found.role == role);
+        let role = match (has(Role::Pv), has(Role::Op)) {
+            (false, true) => Role::Pv,
+            (true, false) => Role::Op,
+            _ => return Vec::new(),
+        };
+        let is_open = |column: usize| {
+            !found.iter().any(|found| found.column == column)
+                && what_it_holds(table, &layout, column).starts_with(NUMBERS)
+        };
+        layout
+            .headings
+            .iter()
+            .filter(|heading| !own || meaning(&heading.text, tag).owner == Owner::This)
+            .filter(|heading| is_open(heading.column))
+            .take(COLUMNS_SUPPOSED)
+            .map(|heading| {
+                let is_alone = |text: &str| {
+                    layout
+                        .headings
+                        .iter()
+                        .filter(|other| other.text == text)
+                        .count()
+                        == 1
+                };
+                let name = if is_alone(&heading.text) {
+                    proposal::by_heading(&heading.text, heading.column)
+                } else {
+                    proposal::by_number(&heading.text, heading.column)
+                };
+                let line = format!("{} = {name}", role.schedule_heading());
+                let mut columns = ColumnNames::default();
+                match role {
+                    Role::Pv => columns.pv = Some(name),
+                    _ => columns.op = Some(name),
+                }
+                Supposition {
+                    line,
+                    rules: self.request.rules.to_vec(),
+                    columns,
+                }
+            })
+            .collect()
+    }
+
+    fn read(
+        &self,
+        table: &Table,
+        tag: Option<&str>,
+        way: &Supposition,
+    ) -> Result<LogRead, Vec<Problem>> {
+        let request = LogRequest {
+            root: self.root.to_path_buf(),
+            tag: tag.map(str::to_owned),
+            columns: way.columns.clone(),
+            rules: way.rules.clone(),
             ..LogRequest::default()
         };
         let reference = FileReference {
-            file: request.file.to_owned(),
+            file: self.request.file.to_owned(),
             sheet: table.sheet.clone(),
         };
-        match extract::read(&log_request, &[reference], cache) {
-            Ok(log) => found.loops.push(describe(tag, log, table)),
-            Err(problems) => {
-                for problem in problems {
-                    let about = tag
-                        .as_ref()
-                        .map_or_else(String::new, |tag| format!("{tag}: "));
-                    found.undecided.push(format!("{about}{problem}"));
+        extract::read(&request, &[reference], self.cache)
+    }
+
+    fn describe(
+        &self,
+        tag: Option<&str>,
+        table: &Table,
+        log: LogRead,
+        way: &Supposition,
+    ) -> LoopInspection {
+        let samples = &log.samples;
+        let good_pv = (0..samples.t_s.len())
+            .filter(|&k| samples.good[k])
+            .map(|k| samples.pv[k]);
+        let pv_range = range(good_pv).unwrap_or([f64::NAN; 2]);
+        let mut modes = BTreeMap::new();
+        for mode in samples.mode.iter().filter(|mode| !mode.is_empty()) {
+            *modes.entry(mode.clone()).or_insert(0) += 1;
+        }
+        let mut source = log.sources[0].clone();
+        if !way.line.is_empty() {
+            // Nobody gave it: `supposed` says what was.
+            source.clock_format = source
+                .clock_format
+                .replace("as given in job.toml", "supposed");
+            for found in &mut source.roles {
+                if found.why == roles::NAMED {
+                    found.why = "supposed".to_owned();
                 }
             }
         }
+        let schedule = proposal::propose(
+            &proposal::Seen {
+                root: self.root,
+                file: self.request.file,
+                file_in_job: self.request.file_in_job,
+                tag,
+                table,
+                rules: &way.rules,
+                columns: &way.columns,
+                log: &log,
+            },
+            self.cache,
+        );
+        LoopInspection {
+            tag: tag.map(str::to_owned),
+            roles: source.roles,
+            clock: source.clock_format,
+            decimal: source.decimal.sign(),
+            supposed: Vec::new(),
+            undecided: Vec::new(),
+            from: source.from,
+            to: source.to,
+            rows: source.rows,
+            samples: source.samples,
+            interval_s: source.interval_s,
+            jitter_s: source.jitter_s,
+            compressed: source.compressed,
+            bad_samples: source.bad,
+            duplicates: source.duplicates,
+            sorted_rows: source.sorted_rows,
+            fold: source.fold,
+            gaps: source
+                .gaps
+                .iter()
+                .map(|gap| GapFound {
+                    from: log.clock.at(gap.from_s),
+                    to: log.clock.at(gap.to_s),
+                })
+                .collect(),
+            pv_range,
+            op_range: range(samples.op.iter().copied()),
+            sp_range: range(samples.sp.iter().copied()),
+            modes,
+            op_moves: None,
+            op_remark: None,
+            schedule,
+            warnings: log.warnings.clone(),
+            log,
+        }
     }
-    found
 }
 
-/// Tags in headings or, in a long table, in the tag column; `[None]` where there are none.
-fn tags_in(table: &Table, layout: &Layout) -> Vec<Option<String>> {
-    let mut tags: Vec<Option<String>> = Vec::new();
-    let mut take = |text: &str| {
-        let meaning = meaning(text, None);
-        if let (Owner::Other(tag), Some((Role::Pv | Role::Op, _))) = (meaning.owner, meaning.role) {
-            let tag = Some(tag);
-            if !tags.contains(&tag) {
-                tags.push(tag);
-            }
+/// Lowest and highest of the finite values.
+fn range(values: impl Iterator<Item = f64>) -> Option<[f64; 2]> {
+    values
+        .filter(|value| value.is_finite())
+        .fold(None, |range, value| match range {
+            None => Some([value, value]),
+            Some([low, high]) => Some([low.min(value), high.max(value)]),
+        })
+}
+
+/// What is supposed of a file that does not say it itself.
+#[derive(Default)]
+struct Supposition {
+    /// As it would be written: keys of a `[[log]]` table, or a cell of the schedule.
+    line: String,
+    rules: Vec<LogRule>,
+    columns: ColumnNames,
+}
+
+/// What a `[[log]]` table may say: one list for the dates, one for the decimal sign, one for both.
+fn suppositions(rule: &LogRule) -> [Vec<Supposition>; 3] {
+    let orders = [
+        DateOrder::DayFirst,
+        DateOrder::MonthFirst,
+        DateOrder::YearFirst,
+    ];
+    let signs = [DecimalSign::Point, DecimalSign::Comma];
+    // What the job says is not called into question.
+    let orders = orders.into_iter().filter(|_| rule.dates.is_none());
+    let signs = signs.into_iter().filter(|_| rule.decimal.is_none());
+    let one = |dates: Option<DateOrder>, decimal: Option<DecimalSign>| {
+        let mut line = Vec::new();
+        line.extend(dates.map(|order| format!("dates = \"{}\"", order.word())));
+        line.extend(decimal.map(|sign| format!("decimal = \"{}\"", sign.sign())));
+        Supposition {
+            line: line.join(", "),
+            rules: vec![LogRule {
+                files: Vec::new(),
+                dates: dates.or(rule.dates),
+                decimal: decimal.or(rule.decimal),
+                ..rule.clone()
+            }],
+            columns: ColumnNames::default(),
         }
     };
-    let roles: Vec<(usize, Role)> = layout
+    [
+        orders.clone().map(|order| one(Some(order), None)).collect(),
+        signs.clone().map(|sign| one(None, Some(sign))).collect(),
+        orders
+            .flat_map(|order| signs.clone().map(move |sign| (order, sign)))
+            .map(|(order, sign)| one(Some(order), Some(sign)))
+            .collect(),
+    ]
+}
+
+/// Every column that has a heading or holds anything.
+fn columns_of(table: &Table, layout: &Layout) -> Vec<ColumnFound> {
+    layout
         .headings
         .iter()
-        .filter_map(|heading| {
-            let meaning = meaning(&heading.text, None);
-            let (role, _) = meaning.role.filter(|_| meaning.owner == Owner::Nobody)?;
-            Some((heading.column, role))
-        })
-        .collect();
-    if let Some((column, _)) = roles.iter().find(|(_, role)| *role == Role::Tag) {
-        let mut seen = std::collections::BTreeSet::new();
-        for index in layout.data_start..table.len() {
-            let text = table.row(index).cell(*column).text();
-            if seen.insert(text.clone()) {
-                take(&text);
-            }
-        }
-    }
-    for heading in &layout.headings {
-        take(&heading.text);
-    }
-    if tags.is_empty() {
-        tags.push(None);
-    }
-    tags
-}
-
-fn describe(tag: Option<String>, log: LogRead, table: &Table) -> LoopInspection {
-    let range = |values: &mut dyn Iterator<Item = f64>| {
-        values.fold([f64::INFINITY, f64::NEG_INFINITY], |[low, high], value| {
-            [low.min(value), high.max(value)]
-        })
-    };
-    let samples = &log.samples;
-    let pv_range = range(
-        &mut (0..samples.t_s.len())
-            .filter(|&k| samples.good[k] && samples.pv[k].is_finite())
-            .map(|k| samples.pv[k]),
-    );
-    let op_range = range(&mut samples.op.iter().copied().filter(|op| op.is_finite()));
-    let source = log.sources[0].clone();
-    let mut schedule = BTreeMap::new();
-    if let Some(tag) = &tag {
-        schedule.insert("tag".to_owned(), tag.clone());
-    }
-    schedule.insert(
-        "test log".to_owned(),
-        match &table.sheet {
-            Some(sheet) => format!("{}#{sheet}", table.file),
-            None => table.file.clone(),
-        },
-    );
-    for found in &source.roles {
-        // In a long table the value column is found by itself.
-        if found.role == Role::Value {
-            continue;
-        }
-        let name = if found.heading.is_empty() {
-            format!("#{}", found.column + 1)
-        } else {
-            found.heading.clone()
-        };
-        schedule
-            .entry(found.role.schedule_heading().to_owned())
-            .and_modify(|first: &mut String| {
-                first.push_str(" + ");
-                first.push_str(&name);
-            })
-            .or_insert(name);
-    }
-    LoopInspection {
-        tag,
-        roles: source.roles,
-        clock: source.clock_format,
-        from: source.from,
-        to: source.to,
-        rows: source.rows,
-        samples: source.samples,
-        interval_s: source.interval_s,
-        jitter_s: source.jitter_s,
-        compressed: source.compressed,
-        bad_samples: source.bad,
-        duplicates: source.duplicates,
-        sorted_rows: source.sorted_rows,
-        fold: source.fold,
-        gaps: source
-            .gaps
-            .iter()
-            .map(|gap| GapFound {
-                from: log.clock.at(gap.from_s),
-                to: log.clock.at(gap.to_s),
-            })
-            .collect(),
-        pv_range,
-        op_range,
-        op_moves: None,
-        op_remark: None,
-        schedule,
-        warnings: log.warnings.iter().map(ToString::to_string).collect(),
-        log,
-    }
-}
-
-/// A figure without more decimals than it needs, at most four.
-fn figure(value: f64) -> String {
-    let text = format!("{value:.4}");
-    text.trim_end_matches('0').trim_end_matches('.').to_owned()
-}
-
-impl Inspection {
-    /// The inspection as text for a terminal.
-    pub fn text(&self) -> String {
-        let mut text = format!("{}\n", self.file);
-        for table in &self.tables {
-            let what = match (&table.sheet, table.delimiter) {
-                (Some(sheet), _) => format!("sheet \"{sheet}\""),
-                (None, Some('\t')) => "text, columns apart by tabs".to_owned(),
-                (None, Some(sign)) => format!("text, columns apart by {sign}"),
-                (None, None) => "text".to_owned(),
-            };
-            let headings = table.heading_row.map_or("no headings".to_owned(), |row| {
-                format!("headings in row {row}")
-            });
-            let _ = writeln!(text, "  {what}: {} rows, {headings}", table.rows);
-            for found in &table.loops {
-                found.write(&mut text, table.sheet.is_some());
-            }
-            for line in &table.undecided {
-                let _ = writeln!(text, "    not decided: {}", line.replace('\n', "\n    "));
-            }
-        }
-        text
-    }
-}
-
-impl LoopInspection {
-    fn write(&self, text: &mut String, is_sheet: bool) {
-        let name = self.tag.as_deref().unwrap_or("a loop without a tag");
-        let _ = writeln!(text, "    {name}");
-        let mut line = |what: &str, value: String| {
-            let _ = writeln!(text, "      {what:<12} {value}");
-        };
-        for found in &self.roles {
-            let column = if is_sheet {
-                column_letters(found.column)
+        .map(|heading| ColumnFound {
+            index: heading.column,
+            column: if table.sheet.is_some() {
+                column_letters(heading.column)
             } else {
-                format!("#{}", found.column + 1)
-            };
-            let unit = found
-                .unit
-                .as_ref()
-                .map_or_else(String::new, |unit| format!(", unit {unit}"));
-            line(
-                found.role.name(),
-                format!("{column} \"{}\"{unit}: {}", found.heading, found.why),
-            );
-        }
-        line("clock", self.clock.clone());
-        line("span", format!("{} to {}", self.from, self.to));
-        line(
-            "samples",
-            if self.compressed {
-                format!(
-                    "{} of {} rows, written when the value changed, usually after {} s",
-                    self.samples,
-                    self.rows,
-                    figure(self.interval_s)
-                )
-            } else {
-                format!(
-                    "{} of {} rows, every {} s, jitter {} s",
-                    self.samples,
-                    self.rows,
-                    figure(self.interval_s),
-                    figure(self.jitter_s)
-                )
+                format!("#{}", heading.column + 1)
             },
-        );
-        line(
-            "PV",
-            format!(
-                "{} to {}",
-                figure(self.pv_range[0]),
-                figure(self.pv_range[1])
-            ),
-        );
-        line(
-            "OP",
-            format!(
-                "{} to {}",
-                figure(self.op_range[0]),
-                figure(self.op_range[1])
-            ),
-        );
-        if self.bad_samples.is_empty() {
-            line("bad samples", "none".to_owned());
-        }
-        for (cause, count) in &self.bad_samples {
-            line("bad samples", format!("{count}: {cause}"));
-        }
-        if self.duplicates + self.sorted_rows > 0 {
-            line(
-                "order",
-                format!(
-                    "{} rows of a moment that comes again, {} rows out of order by up to a minute",
-                    self.duplicates, self.sorted_rows
-                ),
-            );
-        }
-        if let Some(fold) = &self.fold {
-            line("summer time", fold.clone());
-        }
-        for gap in &self.gaps {
-            line("gap", format!("{} to {}", gap.from, gap.to));
-        }
-        if let Some(moves) = &self.op_moves {
-            for found in moves {
-                line(
-                    "OP move",
-                    format!(
-                        "{}: {} to {}",
-                        found.at,
-                        figure(found.from),
-                        figure(found.to)
-                    ),
-                );
+            heading: heading.text.clone(),
+            holds: what_it_holds(table, layout, heading.column),
+        })
+        .filter(|column| !column.heading.is_empty() || column.holds != NOTHING)
+        .collect()
+}
+
+fn what_it_holds(table: &Table, layout: &Layout, column: usize) -> String {
+    let (mut numbers, mut moments) = (0, 0);
+    let mut range: Option<[f64; 2]> = None;
+    let mut word = None;
+    let rows = (CELLS_LOOKED_AT / table.width().max(1)).max(20);
+    let end = table.len().min(layout.data_start + rows);
+    for index in layout.data_start..end {
+        let value = match table.row(index).cell(column) {
+            Cell::Empty => continue,
+            Cell::Number(value) => Some(value),
+            Cell::Date(_) | Cell::Duration(_) => None,
+            Cell::Text(text) if shape(text) != Shape::NotNumber => {
+                number(text, DecimalSign::Point).or_else(|| number(text, DecimalSign::Comma))
             }
+            Cell::Text(text) if stamp(text).is_some() => None,
+            cell => {
+                word.get_or_insert_with(|| cell.text());
+                continue;
+            }
+        };
+        match value {
+            Some(value) => {
+                numbers += 1;
+                let [low, high] = range.unwrap_or([value, value]);
+                range = Some([low.min(value), high.max(value)]);
+            }
+            None => moments += 1,
         }
-        if let Some(remark) = &self.op_remark {
-            line("OP moves", remark.clone());
+    }
+    match (numbers, moments, range, word) {
+        (0, 0, _, None) => NOTHING.to_owned(),
+        (0, 0, _, Some(word)) => {
+            let word: String = word.chars().take(20).collect();
+            format!("text such as \"{word}\"")
         }
-        for (heading, value) in &self.schedule {
-            line("schedule", format!("{heading} = {value}"));
-        }
-        for warning in &self.warnings {
-            line("note", warning.replace('\n', "\n                   "));
-        }
+        (_, 0, Some([low, high]), _) => format!("{NUMBERS} {low} to {high}"),
+        (0, _, _, _) => "dates or times".to_owned(),
+        _ => "numbers and times".to_owned(),
     }
 }

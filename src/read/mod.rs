@@ -19,6 +19,7 @@ mod join;
 pub mod layout;
 pub mod numbers;
 pub mod order;
+mod proposal;
 pub mod roles;
 mod rows;
 pub mod samples;
@@ -26,6 +27,7 @@ mod sheet;
 pub mod source;
 pub mod stamp;
 pub mod table;
+mod tags;
 pub mod text;
 mod tracks;
 pub mod units;
@@ -42,6 +44,7 @@ use std::path::PathBuf;
 
 pub use guard::is_guarded;
 pub use numbers::DecimalSign;
+pub use proposal::Proposal;
 pub use roles::RoleFound;
 pub use samples::{read_samples_csv, samples_csv};
 pub use source::FileCache;
@@ -216,6 +219,8 @@ pub struct Source {
     pub gaps: Vec<Gap>,
     /// How the clock is written.
     pub clock_format: String,
+    /// Decimal sign of its numbers.
+    pub decimal: DecimalSign,
     /// Which column got which role, and why.
     pub roles: Vec<RoleFound>,
 }

@@ -10,6 +10,9 @@ use super::values::is_good;
 use crate::notice::{Problem, nearest};
 use serde::Serialize;
 
+/// Why a column has its role that the schedule names for it.
+pub(super) const NAMED: &str = "named in the schedule";
+
 /// A column that was given a role.
 #[derive(Debug, Clone, PartialEq, Eq, Serialize)]
 pub struct RoleFound {
@@ -252,17 +255,27 @@ fn holds_quality(table: &Table, layout: &Layout, column: usize) -> bool {
         .any(|cell| is_good(cell, &[]).is_some())
 }
 
-/// Gives every column its role for the loop `tag`.
-///
-/// # Errors
-/// Where a column that is needed is missing, named wrongly or may be one of several.
-pub fn assign(
+/// What the headings of a table tell for one loop, also where they do not tell all.
+#[derive(Debug)]
+pub struct Recognised {
+    /// Where the time stands; `None` where that is not known.
+    time: Option<TimeColumns>,
+    /// Every column that could be given a role.
+    pub found: Vec<RoleFound>,
+    /// Whether rows bear a tag and a value each.
+    long: bool,
+    /// Roles that are missing, named wrongly or may be one of several columns'.
+    pub problems: Vec<Problem>,
+}
+
+/// Gives columns their roles for the loop `tag` as far as that can be told.
+pub fn recognise(
     table: &Table,
     layout: &Layout,
     names: &ColumnNames,
     tag: Option<&str>,
     interval_s: Option<f64>,
-) -> Result<Roles, Vec<Problem>> {
+) -> Recognised {
     let headings = Headings {
         table,
         layout,
@@ -275,14 +288,16 @@ pub fn assign(
     let mut problems = Vec::new();
     let mut found: Vec<RoleFound> = Vec::new();
     let time = match time_columns(&headings, names, interval_s, &mut found) {
-        Ok(time) => time,
+        Ok(time) => Some(time),
         Err(problem) => {
             problems.push(problem);
-            TimeColumns::Single(0)
+            None
         }
     };
     // In a long table these may name the signal's own text in the tag column.
     let mut unknown_names = Vec::new();
+    // Which column is the value matters in a long table alone.
+    let mut several_values = Vec::new();
     for (role, name) in [
         (Role::Pv, &names.pv),
         (Role::Op, &names.op),
@@ -293,9 +308,9 @@ pub fn assign(
         (Role::Value, &None),
     ] {
         let outcome = match name {
-            Some(name) => headings.named(name, role).map(|column| {
-                Some(headings.role(role, column, "named in the schedule".to_owned()))
-            }),
+            Some(name) => headings
+                .named(name, role)
+                .map(|column| Some(headings.role(role, column, NAMED.to_owned()))),
             None => headings.recognised(role, tag),
         };
         match outcome {
@@ -307,6 +322,7 @@ pub fn assign(
             {
                 unknown_names.push(problem);
             }
+            Err(problem) if role == Role::Value => several_values.push(problem),
             Err(problem) => problems.push(problem),
         }
     }
@@ -318,6 +334,9 @@ pub fn assign(
             || holds_quality(table, layout, found.column)
     });
     let has = |role: Role| found.iter().any(|found| found.role == role);
+    if has(Role::Tag) && !has(Role::Pv) {
+        problems.append(&mut several_values);
+    }
     let long = has(Role::Tag) && has(Role::Value) && !has(Role::Pv);
     if !long {
         problems.append(&mut unknown_names);
@@ -335,9 +354,35 @@ pub fn assign(
                 .hint("name it in the schedule under \"op column\""),
         );
     }
-    if !problems.is_empty() {
-        return Err(problems);
+    found.sort_by_key(|found| found.role);
+    Recognised {
+        time,
+        found,
+        long,
+        problems,
     }
+}
+
+/// Gives every column its role for the loop `tag`.
+///
+/// # Errors
+/// Where a column that is needed is missing, named wrongly or may be one of several.
+pub fn assign(
+    table: &Table,
+    layout: &Layout,
+    names: &ColumnNames,
+    tag: Option<&str>,
+    interval_s: Option<f64>,
+) -> Result<Roles, Vec<Problem>> {
+    let Recognised {
+        time,
+        mut found,
+        long,
+        problems,
+    } = recognise(table, layout, names, tag, interval_s);
+    let Some(time) = time.filter(|_| problems.is_empty()) else {
+        return Err(problems);
+    };
     if !long {
         found.retain(|found| found.role != Role::Value);
         // A tag column beside a PV column narrows the rows; one that was only guessed from a
@@ -351,7 +396,6 @@ pub fn assign(
             found.role != Role::Tag || names.tag.is_some() || holds_tag(found.column)
         });
     }
-    found.sort_by_key(|found| found.role);
     Ok(Roles { time, found, long })
 }
 
@@ -375,7 +419,7 @@ fn time_columns(
     found: &mut Vec<RoleFound>,
 ) -> Result<TimeColumns, Problem> {
     if let Some(name) = &names.time {
-        let why = || "named in the schedule".to_owned();
+        let why = || NAMED.to_owned();
         // A heading may itself hold a plus sign: the whole name is tried first.
         if let Some((date, time)) = name.split_once('+')
             && headings.named(name, Role::Time).is_err()

@@ -4,9 +4,10 @@ mod page;
 
 use crate::notice::{Problem, Severity};
 use crate::record::Status;
-use page::Page;
 use serde::{Serialize, Serializer};
 use std::fmt::{self, Display};
+
+pub use page::{Page, WIDTH};
 
 /// Done: every loop got its record.
 pub const DONE: u8 = 0;

@@ -59,7 +59,7 @@ impl Page {
     }
 
     /// A paragraph whose first line begins with `label` and whose others stand in by `indent`.
-    fn labelled(&mut self, label: &str, indent: usize, text: &str) {
+    pub fn labelled(&mut self, label: &str, indent: usize, text: &str) {
         let mut lead = label.to_owned();
         for part in text.split('\n') {
             // An entry of a list keeps its own further indent.

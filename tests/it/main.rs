@@ -7,6 +7,7 @@ mod cli;
 mod demo;
 mod errors;
 mod identify;
+mod inspect;
 mod layering;
 mod new_user;
 mod plant;

@@ -294,7 +294,7 @@ pub fn schedule(rows: &[Vec<(String, String)>]) -> String {
             headings.push(heading);
         }
     }
-    let mut text = headings.join(",");
+    let mut text = csv_line(&headings);
     for row in rows {
         let cells: Vec<&str> = headings
             .iter()
@@ -304,8 +304,17 @@ pub fn schedule(rows: &[Vec<(String, String)>]) -> String {
             })
             .collect();
         text.push('\n');
-        text.push_str(&cells.join(","));
+        text.push_str(&csv_line(&cells));
     }
     text.push('\n');
     text
+}
+
+/// Cells as a line of delimited text, in quotation marks where they need them.
+pub fn csv_line(cells: &[&str]) -> String {
+    let quoted = |cell: &&str| match cell.contains([',', '"', '\n']) {
+        true => format!("\"{}\"", cell.replace('"', "\"\"")),
+        false => (*cell).to_owned(),
+    };
+    cells.iter().map(quoted).collect::<Vec<String>>().join(",")
 }

@@ -198,26 +198,33 @@ fn an_inspection_says_what_it_saw_and_what_it_could_not_decide() {
     let look = |file| {
         let request = inspect::InspectRequest {
             file,
+            file_in_job: file,
             ..inspect::InspectRequest::default()
         };
         inspect::inspect(logs.folder.path(), &request, &cache).expect("readable")
     };
     let workbook = look("a.xlsx");
     assert_eq!(
-        workbook.tables[0].undecided,
-        ["no rows of times and numbers were found: not a log"]
+        workbook.tables[0].undecided[0].message,
+        "no rows of times and numbers were found: not a log"
     );
     let found = &workbook.tables[1].loops[0];
     assert_eq!(found.tag.as_deref(), Some("TIC-204"));
-    assert_eq!(found.schedule["test log"], "a.xlsx#Trend");
-    assert_eq!(found.schedule["pv column"], "TIC-204/PV [degC]");
-    let text = workbook.text();
-    assert!(text.contains("      PV           D \"TIC-204/PV [degC]\", unit degC: the heading bears the tag TIC-204\n"), "{text}");
+    let schedule = found.schedule.as_ref().expect("a proposal");
+    assert_eq!(schedule.cells["test log"], "a.xlsx#Trend");
+    assert_eq!(schedule.headings, "tag,pv unit,test log");
+    assert_eq!(schedule.values, "TIC-204,degC,a.xlsx#Trend");
+    let pv = &found.roles[1];
+    assert_eq!(pv.heading, "TIC-204/PV [degC]");
+    assert_eq!(pv.unit.as_deref(), Some("degC"));
+    assert_eq!(pv.why, "the heading bears the tag TIC-204");
     let text = look("b.csv");
     assert_eq!(text.tables[0].loops.len(), 1);
-    assert!(
-        text.tables[0].undecided[0]
-            .starts_with("TI-301: b.csv, line 1: no column is recognised as the OP")
-    );
+    let others: Vec<(&str, &str)> = text.tables[0]
+        .others
+        .iter()
+        .map(|other| (other.tag.as_str(), other.lacks))
+        .collect();
+    assert_eq!(others, [("TI-301", "OP")]);
     assert!(serde_json::to_string(&text).is_ok());
 }
