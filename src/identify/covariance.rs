@@ -131,15 +131,23 @@ pub(crate) fn logarithmic(fit: &Fit, interval_s: f64) -> LogCovariance {
     let mut raw = sandwich(&inverse, &fit.middle);
     let doubtful = sandwich(&inverse, &fit.doubtful_middle);
     let count = fit.samples.saturating_sub(fit.parameters) as f64 / fit.memory.tail;
-    let quantiles: Vec<f64> = (0..raw.len())
+    let mut factors: Vec<f64> = (0..raw.len())
         .map(|k| {
             let doubt = libm::log(doubtful[k][k] / raw[k][k]);
             student_95(2.0 / (2.0 / count.max(1.0) + doubt * doubt)) / TWO_SIDED_95
         })
         .map(|q| if q.is_finite() { q } else { 1.0 })
         .collect();
+    // Noise that turns about averages out of the gain, which rests on all samples; dead time and lags rest
+    // on the few after a move, where every look was kept and the noise does not turn.
+    if let Some(middle) = &fit.turning_middle
+        && let Some(factor) = factors.first_mut()
+    {
+        let turning = sandwich(&inverse, middle);
+        *factor *= libm::sqrt((turning[0][0] / raw[0][0]).clamp(0.1, 1.0));
+    }
     raw = scaled(raw, fit.memory.tail);
-    stretch(&mut raw, &quantiles);
+    stretch(&mut raw, &factors);
     // raw: 0 gain, 1 dead time, 2 m, 3 w.
     let sd = |k: usize| libm::sqrt(raw[k][k].max(0.0));
     let theta = fit.point.dead_time_s + interval_s;

@@ -416,10 +416,19 @@ impl Prepared {
             sums.iter_mut().flatten().for_each(|v| *v *= variance);
             sums
         };
-        let (likely, doubtful) = (
-            middle(memory.noise_autocorrelation, memory.variance),
-            middle(memory.doubtful.0, memory.doubtful.1),
-        );
+        let turning = memory.turning.then(|| {
+            let brought: Vec<Vec<f64>> = columns
+                .iter()
+                .map(|c| c.iter().zip(&self.residual).map(|(x, r)| x * r).collect())
+                .collect();
+            let brought: Vec<&[f64]> = brought.iter().map(Vec::as_slice).collect();
+            let merged = memory::merged(&brought, &stretches, &problem.shared);
+            let mut sums = memory::from_residual(&merged);
+            let rows = self.t_s.len() as f64;
+            let taken_up = rows / (rows - parameters as f64);
+            sums.iter_mut().flatten().for_each(|v| *v *= taken_up);
+            sums
+        });
         Fit {
             kind: self.kind,
             gains,
@@ -432,8 +441,9 @@ impl Prepared {
             parameters,
             residual: self.residual.clone(),
             information,
-            middle: likely,
-            doubtful_middle: doubtful,
+            middle: middle(memory.noise_autocorrelation, memory.variance),
+            doubtful_middle: middle(memory.doubtful.0, memory.doubtful.1),
+            turning_middle: turning,
             memory,
         }
     }

@@ -209,6 +209,8 @@ pub struct Fit {
     pub middle: Vec<Vec<f64>>,
     /// The same again where the memory of the noise is one standard deviation longer.
     pub doubtful_middle: Vec<Vec<f64>>,
+    /// The same from the residual itself, where it turns about from sample to sample.
+    pub turning_middle: Option<Vec<Vec<f64>>>,
     /// Memory of the residual.
     pub memory: Memory,
 }

@@ -3,8 +3,8 @@
 //! Noise is taken as a first-order autoregressive process in continuous time, so that two samples have
 //! ρ^(Δt/interval) in common however irregularly they were taken (R.H. Jones, Technometrics 22 (1980)
 //! 389-395). Noise that turns about from
-//! sample to sample, as exception reporting makes it, is taken as having none: it is no such process, and
-//! the intervals are then rather too wide. ρ and variance are those of the restricted
+//! sample to sample, as exception reporting makes it, is no such process: its ρ is 0, and what it has in
+//! common with itself is taken from the residual. ρ and variance are those of the restricted
 //! likelihood (H.D. Patterson, R. Thompson, Biometrika 58 (1971) 545-554; for autoregressive errors
 //! D.A. Harville, J. Am. Stat. Assoc. 72 (1977) 320-338), which counts what the fit took up of the noise:
 //! a plain residual has less memory than its noise.
@@ -12,8 +12,9 @@
 use super::least_squares::Base;
 use std::ops::Range;
 
-/// Above this the fit takes up too little of the noise to count: the residual's own memory stands.
-const MOST_ROWS: usize = 5000;
+/// Part of the noise that a fit takes up, p parameters of n/F samples that count: below this the
+/// residual's own memory, corrected to first order, is as good as the likelihood's.
+const TAKEN_UP: f64 = 0.02;
 /// Bounds of ρ, as its inverse hyperbolic tangent: 0 to 0.998.
 const LOW: f64 = 0.0;
 const HIGH: f64 = 3.5;
@@ -34,6 +35,8 @@ pub struct Memory {
     pub doubtful: (f64, f64),
     /// How many samples count as one: Σ of the autocorrelation over all lags, at least 1.
     pub factor: f64,
+    /// Whether the noise turns about from sample to sample.
+    pub turning: bool,
     /// What of the factor a single ρ does not explain: a longer tail, at least 1.
     pub tail: f64,
 }
@@ -143,7 +146,15 @@ impl Left<'_> {
     fn restricted(&self, rho: f64) -> (f64, f64) {
         let links = links(self.t_s, self.windows, self.usual_s, rho);
         let scales = scales(&links);
-        let mut ln_determinant = -2.0 * scales.iter().map(|s| libm::log(*s)).sum::<f64>();
+        // ln of the scales, worked out once for samples that are as far apart as those before.
+        let (mut scale, mut ln_scale) = (1.0, 0.0);
+        let mut ln_determinant = 0.0;
+        for next in &scales {
+            if *next != scale {
+                (scale, ln_scale) = (*next, libm::log(*next));
+            }
+            ln_determinant -= 2.0 * ln_scale;
+        }
         let mut columns: Vec<Vec<f64>> = std::iter::once(self.residual)
             .chain(self.columns.iter().copied())
             .map(|column| {
@@ -242,34 +253,35 @@ impl Left<'_> {
                 variance: 0.0,
                 doubtful: (0.0, 0.0),
                 factor: 1.0,
+                turning: false,
                 tail: 1.0,
             };
         }
         let seen = products(self.residual, &lengths, 1) / own;
         let start = seen.clamp(0.0, 0.998);
-        let (rho, variance, doubtful) =
-            if self.residual.len() <= MOST_ROWS && !self.columns.is_empty() {
-                let (z, above) = self.most_likely(libm::atanh(start));
-                let rho = libm::tanh(z);
-                let above = libm::tanh(above);
-                (
-                    rho,
-                    self.restricted(rho).1,
-                    (above, self.restricted(above).1),
-                )
-            } else {
-                let c = self.parameters as f64 / rows;
-                // For noise of one time constant the residual shows ρ̂ = (ρ − cF)/(1 − cF), c = p/n,
-                // F = (1+ρ)/(1−ρ): ρ² − ρ(1 + ρ̂ − c(1 − ρ̂)) + ρ̂ + c(1 − ρ̂) = 0; the root that goes to ρ̂
-                // with c → 0.
-                let sum = 1.0 + seen - c * (1.0 - seen);
-                let under_root = sum * sum / 4.0 - seen - c * (1.0 - seen);
-                let rho = (sum / 2.0 - libm::sqrt(under_root.max(0.0))).clamp(0.0, 0.998);
-                let taken = self.parameters as f64 * ((1.0 + rho) / (1.0 - rho)).max(1.0);
-                let variance = own / (rows - taken).max(rows / 4.0);
-                let sd = 1.0 / libm::sqrt(rows * (1.0 - rho * rho));
-                (rho, variance, (libm::tanh(libm::atanh(rho) + sd), variance))
-            };
+        let taken_up = self.parameters as f64 / rows * (1.0 + start) / (1.0 - start);
+        let (rho, variance, doubtful) = if taken_up > TAKEN_UP && !self.columns.is_empty() {
+            let (z, above) = self.most_likely(libm::atanh(start));
+            let rho = libm::tanh(z);
+            let above = libm::tanh(above);
+            (
+                rho,
+                self.restricted(rho).1,
+                (above, self.restricted(above).1),
+            )
+        } else {
+            let c = self.parameters as f64 / rows;
+            // For noise of one time constant the residual shows ρ̂ = (ρ − cF)/(1 − cF), c = p/n,
+            // F = (1+ρ)/(1−ρ): ρ² − ρ(1 + ρ̂ − c(1 − ρ̂)) + ρ̂ + c(1 − ρ̂) = 0; the root that goes to ρ̂
+            // with c → 0.
+            let sum = 1.0 + seen - c * (1.0 - seen);
+            let under_root = sum * sum / 4.0 - seen - c * (1.0 - seen);
+            let rho = (sum / 2.0 - libm::sqrt(under_root.max(0.0))).clamp(0.0, 0.998);
+            let taken = self.parameters as f64 * ((1.0 + rho) / (1.0 - rho)).max(1.0);
+            let variance = own / (rows - taken).max(rows / 4.0);
+            let sd = 1.0 / libm::sqrt(rows * (1.0 - rho * rho));
+            (rho, variance, (libm::tanh(libm::atanh(rho) + sd), variance))
+        };
         let by_one_lag = (1.0 + rho) / (1.0 - rho);
         let by_sum = sum_of_autocorrelation(self.residual, &lengths, own);
         let tail = (by_sum / by_one_lag.max(1.0)).max(1.0);
@@ -278,6 +290,7 @@ impl Left<'_> {
             noise_autocorrelation: rho,
             variance,
             doubtful,
+            turning: seen < -2.0 / libm::sqrt(rows),
             factor: (by_one_lag * tail).min(rows / 4.0).max(1.0),
             tail,
         }
@@ -348,6 +361,27 @@ pub(crate) fn merged_links(links: &[f64], windows: &[Stretch], shared: &[usize])
         .iter()
         .zip(shared)
         .flat_map(|(window, &shared)| links[window.rows.clone()][shared..].iter().copied())
+        .collect()
+}
+
+/// JᵀVJ with the variance of the noise, from the residual itself: what each row brings to the columns, and
+/// what it has in common with the next two, weighted so that no variance comes out negative (W.K. Newey,
+/// K.D. West, Econometrica 55 (1987) 703-708). For noise that turns about: two rows are all it remembers.
+pub(crate) fn from_residual(brought: &[Vec<f64>]) -> Vec<Vec<f64>> {
+    const LAGS: usize = 2;
+    let product = |a: &[f64], b: &[f64]| a.iter().zip(b).map(|(x, y)| x * y).sum::<f64>();
+    brought
+        .iter()
+        .map(|a| {
+            let sum = |b: &Vec<f64>| {
+                let apart = (1..=LAGS.min(a.len().saturating_sub(1))).map(|lag| {
+                    let weight = 1.0 - lag as f64 / (LAGS + 1) as f64;
+                    weight * (product(a, &b[lag..]) + product(b, &a[lag..]))
+                });
+                product(a, b) + apart.sum::<f64>()
+            };
+            brought.iter().map(sum).collect()
+        })
         .collect()
 }
 

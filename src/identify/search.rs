@@ -7,8 +7,9 @@ use crate::model::Kind;
 
 /// Samples of the coarse grid: enough to tell starts apart.
 const COARSE_ROWS: usize = 240;
-/// Samples of the middle search, after which few rounds over all samples are left to do.
-const MIDDLE_ROWS: usize = 4000;
+/// Samples of the middle search, after which few rounds over all samples are left to do; the first for
+/// many samples, where such a round is costly.
+const MIDDLE_ROWS: [usize; 2] = [4000, 500];
 /// How close a search comes to its end, as the square of a part of a standard deviation: for starts,
 /// for many samples, and for few, where rounds cost nothing.
 const ROUGHLY: f64 = 1e-3;
@@ -20,8 +21,9 @@ const FEW_ROWS: usize = 500;
 const MOST_ROWS_FOR_PIECES: usize = 5000;
 /// With so many starts from other fits of the same data no grid is needed.
 const ENOUGH_HINTS: usize = 2;
-/// Pieces searched to either side of the best dead time.
-const PIECES: usize = 6;
+/// Pieces searched to either side of the best dead time: with few samples, and with more, where one
+/// piece differs from the next by less than a thousandth of the sum.
+const PIECES: [usize; 2] = [6, 2];
 
 /// The times that bound a search.
 struct Scales {
@@ -281,8 +283,8 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
     }
     let bounds = bounds(problem, &scales);
     let mut starts = coarse(problem, kind, &scales, &bounds, hints);
-    if rows > 2 * MIDDLE_ROWS {
-        let some = thinned(problem, MIDDLE_ROWS);
+    if let Some(middle) = MIDDLE_ROWS.into_iter().find(|middle| rows > 2 * middle) {
+        let some = thinned(problem, middle);
         let mut prepared = Prepared::new(&some, kind);
         let found = starts
             .iter()
@@ -363,8 +365,9 @@ fn pieces(problem: &Problem, best_s: f64, interval_s: f64) -> Vec<(f64, f64)> {
     corners.sort_by(f64::total_cmp);
     corners.dedup_by(|a, b| (*a - *b).abs() < 1e-6 * interval_s);
     let here = corners.partition_point(|c| *c <= best_s);
-    let low = here.saturating_sub(PIECES + 1);
-    let high = (here + PIECES).min(corners.len());
+    let each = PIECES[usize::from(problem.rows() > FEW_ROWS)];
+    let low = here.saturating_sub(each + 1);
+    let high = (here + each).min(corners.len());
     let mut found: Vec<(f64, f64)> = corners[low..high]
         .windows(2)
         .map(|w| (w[0], w[1]))

@@ -188,7 +188,10 @@ impl Count {
 /// 500 tests of each kind in each noise. At a true 95 % their share has a standard deviation of 1 %.
 ///
 /// Where the lags of a second order cannot be told apart, an end of their interval is the bound of equal
-/// lags, which cannot be missed: τ₂ is held from below alone. In logs made by exception the noise has less than no memory, which is not made use of.
+/// lags, which cannot be missed: τ₂ is held from below alone.
+/// What logs made by exception hold is chosen by their noise: a ramp is first stored where noise had helped
+/// it over the dead band, so that the dead time of an integrating process, whose answer begins as a ramp,
+/// comes out short there by a part of its interval.
 #[test]
 #[expect(clippy::print_stdout, reason = "figures for who asks for them")]
 fn intervals_hold_the_truth_as_often_as_they_say() {
