@@ -358,7 +358,7 @@ impl Trace {
 
 /// Stretches longer than three times the median interval without a good sample.
 pub fn gaps(t_s_good: &[f64]) -> Vec<Gap> {
-    let limit = 3.0 * median_interval(t_s_good);
+    let limit = longest_unbroken_s(median_interval(t_s_good));
     t_s_good
         .windows(2)
         .filter(|w| w[1] - w[0] > limit)
@@ -369,12 +369,22 @@ pub fn gaps(t_s_good: &[f64]) -> Vec<Gap> {
         .collect()
 }
 
+/// The longest time between good samples that is no gap, s: three times the usual interval.
+pub fn longest_unbroken_s(interval_s: f64) -> f64 {
+    3.0 * interval_s
+}
+
 /// Median of the differences of increasing times, s; 0 for fewer than two.
 pub fn median_interval(t_s: &[f64]) -> f64 {
-    let mut differences: Vec<f64> = t_s.windows(2).map(|w| w[1] - w[0]).collect();
-    if differences.is_empty() {
-        return 0.0;
+    median(&mut t_s.windows(2).map(|w| w[1] - w[0]).collect::<Vec<_>>())
+}
+
+/// Median of some values, the upper one of two; 0 where there are none. Their order is lost.
+pub fn median(values: &mut [f64]) -> f64 {
+    // The intervals of most logs are all the same.
+    if values.windows(2).all(|pair| pair[0] == pair[1]) {
+        return values.first().copied().unwrap_or(0.0);
     }
-    let middle = differences.len() / 2;
-    *differences.select_nth_unstable_by(middle, f64::total_cmp).1
+    let middle = values.len() / 2;
+    *values.select_nth_unstable_by(middle, f64::total_cmp).1
 }

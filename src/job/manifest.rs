@@ -257,17 +257,6 @@ fn read_job(reader: &mut Reader<'_>, job: &Table<'_>) -> Option<Manifest> {
             .replace("{tag}", "DOSSIER")
             .replace("{n}", "DOSSIER")
     });
-    for (key, number) in [("document", &document), ("dossier", &dossier)] {
-        if let Some(letter) = unfit_for_file_name(number) {
-            reader.wrong(
-                job,
-                key,
-                &format!(
-                    "the document number holds \"{letter}\", which cannot stand in a file name"
-                ),
-            );
-        }
-    }
     Some(Manifest {
         plant: plant?,
         owner: owner?,
@@ -287,14 +276,6 @@ fn read_job(reader: &mut Reader<'_>, job: &Table<'_>) -> Option<Manifest> {
         logs: Vec::new(),
         design_bounds: DesignBounds::default(),
         verdict_bounds: VerdictBounds::default(),
-    })
-}
-
-/// The first letter of a document number that some file system does not take.
-pub fn unfit_for_file_name(number: &str) -> Option<char> {
-    number.chars().find(|letter| {
-        letter.is_control()
-            || matches!(letter, '/' | '\\' | ':' | '*' | '?' | '"' | '<' | '>' | '|')
     })
 }
 

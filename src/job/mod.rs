@@ -162,11 +162,6 @@ impl Job {
             .map(|row| {
                 let row = row.as_ref().ok()?;
                 let number = self.document(row).number;
-                if let Some(letter) = manifest::unfit_for_file_name(&number) {
-                    return Some(row.refused(format!(
-                        "the document number {number} holds \"{letter}\", which cannot stand in a file name; use {{n}} in the document number of job.toml"
-                    )));
-                }
                 if number.to_lowercase() == dossier {
                     return Some(row.refused(format!(
                         "the document number {number} is that of the dossier"

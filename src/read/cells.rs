@@ -1,16 +1,22 @@
 //! The cells of a loop's signals as samples.
 
 use super::collect::BadCells;
+use super::columns::Columns;
 use super::extract::Understood;
 use super::headings::Role;
 use super::numbers::DecimalSign;
-use super::table::{Cell, Row};
+use super::order::Ordered;
+use super::rows::Rows;
+use super::series::Series;
+use super::table::Row;
 use super::tracks::{Track, Tracks};
 use super::values::{self, Value};
 use super::{LogRequest, LogRule};
 use crate::notice::{Place, Problem};
 use crate::quantity::Span;
 use std::collections::BTreeMap;
+use std::ops::Range;
+use std::rc::Rc;
 
 /// Samples farther outside the range than this part of it are bad.
 const OUTSIDE_RANGE: f64 = 0.10;
@@ -24,9 +30,8 @@ pub(super) struct FileSamples {
     pub t_us: Vec<i64>,
     pub pv: Vec<f64>,
     pub good: Vec<bool>,
-    /// Why a sample is bad, an index into `causes`.
-    pub cause: Vec<Option<usize>>,
-    pub causes: Vec<String>,
+    /// Bad samples by cause.
+    pub bad: BTreeMap<String, usize>,
     pub op: Vec<f64>,
     pub sp: Option<Vec<f64>>,
     pub mode: Option<Vec<String>>,
@@ -40,43 +45,47 @@ impl FileSamples {
             .count()
     }
 
-    /// Bad samples by cause.
-    pub fn bad_by_cause(&self) -> BTreeMap<String, usize> {
-        let mut counts = BTreeMap::new();
-        for cause in self.cause.iter().flatten() {
-            *counts.entry(self.causes[*cause].clone()).or_insert(0) += 1;
-        }
-        counts
-    }
-
-    fn cause(&mut self, text: &str) -> usize {
-        match self.causes.iter().position(|known| known == text) {
-            Some(index) => index,
-            None => {
-                self.causes.push(text.to_owned());
-                self.causes.len() - 1
-            }
-        }
-    }
-
-    fn push_pv(&mut self, t_us: i64, reading: Reading) {
+    pub fn push_pv(&mut self, t_us: i64, reading: Reading) {
         self.t_us.push(t_us);
         self.pv.push(reading.value);
         self.good.push(reading.bad.is_none());
-        let cause = reading.bad.map(|text| self.cause(&text));
-        self.cause.push(cause);
+        self.count(reading.bad);
+    }
+
+    fn count(&mut self, bad: Option<String>) {
+        if let Some(cause) = bad {
+            *self.bad.entry(cause).or_insert(0) += 1;
+        }
     }
 }
 
 /// A value, and why it is bad where it is.
-struct Reading {
-    value: f64,
-    bad: Option<String>,
+#[derive(Debug, Clone)]
+pub(super) struct Reading {
+    pub value: f64,
+    pub bad: Option<String>,
+}
+
+impl Reading {
+    /// Of a time at which the PV was not sampled.
+    pub const NONE: Reading = Reading {
+        value: f64::NAN,
+        bad: None,
+    };
+}
+
+/// Where a cell stands: its row in the table, and its column.
+#[derive(Clone, Copy)]
+struct At {
+    row: usize,
+    column: usize,
 }
 
 /// Reads the cells of a loop's signals.
 pub(super) struct CellReader<'a> {
     pub understood: &'a Understood<'a>,
+    /// Column of the PV's quality.
+    pub quality: Option<usize>,
     pub decimal: DecimalSign,
     pub rule: &'a LogRule,
     pub request: &'a LogRequest,
@@ -93,17 +102,50 @@ impl CellReader<'_> {
     /// Where a cell is neither a number nor a known text for a bad sample.
     pub fn samples(
         &self,
-        tracks: &Tracks,
+        tracks: Tracks,
+        columns: &mut Columns,
         wanted: (i64, i64),
         warnings: &mut Vec<Problem>,
     ) -> Result<FileSamples, Vec<Problem>> {
+        let roles = &self.understood.roles;
+        if roles.long || !roles.own_times.is_empty() {
+            let series = self.series(&tracks, columns, wanted, warnings)?;
+            return Ok(series.join(wanted.0));
+        }
         let mut bad_cells = BadCells::default();
         let mut lost = BTreeMap::new();
-        let samples = if self.understood.roles.long {
-            self.joined(tracks, wanted, &mut bad_cells, &mut lost)
-        } else {
-            self.side_by_side(tracks, wanted, &mut bad_cells, &mut lost, warnings)
-        };
+        let samples =
+            self.side_by_side(tracks, columns, wanted, &mut bad_cells, &mut lost, warnings);
+        self.tell(bad_cells, lost, warnings)?;
+        Ok(samples)
+    }
+
+    /// The signals within `wanted`, each at its own times; what OP, SP and mode were before is kept, since it
+    /// is still held within.
+    ///
+    /// # Errors
+    /// As [`CellReader::samples`].
+    pub fn series(
+        &self,
+        tracks: &Tracks,
+        columns: &mut Columns,
+        wanted: (i64, i64),
+        warnings: &mut Vec<Problem>,
+    ) -> Result<Series, Vec<Problem>> {
+        let mut bad_cells = BadCells::default();
+        let mut lost = BTreeMap::new();
+        let series = self.each_signal(tracks, columns, wanted, &mut bad_cells, &mut lost);
+        self.tell(bad_cells, lost, warnings)?;
+        Ok(series)
+    }
+
+    /// Refuses what cannot be read, warns of what was lost.
+    fn tell(
+        &self,
+        bad_cells: BadCells,
+        lost: BTreeMap<Role, Lost>,
+        warnings: &mut Vec<Problem>,
+    ) -> Result<(), Vec<Problem>> {
         bad_cells.finish(self.understood.table.place())?;
         for (role, Lost(causes)) in lost {
             let total: usize = causes.values().sum();
@@ -121,7 +163,7 @@ impl CellReader<'_> {
                 ),
             ));
         }
-        Ok(samples)
+        Ok(())
     }
 
     fn place(&self, row: Row<'_>, column: usize) -> Place {
@@ -133,8 +175,16 @@ impl CellReader<'_> {
             .column(column, (!heading.is_empty()).then_some(heading.as_str()))
     }
 
-    /// A cell of PV, OP or SP; a cell that cannot be read is put among the bad ones.
-    fn value(&self, row: Row<'_>, column: usize, bad_cells: &mut BadCells) -> Reading {
+    /// A cell of PV, OP or SP; `number` is what it plainly holds, NaN where it does not. A cell that
+    /// cannot be read is put among the bad ones.
+    fn value(&self, at: At, number: f64, bad_cells: &mut BadCells) -> Reading {
+        if !number.is_nan() {
+            return Reading {
+                value: number,
+                bad: None,
+            };
+        }
+        let (row, column) = (self.understood.table.row(at.row), at.column);
         let cell = row.cell(column);
         match values::value(cell, self.decimal, &self.rule.bad_values) {
             Value::Number(value) => Reading { value, bad: None },
@@ -159,9 +209,9 @@ impl CellReader<'_> {
     }
 
     /// Why a sample is bad for its quality, where it is.
-    fn bad_quality(&self, row: Row<'_>, bad_cells: &mut BadCells) -> Option<String> {
-        let column = self.understood.roles.column(Role::Quality)?;
-        let cell = row.cell(column);
+    fn bad_quality(&self, row: usize, bad_cells: &mut BadCells) -> Option<String> {
+        let column = self.quality?;
+        let cell = self.understood.table.cell(row, column);
         match values::is_good(cell, &self.rule.bad_values) {
             Some(true) => None,
             Some(false) => Some(format!("quality {}", cell.text())),
@@ -171,7 +221,7 @@ impl CellReader<'_> {
             None => {
                 bad_cells.add(|| {
                     Problem::error(
-                        self.place(row, column),
+                        self.place(self.understood.table.row(row), column),
                         format!("\"{}\" is not a known quality", cell.text()),
                     )
                     .hint("name it under bad_values in a [[log]] table of job.toml where it means a bad sample, or name another quality column")
@@ -182,11 +232,11 @@ impl CellReader<'_> {
     }
 
     /// The PV of a row in the schedule's unit.
-    fn pv(&self, row: Row<'_>, column: usize, bad_cells: &mut BadCells) -> Reading {
-        let mut reading = self.value(row, column, bad_cells);
+    fn pv(&self, at: At, number: f64, bad_cells: &mut BadCells) -> Reading {
+        let mut reading = self.value(at, number, bad_cells);
         reading.value = self.scaled(reading.value);
         if reading.bad.is_none() {
-            reading.bad = self.bad_quality(row, bad_cells).or_else(|| {
+            reading.bad = self.bad_quality(at.row, bad_cells).or_else(|| {
                 is_outside(reading.value, self.request.pv_span)
                     .then(|| "outside the range".to_owned())
             });
@@ -201,13 +251,13 @@ impl CellReader<'_> {
     /// OP or SP of a row; NaN where it holds none.
     fn other(
         &self,
-        row: Row<'_>,
-        column: usize,
+        at: At,
+        number: f64,
         role: Role,
         bad_cells: &mut BadCells,
         lost: &mut BTreeMap<Role, Lost>,
     ) -> f64 {
-        let mut reading = self.value(row, column, bad_cells);
+        let mut reading = self.value(at, number, bad_cells);
         let span = if role == Role::Op {
             self.request.op_span
         } else {
@@ -227,17 +277,36 @@ impl CellReader<'_> {
         }
     }
 
-    /// A table with the signals side by side: one sample per row.
+    /// A table with the signals side by side: one sample per row. The columns themselves become the
+    /// samples.
     fn side_by_side(
         &self,
-        tracks: &Tracks,
+        tracks: Tracks,
+        columns: &mut Columns,
         wanted: (i64, i64),
         bad_cells: &mut BadCells,
         lost: &mut BTreeMap<Role, Lost>,
         warnings: &mut Vec<Problem>,
     ) -> FileSamples {
         let table = self.understood.table;
-        let own_times = self.has_own_times(tracks, wanted);
+        let column_of = |track: Option<Track>| track.map(|track| track.column);
+        let (op, sp) = (column_of(tracks.op), column_of(tracks.sp));
+        let mode = column_of(tracks.mode);
+        let Some(pv) = tracks.pv else {
+            return FileSamples::default();
+        };
+        let pv_column = pv.column;
+        // Nobody shares the order any more.
+        let Ordered { mut t_us, rows, .. } = Rc::unwrap_or_clone(pv.ordered);
+        let within = within(&t_us, wanted);
+        let rows = rows.pick(&Rows::Run(within.clone()));
+        t_us.truncate(within.end);
+        t_us.drain(..within.start);
+        let mut pv = columns.take(pv_column, &rows);
+        let mut op = op.map(|column| (column, columns.take(column, &rows)));
+        let mut sp = sp.map(|column| (column, columns.take(column, &rows)));
+        let op_numbers = op.as_ref().map(|(column, op)| (*column, op.as_slice()));
+        let own_times = self.has_own_times(&rows, (pv_column, &pv), op_numbers);
         if own_times {
             warnings.push(Problem::warning(
                 table.place(),
@@ -245,95 +314,112 @@ impl CellReader<'_> {
             ));
         }
         let mut samples = FileSamples {
-            sp: tracks.sp.as_ref().map(|_| Vec::new()),
-            mode: tracks.mode.as_ref().map(|_| Vec::new()),
+            good: Vec::with_capacity(rows.len()),
+            mode: mode.map(|_| Vec::new()),
             ..FileSamples::default()
         };
         let mut mode_held = String::new();
-        for (t_us, index) in within(&tracks.pv, wanted) {
-            let row = table.row(index);
-            let is_empty = |column: usize| row.cell(column).is_empty();
-            if own_times && is_empty(tracks.pv.column) {
-                samples.push_pv(
-                    t_us,
-                    Reading {
-                        value: f64::NAN,
-                        bad: None,
-                    },
-                );
-            } else {
-                let reading = self.pv(row, tracks.pv.column, bad_cells);
-                samples.push_pv(t_us, reading);
-            }
-            let mut other = |track: &Track, role: Role| {
-                if own_times && is_empty(track.column) {
-                    f64::NAN
-                } else {
-                    self.other(row, track.column, role, bad_cells, lost)
-                }
+        for (k, row) in rows.iter().enumerate() {
+            let not_sampled = |column: usize, number: f64| {
+                own_times && number.is_nan() && table.cell(row, column).is_empty()
             };
-            samples.op.push(
-                tracks
-                    .op
-                    .as_ref()
-                    .map_or(f64::NAN, |op| other(op, Role::Op)),
-            );
-            if let (Some(sp), Some(track)) = (&mut samples.sp, &tracks.sp) {
-                sp.push(other(track, Role::Sp));
+            let at = |column: usize| At { row, column };
+            let reading = if not_sampled(pv_column, pv[k]) {
+                Reading::NONE
+            } else {
+                self.pv(at(pv_column), pv[k], bad_cells)
+            };
+            pv[k] = reading.value;
+            samples.good.push(reading.bad.is_none());
+            samples.count(reading.bad);
+            for (role, signal) in [(Role::Op, &mut op), (Role::Sp, &mut sp)] {
+                if let Some((column, numbers)) = signal
+                    && !not_sampled(*column, numbers[k])
+                {
+                    numbers[k] = self.other(at(*column), numbers[k], role, bad_cells, lost);
+                }
             }
-            if let (Some(mode), Some(track)) = (&mut samples.mode, &tracks.mode) {
-                let cell = row.cell(track.column);
+            if let (Some(modes), Some(column)) = (&mut samples.mode, mode) {
+                let cell = table.cell(row, column);
                 if !cell.is_empty() {
                     mode_held = cell.text();
                 }
-                mode.push(mode_held.clone());
+                modes.push(mode_held.clone());
             }
         }
+        samples.op = op.map_or_else(|| vec![f64::NAN; rows.len()], |(_, op)| op);
+        samples.sp = sp.map(|(_, sp)| sp);
+        samples.pv = pv;
+        samples.t_us = t_us;
         samples
     }
 
     /// Whether PV and OP stand in rows of their own.
-    fn has_own_times(&self, tracks: &Tracks, wanted: (i64, i64)) -> bool {
-        let Some(op) = &tracks.op else { return false };
-        let (mut rows, mut pv_only, mut op_only) = (0, 0, 0);
-        for (_, index) in within(&tracks.pv, wanted) {
-            let row = self.understood.table.row(index);
-            let has = |column: usize| !matches!(row.cell(column), Cell::Empty);
-            rows += 1;
-            pv_only += usize::from(has(tracks.pv.column) && !has(op.column));
-            op_only += usize::from(!has(tracks.pv.column) && has(op.column));
+    fn has_own_times(
+        &self,
+        rows: &Rows,
+        (pv, pv_numbers): (usize, &[f64]),
+        op: Option<(usize, &[f64])>,
+    ) -> bool {
+        let Some((op, op_numbers)) = op else {
+            return false;
+        };
+        let (mut pv_only, mut op_only) = (0, 0);
+        for (k, row) in rows.iter().enumerate() {
+            let has = |column: usize, number: f64| {
+                !number.is_nan() || !self.understood.table.cell(row, column).is_empty()
+            };
+            let (has_pv, has_op) = (has(pv, pv_numbers[k]), has(op, op_numbers[k]));
+            pv_only += usize::from(has_pv && !has_op);
+            op_only += usize::from(!has_pv && has_op);
         }
-        let share = |count: usize| count as f64 > OWN_TIMES * rows as f64;
+        let share = |count: usize| count as f64 > OWN_TIMES * rows.len() as f64;
         share(pv_only) && share(op_only)
     }
 
-    /// A long table: PV at its own times, OP, SP and mode held; an OP move between two samples of
-    /// the PV gets a row of its own, without a PV, so that its time is kept.
-    fn joined(
+    /// Each signal on its own.
+    fn each_signal(
         &self,
         tracks: &Tracks,
+        columns: &mut Columns,
         wanted: (i64, i64),
         bad_cells: &mut BadCells,
         lost: &mut BTreeMap<Role, Lost>,
-    ) -> FileSamples {
+    ) -> Series {
         let table = self.understood.table;
+        let until = (i64::MIN, wanted.1);
+        let is_long = self.understood.roles.long;
+        let pv = tracks.pv.as_ref().map(|Track { column, ordered }| {
+            let numbers = columns.pick(*column, &ordered.rows);
+            let read = |k: usize| {
+                let (row, column) = (ordered.rows.get(k), *column);
+                let reading = self.pv(At { row, column }, numbers[k], bad_cells);
+                (ordered.t_us[k], reading)
+            };
+            within(&ordered.t_us, wanted).map(read).collect()
+        });
         let mut series = |track: &Option<Track>, role: Role| -> Option<Vec<(i64, f64)>> {
-            let track = track.as_ref()?;
-            // What stood before the cut is still held in it.
-            let until = (i64::MIN, wanted.1);
-            let read = |(t_us, index)| {
-                let row = table.row(index);
-                let value = match self.bad_quality(row, bad_cells) {
-                    None => self.other(row, track.column, role, bad_cells, lost),
+            let Track { column, ordered } = track.as_ref()?;
+            let numbers = columns.pick(*column, &ordered.rows);
+            let read = |k: usize| {
+                let (row, column) = (ordered.rows.get(k), *column);
+                // In a long table each row has its own quality; else the column is that of the PV.
+                let quality = if is_long {
+                    self.bad_quality(row, bad_cells)
+                } else {
+                    None
+                };
+                let value = match quality {
+                    None => self.other(At { row, column }, numbers[k], role, bad_cells, lost),
                     Some(cause) => {
                         let Lost(causes) = lost.entry(role).or_default();
                         *causes.entry(cause).or_insert(0) += 1;
                         f64::NAN
                     }
                 };
-                (t_us, value)
+                (ordered.t_us[k], value)
             };
-            let values: Vec<(i64, f64)> = within(track, until).map(read).collect();
+            let values: Vec<(i64, f64)> = within(&ordered.t_us, until).map(read).collect();
             Some(
                 values
                     .into_iter()
@@ -341,66 +427,28 @@ impl CellReader<'_> {
                     .collect(),
             )
         };
-        let op = series(&tracks.op, Role::Op).unwrap_or_default();
+        let op = series(&tracks.op, Role::Op);
         let sp = series(&tracks.sp, Role::Sp);
-        let mode: Option<Vec<(i64, String)>> = tracks.mode.as_ref().map(|track| {
-            within(track, (i64::MIN, wanted.1))
-                .map(|(t_us, index)| (t_us, table.row(index).cell(track.column).text()))
+        let mode = tracks.mode.as_ref().map(|Track { column, ordered }| {
+            within(&ordered.t_us, until)
+                .map(|k| {
+                    (
+                        ordered.t_us[k],
+                        table.cell(ordered.rows.get(k), *column).text(),
+                    )
+                })
                 .filter(|(_, mode)| !mode.is_empty())
                 .collect()
         });
-        let mut moves: Vec<i64> = op
-            .windows(2)
-            .filter(|pair| pair[1].1 != pair[0].1 && pair[1].0 >= wanted.0)
-            .map(|pair| pair[1].0)
-            .collect();
-        moves.reverse();
-        let mut samples = FileSamples::default();
-        let not_sampled = || Reading {
-            value: f64::NAN,
-            bad: None,
-        };
-        for (t_us, index) in within(&tracks.pv, wanted) {
-            while let Some(at) = moves.pop_if(|at| *at <= t_us) {
-                if at < t_us {
-                    samples.push_pv(at, not_sampled());
-                }
-            }
-            let reading = self.pv(table.row(index), tracks.pv.column, bad_cells);
-            samples.push_pv(t_us, reading);
-        }
-        while let Some(at) = moves.pop() {
-            samples.push_pv(at, not_sampled());
-        }
-        samples.op = held(&samples.t_us, &op, f64::NAN);
-        samples.sp = sp.map(|sp| held(&samples.t_us, &sp, f64::NAN));
-        samples.mode = mode.map(|mode| held(&samples.t_us, &mode, String::new()));
-        samples
+        Series { pv, op, sp, mode }
     }
 }
 
-/// Moments of a track within `wanted`, each with its row of the table.
-fn within(track: &Track, wanted: (i64, i64)) -> impl Iterator<Item = (i64, usize)> {
-    let t_us = &track.ordered.t_us;
+/// Places of the moments within `wanted`.
+fn within(t_us: &[i64], wanted: (i64, i64)) -> Range<usize> {
     let first = t_us.partition_point(|t| *t < wanted.0);
     let end = t_us.partition_point(|t| *t <= wanted.1).max(first);
-    (first..end).map(|k| (t_us[k], track.rows[track.ordered.rows[k]]))
-}
-
-/// The value that holds at each time: the last one at or before it.
-fn held<T: Clone>(t_us: &[i64], series: &[(i64, T)], before: T) -> Vec<T> {
-    let mut next = 0;
-    t_us.iter()
-        .map(|t| {
-            while series.get(next).is_some_and(|(at, _)| at <= t) {
-                next += 1;
-            }
-            match next {
-                0 => before.clone(),
-                _ => series[next - 1].1.clone(),
-            }
-        })
-        .collect()
+    first..end
 }
 
 fn is_outside(value: f64, span: Option<Span>) -> bool {

@@ -1,7 +1,8 @@
 //! The time column of a log: which way its dates are written, and the moments of its rows.
 
-use super::dates::date_order;
+use super::dates::{PLAIN_ORDER, date_order};
 use super::numbers::{DecimalSign, number};
+use super::rows::Rows;
 use super::stamp::{DateOrder, DateText, MICROSECONDS, Stamp, stamp};
 use super::table::{Cell, Table};
 use super::units::TimeUnit;
@@ -14,7 +15,10 @@ pub const DAY_US: i64 = 86_400 * MICROSECONDS;
 
 /// No log reaches farther from its clock's zero than 2,800 years; differences of moments within it
 /// cannot overflow.
-const FARTHEST_US: i64 = 1_000_000 * DAY_US;
+pub(super) const FARTHEST_US: i64 = 1_000_000 * DAY_US;
+
+/// In the place of a moment where a row holds no readable time.
+pub const NO_TIME: i64 = i64::MIN;
 
 /// Where the time of a row stands.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -78,15 +82,33 @@ impl Scale {
 /// The moments of a table's rows.
 #[derive(Debug, Clone)]
 pub struct Moments {
-    /// Per row asked for: microseconds since 1970-01-01 on the shown clock, or elapsed; `None`
-    /// where the row holds no readable time.
-    pub t_us: Vec<Option<i64>>,
+    /// Per row asked for: microseconds since 1970-01-01 on the shown clock, or elapsed;
+    /// [`NO_TIME`] where the row holds no readable time.
+    pub t_us: Vec<i64>,
     /// How they are to be understood.
     pub scale: Scale,
     /// How they are written, in words.
     pub format: String,
     /// What was assumed and should be told.
     pub warnings: Vec<Problem>,
+    /// What the shown clock is ahead of universal time, microseconds, where the log tells it.
+    pub offset_us: Option<i64>,
+    /// Order of day and month, where it had to be found.
+    pub dates: Option<DateOrder>,
+}
+
+impl Moments {
+    /// Shows the moments on a clock that is `offset_us` ahead of universal time, where their own offset is
+    /// known: a later file goes on with the clock of the first.
+    pub fn go_by(&mut self, offset_us: Option<i64>) {
+        let (Some(wanted), Some(own)) = (offset_us, self.offset_us) else {
+            return;
+        };
+        for t_us in self.t_us.iter_mut().filter(|t_us| **t_us != NO_TIME) {
+            *t_us += wanted - own;
+        }
+        self.offset_us = Some(wanted);
+    }
 }
 
 /// One row's time before the whole column is understood.
@@ -175,7 +197,7 @@ fn paired(date: RowTime, time: RowTime) -> RowTime {
 /// Where the order of day and month cannot be told, or no row holds a time.
 pub fn read(
     table: &Table,
-    rows: &[usize],
+    rows: &Rows,
     columns: TimeColumns,
     rules: &ClockRules<'_>,
 ) -> Result<Moments, Problem> {
@@ -185,9 +207,8 @@ pub fn read(
     };
     let times: Vec<RowTime> = rows
         .iter()
-        .map(|&index| {
-            let row = table.row(index);
-            let read = |column| row_time(row.cell(column), rules.decimal);
+        .map(|index| {
+            let read = |column| row_time(table.cell(index, column), rules.decimal);
             match columns {
                 TimeColumns::Pair { date, time } => paired(read(date), read(time)),
                 _ => read(column),
@@ -197,7 +218,7 @@ pub fn read(
     let place = |k: usize| {
         table
             .place()
-            .row(table.row(rows[k]).number)
+            .row(table.row(rows.get(k)).number)
             .column(column, rules.heading)
     };
     let count = |is: fn(&RowTime) -> bool| times.iter().filter(|time| is(time)).count();
@@ -237,7 +258,7 @@ pub fn read(
     };
     if let TimeColumns::Pair { date, .. } = columns
         && matches!(
-            rows.first().map(|&index| table.row(index).cell(date)),
+            rows.iter().next().map(|index| table.cell(index, date)),
             Some(Cell::Date(_))
         )
     {
@@ -245,7 +266,9 @@ pub fn read(
             .clone_into(&mut moments.format);
     }
     for t_us in &mut moments.t_us {
-        *t_us = t_us.filter(|t| t.abs() <= FARTHEST_US);
+        if t_us.saturating_abs() > FARTHEST_US {
+            *t_us = NO_TIME;
+        }
     }
     Ok(moments)
 }
@@ -254,26 +277,47 @@ pub fn read(
 fn counted(rows: usize, interval_s: f64) -> Moments {
     Moments {
         t_us: (0..rows)
-            .map(|k| Some(libm::round(k as f64 * interval_s * 1e6) as i64))
+            .map(|k| libm::round(k as f64 * interval_s * 1e6) as i64)
             .collect(),
         scale: Scale::Elapsed,
         format: format!("no clock; one row every {interval_s} s as given in job.toml"),
         warnings: Vec::new(),
+        offset_us: None,
+        dates: None,
     }
 }
 
 fn real_dates(times: &[RowTime]) -> Moments {
-    Moments {
-        t_us: times
-            .iter()
-            .map(|time| match time {
-                RowTime::Cell(at) => Some(microseconds(*at)),
-                _ => None,
-            })
-            .collect(),
-        scale: Scale::Local,
-        format: "real dates of the workbook".to_owned(),
-        warnings: Vec::new(),
+    let t_us = times.iter().map(|time| match time {
+        RowTime::Cell(at) => microseconds(*at),
+        _ => NO_TIME,
+    });
+    Moments::of_real_dates(t_us.collect())
+}
+
+impl Moments {
+    /// The moments of a workbook's own dates.
+    pub(super) fn of_real_dates(t_us: Vec<i64>) -> Self {
+        Moments {
+            t_us,
+            scale: Scale::Local,
+            format: "real dates of the workbook".to_owned(),
+            warnings: Vec::new(),
+            offset_us: None,
+            dates: None,
+        }
+    }
+
+    /// The moments of dates and times of day as text whose order is plain in each.
+    pub(super) fn of_plain_text(t_us: Vec<i64>) -> Self {
+        Moments {
+            t_us,
+            scale: Scale::Local,
+            format: format!("dates as text, {PLAIN_ORDER}"),
+            warnings: Vec::new(),
+            offset_us: None,
+            dates: None,
+        }
     }
 }
 
@@ -290,8 +334,8 @@ fn times_of_day(times: &[RowTime], rules: &ClockRules<'_>) -> Moments {
                     date: None,
                     time_us: Some(time_us),
                     ..
-                }) => Some(base + time_us),
-                _ => None,
+                }) => base.saturating_add(*time_us),
+                _ => NO_TIME,
             })
             .collect(),
         scale: Scale::TimeOfDay { dated },
@@ -301,6 +345,8 @@ fn times_of_day(times: &[RowTime], rules: &ClockRules<'_>) -> Moments {
             "hours, minutes and seconds without a date: counted from the first row".to_owned()
         },
         warnings: Vec::new(),
+        offset_us: None,
+        dates: None,
     }
 }
 
@@ -343,23 +389,23 @@ fn dates_as_text(
         RowTime::Stamp(stamp) => offset_us(stamp),
         _ => None,
     });
-    let t_us = times
-        .iter()
-        .map(|time| {
-            let RowTime::Stamp(stamp) = time else {
-                return None;
-            };
-            let date = stamp.date?.date(order)?;
-            let local = microseconds(date.and_time(NaiveTime::MIN)) + stamp.time_us.unwrap_or(0);
-            if with_offset == 0 {
-                return Some(local);
-            }
-            // A row without an offset among rows that have one cannot be placed.
-            Some(local - offset_us(stamp)? + first_offset_us?)
-        })
-        .collect();
+    let moment_of = |time: &RowTime| {
+        let RowTime::Stamp(stamp) = time else {
+            return None;
+        };
+        let date = stamp.date?.date(order)?;
+        let local = microseconds(date.and_time(NaiveTime::MIN)) + stamp.time_us.unwrap_or(0);
+        if with_offset == 0 {
+            return Some(local);
+        }
+        // A row without an offset among rows that have one cannot be placed.
+        Some(local - offset_us(stamp)? + first_offset_us?)
+    };
     Ok(Moments {
-        t_us,
+        t_us: times
+            .iter()
+            .map(|time| moment_of(time).unwrap_or(NO_TIME))
+            .collect(),
         scale: if with_offset > 0 {
             Scale::Even
         } else {
@@ -371,6 +417,8 @@ fn dates_as_text(
             format!("dates as text, {why}")
         },
         warnings: Vec::new(),
+        offset_us: first_offset_us.filter(|_| with_offset > 0),
+        dates: (!dates.is_empty()).then_some(order),
     })
 }
 
@@ -431,6 +479,7 @@ fn plain_numbers(
     let count = what_it_counts(&values, rules.unit);
     let mut warnings = Vec::new();
     let mut zone_offset_us = 0;
+    let is_epoch = matches!(count, Count::Epoch { .. });
     let (scale, format) = match count {
         Count::Serial => (
             Scale::Local,
@@ -482,13 +531,15 @@ fn plain_numbers(
         t_us: times
             .iter()
             .map(|time| match time {
-                RowTime::Number(number) => Some(to_us(*number)),
-                _ => None,
+                RowTime::Number(number) => to_us(*number),
+                _ => NO_TIME,
             })
             .collect(),
         scale,
         format,
         warnings,
+        offset_us: is_epoch.then_some(zone_offset_us),
+        dates: None,
     }
 }
 

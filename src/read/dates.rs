@@ -4,6 +4,9 @@ use super::stamp::{DateOrder, DateText};
 use crate::notice::{Place, Problem};
 use chrono::NaiveDate;
 
+/// Why the order is known where every date has its year first or its month as a word.
+pub(super) const PLAIN_ORDER: &str = "the year first or the month as a word";
+
 /// The orders that a date of three numbers can be in.
 fn candidates(date: DateText) -> &'static [DateOrder] {
     match date {
@@ -71,10 +74,7 @@ pub fn date_order(
     place: impl Fn(usize) -> Place,
 ) -> Result<(DateOrder, String), Problem> {
     let Some((_, first)) = dates.first().copied() else {
-        return Ok((
-            DateOrder::YearFirst,
-            "the year first or the month as a word".to_owned(),
-        ));
+        return Ok((DateOrder::YearFirst, PLAIN_ORDER.to_owned()));
     };
     if let Some(order) = given {
         return Ok((

@@ -69,12 +69,79 @@ impl TextCells {
             places_of_row: Vec::new(),
             unquoted: BTreeMap::new(),
         };
-        cells.find_rows(skipped)?;
+        if cells.is_simple() {
+            cells.find_lines(skipped);
+        } else {
+            cells.find_rows(skipped)?;
+        }
         cells.starts.shrink_to_fit();
         cells.places.shrink_to_fit();
         Ok(cells)
     }
 
+    /// Whether every line is a row and every delimiter ends a cell.
+    fn is_simple(&self) -> bool {
+        let bytes = self.text.as_bytes();
+        let ends_line = |at: usize| bytes.get(at + 1) == Some(&b'\n');
+        !self.quoted && memchr::memchr_iter(b'\r', bytes).all(ends_line)
+    }
+
+    /// Finds the rows of a text whose lines they are.
+    fn find_lines(&mut self, skipped: usize) {
+        let text = std::mem::take(&mut self.text);
+        let bytes = text.as_bytes();
+        let mut line = 1 + memchr::memchr_iter(b'\n', &bytes[..skipped]).count();
+        let mut begins = skipped;
+        while begins < bytes.len() {
+            let end =
+                memchr::memchr(b'\n', &bytes[begins..]).map_or(bytes.len(), |past| begins + past);
+            let row = bytes[begins..end]
+                .strip_suffix(b"\r")
+                .unwrap_or(&bytes[begins..end]);
+            let delimiters = memchr::memchr_iter(self.delimiter, row).count();
+            let is_full = row
+                .last()
+                .is_some_and(|last| last.is_ascii_graphic() && *last != self.delimiter);
+            let filled = if is_full {
+                delimiters + 1
+            } else {
+                let cells = text[begins..begins + row.len()].split(char::from(self.delimiter));
+                let is_filled = |(_, cell): &(usize, &str)| !trimmed(cell).is_empty();
+                cells
+                    .enumerate()
+                    .filter(is_filled)
+                    .last()
+                    .map_or(0, |(column, _)| column + 1)
+            };
+            if filled > 0 {
+                let places = self.places.len();
+                if delimiters >= CELLS_PER_PLACE {
+                    let ends = memchr::memchr_iter(self.delimiter, row);
+                    let behind = ends.skip(CELLS_PER_PLACE - 1).step_by(CELLS_PER_PLACE);
+                    self.places
+                        .extend(behind.map(|end| (begins + end + 1) as u32));
+                }
+                self.add_row(begins, line, filled, places);
+            }
+            begins = end + 1;
+            line += 1;
+        }
+        self.text = text;
+    }
+
+    /// Adds a row; its kept places were added from the `places`th on.
+    fn add_row(&mut self, begins: usize, line: usize, filled: usize, places: usize) {
+        self.width = self.width.max(filled);
+        self.numbers.push(self.starts.len(), line);
+        if !self.places.is_empty() {
+            // No row before the first wide one has places.
+            self.places_of_row.resize(self.starts.len(), 0);
+            self.places_of_row.push(places as u32);
+        }
+        self.starts.push(begins as u32);
+    }
+
+    /// Finds the rows of any text.
     fn find_rows(&mut self, skipped: usize) -> Result<(), Unreadable> {
         let lines_in = |text: &[u8]| memchr::memchr_iter(b'\n', text).count();
         let length = self.text.len();
@@ -126,14 +193,7 @@ impl TextCells {
             if filled == 0 {
                 self.places.truncate(places);
             } else {
-                self.width = self.width.max(filled);
-                self.numbers.push(self.starts.len(), line);
-                if !self.places.is_empty() {
-                    // No row before the first wide one has places.
-                    self.places_of_row.resize(self.starts.len(), 0);
-                    self.places_of_row.push(places as u32);
-                }
-                self.starts.push(begins as u32);
+                self.add_row(begins, line, filled, places);
             }
             line += lines;
         }
@@ -238,33 +298,100 @@ impl TextCells {
         Some((passed * CELLS_PER_PLACE, *place as usize))
     }
 
-    /// Hands the trimmed texts of some `columns`, ascending, of a row to `take`, each with its place in
-    /// `columns`; empty beyond the end of the row.
-    pub fn pick<'a>(&'a self, row: usize, columns: &[usize], mut take: impl FnMut(usize, &'a str)) {
-        // The field that comes next: its column and where it begins; `None` beyond the row's end.
-        let mut next = Some((0, self.starts[row] as usize));
-        for (k, &column) in columns.iter().enumerate() {
-            let passed = next.map_or(usize::MAX, |(at, _)| at / CELLS_PER_PLACE);
-            if column / CELLS_PER_PLACE > passed {
-                next = self.place_before(row, column);
-            }
-            let mut text = "";
-            while let Some((at, begins)) = next.filter(|(at, _)| *at <= column) {
-                let field = self.field(begins);
-                next = (!field.is_last).then_some((at + 1, field.end + 1));
-                if at == column {
-                    text = self.content(&field, begins);
-                }
-            }
-            take(k, text);
+    /// The fields of a row, from the first on.
+    #[inline]
+    pub fn fields(&self, row: usize) -> Fields<'_> {
+        Fields {
+            cells: self,
+            row,
+            column: 0,
+            at: self.starts[row] as usize,
+            is_over: false,
         }
     }
 
     /// The trimmed text of a cell; empty beyond the end of the row.
     pub fn text(&self, row: usize, column: usize) -> &str {
-        let mut found = "";
-        self.pick(row, &[column], |_, text| found = text);
-        found
+        let mut fields = self.fields(row);
+        if fields.go_to(column) {
+            fields.take()
+        } else {
+            ""
+        }
+    }
+}
+
+/// Fields of a row, one after the other.
+pub(super) struct Fields<'a> {
+    cells: &'a TextCells,
+    row: usize,
+    /// The field that comes next, and where it begins.
+    column: usize,
+    at: usize,
+    is_over: bool,
+}
+
+impl<'a> Fields<'a> {
+    /// Goes on to a column that was not passed yet; false where the row ends before it.
+    #[inline]
+    pub fn go_to(&mut self, column: usize) -> bool {
+        if self.is_over {
+            return false;
+        }
+        if column / CELLS_PER_PLACE > self.column / CELLS_PER_PLACE {
+            match self.cells.place_before(self.row, column) {
+                Some(place) => (self.column, self.at) = place,
+                None => self.is_over = true,
+            }
+        }
+        while self.column < column && !self.is_over {
+            let field = self.cells.field(self.at);
+            self.step_over(field.end, field.is_last);
+        }
+        !self.is_over
+    }
+
+    #[inline]
+    fn step_over(&mut self, end: usize, is_last: bool) {
+        self.column += 1;
+        self.at = end + 1;
+        self.is_over = is_last;
+    }
+
+    /// The text from the next field on.
+    #[inline]
+    pub fn rest(&self) -> &'a [u8] {
+        &self.cells.text.as_bytes()[self.at..]
+    }
+
+    /// Sign between the fields.
+    #[inline]
+    pub fn delimiter(&self) -> u8 {
+        self.cells.delimiter
+    }
+
+    /// Goes past the next field if it is `length` bytes long, and says whether it is. That it begins with
+    /// no quotation mark and holds no delimiter is known.
+    #[inline]
+    pub fn pass(&mut self, length: usize) -> bool {
+        let end = self.at + length;
+        let ending = self.cells.text.as_bytes().get(end).copied();
+        let is_end = match ending {
+            None | Some(b'\n' | b'\r') => true,
+            Some(byte) => byte == self.cells.delimiter,
+        };
+        if is_end {
+            self.step_over(end, ending != Some(self.cells.delimiter));
+        }
+        is_end
+    }
+
+    /// The trimmed text of the next field, which is passed.
+    pub fn take(&mut self) -> &'a str {
+        let field = self.cells.field(self.at);
+        let text = self.cells.content(&field, self.at);
+        self.step_over(field.end, field.is_last);
+        text
     }
 }
 
@@ -310,10 +437,12 @@ mod tests {
 
     fn fields(cells: &TextCells) -> Vec<Vec<String>> {
         let row = |row| {
-            let columns: Vec<usize> = (0..cells.width_of(row)).collect();
-            let mut texts = vec![String::new(); columns.len()];
-            cells.pick(row, &columns, |k, text| texts[k] = text.to_owned());
-            texts
+            let mut fields = cells.fields(row);
+            let text = |column| {
+                assert!(fields.go_to(column));
+                fields.take().to_owned()
+            };
+            (0..cells.width_of(row)).map(text).collect()
         };
         (0..cells.len()).map(row).collect()
     }
@@ -345,6 +474,19 @@ mod tests {
         }
 
         #[test]
+        fn lines_without_quotation_marks_are_found_alike(text in "([a, °]{0,12}\r?\n){0,8}[a, ]{0,9}") {
+            let simple = cells(&text);
+            prop_assert_eq!(fields(&simple), by_the_csv_crate(&text));
+            let mut other = cells("");
+            other.text = text;
+            other.find_rows(0).expect("rows");
+            prop_assert_eq!(&simple.starts, &other.starts);
+            prop_assert_eq!(simple.width, other.width);
+            let numbers = |cells: &TextCells| (0..cells.len()).map(|row| cells.number(row)).collect::<Vec<_>>();
+            prop_assert_eq!(numbers(&simple), numbers(&other));
+        }
+
+        #[test]
         fn any_cell_of_a_wide_row_is_found_alone(widths in prop::collection::vec(0_usize..70, 1..6)) {
             let row = |width: &usize| (0..*width).map(|k| k.to_string()).collect::<Vec<_>>().join(",");
             let text = widths.iter().map(row).collect::<Vec<_>>().join("\n");
@@ -355,10 +497,11 @@ mod tests {
                     let expected = if column < *width { column.to_string() } else { String::new() };
                     prop_assert_eq!(cells.text(index, column), expected);
                 }
-                let columns = [3, 15, 16, 40, 74];
-                cells.pick(index, &columns, |k, text| {
-                    assert_eq!(text, cells.text(index, columns[k]));
-                });
+                let mut fields = cells.fields(index);
+                for column in [3, 15, 16, 40, 74] {
+                    let found = if fields.go_to(column) { fields.take() } else { "" };
+                    prop_assert_eq!(found, cells.text(index, column));
+                }
             }
         }
     }

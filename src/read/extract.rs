@@ -1,18 +1,24 @@
 //! From located cells to the samples of one loop.
 
 use super::cells::{CellReader, FileSamples};
-use super::clock::{self, ClockRules, Moments, Scale, TimeColumns};
+use super::clock::{self, ClockRules, Moments, NO_TIME, Scale, TimeColumns};
 use super::collect::BadCells;
-use super::headings::{Owner, Role, meaning, squash};
+use super::columns::{self, Columns};
+use super::headings::Role;
 use super::layout::{self, Layout};
-use super::numbers::{DecimalSign, Evidence, Shape, Undecided, shape};
+use super::numbers::{DecimalSign, Shape, Undecided, shape};
 use super::order::Ordered;
 use super::roles::{self, Roles};
+use super::rows::Rows;
+use super::series::Series;
 use super::source::{FileCache, SourceFile};
 use super::stamp::{MICROSECONDS, stamp};
 use super::table::{Cell, Table};
-use super::tracks::tracks;
-use super::{FileReference, LogRead, LogRequest, LogRule, Source, TimeUnit, join, units};
+use super::timed::{not_a_time, rows_of_loop, timed_rows};
+use super::tracks::{self, Order, Timed};
+use super::{
+    DateOrder, FileReference, LogRead, LogRequest, LogRule, Source, TimeUnit, join, units,
+};
 use crate::notice::{Place, Problem};
 use crate::trace::Moment;
 use std::collections::BTreeMap;
@@ -28,6 +34,14 @@ pub(super) struct FileRead {
     /// Last moment of the file as exported, and what unfolding added to it.
     pub last_raw: i64,
     pub shift_us: i64,
+    /// What the clock is ahead of universal time, microseconds, where that is known.
+    pub offset_us: Option<i64>,
+    /// Its signals, where the files of the loop hold one or some each.
+    pub series: Option<Series>,
+    /// Why the file alone is no log of the loop.
+    pub missing: Vec<Problem>,
+    /// First microsecond wanted.
+    pub wanted_from: i64,
 }
 
 /// A table understood: where its rows and columns are.
@@ -35,6 +49,8 @@ pub(super) struct Understood<'a> {
     pub table: &'a Table,
     pub layout: Layout,
     pub roles: Roles,
+    /// Whether other files may hold the signals that this table lacks.
+    pub partial: bool,
 }
 
 pub(super) fn read(
@@ -42,10 +58,38 @@ pub(super) fn read(
     references: &[FileReference],
     cache: &FileCache,
 ) -> Result<LogRead, Vec<Problem>> {
-    let mut files: Vec<FileRead> = Vec::new();
     let mut problems = Vec::new();
+    let mut opened = Vec::new();
     for reference in references {
-        match read_file(request, reference, cache, files.last()) {
+        match cache.open(&request.root, &reference.file) {
+            Ok(file) => opened.push((file, reference)),
+            Err(problem) => problems.push(problem),
+        }
+    }
+    let partial = references.len() > 1;
+    let mut tables = Vec::new();
+    for (file, reference) in &opened {
+        let rule = rule_for(&request.rules, &reference.file)
+            .cloned()
+            .unwrap_or_default();
+        match choose_table(request, &rule, file, reference, partial) {
+            Ok(understood) => tables.push((file, rule, understood)),
+            Err(found) => problems.extend(found),
+        }
+    }
+    let in_parts = partial
+        && tables
+            .iter()
+            .any(|(_, _, understood)| lacks_a_signal(request, understood));
+    let mut files: Vec<FileRead> = Vec::new();
+    for (file, rule, understood) in &tables {
+        let reading = Reading {
+            request,
+            rule,
+            file,
+            understood,
+        };
+        match reading.read(files.last(), in_parts) {
             Ok(file) => files.push(file),
             Err(found) => problems.extend(found),
         }
@@ -56,25 +100,18 @@ pub(super) fn read(
     join::join(files)
 }
 
-pub(super) fn rule_for<'a>(rules: &'a [LogRule], file: &str) -> Option<&'a LogRule> {
-    rules.iter().find(|rule| rule.matches(file))
+/// Whether a table holds no PV or no OP of the loop.
+fn lacks_a_signal(request: &LogRequest, understood: &Understood<'_>) -> bool {
+    if !understood.roles.long {
+        return !understood.roles.missing.is_empty();
+    }
+    let rows = rows_of_loop(request, understood);
+    let texts = tracks::series_texts(request, understood, &rows);
+    texts.is_ok_and(|(_, missing)| !missing.is_empty())
 }
 
-fn read_file(
-    request: &LogRequest,
-    reference: &FileReference,
-    cache: &FileCache,
-    before: Option<&FileRead>,
-) -> Result<FileRead, Vec<Problem>> {
-    let one = |problem: Problem| vec![problem];
-    let file = cache.open(&request.root, &reference.file).map_err(one)?;
-    let rule = rule_for(&request.rules, &reference.file)
-        .cloned()
-        .unwrap_or_default();
-    let understood = choose_table(request, &rule, &file, reference)?;
-    check_units(request, &understood).map_err(one)?;
-    let decimal = decimal_sign(&understood, &rule).map_err(one)?;
-    read_table(request, &rule, &file, &understood, decimal, before)
+pub(super) fn rule_for<'a>(rules: &'a [LogRule], file: &str) -> Option<&'a LogRule> {
+    rules.iter().find(|rule| rule.matches(file))
 }
 
 /// The table of the file that holds the loop: the sheet named, or the only one that can be read.
@@ -83,6 +120,7 @@ pub(super) fn choose_table<'a>(
     rule: &LogRule,
     file: &'a SourceFile,
     reference: &FileReference,
+    partial: bool,
 ) -> Result<Understood<'a>, Vec<Problem>> {
     if let Some(sheet) = &reference.sheet {
         let table = file.sheet(sheet).ok_or_else(|| {
@@ -96,13 +134,13 @@ pub(super) fn choose_table<'a>(
             )]
         })?;
         let table = table.map_err(|problem| vec![problem])?;
-        return understand(request, rule, table);
+        return understand(request, rule, table, partial);
     }
     let mut readable = Vec::new();
     let mut refused = Vec::new();
     let tables = file.tables().map_err(|problem| vec![problem])?;
     for table in tables.into_iter().filter(|table| !table.is_empty()) {
-        match understand(request, rule, table) {
+        match understand(request, rule, table, partial) {
             Ok(understood) => readable.push(understood),
             Err(problems) => refused.push((table, problems)),
         }
@@ -130,7 +168,7 @@ pub(super) fn choose_table<'a>(
     // The sheet that came nearest says best what is missing: one that has rows of samples.
     let nearest = refused
         .iter()
-        .position(|(table, _)| layout_of(request, rule, table).is_some())
+        .position(|(table, _)| layout_of(request, rule, table, partial).is_some())
         .unwrap_or(0);
     if refused.is_empty() {
         return Err(vec![Problem::error(
@@ -141,12 +179,13 @@ pub(super) fn choose_table<'a>(
     Err(refused.swap_remove(nearest).1)
 }
 
-fn layout_of(request: &LogRequest, rule: &LogRule, table: &Table) -> Option<Layout> {
+fn layout_of(request: &LogRequest, rule: &LogRule, table: &Table, partial: bool) -> Option<Layout> {
     layout::find(
         table,
         &request.columns,
         request.tag.as_deref(),
         rule.interval_s.is_some(),
+        partial,
     )
 }
 
@@ -154,20 +193,27 @@ fn understand<'a>(
     request: &LogRequest,
     rule: &LogRule,
     table: &'a Table,
+    partial: bool,
 ) -> Result<Understood<'a>, Vec<Problem>> {
-    let Some(mut layout) = layout_of(request, rule, table) else {
+    let Some(mut layout) = layout_of(request, rule, table, partial) else {
         return Err(vec![
             Problem::error(table.place(), "no rows of times and numbers were found")
                 .hint("a log has one row per sample, with its time and values"),
         ]);
     };
-    let tag = request.tag.as_deref();
-    let roles = roles::assign(table, &layout, &request.columns, tag, rule.interval_s)?;
+    let wanted = roles::Wanted {
+        names: &request.columns,
+        tag: request.tag.as_deref(),
+        interval_s: rule.interval_s,
+        partial,
+    };
+    let roles = roles::assign(table, &layout, wanted)?;
     begin_at_first_time(table, &mut layout, roles.time);
     Ok(Understood {
         table,
         layout,
         roles,
+        partial,
     })
 }
 
@@ -229,37 +275,9 @@ fn check_units(request: &LogRequest, understood: &Understood<'_>) -> Result<(), 
     Ok(())
 }
 
-/// The decimal sign of a table: as given, or as its numbers say.
-pub(super) fn decimal_sign(
-    understood: &Understood<'_>,
-    rule: &LogRule,
-) -> Result<DecimalSign, Problem> {
-    if let Some(decimal) = rule.decimal {
-        return Ok(decimal);
-    }
+/// Reads the columns of the loop, and with them the decimal sign of the table.
+fn read_columns(understood: &Understood<'_>, rule: &LogRule) -> Result<Columns, Problem> {
     let table = understood.table;
-    let mut columns: Vec<usize> = [Role::Pv, Role::Op, Role::Sp, Role::Value]
-        .into_iter()
-        .filter_map(|role| understood.roles.column(role))
-        .collect();
-    if let TimeColumns::Single(time) = understood.roles.time {
-        columns.push(time);
-    }
-    columns.sort_unstable();
-    columns.dedup();
-    let mut cells = vec![Cell::Empty; columns.len()];
-    let mut evidence: Evidence<(usize, usize)> = Evidence::default();
-    for index in understood.layout.data_start..table.len() {
-        table.pick(index, &columns, &mut cells);
-        for (cell, &column) in cells.iter().zip(&columns) {
-            if let Cell::Text(text) = cell {
-                evidence.observe(text, || (table.row(index).number, column));
-            }
-        }
-        if evidence.is_full() {
-            break;
-        }
-    }
     let place = |(row, column): (usize, usize)| {
         let heading = &understood.layout.headings[column].text;
         table
@@ -267,7 +285,8 @@ pub(super) fn decimal_sign(
             .row(row)
             .column(column, (!heading.is_empty()).then_some(heading.as_str()))
     };
-    evidence.decide(table.delimiter).map_err(|undecided| match undecided {
+    columns::read(understood, rule, |undecided| {
+        match undecided {
         Undecided::Either { at, text } => Problem::error(
             place(at),
             format!("\"{text}\" may be a number with decimals or with thousands, and no other cell tells which"),
@@ -284,110 +303,225 @@ pub(super) fn decimal_sign(
             ),
         )
         .hint("export again with one decimal sign"),
+    }
     })
 }
 
-fn read_table(
-    request: &LogRequest,
-    rule: &LogRule,
-    file: &SourceFile,
-    understood: &Understood<'_>,
-    decimal: DecimalSign,
-    before: Option<&FileRead>,
-) -> Result<FileRead, Vec<Problem>> {
-    let one = |problem: Problem| vec![problem];
-    let Understood { table, roles, .. } = understood;
-    let mut warnings = Vec::new();
-    let rows = rows_of_loop(request, understood);
-    if rows.is_empty() {
-        return Err(one(Problem::error(
-            table.place(),
-            format!(
-                "no row bears the tag {}",
-                request.tag.as_deref().unwrap_or_default()
-            ),
-        )));
-    }
-    let heading_unit = roles
-        .found(Role::Time)
-        .and_then(|found| found.unit.as_deref())
-        .and_then(TimeUnit::of);
-    let clock_rules = ClockRules {
-        heading: roles
-            .found(Role::Time)
-            .map(|found| found.heading.as_str())
-            .filter(|heading| !heading.is_empty()),
-        dates: rule.dates,
-        date: rule.date,
-        zone: rule.zone,
-        unit: rule.time_unit.or(heading_unit),
-        decimal,
-    };
-    let moments = clock::read(table, &rows, roles.time, &clock_rules).map_err(one)?;
-    warnings.extend(moments.warnings.iter().cloned());
-    let (rows, moments) = timed_rows(understood, rows, moments, &mut warnings)?;
-    let scale = moments.scale;
-    let t_us: Vec<i64> = moments.t_us.iter().map(|t| t.unwrap_or_default()).collect();
-    let first_raw = t_us.iter().copied().min().unwrap_or_default();
-    let last_raw = t_us.last().copied().unwrap_or_default();
-    let shift_us = join::carried_shift(before, first_raw);
-    let tracks = tracks(request, rule, understood, &rows, &t_us, scale, shift_us)?;
-    let main = &tracks.pv.ordered;
-    let wanted = join::wanted(request, scale, table, &main.t_us).map_err(one)?;
-    let reader = CellReader {
-        understood,
-        decimal,
-        rule,
-        request,
-    };
-    let samples = reader.samples(&tracks, wanted, &mut warnings)?;
-    warnings.extend(same_moments(main, table.place()));
-    if main.newest_first {
-        warnings.push(Problem::warning(
-            table.place(),
-            "rows stand newest first and were read from the last",
-        ));
-    }
-    let mut found = roles.found.clone();
-    found.extend(tracks.named.iter().cloned());
-    let dated = |t_us: i64| {
-        if scale.is_dated() {
-            Moment::Dated(clock::moment(t_us))
-        } else {
-            Moment::Elapsed(t_us as f64 / MICROSECONDS as f64)
+/// One table on its way to samples.
+struct Reading<'a> {
+    request: &'a LogRequest,
+    rule: &'a LogRule,
+    file: &'a SourceFile,
+    understood: &'a Understood<'a>,
+}
+
+impl Reading<'_> {
+    fn read(&self, before: Option<&FileRead>, in_parts: bool) -> Result<FileRead, Vec<Problem>> {
+        let one = |problem: Problem| vec![problem];
+        let Reading {
+            request,
+            rule,
+            file,
+            understood,
+        } = *self;
+        let Understood { table, roles, .. } = understood;
+        check_units(request, understood).map_err(one)?;
+        let mut columns = read_columns(understood, rule).map_err(one)?;
+        let decimal = columns.decimal;
+        let mut warnings = Vec::new();
+        let rows = rows_of_loop(request, understood);
+        if rows.is_empty() {
+            return Err(one(Problem::error(
+                table.place(),
+                format!(
+                    "no row bears the tag {}",
+                    request.tag.as_deref().unwrap_or_default()
+                ),
+            )));
         }
-    };
-    let source = Source {
-        file: file.name.clone(),
-        sheet: table.sheet.clone(),
-        sha256: file.sha256.clone(),
-        rows: rows.len(),
-        samples: samples.good_count(),
-        from: dated(samples.t_us.first().copied().unwrap_or_default()),
-        to: dated(samples.t_us.last().copied().unwrap_or_default()),
-        bad: samples.bad_by_cause(),
-        duplicates: main.duplicates,
-        sorted_rows: main.sorted_rows,
-        fold: main.fold.clone(),
-        interval_s: 0.0,
-        jitter_s: 0.0,
-        compressed: false,
-        gaps: Vec::new(),
-        clock_format: moments.format,
-        decimal,
-        roles: found,
-    };
-    let mut read = FileRead {
-        samples,
-        source,
-        scale,
-        manual_values: rule.manual_values.clone(),
-        warnings,
-        last_raw,
-        shift_us: main.shift_us,
-    };
-    read.describe_sampling();
-    Ok(read)
+        let moments = match columns.moments(&rows) {
+            Some(moments) => moments,
+            None => self.moments(&rows, roles.time, decimal, rule.dates)?,
+        };
+        warnings.extend(moments.warnings.iter().cloned());
+        let own = self.own_moments(&rows, &moments, decimal, before)?;
+        let (rows, mut moments) = timed_rows(understood, rows, moments, &mut warnings)?;
+        moments.go_by(before.and_then(|before| before.offset_us));
+        let scale = moments.scale;
+        let t_us = moments.t_us;
+        let row_count = rows.len();
+        let first_raw = t_us.iter().copied().min().unwrap_or_default();
+        let last_raw = t_us.last().copied().unwrap_or_default();
+        let carried = join::carried(before, first_raw, in_parts);
+        let order = Order {
+            scale,
+            rule,
+            carried,
+        };
+        let tracks = tracks::tracks(request, understood, Timed { rows, t_us }, own, order)?;
+        let main = &tracks.main().ordered;
+        let wanted = join::wanted(request, scale, table, &main.t_us).map_err(one)?;
+        let mut told_of_order: Vec<Problem> =
+            same_moments(main, table.place()).into_iter().collect();
+        if main.newest_first {
+            told_of_order.push(Problem::warning(
+                table.place(),
+                "rows stand newest first and were read from the last",
+            ));
+        }
+        let (duplicates, sorted_rows) = (main.duplicates, main.sorted_rows);
+        let (fold, shift_us) = (main.fold.clone(), main.shift_us);
+        let offset_us = moments.offset_us.or(main.offset_us);
+        let missing = tracks.missing.clone();
+        let mut found = roles.found.clone();
+        found.extend(tracks.named.iter().cloned());
+        let reader = CellReader {
+            understood,
+            quality: roles.column(Role::Quality),
+            decimal,
+            rule,
+            request,
+        };
+        let (samples, series) = if in_parts {
+            let series = reader.series(&tracks, &mut columns, wanted, &mut warnings)?;
+            (series.clone().join(wanted.0), Some(series))
+        } else {
+            let samples = reader.samples(tracks, &mut columns, wanted, &mut warnings)?;
+            (samples, None)
+        };
+        warnings.extend(told_of_order);
+        let dated = |t_us: i64| {
+            if scale.is_dated() {
+                Moment::Dated(clock::moment(t_us))
+            } else {
+                Moment::Elapsed(t_us as f64 / MICROSECONDS as f64)
+            }
+        };
+        let source = Source {
+            file: file.name.clone(),
+            sheet: table.sheet.clone(),
+            sha256: file.sha256.clone(),
+            rows: row_count,
+            samples: samples.good_count(),
+            from: dated(samples.t_us.first().copied().unwrap_or_default()),
+            to: dated(samples.t_us.last().copied().unwrap_or_default()),
+            bad: samples.bad.clone(),
+            duplicates,
+            sorted_rows,
+            fold: fold.or_else(|| join::fold_between(before, carried)),
+            interval_s: 0.0,
+            jitter_s: 0.0,
+            compressed: false,
+            gaps: Vec::new(),
+            clock_format: moments.format,
+            decimal,
+            roles: found,
+        };
+        let mut read = FileRead {
+            samples,
+            source,
+            scale,
+            manual_values: rule.manual_values.clone(),
+            warnings,
+            last_raw,
+            shift_us,
+            offset_us,
+            series,
+            missing,
+            wanted_from: wanted.0,
+        };
+        read.describe_sampling();
+        Ok(read)
+    }
+
+    /// The moments of rows by one time column. `dates` is the order of day and month where it is known.
+    fn moments(
+        &self,
+        rows: &Rows,
+        time: TimeColumns,
+        decimal: DecimalSign,
+        dates: Option<DateOrder>,
+    ) -> Result<Moments, Vec<Problem>> {
+        let column = match time {
+            TimeColumns::Single(column) | TimeColumns::Pair { date: column, .. } => Some(column),
+            TimeColumns::Counted { .. } => None,
+        };
+        let found = self
+            .understood
+            .roles
+            .found
+            .iter()
+            .find(|found| found.role == Role::Time && Some(found.column) == column);
+        let rules = ClockRules {
+            heading: found
+                .map(|found| found.heading.as_str())
+                .filter(|heading| !heading.is_empty()),
+            dates,
+            date: self.rule.date,
+            zone: self.rule.zone,
+            unit: self.rule.time_unit.or(found
+                .and_then(|found| found.unit.as_deref())
+                .and_then(TimeUnit::of)),
+            decimal,
+        };
+        clock::read(self.understood.table, rows, time, &rules).map_err(|problem| vec![problem])
+    }
+
+    /// Rows and times of the signals that have a time column of their own.
+    fn own_moments(
+        &self,
+        rows: &Rows,
+        main: &Moments,
+        decimal: DecimalSign,
+        before: Option<&FileRead>,
+    ) -> Result<BTreeMap<Role, Timed>, Vec<Problem>> {
+        let table = self.understood.table;
+        let roles = &self.understood.roles;
+        let mut own = BTreeMap::new();
+        for (&role, &time) in &roles.own_times {
+            let (TimeColumns::Single(column) | TimeColumns::Pair { date: column, .. }) = time
+            else {
+                continue;
+            };
+            let is_filled = |index: &usize| !table.cell(*index, column).is_empty();
+            let rows: Rows = rows.iter().filter(is_filled).collect();
+            let dates = self.rule.dates.or(main.dates);
+            let mut moments = self.moments(&rows, time, decimal, dates)?;
+            if moments.scale != main.scale
+                || moments.offset_us.is_some() != main.offset_us.is_some()
+            {
+                return Err(vec![
+                    Problem::error(
+                        table
+                            .place()
+                            .column(column, Some(&self.understood.layout.headings[column].text)),
+                        format!(
+                            "the times of the {} are {}, those of the other signals {}",
+                            role.name(),
+                            moments.format,
+                            main.format
+                        ),
+                    )
+                    .hint("export all signals with one kind of clock"),
+                ]);
+            }
+            moments.go_by(
+                before
+                    .and_then(|before| before.offset_us)
+                    .or(main.offset_us),
+            );
+            let mut bad = BadCells::default();
+            for (index, moment) in rows.iter().zip(&moments.t_us) {
+                if *moment == NO_TIME {
+                    bad.add(|| not_a_time(self.understood, index, column));
+                }
+            }
+            bad.finish(table.place())?;
+            let t_us = moments.t_us;
+            own.insert(role, Timed { rows, t_us });
+        }
+        Ok(own)
+    }
 }
 
 /// Rows lost to a clock coarser than the rows: more of them than the few that a trend writes twice.
@@ -403,111 +537,4 @@ fn same_moments(main: &Ordered, place: Place) -> Option<Problem> {
         )
         .hint("export the times with seconds and their fractions; a spreadsheet that saves a csv may drop them")
     })
-}
-
-/// Rows of data that belong to the loop: all of them, or those that bear its tag.
-fn rows_of_loop(request: &LogRequest, understood: &Understood<'_>) -> Vec<usize> {
-    let Understood {
-        table,
-        layout,
-        roles,
-    } = understood;
-    let all = layout.data_start..table.len();
-    let Some(column) = roles.column(Role::Tag) else {
-        return all.collect();
-    };
-    let mut known: BTreeMap<String, bool> = BTreeMap::new();
-    all.filter(|&index| {
-        let text = table.row(index).cell(column).text();
-        if let Some(belongs) = known.get(&text) {
-            return *belongs;
-        }
-        let named = [
-            &request.columns.pv,
-            &request.columns.op,
-            &request.columns.sp,
-            &request.columns.mode,
-        ]
-        .into_iter()
-        .flatten()
-        .any(|name| squash(name) == squash(&text));
-        let belongs = named
-            || match meaning(&text, request.tag.as_deref()).owner {
-                Owner::This => true,
-                Owner::Nobody => roles.long,
-                Owner::Other(_) => request.tag.is_none(),
-            };
-        known.insert(text, belongs);
-        belongs
-    })
-    .collect()
-}
-
-/// Leaves out rows without a time: lines of text below the data are no samples, a value without a
-/// time is an error.
-fn timed_rows(
-    understood: &Understood<'_>,
-    rows: Vec<usize>,
-    moments: Moments,
-    warnings: &mut Vec<Problem>,
-) -> Result<(Vec<usize>, Moments), Vec<Problem>> {
-    if moments.t_us.iter().all(Option::is_some) {
-        return Ok((rows, moments));
-    }
-    let Understood { table, roles, .. } = understood;
-    let time_column = match roles.time {
-        TimeColumns::Single(column) | TimeColumns::Pair { date: column, .. } => column,
-        TimeColumns::Counted { .. } => 0,
-    };
-    let heading = &understood.layout.headings[time_column].text;
-    let values: Vec<usize> = [Role::Pv, Role::Op, Role::Value]
-        .into_iter()
-        .filter_map(|role| roles.column(role))
-        .collect();
-    let mut bad = BadCells::default();
-    let mut left_out = 0;
-    let mut kept_rows = Vec::with_capacity(rows.len());
-    let mut kept_times = Vec::with_capacity(rows.len());
-    for (&index, t_us) in rows.iter().zip(&moments.t_us) {
-        if t_us.is_some() {
-            kept_rows.push(index);
-            kept_times.push(*t_us);
-            continue;
-        }
-        let row = table.row(index);
-        let has_value = values.iter().any(|&column| match row.cell(column) {
-            Cell::Number(_) => true,
-            Cell::Text(text) => shape(text) != Shape::NotNumber,
-            _ => false,
-        });
-        if !has_value {
-            left_out += 1;
-            continue;
-        }
-        bad.add(|| {
-            let place = table.place().row(row.number).column(
-                time_column,
-                (!heading.is_empty()).then_some(heading.as_str()),
-            );
-            match row.cell(time_column) {
-                Cell::Empty => Problem::error(place, "the row has values and no time"),
-                cell => Problem::error(
-                    place,
-                    format!("\"{}\" is not a time like the others", cell.text()),
-                ),
-            }
-        });
-    }
-    bad.finish(table.place())?;
-    if left_out > 0 {
-        warnings.push(Problem::warning(
-            table.place(),
-            format!("{left_out} rows without time and value were left out"),
-        ));
-    }
-    let moments = Moments {
-        t_us: kept_times,
-        ..moments
-    };
-    Ok((kept_rows, moments))
 }

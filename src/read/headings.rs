@@ -294,7 +294,11 @@ pub fn meaning(text: &str, tag: Option<&str>) -> Meaning {
     } else if squash(after).is_empty() && role_in("", before).is_none() {
         Some((Role::Pv, Sureness::BareTag))
     } else {
-        role_in(before, after)
+        match role_in(before, after) {
+            // "TIC-204 value"
+            Some((Role::Value, _)) => Some((Role::Pv, Sureness::BareTag)),
+            role => role,
+        }
     };
     // "Minutes" and "Elapsed seconds" carry their unit in the word itself.
     if unit.is_none() && matches!(role, Some((Role::Time, _))) {
@@ -328,6 +332,15 @@ fn role_in(before: &str, after: &str) -> Option<(Role, Sureness)> {
             None => others |= follows,
         }
     }
+    let sureness = if others {
+        Sureness::Among
+    } else {
+        Sureness::Exact
+    };
+    // The time of a signal that has a time column of its own.
+    if roles.contains(&Role::Time) {
+        return Some((Role::Time, sureness));
+    }
     // "SET POINT" and the like in several words.
     let together = trailing
         .iter()
@@ -337,17 +350,11 @@ fn role_in(before: &str, after: &str) -> Option<(Role, Sureness)> {
     if let Some(role) = role_of(&together) {
         return Some((role, Sureness::Exact));
     }
-    let sureness = if others {
-        Sureness::Among
-    } else {
-        Sureness::Exact
-    };
     match roles.as_slice() {
         [] => (trailing == ["T"] && leading.is_empty()).then_some((Role::Time, Sureness::Among)),
         [role] => Some((*role, sureness)),
         // The quality of the PV; that of another signal is no business of the PV's.
         [Role::Pv, Role::Quality] | [Role::Quality, Role::Pv] => Some((Role::Quality, sureness)),
-        [Role::Time, Role::Time] => Some((Role::Time, sureness)),
         _ => None,
     }
 }
@@ -398,6 +405,7 @@ mod tests {
             ("U200/TIC-204.PV.Value", Some((Role::Pv, Exact))),
             ("TIC-204", Some((Role::Pv, BareTag))),
             ("TIC-204 [degC]", Some((Role::Pv, BareTag))),
+            ("TIC-204 Value", Some((Role::Pv, BareTag))),
             ("TIC-204.PV raw", Some((Role::Pv, Among))),
             ("TIC-204.PV.Quality", Some((Role::Quality, Exact))),
             ("Quality TIC-204", Some((Role::Quality, Exact))),
@@ -410,6 +418,9 @@ mod tests {
             ("Timestamp", Some((Role::Time, Exact))),
             ("Date/Time", Some((Role::Time, Exact))),
             ("Time (s)", Some((Role::Time, Exact))),
+            ("TIC-204.PV Time", Some((Role::Time, Exact))),
+            ("TIC-204.OP Timestamp", Some((Role::Time, Exact))),
+            ("Timestamp TIC-204.OP", Some((Role::Time, Exact))),
             ("TIC-2041.PV", None),
             ("TIC-204A.PV", None),
             ("XTIC-204.PV", None),

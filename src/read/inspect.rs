@@ -235,7 +235,7 @@ impl Look<'_> {
             .unwrap_or_default();
         let names = ColumnNames::default();
         let counted = rule.interval_s.is_some();
-        let layout = layout::find(table, &names, self.request.tag, counted);
+        let layout = layout::find(table, &names, self.request.tag, counted, false);
         let mut found = TableInspection {
             sheet: table.sheet.clone(),
             delimiter: table.delimiter,
@@ -272,7 +272,7 @@ impl Look<'_> {
                 .request
                 .tag
                 .or(tags.first().map(|found| found.tag.as_str()));
-            found.roles = roles::recognise(table, &layout, &names, tag, rule.interval_s).found;
+            found.roles = recognised(table, &layout, &rule, tag);
         }
         found
     }
@@ -358,10 +358,11 @@ impl Look<'_> {
         own: bool,
     ) -> Vec<Supposition> {
         let names = ColumnNames::default();
-        let Some(layout) = layout::find(table, &names, tag, rule.interval_s.is_some()) else {
+        let Some(layout) = layout::find(table, &names, tag, rule.interval_s.is_some(), false)
+        else {
             return Vec::new();
         };
-        let found = roles::recognise(table, &layout, &names, tag, rule.interval_s).found;
+        let found = recognised(table, &layout, rule, tag);
         let has = |role: Role| found.iter().any(|found| found.role == role);
         let role = match (has(Role::Pv), has(Role::Op)) {
             (false, true) => Role::Pv,
@@ -620,4 +621,15 @@ fn what_it_holds(table: &Table, layout: &Layout, column: usize) -> String {
         (0, _, _, _) => "dates or times".to_owned(),
         _ => "numbers and times".to_owned(),
     }
+}
+
+/// The columns that a table would be read with, nothing named.
+fn recognised(table: &Table, layout: &Layout, rule: &LogRule, tag: Option<&str>) -> Vec<RoleFound> {
+    let wanted = roles::Wanted {
+        names: &ColumnNames::default(),
+        tag,
+        interval_s: rule.interval_s,
+        partial: false,
+    };
+    roles::recognise(table, layout, wanted).found
 }

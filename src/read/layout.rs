@@ -1,7 +1,7 @@
 //! Where the headings of a log stand and where its rows begin.
 
 use super::ColumnNames;
-use super::headings::{Owner, meaning, squash};
+use super::headings::{Owner, Role, Sureness, meaning, squash};
 use super::numbers::DecimalSign;
 use super::numbers::{Shape, shape};
 use super::stamp::stamp;
@@ -23,6 +23,8 @@ pub struct Heading {
     pub column: usize,
     /// The text; empty in a log without headings.
     pub text: String,
+    /// Of headings over two rows the text of each.
+    pub rows: Vec<String>,
     /// Unit from the row of units under the headings.
     pub unit_below: Option<String>,
 }
@@ -30,7 +32,7 @@ pub struct Heading {
 /// How a table is laid out. Rows are indices of the table.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Layout {
-    /// The row of headings.
+    /// The row of headings; of two the lower one.
     pub heading_row: Option<usize>,
     /// First row of data.
     pub data_start: usize,
@@ -100,20 +102,30 @@ fn is_timed_alike(row: Row<'_>, sample: Row<'_>) -> bool {
     !at.is_empty() && at == times(sample) && row.width() == sample.width()
 }
 
-/// Finds headings and data; `None` where no rows look like samples. `counted` is a log without a clock.
+/// Finds headings and data; `None` where no rows look like samples. `counted` is a log without a clock,
+/// `partial` one that may hold words alone, as the mode of a loop is.
 pub fn find(
     table: &Table,
     names: &ColumnNames,
     tag: Option<&str>,
     counted: bool,
+    partial: bool,
 ) -> Option<Layout> {
     let rows = table.len();
     let is_data = |index: usize| looks_like_data(table.row(index), table.width(), counted);
-    let found = (0..rows.min(ROWS_LOOKED_AT)).find(|&start| {
-        is_data(start)
-            && (start + 1..rows.min(start + ROWS_ALIKE))
-                .all(|index| is_data(index) || is_timed_alike(table.row(index), table.row(start)))
-    })?;
+    let is_alike = |index: usize, start: usize| is_timed_alike(table.row(index), table.row(start));
+    let next = |start: usize| start + 1..rows.min(start + ROWS_ALIKE);
+    let of_numbers = (0..rows.min(ROWS_LOOKED_AT)).find(|&start| {
+        is_data(start) && next(start).all(|index| is_data(index) || is_alike(index, start))
+    });
+    let of_words = || {
+        (0..rows.min(ROWS_LOOKED_AT)).find(|&start| {
+            partial
+                && table.row(start).width() > 1
+                && next(start).all(|index| is_alike(index, start))
+        })
+    };
+    let found = of_numbers.or_else(of_words)?;
     // A long table may begin with a word: the first row of a mode is no heading.
     let data_start = (0..found)
         .rev()
@@ -144,11 +156,25 @@ pub fn find(
                 .max_by_key(widest)
                 .filter(|index| widest(index) > 1)
         });
+    let stacked = above
+        .clone()
+        .filter(|upper| upper + 1 < data_start)
+        .filter_map(|upper| Some((upper + 1, stacked(table, upper, tag)?)))
+        .max_by_key(|(_, stacked)| stacked.tagged);
+    let heading_row = stacked.as_ref().map(|(row, _)| *row).or(heading_row);
     let unit_rows = heading_row.map_or(0..0, |row| row + 1..data_start);
+    let text_of = |column: usize| match (&stacked, heading_row) {
+        (Some((_, stacked)), _) => stacked.texts[column].clone(),
+        (None, Some(row)) => table.row(row).cell(column).text(),
+        (None, None) => String::new(),
+    };
     let headings = (0..table.width())
         .map(|column| Heading {
             column,
-            text: heading_row.map_or_else(String::new, |row| table.row(row).cell(column).text()),
+            text: text_of(column),
+            rows: stacked
+                .as_ref()
+                .map_or_else(Vec::new, |(_, stacked)| stacked.rows[column].to_vec()),
             unit_below: unit_rows.clone().find_map(|row| {
                 let text = table.row(row).cell(column).text();
                 let bare = text.trim_matches(['[', ']', '(', ')']).to_owned();
@@ -162,6 +188,84 @@ pub fn find(
         data_start,
         headings,
     })
+}
+
+/// Headings over two rows, put together.
+struct Stacked {
+    texts: Vec<String>,
+    /// The texts of both rows, column by column.
+    rows: Vec<[String; 2]>,
+    /// Columns that have a tag and what of it.
+    tagged: usize,
+}
+
+/// The headings of two rows together, where that tells of more columns whose they are than either row
+/// alone: tags in one row and "PV", "OP" in the other. A tag stands over all columns up to the next text
+/// of its row, as a merged cell leaves it in an export.
+fn stacked(table: &Table, upper: usize, tag: Option<&str>) -> Option<Stacked> {
+    let width = table.width();
+    let own = |index: usize| -> Vec<String> {
+        (0..width)
+            .map(|column| table.row(index).cell(column).text())
+            .collect()
+    };
+    let (first, second) = (own(upper), own(upper + 1));
+    // A lone text at the edge is the title of the whole table.
+    let filled = first.iter().filter(|text| !text.is_empty()).count();
+    if filled == 0
+        || (filled == 1 && first.iter().position(|text| !text.is_empty()) <= edge(&second))
+    {
+        return None;
+    }
+    let mut over = String::new();
+    let texts: Vec<String> = first
+        .iter()
+        .zip(&second)
+        .map(|(first, second)| {
+            if !first.is_empty() {
+                over.clone_from(first);
+            } else if !names_a_signal(&over, tag) {
+                over.clear();
+            }
+            match (over.as_str(), second.as_str()) {
+                (text, "") if !first.is_empty() => text.to_owned(),
+                (_, "") => String::new(),
+                ("", text) => text.to_owned(),
+                (one, other) if one == other => one.to_owned(),
+                (one, other) => format!("{one} {other}"),
+            }
+        })
+        .collect();
+    let count = |texts: &[String]| texts.iter().filter(|text| is_tagged(text, tag)).count();
+    let tagged = count(&texts);
+    let is_more = tagged > count(&first).max(count(&second));
+    is_more.then(|| Stacked {
+        texts,
+        rows: first
+            .into_iter()
+            .zip(second)
+            .map(|(first, second)| [first, second])
+            .collect(),
+        tagged,
+    })
+}
+
+/// Whether a heading may stand over several columns: it bears a tag or says what a value is.
+fn names_a_signal(text: &str, tag: Option<&str>) -> bool {
+    let meaning = meaning(text, tag);
+    meaning.owner != Owner::Nobody || matches!(meaning.role, Some((role, _)) if role != Role::Time)
+}
+
+/// Column of the first text.
+fn edge(texts: &[String]) -> Option<usize> {
+    texts.iter().position(|text| !text.is_empty())
+}
+
+/// Whether a heading tells whose column it is and what it holds.
+fn is_tagged(text: &str, tag: Option<&str>) -> bool {
+    let meaning = meaning(text, tag);
+    meaning.owner != Owner::Nobody
+        && matches!(meaning.role, Some((_, sureness)) if sureness != Sureness::BareTag)
 }
 
 /// How much a row looks like headings: columns named in the schedule count most.

@@ -5,9 +5,11 @@
 //! its cells become samples (`extract`). Whatever cannot be read for certain is an error at its
 //! place; whatever had to be decided is reported with its reason.
 
+mod blanks;
 mod cells;
 pub mod clock;
 mod collect;
+mod columns;
 mod dates;
 mod delimited;
 mod extract;
@@ -19,16 +21,20 @@ mod join;
 pub mod layout;
 pub mod numbers;
 pub mod order;
+mod parts;
 mod proposal;
 pub mod roles;
-mod rows;
+pub mod rows;
 pub mod samples;
+mod series;
 mod sheet;
 pub mod source;
 pub mod stamp;
 pub mod table;
 mod tags;
 pub mod text;
+mod timed;
+mod times;
 mod tracks;
 pub mod units;
 pub mod values;

@@ -158,6 +158,103 @@ pub fn number(text: &str, sign: DecimalSign) -> Option<f64> {
     finite(text.parse().ok()?, minus)
 }
 
+/// Powers of ten that a double holds exactly.
+const EXACT_POWERS: [f64; 23] = [
+    1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16,
+    1e17, 1e18, 1e19, 1e20, 1e21, 1e22,
+];
+
+/// A number as most exports write it, at the beginning of a text.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Plain {
+    /// The number.
+    pub value: f64,
+    /// Whether the decimal sign stands in it.
+    pub has_sign: bool,
+    /// Bytes of the text that it takes.
+    pub length: usize,
+}
+
+/// The number of a text as most exports write it (`-71.25`, `7.125E+01`); `None` where [`number`] has
+/// to look.
+pub(super) fn plain(text: &str, sign: DecimalSign) -> Option<Plain> {
+    begins_plain(text.as_bytes(), sign).filter(|plain| plain.length == text.len())
+}
+
+/// The plain number that a text begins with; `None` where [`number`] has to look.
+///
+/// What it gives is what [`number`] gives: digits below 2^53 and a power of ten up to 10^22 are doubles
+/// themselves, so that one division or multiplication rounds once and to the nearest (W.D. Clinger,
+/// How to Read Floating Point Numbers Accurately, PLDI 1990, section 3).
+#[inline]
+pub(super) fn begins_plain(text: &[u8], sign: DecimalSign) -> Option<Plain> {
+    // Nineteen digits could overflow what they are counted in.
+    const MOST_LETTERS: usize = 18;
+    let minus = usize::from(text.first() == Some(&b'-'));
+    let digits = &text[minus..];
+    if !digits.first()?.is_ascii_digit() {
+        return None;
+    }
+    let point = sign.sign() as u8;
+    let mut mantissa = 0_u64;
+    let mut decimals_from = None;
+    let mut at = 0;
+    let after = loop {
+        let byte = digits.get(at).copied();
+        match byte {
+            Some(digit @ b'0'..=b'9') => mantissa = mantissa * 10 + u64::from(digit - b'0'),
+            Some(sign) if sign == point && decimals_from.is_none() => decimals_from = Some(at + 1),
+            other => break other,
+        }
+        at += 1;
+        if at > MOST_LETTERS {
+            return None;
+        }
+    };
+    let decimals = decimals_from.map_or(0, |from| at - from);
+    if decimals_from == Some(at) || mantissa >= 1 << 53 {
+        return None;
+    }
+    let (exponent, length) = match after {
+        Some(b'e' | b'E') => plain_exponent(&digits[at + 1..])?,
+        _ => (0, 0),
+    };
+    let power = exponent - decimals as i32;
+    let factor = *EXACT_POWERS.get(power.unsigned_abs() as usize)?;
+    let magnitude = if power < 0 {
+        mantissa as f64 / factor
+    } else {
+        mantissa as f64 * factor
+    };
+    Some(Plain {
+        value: if minus == 1 { -magnitude } else { magnitude },
+        has_sign: decimals_from.is_some(),
+        length: minus + at + length,
+    })
+}
+
+/// One or two digits, perhaps with a sign before them, behind the letter of an exponent: its value, and
+/// the bytes that it takes with that letter.
+fn plain_exponent(text: &[u8]) -> Option<(i32, usize)> {
+    let (is_negative, signs) = match text.first()? {
+        b'-' => (true, 1),
+        b'+' => (false, 1),
+        _ => (false, 0),
+    };
+    let digits = &text[signs..];
+    let count = digits
+        .iter()
+        .take_while(|byte| byte.is_ascii_digit())
+        .count();
+    if !(1..=2).contains(&count) {
+        return None;
+    }
+    let value = digits[..count]
+        .iter()
+        .fold(0, |value, digit| value * 10 + i32::from(digit - b'0'));
+    Some((if is_negative { -value } else { value }, 1 + signs + count))
+}
+
 fn finite(magnitude: f64, minus: &str) -> Option<f64> {
     magnitude.is_finite().then_some(if minus.is_empty() {
         magnitude
@@ -204,6 +301,23 @@ impl<W> Default for Evidence<W> {
 }
 
 impl<W: Clone> Evidence<W> {
+    /// Whether a number with this decimal sign was seen: more of them say nothing new.
+    pub(super) fn knows(&self, sign: DecimalSign) -> bool {
+        match sign {
+            DecimalSign::Point => self.point.is_some(),
+            DecimalSign::Comma => self.comma.is_some(),
+        }
+    }
+
+    /// Takes what the texts that follow these said into account.
+    pub(super) fn followed_by(self, later: Self) -> Self {
+        Evidence {
+            point: self.point.or(later.point),
+            comma: self.comma.or(later.comma),
+            either: self.either.or(later.either),
+        }
+    }
+
     /// Takes one text into account.
     pub fn observe(&mut self, text: &str, at: impl FnOnce() -> W) {
         // Most texts of a long log say again what the first ones said.
@@ -258,6 +372,7 @@ impl<W: Clone> Evidence<W> {
 #[cfg(test)]
 mod tests {
     use super::*;
+    use proptest::prelude::*;
 
     #[test]
     fn numbers_read_with_their_sign() {
@@ -290,6 +405,52 @@ mod tests {
             ("--5", Point, None),
         ] {
             assert_eq!(number(text, sign), expected, "{text} with {sign:?}");
+        }
+    }
+
+    proptest! {
+        #![proptest_config(ProptestConfig { failure_persistence: None, ..ProptestConfig::default() })]
+
+        #[test]
+        fn the_quick_way_gives_the_same_double(text in "-?[0-9]{1,17}([.][0-9]{1,8})?([eE][+-]?[0-9]{1,2})?") {
+            if let Some(Plain { value, has_sign, .. }) = plain(&text, DecimalSign::Point) {
+                prop_assert_eq!(number(&text, DecimalSign::Point).map(f64::to_bits), Some(value.to_bits()));
+                prop_assert_eq!(has_sign, text.contains('.'));
+            }
+            let comma = text.replace('.', ",");
+            if let Some(Plain { value, .. }) = plain(&comma, DecimalSign::Comma) {
+                prop_assert_eq!(number(&comma, DecimalSign::Comma).map(f64::to_bits), Some(value.to_bits()));
+            }
+        }
+
+        #[test]
+        fn the_quick_way_takes_nothing_that_is_no_number(text in "[-+0-9.,eE% ]{0,8}") {
+            for sign in [DecimalSign::Point, DecimalSign::Comma] {
+                if let Some(Plain { value, .. }) = plain(&text, sign) {
+                    prop_assert_eq!(number(&text, sign), Some(value));
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn usual_numbers_go_the_quick_way() {
+        for text in ["0", "71.234", "-40.00", "7.1234E+01", "1e-3"] {
+            assert!(plain(text, DecimalSign::Point).is_some(), "{text}");
+        }
+        for text in [
+            "",
+            "-",
+            ".5",
+            "5.",
+            "1.2.3",
+            "1,5",
+            "+1",
+            "9007199254740993",
+            "1e99",
+            "1e",
+        ] {
+            assert_eq!(plain(text, DecimalSign::Point), None, "{text}");
         }
     }
 

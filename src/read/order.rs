@@ -1,6 +1,7 @@
 //! Rows in order of time: small disorder sorted, a summer-time fold unfolded, duplicates settled.
 
 use super::clock::{DAY_US, Scale, moment_text, universal_us};
+use super::rows::Rows;
 use super::stamp::MICROSECONDS;
 use crate::notice::{Place, Problem};
 use chrono_tz::Tz;
@@ -15,7 +16,7 @@ pub struct Ordered {
     /// Microseconds, strictly increasing.
     pub t_us: Vec<i64>,
     /// Row (as it was handed in) that each moment came from.
-    pub rows: Vec<usize>,
+    pub rows: Rows,
     /// Rows that stood before an earlier one and were sorted.
     pub sorted_rows: usize,
     /// Rows given up for a later one of the same moment.
@@ -26,40 +27,63 @@ pub struct Ordered {
     pub newest_first: bool,
     /// What was added to the moments at the end, microseconds.
     pub shift_us: i64,
+    /// What the clock of a known zone is ahead of universal time, microseconds.
+    pub offset_us: Option<i64>,
 }
 
-/// Puts rows in order. `t_us` has one moment per row; `shift_us` is what an earlier file of the
+/// What an earlier file of the same log ended with.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Carried {
+    /// What was added to its moments at the end, microseconds.
+    pub shift_us: i64,
+    /// What its clock is ahead of universal time, microseconds.
+    pub offset_us: Option<i64>,
+    /// Its last moment, where the clock went back after it.
+    pub latest_us: Option<i64>,
+}
+
+/// Puts rows in order. `t_us` has one moment per row; `carried` is what an earlier file of the
 /// same log ended with; `place` names a row.
 ///
 /// # Errors
 /// Where time runs back in a way that nothing explains, or stands in the hour that summer time skips.
 pub fn order(
-    t_us: &[i64],
+    mut t_us: Vec<i64>,
     scale: Scale,
     zone: Option<Tz>,
-    shift_us: i64,
+    carried: Carried,
     place: impl Fn(usize) -> Place,
 ) -> Result<Ordered, Problem> {
-    let mut sequence: Vec<usize> = (0..t_us.len()).collect();
-    let newest_first = is_newest_first(t_us);
-    if newest_first {
-        sequence.reverse();
+    let zone = zone.filter(|_| scale == Scale::Local);
+    // As nearly every log stands.
+    if zone.is_none() && t_us.is_sorted_by(|a, b| a < b) {
+        for t in &mut t_us {
+            *t += carried.shift_us;
+        }
+        return Ok(Ordered {
+            rows: Rows::Run(0..t_us.len()),
+            t_us,
+            shift_us: carried.shift_us,
+            ..Ordered::default()
+        });
     }
-    let interval = usual_interval(t_us, &sequence);
+    let newest_first = is_newest_first(&t_us);
+    let interval = usual_interval(&t_us, newest_first);
     let mut ordered = Ordered {
         newest_first,
-        shift_us,
+        shift_us: carried.shift_us,
         ..Ordered::default()
     };
-    let zone = zone.filter(|_| scale == Scale::Local);
-    let mut first_offset = None;
-    let mut moments: Vec<(i64, usize)> = Vec::with_capacity(t_us.len());
+    let mut first_offset = carried.offset_us.filter(|_| zone.is_some());
+    let mut moments: Vec<(i64, u32)> = Vec::with_capacity(t_us.len());
     let mut latest = i64::MIN;
     let mut latest_raw = i64::MIN;
-    for &row in &sequence {
+    for k in 0..t_us.len() {
+        let row = if newest_first { t_us.len() - 1 - k } else { k };
         let raw = t_us[row];
         let mut t = raw + ordered.shift_us;
         if let Some(zone) = zone {
+            let latest = latest.max(carried.latest_us.unwrap_or(i64::MIN));
             let not_before = latest.saturating_sub(first_offset.unwrap_or(0));
             let universal =
                 universal_us(zone, raw, not_before, SORTED_BACK_US).ok_or_else(|| {
@@ -120,20 +144,27 @@ pub fn order(
             latest = t;
             latest_raw = raw;
         }
+        let row = u32::try_from(row).expect("a table holds fewer than 2^32 rows");
         moments.push((t, row));
     }
+    ordered.offset_us = first_offset;
     if ordered.sorted_rows > 0 {
         moments.sort_by_key(|(t, _)| *t);
     }
+    // Of one moment the last row stands.
+    t_us.clear();
+    let mut rows: Vec<u32> = Vec::with_capacity(moments.len());
     for (t, row) in moments {
-        if ordered.t_us.last() == Some(&t) {
+        if t_us.last() == Some(&t) {
             ordered.duplicates += 1;
-            *ordered.rows.last_mut().expect("as many rows as moments") = row;
+            rows.pop();
         } else {
-            ordered.t_us.push(t);
-            ordered.rows.push(row);
+            t_us.push(t);
         }
+        rows.push(row);
     }
+    ordered.t_us = t_us;
+    ordered.rows = Rows::Listed(rows);
     Ok(ordered)
 }
 
@@ -152,12 +183,12 @@ fn is_newest_first(t_us: &[i64]) -> bool {
 }
 
 /// Median of the steps forward, microseconds.
-fn usual_interval(t_us: &[i64], sequence: &[usize]) -> i64 {
-    let mut steps: Vec<i64> = sequence
-        .windows(2)
-        .map(|pair| t_us[pair[1]] - t_us[pair[0]])
-        .filter(|step| *step > 0)
-        .collect();
+fn usual_interval(t_us: &[i64], newest_first: bool) -> i64 {
+    let step = |pair: &[i64]| match newest_first {
+        false => pair[1] - pair[0],
+        true => pair[0] - pair[1],
+    };
+    let mut steps: Vec<i64> = t_us.windows(2).map(step).filter(|step| *step > 0).collect();
     if steps.is_empty() {
         return MICROSECONDS;
     }
@@ -173,7 +204,7 @@ mod tests {
     const S: i64 = MICROSECONDS;
 
     fn run(t_us: &[i64], scale: Scale) -> Result<Ordered, String> {
-        order(t_us, scale, None, 0, |row| {
+        order(t_us.to_vec(), scale, None, Carried::default(), |row| {
             Place::file("a.csv").row(row + 1)
         })
         .map_err(|problem| problem.to_string())
@@ -187,7 +218,7 @@ mod tests {
     fn small_disorder_is_sorted_and_the_last_duplicate_wins() {
         let ordered = run(&[0, 2 * S, S, 3 * S, 3 * S, 4 * S], Scale::Elapsed).expect("in order");
         assert_eq!(ordered.t_us, [0, S, 2 * S, 3 * S, 4 * S]);
-        assert_eq!(ordered.rows, [0, 2, 1, 4, 5]);
+        assert_eq!(ordered.rows, [0, 2, 1, 4, 5].into_iter().collect());
         assert_eq!((ordered.sorted_rows, ordered.duplicates), (1, 1));
     }
 
@@ -218,9 +249,13 @@ mod tests {
         let guessed = run(&local, Scale::Local).expect("unfolded");
         assert!(guessed.fold.is_some());
         let zone = Some(chrono_tz::Europe::Berlin);
-        let known = order(&local, Scale::Local, zone, 0, |row| {
-            Place::file("a.csv").row(row + 1)
-        })
+        let known = order(
+            local.clone(),
+            Scale::Local,
+            zone,
+            Carried::default(),
+            |row| Place::file("a.csv").row(row + 1),
+        )
         .expect("unfolded");
         assert!(known.fold.is_some());
         assert_eq!(guessed.t_us, known.t_us);
@@ -241,10 +276,24 @@ mod tests {
             .collect();
         let berlin = Some(chrono_tz::Europe::Berlin);
         let place = |row| Place::file("a.csv").row(row + 1);
-        let ordered = order(&local, Scale::Local, berlin, 0, place).expect("in order");
+        let ordered = order(
+            local.clone(),
+            Scale::Local,
+            berlin,
+            Carried::default(),
+            place,
+        )
+        .expect("in order");
         assert!(ordered.t_us.windows(2).all(|pair| pair[1] - pair[0] == S));
         let skipped = [at("2026-03-29T02:30:00")];
-        let problem = order(&skipped, Scale::Local, berlin, 0, place).expect_err("no such time");
+        let problem = order(
+            skipped.to_vec(),
+            Scale::Local,
+            berlin,
+            Carried::default(),
+            place,
+        )
+        .expect_err("no such time");
         assert!(
             problem
                 .to_string()
@@ -259,6 +308,6 @@ mod tests {
         assert_eq!(ordered.t_us, [DAY_US - S, DAY_US, DAY_US + S]);
         let ordered = run(&[4 * S, 3 * S, 2 * S, S], Scale::Elapsed).expect("turned");
         assert!(ordered.newest_first);
-        assert_eq!(ordered.rows, [3, 2, 1, 0]);
+        assert_eq!(ordered.rows, [3, 2, 1, 0].into_iter().collect());
     }
 }

@@ -4,11 +4,14 @@ use super::ColumnNames;
 use super::clock::TimeColumns;
 use super::headings::{Meaning, Owner, Role, Sureness, meaning, squash};
 use super::layout::{Heading, Layout};
+use super::parts::name_the_value;
 use super::stamp::stamp;
 use super::table::{Cell, Table};
+use super::times::{blocks, hold_all, quality_beside_pv, times_of_blocks};
 use super::values::is_good;
 use crate::notice::{Problem, nearest};
 use serde::Serialize;
+use std::collections::BTreeMap;
 
 /// Why a column has its role that the schedule names for it.
 pub(super) const NAMED: &str = "named in the schedule";
@@ -37,12 +40,21 @@ pub struct Roles {
     pub found: Vec<RoleFound>,
     /// Whether rows bear a tag and a value each.
     pub long: bool,
+    /// Signals that have a time column of their own, another than `time`.
+    pub own_times: BTreeMap<Role, TimeColumns>,
+    /// Why the table alone is no log of the loop, where other files may hold the rest of it.
+    pub missing: Vec<Problem>,
 }
 
 impl Roles {
     /// The column of a role.
     pub fn column(&self, role: Role) -> Option<usize> {
         self.found(role).map(|found| found.column)
+    }
+
+    /// The time of a role.
+    pub fn time_of(&self, role: Role) -> TimeColumns {
+        self.own_times.get(&role).copied().unwrap_or(self.time)
     }
 
     /// What was found for a role.
@@ -52,10 +64,10 @@ impl Roles {
 }
 
 /// One table with what its headings say for one loop.
-struct Headings<'a> {
-    table: &'a Table,
-    layout: &'a Layout,
-    meanings: Vec<Meaning>,
+pub(super) struct Headings<'a> {
+    pub table: &'a Table,
+    pub layout: &'a Layout,
+    pub meanings: Vec<Meaning>,
 }
 
 impl Headings<'_> {
@@ -82,7 +94,7 @@ impl Headings<'_> {
         Problem::error(place, message)
     }
 
-    fn role(&self, role: Role, column: usize, why: String) -> RoleFound {
+    pub fn role(&self, role: Role, column: usize, why: String) -> RoleFound {
         let heading = &self.layout.headings[column];
         RoleFound {
             role,
@@ -120,11 +132,15 @@ impl Headings<'_> {
                 })
                 .collect::<Vec<_>>()
         };
-        let matches = if whole.is_empty() {
-            without_unit()
-        } else {
-            whole
+        let one_row = || {
+            headings()
+                .filter(|heading| heading.rows.iter().any(|text| even(text) == even(name)))
+                .collect::<Vec<_>>()
         };
+        let matches = [whole, without_unit(), one_row()]
+            .into_iter()
+            .find(|matches| !matches.is_empty())
+            .unwrap_or_default();
         match matches.as_slice() {
             [one] => Ok(one.column),
             [] => {
@@ -192,6 +208,20 @@ impl Headings<'_> {
         Ok(None)
     }
 
+    /// One column that the schedule names for two roles.
+    fn named_twice(&self, found: &[RoleFound]) -> Option<Problem> {
+        let signals = || found.iter().filter(|found| SIGNALS.contains(&found.role));
+        let (one, other) = signals()
+            .flat_map(|one| signals().map(move |other| (one, other)))
+            .find(|(one, other)| one.role < other.role && one.column == other.column)?;
+        Some(self.problem(format!(
+            "the schedule names column #{} as {} and as {}",
+            one.column + 1,
+            one.role.name(),
+            other.role.name()
+        )))
+    }
+
     fn several(&self, role: Role, columns: &[usize]) -> Problem {
         let texts: Vec<String> = columns
             .iter()
@@ -216,6 +246,9 @@ impl Headings<'_> {
     }
 }
 
+/// What a column of values may be.
+pub(super) const SIGNALS: [Role; 4] = [Role::Pv, Role::Op, Role::Sp, Role::Mode];
+
 /// A heading for comparison: case, spaces and underscores do not count.
 fn even(text: &str) -> String {
     text.chars()
@@ -226,7 +259,7 @@ fn even(text: &str) -> String {
 
 /// Whether the first cells of a column hold dates, and whether they hold times of day. Several are
 /// looked at: a log may begin at midnight, which a workbook keeps as a bare date.
-fn date_and_time(table: &Table, layout: &Layout, column: usize) -> (bool, bool) {
+pub(super) fn date_and_time(table: &Table, layout: &Layout, column: usize) -> (bool, bool) {
     const CELLS_LOOKED_AT: usize = 5;
     (layout.data_start..table.len())
         .map(|index| table.row(index).cell(column))
@@ -255,27 +288,42 @@ fn holds_quality(table: &Table, layout: &Layout, column: usize) -> bool {
         .any(|cell| is_good(cell, &[]).is_some())
 }
 
+/// What is wanted of the columns of a table.
+#[derive(Debug, Clone, Copy)]
+pub struct Wanted<'a> {
+    /// Columns that the schedule names.
+    pub names: &'a ColumnNames,
+    /// Tag of the loop.
+    pub tag: Option<&'a str>,
+    /// Seconds from row to row, of a log without a clock.
+    pub interval_s: Option<f64>,
+    /// Whether other files may hold the signals that this one lacks.
+    pub partial: bool,
+}
+
 /// What the headings of a table tell for one loop, also where they do not tell all.
 #[derive(Debug)]
 pub struct Recognised {
     /// Where the time stands; `None` where that is not known.
     time: Option<TimeColumns>,
+    own_times: BTreeMap<Role, TimeColumns>,
     /// Every column that could be given a role.
     pub found: Vec<RoleFound>,
     /// Whether rows bear a tag and a value each.
     long: bool,
+    missing: Vec<Problem>,
     /// Roles that are missing, named wrongly or may be one of several columns'.
     pub problems: Vec<Problem>,
 }
 
-/// Gives columns their roles for the loop `tag` as far as that can be told.
-pub fn recognise(
-    table: &Table,
-    layout: &Layout,
-    names: &ColumnNames,
-    tag: Option<&str>,
-    interval_s: Option<f64>,
-) -> Recognised {
+/// Gives columns their roles as far as that can be told.
+pub fn recognise(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Recognised {
+    let Wanted {
+        names,
+        tag,
+        interval_s,
+        partial,
+    } = wanted;
     let headings = Headings {
         table,
         layout,
@@ -287,12 +335,10 @@ pub fn recognise(
     };
     let mut problems = Vec::new();
     let mut found: Vec<RoleFound> = Vec::new();
-    let time = match time_columns(&headings, names, interval_s, &mut found) {
-        Ok(time) => Some(time),
-        Err(problem) => {
-            problems.push(problem);
-            None
-        }
+    let time = time_columns(&headings, names, interval_s, &mut found);
+    let blocks = match &time {
+        Err(_) if names.time.is_none() => blocks(&headings),
+        _ => None,
     };
     // In a long table these may name the signal's own text in the tag column.
     let mut unknown_names = Vec::new();
@@ -313,6 +359,13 @@ pub fn recognise(
                 .map(|column| Some(headings.role(role, column, NAMED.to_owned()))),
             None => headings.recognised(role, tag),
         };
+        // Each signal's own quality: that of the PV is wanted.
+        let outcome = match (outcome, &blocks) {
+            (Err(_), Some(blocks)) if role == Role::Quality && name.is_none() => {
+                Ok(quality_beside_pv(&headings, blocks, &found))
+            }
+            (outcome, _) => outcome,
+        };
         match outcome {
             Ok(Some(role)) => found.push(role),
             Ok(None) => {}
@@ -326,60 +379,80 @@ pub fn recognise(
             Err(problem) => problems.push(problem),
         }
     }
-    // "Status" is as often that of something else: a column that was only recognised by its
-    // heading has to hold what a quality is.
+    // "Status" is as often that of something else: such a column has to hold what a quality is.
     found.retain(|found| {
         found.role != Role::Quality
             || names.quality.is_some()
+            || squash(&found.heading).contains("QUAL")
             || holds_quality(table, layout, found.column)
     });
-    let has = |role: Role| found.iter().any(|found| found.role == role);
-    if has(Role::Tag) && !has(Role::Pv) {
+    problems.extend(headings.named_twice(&found));
+    let blocks = blocks.filter(|blocks| hold_all(blocks, &found));
+    let (time, own_times) = match (time, blocks) {
+        (Ok(time), _) => (Some(time), BTreeMap::new()),
+        (Err(_), Some(blocks)) => {
+            let (time, own) = times_of_blocks(&headings, &blocks, &mut found);
+            (Some(time), own)
+        }
+        (Err(problem), None) => {
+            problems.insert(0, problem);
+            (None, BTreeMap::new())
+        }
+    };
+    let has = |found: &[RoleFound], role: Role| found.iter().any(|found| found.role == role);
+    let is_table_of = |found: &[RoleFound]| has(found, Role::Tag) && has(found, Role::Value);
+    if partial && !SIGNALS.iter().any(|&role| has(&found, role)) && !is_table_of(&found) {
+        name_the_value(&headings, tag, &mut found);
+    }
+    let is_for_values = partial && !SIGNALS.iter().any(|&role| has(&found, role));
+    if (has(&found, Role::Tag) && !has(&found, Role::Pv)) || is_for_values {
         problems.append(&mut several_values);
     }
-    let long = has(Role::Tag) && has(Role::Value) && !has(Role::Pv);
+    let long = is_table_of(&found) && !has(&found, Role::Pv);
+    let mut missing = Vec::new();
     if !long {
-        problems.append(&mut unknown_names);
+        missing.append(&mut unknown_names);
+        if missing.is_empty() && problems.is_empty() && !has(&found, Role::Pv) {
+            missing.push(no_pv(&headings, tag));
+        } else if missing.is_empty() && problems.is_empty() && !has(&found, Role::Op) {
+            missing.push(
+                headings
+                    .problem(format!(
+                        "no column is recognised as the OP; {}",
+                        headings.list()
+                    ))
+                    .hint("name it in the schedule under \"op column\", or the file that holds it beside this one under \"test log\""),
+            );
+        }
     }
-    if problems.is_empty() && !long && !has(Role::Pv) {
-        problems.push(no_pv(&headings, tag));
-    }
-    if problems.is_empty() && !long && !has(Role::Op) {
-        problems.push(
-            headings
-                .problem(format!(
-                    "no column is recognised as the OP; {}",
-                    headings.list()
-                ))
-                .hint("name it in the schedule under \"op column\""),
-        );
+    if !partial || !SIGNALS.iter().any(|&role| has(&found, role)) {
+        problems.append(&mut missing);
     }
     found.sort_by_key(|found| found.role);
     Recognised {
         time,
+        own_times,
         found,
         long,
+        missing,
         problems,
     }
 }
 
-/// Gives every column its role for the loop `tag`.
+/// Gives every column its role.
 ///
 /// # Errors
 /// Where a column that is needed is missing, named wrongly or may be one of several.
-pub fn assign(
-    table: &Table,
-    layout: &Layout,
-    names: &ColumnNames,
-    tag: Option<&str>,
-    interval_s: Option<f64>,
-) -> Result<Roles, Vec<Problem>> {
+pub fn assign(table: &Table, layout: &Layout, wanted: Wanted<'_>) -> Result<Roles, Vec<Problem>> {
+    let Wanted { names, tag, .. } = wanted;
     let Recognised {
         time,
+        own_times,
         mut found,
         long,
+        missing,
         problems,
-    } = recognise(table, layout, names, tag, interval_s);
+    } = recognise(table, layout, wanted);
     let Some(time) = time.filter(|_| problems.is_empty()) else {
         return Err(problems);
     };
@@ -396,7 +469,13 @@ pub fn assign(
             found.role != Role::Tag || names.tag.is_some() || holds_tag(found.column)
         });
     }
-    Ok(Roles { time, found, long })
+    Ok(Roles {
+        time,
+        found,
+        long,
+        own_times,
+        missing,
+    })
 }
 
 fn no_pv(headings: &Headings<'_>, tag: Option<&str>) -> Problem {

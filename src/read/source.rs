@@ -206,7 +206,7 @@ mod tests {
         assert!(
             problem
                 .to_string()
-                .starts_with("a.xlsx: the file is not a readable .xlsx workbook: "),
+                .starts_with("a.xlsx: the file is not a whole .xlsx workbook: it was cut short or damaged on the way, or is of another kind\n"),
             "{problem}"
         );
         let problem =
@@ -242,5 +242,27 @@ mod tests {
         std::fs::remove_file(folder.path().join("a.csv")).expect("removed");
         let second = cache.open(folder.path(), "a.csv").expect("kept");
         assert!(Arc::ptr_eq(&first, &second));
+    }
+
+    #[test]
+    fn only_the_sheets_asked_for_are_read() {
+        let mut book = rust_xlsxwriter::Workbook::new();
+        for (name, number) in [("Trend 1", 1), ("Trend 2", 2)] {
+            let sheet = book.add_worksheet().set_name(name).expect("a name");
+            sheet.write_number(0, 0, number).expect("written");
+        }
+        let bytes = book.save_to_buffer().expect("a workbook");
+        let file = SourceFile::from_bytes(bytes, "a.xlsx").expect("readable");
+        let is_read = |k: usize| file.tables[k].table.get().is_some();
+        assert_eq!(file.sheets().collect::<Vec<_>>(), ["Trend 1", "Trend 2"]);
+        assert!(!is_read(0) && !is_read(1));
+        file.sheet("trend 2").expect("there").expect("readable");
+        assert!(!is_read(0) && is_read(1));
+        assert_eq!(file.tables().expect("readable").len(), 2);
+        let workbook = file.workbook.lock().expect("nobody broke it");
+        assert!(
+            workbook.is_none(),
+            "nothing of the file is kept beside its cells"
+        );
     }
 }

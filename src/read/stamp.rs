@@ -188,7 +188,7 @@ impl<'a> Cursor<'a> {
 
 /// `2026-03-14T09:05:00.25` and the same with a space: what most exports write, without the detours
 /// that the other ways need.
-fn plain_iso(text: &str) -> Option<Stamp> {
+pub(super) fn plain_iso(text: &str) -> Option<Stamp> {
     let bytes = text.as_bytes();
     let digits = |range: std::ops::Range<usize>| {
         bytes.get(range)?.iter().try_fold(0_u32, |value, byte| {
@@ -400,7 +400,7 @@ fn time_of_day(hours: &str, separator: char, cursor: &mut Cursor<'_>) -> Option<
     Some(time)
 }
 
-fn clock_us(hours: i64, minutes: i64, seconds: i64) -> Option<i64> {
+pub(super) fn clock_us(hours: i64, minutes: i64, seconds: i64) -> Option<i64> {
     // A leap second is written 60; hours count on in elapsed time.
     if minutes > 59 || seconds > 60 || hours > 100_000 {
         return None;
@@ -409,7 +409,7 @@ fn clock_us(hours: i64, minutes: i64, seconds: i64) -> Option<i64> {
 }
 
 /// Microseconds of the digits behind the decimal sign of the seconds.
-fn fraction_us(digits: &str) -> Option<i64> {
+pub(super) fn fraction_us(digits: &str) -> Option<i64> {
     let six = digits.bytes().chain(std::iter::repeat(b'0')).take(6);
     let value = six.fold(0, |value, digit| value * 10 + i64::from(digit - b'0'));
     (!digits.is_empty()).then_some(value)

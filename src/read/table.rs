@@ -1,5 +1,6 @@
 //! Sheets of workbooks and delimited text as tables of located cells.
 
+use super::blanks;
 use super::delimited::{TextCells, Unreadable};
 use super::sheet::SheetCells;
 use super::text::{self, Decoded};
@@ -165,18 +166,11 @@ impl Table {
         }
     }
 
-    /// The cells of several columns of the n-th row at once, which costs less than one by one.
-    /// `columns` ascend; `cells` has one for each.
-    pub(super) fn pick<'a>(&'a self, index: usize, columns: &[usize], cells: &mut [Cell<'a>]) {
+    /// The rows of a text file; `None` for sheets.
+    pub(super) fn as_text(&self) -> Option<&TextCells> {
         match &self.cells {
-            Cells::Text(text) => {
-                text.pick(index, columns, |k, text| cells[k] = text_cell(text));
-            }
-            Cells::Sheet(sheet) => {
-                for (cell, &column) in cells.iter_mut().zip(columns) {
-                    *cell = sheet.cell(index, column);
-                }
-            }
+            Cells::Text(cells) => Some(cells),
+            Cells::Sheet(_) => None,
         }
     }
 
@@ -192,10 +186,15 @@ impl Table {
     /// A delimited text file.
     ///
     /// # Errors
-    /// Where a quotation mark is left open, or the text is beyond what can be addressed.
+    /// Where a quotation mark is left open, the text is beyond what can be addressed, or blanks alone set
+    /// its columns apart and a row lacks a value.
     pub(super) fn of_text(file: &str, decoded: Decoded) -> Result<Self, Problem> {
         let (delimiter, skipped) = text::delimiter(&decoded.text);
-        let cells = TextCells::new(decoded.text, skipped, delimiter);
+        let cells = if delimiter == b' ' {
+            TextCells::new(blanks::with_tabs(&decoded.text, file)?, 0, b'\t')
+        } else {
+            TextCells::new(decoded.text, skipped, delimiter)
+        };
         let cells = cells.map_err(|reason| match reason {
             Unreadable::OpenQuote(line) => Problem::error(
                 Place::file(file).row(line),
@@ -224,7 +223,8 @@ impl Table {
     }
 }
 
-fn text_cell(text: &str) -> Cell<'_> {
+/// A trimmed text as a cell.
+pub(super) fn text_cell(text: &str) -> Cell<'_> {
     if text.is_empty() {
         Cell::Empty
     } else {

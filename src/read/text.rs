@@ -1,5 +1,6 @@
 //! Text files as exported: their character encoding and the sign that separates their columns.
 
+use super::blanks;
 use encoding_rs::{UTF_16BE, UTF_16LE, WINDOWS_1252};
 
 /// How many lines are looked at to tell the delimiter.
@@ -65,7 +66,8 @@ pub fn decode(bytes: Vec<u8>) -> Decoded {
 /// The sign between the columns, and how many bytes of a leading `sep=` line to leave out.
 ///
 /// A sign counts as the delimiter where nearly every line bears it equally often. The comma is
-/// asked last: in a file with semicolons it is the decimal sign, and then just as regular.
+/// asked late: in a file with semicolons it is the decimal sign, and then just as regular. A blank
+/// is the delimiter of a file whose columns nothing else sets apart.
 pub fn delimiter(text: &str) -> (u8, usize) {
     if let Some(first) = text.lines().next()
         && let Some(sign) = first.trim_end().strip_prefix("sep=")
@@ -89,10 +91,20 @@ pub fn delimiter(text: &str) -> (u8, usize) {
         let alike = counts.iter().filter(|&&count| count == usual).count();
         (usual > 0).then_some(alike * 10 >= counts.len() * 8)
     };
-    let chosen = candidates
-        .into_iter()
-        .find(|&sign| regular(sign) == Some(true))
-        .or_else(|| candidates.into_iter().find(|&sign| regular(sign).is_some()));
+    let is_regular = |signs: &[u8]| {
+        let mut signs = signs.iter().copied();
+        signs.find(|&sign| regular(sign) == Some(true))
+    };
+    let blank = |are_decimals: bool| {
+        let is_wanted = |line: &&str| !are_decimals || blanks::commas_are_decimal(line);
+        (body.iter().all(is_wanted) && blanks::regular_columns(body.iter().copied()).is_some())
+            .then_some(b' ')
+    };
+    let chosen = is_regular(b"\t;|")
+        .or_else(|| blank(true))
+        .or_else(|| is_regular(b","))
+        .or_else(|| candidates.into_iter().find(|&sign| regular(sign).is_some()))
+        .or_else(|| blank(false));
     (chosen.unwrap_or(b','), 0)
 }
 

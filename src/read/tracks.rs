@@ -1,70 +1,116 @@
 //! The signals of a loop, each in order of time: side by side in a wide table, or one after another
 //! in a long one.
 
-use super::clock::Scale;
+use super::clock::{DAY_US, Scale, TimeColumns};
 use super::extract::Understood;
 use super::headings::{Owner, Role, Sureness, meaning, squash};
-use super::order::{self, Ordered};
+use super::order::{self, Carried, Ordered};
+use super::rows::Rows;
+use super::table::Cell;
 use super::{LogRequest, LogRule};
 use crate::notice::Problem;
 use std::collections::BTreeMap;
+use std::rc::Rc;
 
 /// One signal of a table: its column, and its rows in order of time.
-#[derive(Debug, Clone)]
+#[derive(Debug)]
 pub(super) struct Track {
     pub column: usize,
-    pub ordered: Ordered,
-    /// Rows of the table that `ordered.rows` counts in.
-    pub rows: Vec<usize>,
+    /// In order of time; `ordered.rows` counts rows of the table. Signals side by side share it.
+    pub ordered: Rc<Ordered>,
 }
 
 /// The signals of a loop, each in order of time.
 pub(super) struct Tracks {
-    pub pv: Track,
+    pub pv: Option<Track>,
     pub op: Option<Track>,
     pub sp: Option<Track>,
     pub mode: Option<Track>,
     /// Roles found in the tag column of a long table.
     pub named: Vec<super::RoleFound>,
+    /// Signals of the loop that the table lacks, where other files may hold them.
+    pub missing: Vec<Problem>,
 }
 
+impl Tracks {
+    /// The PV, or the first signal of a table that holds no PV.
+    pub fn main(&self) -> &Track {
+        [&self.pv, &self.op, &self.sp, &self.mode]
+            .into_iter()
+            .flatten()
+            .next()
+            .expect("a table without any signal was refused")
+    }
+}
+
+/// Rows with their times: rows of the table, and microseconds of each.
+#[derive(Debug, Clone, Default)]
+pub(super) struct Timed {
+    pub rows: Rows,
+    pub t_us: Vec<i64>,
+}
+
+/// What puts the rows of a signal in order.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Order<'a> {
+    pub scale: Scale,
+    pub rule: &'a LogRule,
+    pub carried: Carried,
+}
+
+/// The signals of a table. `main` are the rows of the PV, `own` those of signals with a time column of
+/// their own.
+///
+/// # Errors
+/// Where time runs back, or signals of a long table cannot be told.
 pub(super) fn tracks(
     request: &LogRequest,
-    rule: &LogRule,
     understood: &Understood<'_>,
-    rows: &[usize],
-    t_us: &[i64],
-    scale: Scale,
-    shift_us: i64,
+    main: Timed,
+    mut own: BTreeMap<Role, Timed>,
+    order: Order<'_>,
 ) -> Result<Tracks, Vec<Problem>> {
     let table = understood.table;
-    let ordered = |chosen: &[usize]| {
-        let rows: Vec<usize> = chosen.iter().map(|&k| rows[k]).collect();
-        let times: Vec<i64> = chosen.iter().map(|&k| t_us[k]).collect();
-        let place = |row: usize| table.place().row(table.row(rows[row]).number);
-        order::order(&times, scale, rule.zone, shift_us, place)
-            .map(|ordered| (ordered, rows.clone()))
-            .map_err(|problem| vec![problem])
-    };
+    let scale = order.scale;
     let roles = &understood.roles;
-    if !roles.long {
-        let all: Vec<usize> = (0..rows.len()).collect();
-        let (mut main, main_rows) = ordered(&all)?;
-        count_from_first(&mut [&mut main], scale);
-        let track = |role: Role| {
-            roles.column(role).map(|column| Track {
-                column,
-                ordered: main.clone(),
-                rows: main_rows.clone(),
-            })
+    let in_order = |timed: Timed, time: TimeColumns| {
+        let Timed { rows, t_us } = timed;
+        let place = |k: usize| {
+            let place = table.place().row(table.row(rows.get(k)).number);
+            let (TimeColumns::Single(column) | TimeColumns::Pair { time: column, .. }) = time
+            else {
+                return place;
+            };
+            let heading = &understood.layout.headings[column].text;
+            place.column(column, (!heading.is_empty()).then_some(heading.as_str()))
         };
-        return Ok(Tracks {
-            pv: track(Role::Pv).expect("a wide table was given its PV column"),
-            op: track(Role::Op),
-            sp: track(Role::Sp),
-            mode: track(Role::Mode),
+        let mut ordered = order::order(t_us, scale, order.rule.zone, order.carried, place)
+            .map_err(|problem| vec![problem])?;
+        ordered.rows = rows.pick(&ordered.rows);
+        Ok::<_, Vec<Problem>>(Rc::new(ordered))
+    };
+    if !roles.long {
+        let shared = in_order(main, roles.time)?;
+        let mut track = |role: Role| -> Result<Option<Track>, Vec<Problem>> {
+            let Some(column) = roles.column(role) else {
+                return Ok(None);
+            };
+            let ordered = match own.remove(&role) {
+                Some(timed) => in_order(timed, roles.time_of(role))?,
+                None => Rc::clone(&shared),
+            };
+            Ok(Some(Track { column, ordered }))
+        };
+        let mut tracks = Tracks {
+            pv: track(Role::Pv)?,
+            op: track(Role::Op)?,
+            sp: track(Role::Sp)?,
+            mode: track(Role::Mode)?,
             named: Vec::new(),
-        });
+            missing: roles.missing.clone(),
+        };
+        tracks.count_from_first(scale);
+        return Ok(tracks);
     }
     let column = roles
         .column(Role::Value)
@@ -72,16 +118,23 @@ pub(super) fn tracks(
     let tag_column = roles
         .column(Role::Tag)
         .expect("a long table has a tag column");
-    let texts = series_texts(request, understood, rows, tag_column)?;
+    let Timed { rows, t_us } = main;
+    let (texts, missing) = series_texts(request, understood, &rows)?;
     let mut named = Vec::new();
     let mut track = |role: Role| -> Result<Option<Track>, Vec<Problem>> {
         let Some(text) = texts.get(&role) else {
             return Ok(None);
         };
-        let chosen: Vec<usize> = (0..rows.len())
-            .filter(|&k| table.row(rows[k]).cell(tag_column).text() == *text)
-            .collect();
-        let (ordered, rows) = ordered(&chosen)?;
+        let bears = |row: usize| match table.cell(row, tag_column) {
+            Cell::Text(found) => found == text,
+            cell => cell.text() == *text,
+        };
+        let chosen: Rows = (0..rows.len()).filter(|&k| bears(rows.get(k))).collect();
+        let timed = Timed {
+            rows: rows.pick(&chosen),
+            t_us: chosen.iter().map(|k| t_us[k]).collect(),
+        };
+        let ordered = in_order(timed, roles.time)?;
         named.push(super::RoleFound {
             role,
             column,
@@ -89,11 +142,7 @@ pub(super) fn tracks(
             unit: None,
             why: format!("{} rows bear this tag", chosen.len()),
         });
-        Ok(Some(Track {
-            column,
-            ordered,
-            rows,
-        }))
+        Ok(Some(Track { column, ordered }))
     };
     let (pv, op, sp, mode) = (
         track(Role::Pv)?,
@@ -102,48 +151,69 @@ pub(super) fn tracks(
         track(Role::Mode)?,
     );
     let mut tracks = Tracks {
-        pv: pv.expect("the PV's text was found among the tags"),
+        pv,
         op,
         sp,
         mode,
         named,
+        missing,
     };
-    let mut all: Vec<&mut Ordered> = [&mut tracks.op, &mut tracks.sp, &mut tracks.mode]
-        .into_iter()
-        .flatten()
-        .map(|track| &mut track.ordered)
-        .collect();
-    all.insert(0, &mut tracks.pv.ordered);
-    count_from_first(&mut all, scale);
+    tracks.count_from_first(scale);
     Ok(tracks)
 }
 
-/// Times of day without a date count from the first row of the log (that of the first signal).
-fn count_from_first(signals: &mut [&mut Ordered], scale: Scale) {
-    let first = signals
-        .first()
-        .and_then(|signal| signal.t_us.first().copied());
-    if let (Some(first), Scale::TimeOfDay { dated: false }) = (first, scale) {
-        for signal in signals {
-            for t_us in &mut signal.t_us {
-                *t_us -= first;
+impl Tracks {
+    /// Times of day without a date count from the first row of the log (that of the first signal). A
+    /// signal that begins in the other half of the day begins on the other side of midnight.
+    fn count_from_first(&mut self, scale: Scale) {
+        let Scale::TimeOfDay { dated } = scale else {
+            return;
+        };
+        let Some(first) = self.main().ordered.t_us.first().copied() else {
+            return;
+        };
+        let zero = if dated { 0 } else { first };
+        for track in [&mut self.pv, &mut self.op, &mut self.sp, &mut self.mode]
+            .into_iter()
+            .flatten()
+        {
+            let begins = track.ordered.t_us.first().copied().unwrap_or(first);
+            let days = if begins - first < -DAY_US / 2 {
+                DAY_US
+            } else if begins - first > DAY_US / 2 {
+                -DAY_US
+            } else {
+                0
+            };
+            for t_us in &mut Rc::make_mut(&mut track.ordered).t_us {
+                *t_us += days - zero;
             }
         }
     }
 }
 
+/// The text in the tag column for each signal, and what the table lacks.
+pub(super) type Texts = (BTreeMap<Role, String>, Vec<Problem>);
+
 /// The text in the tag column that stands for each signal of the loop.
-fn series_texts(
+pub(super) fn series_texts(
     request: &LogRequest,
     understood: &Understood<'_>,
-    rows: &[usize],
-    tag_column: usize,
-) -> Result<BTreeMap<Role, String>, Vec<Problem>> {
+    rows: &Rows,
+) -> Result<Texts, Vec<Problem>> {
     let table = understood.table;
+    let tag_column = understood
+        .roles
+        .column(Role::Tag)
+        .expect("a long table has a tag column");
     let mut texts: Vec<String> = Vec::new();
     let mut seen = std::collections::BTreeSet::new();
-    for &row in rows {
-        let text = table.row(row).cell(tag_column).text();
+    for row in rows.iter() {
+        let cell = table.cell(row, tag_column);
+        if matches!(cell, Cell::Text(text) if seen.contains(text)) {
+            continue;
+        }
+        let text = cell.text();
         if seen.insert(text.clone()) {
             texts.push(text);
         }
@@ -167,6 +237,8 @@ fn series_texts(
     };
     let mut found = BTreeMap::new();
     let mut problems = Vec::new();
+    // A name that another file may bear.
+    let mut absent = Vec::new();
     for (role, name) in [
         (Role::Pv, &request.columns.pv),
         (Role::Op, &request.columns.op),
@@ -178,7 +250,12 @@ fn series_texts(
                 Some(text) => {
                     found.insert(role, text.clone());
                 }
-                None => problems.push(Problem::error(
+                None => (if understood.partial {
+                    &mut absent
+                } else {
+                    &mut problems
+                })
+                .push(Problem::error(
                     place(),
                     format!(
                         "the schedule names {} \"{name}\", which no row bears; the tags are {}",
@@ -226,10 +303,11 @@ fn series_texts(
             ),
         }
     }
-    if problems.is_empty() {
+    let mut missing = absent;
+    if problems.is_empty() && missing.is_empty() {
         for role in [Role::Pv, Role::Op] {
             if !found.contains_key(&role) {
-                problems.push(
+                missing.push(
                     Problem::error(
                         place(),
                         format!(
@@ -246,8 +324,11 @@ fn series_texts(
             }
         }
     }
+    if !understood.partial || found.is_empty() {
+        problems.append(&mut missing);
+    }
     if problems.is_empty() {
-        Ok(found)
+        Ok((found, missing))
     } else {
         Err(problems)
     }

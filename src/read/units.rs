@@ -1,8 +1,13 @@
 //! Units as headings and schedules write them: enough to see that two of them differ.
+//!
+//! Nothing is converted here: where log and schedule differ, the schedule gives scale and offset. The symbols
+//! of SI units and of units used beside them are those of ISO 80000-1:2022 and NIST SP 811 (2008), tables 2,
+//! 3, 6 and 8; those of US customary units stand in its appendix B.8 (from memory). The other spellings are
+//! common in exports.
 
 /// Spellings of a unit; the first is how it is printed in messages. Units of one measure stand
 /// together only for reading: every line is a unit of its own.
-const UNITS: [&[&str]; 41] = [
+const UNITS: [&[&str]; 52] = [
     &["degC", "c", "celsius", "gradc"],
     &["degF", "f", "fahrenheit"],
     &["K", "kelvin"],
@@ -44,6 +49,17 @@ const UNITS: [&[&str]; 41] = [
     &["ppm", "ppmw", "ppmv"],
     &["mA"],
     &["rpm", "1/min"],
+    &["m3/d", "m3/day"],
+    &["ft3/min", "cfm"],
+    &["scfm"],
+    &["bbl/d", "bpd", "bbl/day"],
+    &["lb/min"],
+    &["kg/m3"],
+    &["g/l"],
+    &["pH"],
+    &["uS/cm", "µs/cm", "μs/cm"],
+    &["mS/cm"],
+    &["Hz"],
 ];
 
 /// A unit with its spelling evened out: case, spaces, the degree sign, raised figures.
@@ -160,6 +176,9 @@ mod tests {
         assert!(differ("bar", "kPa"));
         assert!(differ("m3/h", "l/h"));
         assert!(differ("bara", "barg"));
+        assert!(differ("psi", "bar"));
+        assert!(differ("µS/cm", "mS/cm"));
+        assert!(differ("scfm", "cfm"));
         assert!(!differ("bar", "bar(g)"));
         assert!(!differ("degC", "widgets"));
         assert_eq!(TimeUnit::of("sec."), Some(TimeUnit::Seconds));

@@ -72,6 +72,7 @@ fn is_bad_text(text: &str, own: &[String]) -> bool {
             .chars()
             .all(|letter| matches!(letter, '-' | '?' | '*' | '#' | '.'))
         || lower.starts_with('#')
+        || lower.starts_with("err:")
         || own.iter().any(|own| own.trim().to_lowercase() == lower)
 }
 
@@ -142,6 +143,11 @@ pub fn is_good(cell: Cell<'_>, bad_values: &[String]) -> Option<bool> {
                 return code(number);
             }
             let lower = text.to_lowercase();
+            if let Some(digits) = lower.strip_prefix("0x") {
+                return u16::from_str_radix(digits, 16)
+                    .ok()
+                    .and_then(|number| code(f64::from(number)));
+            }
             let first = lower
                 .split(|letter: char| !letter.is_alphanumeric())
                 .next()
@@ -205,6 +211,8 @@ mod tests {
             ("0", Some(false)),
             ("64", Some(false)),
             ("1", Some(true)),
+            ("0xC0", Some(true)),
+            ("0x18", Some(false)),
             ("TRUE", Some(true)),
             ("false", Some(false)),
             ("Not good", Some(false)),

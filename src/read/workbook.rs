@@ -23,15 +23,16 @@ impl std::fmt::Debug for Workbook {
     }
 }
 
-/// The reading library says so, or the cells themselves are at fault.
+/// The reading library refuses the file (its own words are of no use to who exported it), or the cells
+/// themselves are at fault.
 enum Failure {
-    Library(String),
+    Library,
     Cells(Refused),
 }
 
 impl<E: std::error::Error> From<E> for Failure {
-    fn from(error: E) -> Self {
-        Failure::Library(error.to_string())
+    fn from(_: E) -> Self {
+        Failure::Library
     }
 }
 
@@ -75,17 +76,16 @@ impl Workbook {
 /// A workbook damaged on the way may break the reading library's own expectations: that is a problem
 /// of this one file and must not end the run.
 fn guard<T>(work: impl FnOnce() -> Result<T, Failure>) -> Result<T, Failure> {
-    guarded(AssertUnwindSafe(work))
-        .unwrap_or_else(|| Err(Failure::Library("it is damaged".to_owned())))
+    guarded(AssertUnwindSafe(work)).unwrap_or(Err(Failure::Library))
 }
 
 fn told(failure: Failure, name: &str, ending: &str) -> Problem {
     match failure {
-        Failure::Library(reason) => Problem::error(
+        Failure::Library => Problem::error(
             Place::file(name),
-            format!("the file is not a readable .{ending} workbook: {reason}"),
+            format!("the file is not a whole .{ending} workbook: it was cut short or damaged on the way, or is of another kind"),
         )
-        .hint("open it in a spreadsheet program and save it again"),
+        .hint("copy it again from where it was exported, or open it in a spreadsheet program and save it again"),
         Failure::Cells(_) => too_large(name),
     }
 }

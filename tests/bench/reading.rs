@@ -2,12 +2,15 @@
 //!
 //! A csv and an xlsx of 1,000,000 rows and 4 columns (time, PV, OP, SP) are made once. Then the library
 //! alone and the whole reading, from the disk to samples, take turns, so that whatever else the machine
-//! does falls on both; what counts is the ratio of their medians. The peak of the memory is counted by the
+//! does falls on both; what counts is the ratio of their medians. Of the csv crate two ways are measured:
+//! a walk over the records, and the same with each field made a time or a number, as it takes to have
+//! samples. The reading makes a digest of the file besides. The peak of the memory is counted by the
 //! allocator and held against the samples kept: time, PV, OP and SP of every row, 8 bytes each.
 
 use asleft::read::{FileCache, LogRead, LogRequest, read_log};
 use calamine::Reader;
 use chrono::{NaiveDate, NaiveDateTime, TimeDelta};
+use cpu_time::ProcessTime;
 use peakmem_alloc::{INSTRUMENTED_SYSTEM, PeakMemAlloc, PeakMemAllocTrait};
 use std::alloc::System;
 use std::fmt::Write as _;
@@ -15,7 +18,7 @@ use std::fs;
 use std::hint::black_box;
 use std::io::{BufReader, Write};
 use std::path::Path;
-use std::time::{Duration, Instant};
+use std::time::Instant;
 
 #[global_allocator]
 static ALLOCATOR: &PeakMemAlloc<System> = &INSTRUMENTED_SYSTEM;
@@ -28,82 +31,117 @@ const HEADINGS: [&str; 4] = ["Time", "TIC-204.PV", "TIC-204.OP", "TIC-204.SP"];
 fn main() {
     let folder = tempfile::tempdir().expect("a folder");
     let root = folder.path();
-    write_csv(&root.join(CSV));
-    write_xlsx(&root.join(XLSX));
-    let csv = root.join(CSV);
-    let xlsx = root.join(XLSX);
-
-    let [csv_alone, csv_asleft] = in_turns(15, [&|| walk_csv(&csv), &|| read(root, CSV)]);
-    let [cells, range, xlsx_asleft] = in_turns(
-        5,
-        [&|| walk_cells(&xlsx), &|| walk_range(&xlsx), &|| {
-            read(root, XLSX)
-        }],
-    );
-    let kept = (4 * size_of::<f64>() * ROWS) as f64;
-    let csv_peak = peak(|| read(root, CSV));
-    let xlsx_peak = peak(|| read(root, XLSX));
-
-    let ms = |time: Duration| time.as_secs_f64() * 1e3;
-    let mib = |bytes: f64| bytes / f64::from(1 << 20);
-    let ratio = |a: Duration, b: Duration| a.as_secs_f64() / b.as_secs_f64();
-    let report = [
-        format!("{ROWS} rows of 4 columns, medians of turns"),
-        format!(
-            "csv    the csv crate walks it          {:8.1} ms",
-            ms(csv_alone)
-        ),
-        format!(
-            "csv    asleft, from disk to samples    {:8.1} ms   {:.2} times the csv crate",
-            ms(csv_asleft),
-            ratio(csv_asleft, csv_alone)
-        ),
-        format!(
-            "xlsx   calamine, cells one by one      {:8.1} ms",
-            ms(cells)
-        ),
-        format!(
-            "xlsx   calamine, range of the sheet    {:8.1} ms",
-            ms(range)
-        ),
-        format!(
-            "xlsx   asleft, from disk to samples    {:8.1} ms   {:.2} times calamine's range, {:.2} times its cells",
-            ms(xlsx_asleft),
-            ratio(xlsx_asleft, range),
-            ratio(xlsx_asleft, cells)
-        ),
-        format!(
-            "memory samples kept                    {:8.1} MiB",
-            mib(kept)
-        ),
-        format!(
-            "memory peak while the csv is read      {:8.1} MiB  {:.2} times the samples",
-            mib(csv_peak),
-            csv_peak / kept
-        ),
-        format!(
-            "memory peak while the xlsx is read     {:8.1} MiB  {:.2} times the samples",
-            mib(xlsx_peak),
-            xlsx_peak / kept
-        ),
-    ];
-    writeln!(std::io::stdout(), "{}", report.join("\n")).expect("a terminal");
+    let is_asked = |what: &str| {
+        let mut names = std::env::args()
+            .skip(1)
+            .filter(|name| !name.starts_with('-'))
+            .peekable();
+        names.peek().is_none() || names.any(|name| what.contains(&name))
+    };
+    say(&format!(
+        "{ROWS} rows of 4 columns; medians of turns: elapsed, and on the processors\n"
+    ));
+    if is_asked(CSV) {
+        write_csv(&root.join(CSV));
+        csv(root);
+    }
+    if is_asked(XLSX) {
+        write_xlsx(&root.join(XLSX));
+        xlsx(root);
+    }
 }
 
-/// Median times of several pieces of work that take turns.
-fn in_turns<const N: usize>(turns: usize, work: [&dyn Fn(); N]) -> [Duration; N] {
-    let mut times: [Vec<Duration>; N] = [const { Vec::new() }; N];
+fn csv(root: &Path) {
+    let file = root.join(CSV);
+    let work: [&dyn Fn(); 3] = [&|| walk_csv(&file), &|| parse_csv(&file), &|| {
+        read(root, CSV)
+    }];
+    let [alone, parsed, asleft] = in_turns(31, work);
+    say(&alone.line("csv   the csv crate walks it", &[]));
+    say(&parsed.line("csv   the csv crate, fields parsed", &[]));
+    let others = [("the walk", alone), ("that with its fields parsed", parsed)];
+    say(&asleft.line("csv   asleft, from disk to samples", &others));
+    say(&peak_line("csv   peak of memory", peak(|| read(root, CSV))));
+}
+
+fn xlsx(root: &Path) {
+    let file = root.join(XLSX);
+    let work: [&dyn Fn(); 3] = [&|| walk_cells(&file), &|| walk_range(&file), &|| {
+        read(root, XLSX)
+    }];
+    let [cells, range, asleft] = in_turns(7, work);
+    say(&cells.line("xlsx  calamine, cells one by one", &[]));
+    say(&range.line("xlsx  calamine, range of the sheet", &[]));
+    let others = [("calamine's range", range), ("its cells", cells)];
+    say(&asleft.line("xlsx  asleft, from disk to samples", &others));
+    say(&peak_line(
+        "xlsx  peak of memory",
+        peak(|| read(root, XLSX)),
+    ));
+}
+
+fn say(line: &str) {
+    writeln!(std::io::stdout(), "{line}").expect("a terminal");
+}
+
+/// Seconds that some work took.
+#[derive(Clone, Copy)]
+struct Took {
+    elapsed: f64,
+    /// Of all processors.
+    computing: f64,
+}
+
+impl Took {
+    fn line(self, name: &str, others: &[(&str, Took)]) -> String {
+        let mut line = format!(
+            "{name:36} {:8.1} ms {:8.1} ms",
+            self.elapsed * 1e3,
+            self.computing * 1e3
+        );
+        for (other, took) in others {
+            write!(
+                line,
+                "   {:.2} and {:.2} times {other}",
+                self.elapsed / took.elapsed,
+                self.computing / took.computing
+            )
+            .expect("a string takes any text");
+        }
+        line
+    }
+}
+
+/// Medians of several pieces of work that take turns.
+fn in_turns<const N: usize>(turns: usize, work: [&dyn Fn(); N]) -> [Took; N] {
+    let mut times: [[Vec<f64>; 2]; N] = [const { [Vec::new(), Vec::new()] }; N];
     for _ in 0..turns {
-        for (times, work) in times.iter_mut().zip(work) {
-            let begun = Instant::now();
+        for ([elapsed, computing], work) in times.iter_mut().zip(work) {
+            let (begun, cpu) = (Instant::now(), ProcessTime::now());
             work();
-            times.push(begun.elapsed());
+            elapsed.push(begun.elapsed().as_secs_f64());
+            computing.push(cpu.elapsed().as_secs_f64());
         }
     }
-    times.map(|mut times| {
-        times.sort_unstable();
+    let median = |mut times: Vec<f64>| {
+        times.sort_unstable_by(f64::total_cmp);
         times[turns / 2]
+    };
+    times.map(|[elapsed, computing]| Took {
+        elapsed: median(elapsed),
+        computing: median(computing),
     })
+}
+
+fn peak_line(name: &str, bytes: f64) -> String {
+    let kept = (4 * size_of::<f64>() * ROWS) as f64;
+    let mib = |bytes: f64| bytes / f64::from(1 << 20);
+    format!(
+        "{name:36} {:8.1} MiB  {:.2} times the {:.1} MiB of the samples kept",
+        mib(bytes),
+        bytes / kept,
+        mib(kept)
+    )
 }
 
 /// Bytes at the peak of some work above those before it.
@@ -176,6 +214,22 @@ fn walk_csv(path: &Path) {
         fields += record.len();
     }
     assert_eq!(fields, 4 * ROWS);
+}
+
+/// The same with every field parsed by the means of chrono and the standard library.
+fn parse_csv(path: &Path) {
+    let mut reader = csv::Reader::from_path(path).expect("a file");
+    let mut record = csv::StringRecord::new();
+    let mut times: Vec<NaiveDateTime> = Vec::new();
+    let mut numbers: [Vec<f64>; 3] = [const { Vec::new() }; 3];
+    while reader.read_record(&mut record).expect("a record") {
+        times.push(record[0].parse().expect("a time"));
+        for (numbers, field) in numbers.iter_mut().zip(record.iter().skip(1)) {
+            numbers.push(field.parse().expect("a number"));
+        }
+    }
+    assert_eq!(times.len(), ROWS);
+    black_box((times, numbers));
 }
 
 fn open(path: &Path) -> calamine::Xlsx<BufReader<fs::File>> {

@@ -8,6 +8,7 @@ mod cascade;
 mod cli;
 mod demo;
 mod errors;
+mod forms;
 mod identify;
 mod inspect;
 mod layering;

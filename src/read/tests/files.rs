@@ -469,3 +469,16 @@ fn a_clock_coarser_than_its_rows_is_told() {
         found[0]
     );
 }
+
+#[test]
+fn a_file_of_several_loops_is_opened_once() {
+    let logs = csv("Time,TIC-204.PV,TIC-204.OP,FIC-9.PV,FIC-9.OP\n0,71,40,5,20\n1,72,40,6,20\n");
+    let cache = FileCache::new();
+    let first = read_log(&logs.request, &cache).expect("a log");
+    std::fs::remove_file(logs.folder.path().join("a.csv")).expect("removed");
+    let logs = logs.asking(|request| request.tag = Some("FIC-9".to_owned()));
+    let second = read_log(&logs.request, &cache).expect("what was read is kept");
+    assert_eq!(first.samples.pv, [71.0, 72.0]);
+    assert_eq!(second.samples.pv, [5.0, 6.0]);
+    assert_eq!(first.sources[0].sha256, second.sources[0].sha256);
+}
