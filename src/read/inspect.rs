@@ -449,7 +449,7 @@ impl Look<'_> {
             // Nobody gave it: `supposed` says what was.
             source.clock_format = source
                 .clock_format
-                .replace("as given in job.toml", "supposed");
+                .replace(" as given in job.toml", ", supposed");
             for found in &mut source.roles {
                 if found.why == roles::NAMED {
                     found.why = "supposed".to_owned();
