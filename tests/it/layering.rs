@@ -116,6 +116,7 @@ const RESERVED: &[(&[&str], &[&str])] = &[
     (&["plotters::"], &["figures/"]),
     (&["calamine::"], &["read/workbook"]),
     (&["csv::Reader"], &[]),
+    (&["zip::"], &["read/weight"]),
     (&["csv::Writer"], &["job/schedule", "register.rs"]),
     (&["rust_xlsxwriter::"], &["job/"]),
 ];

@@ -19,6 +19,7 @@ mod plan;
 mod plant;
 mod predict;
 mod published;
+mod reading;
 mod register;
 mod schema;
 mod support;
