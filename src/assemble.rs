@@ -183,8 +183,10 @@ pub fn assemble(input: LoopInput) -> Result<Record, Vec<Problem>> {
     if record.design.is_some()
         && let (Some(log), Some(native), Some(model)) = (&input.trial, input.left, &fit)
     {
+        let others = design::other_models(model);
         let as_left = AsLeft {
             model: &model.process(),
+            others: &others,
             terms: &input.controller.terms(native),
             controller: &input.controller,
             filter: left.filter,

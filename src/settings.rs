@@ -479,19 +479,37 @@ mod tests {
                 IntegralUnit::Seconds, IntegralUnit::Minutes,
                 IntegralUnit::PerSecond, IntegralUnit::PerMinute,
             ]),
+            d_as in prop::sample::select(vec![DerivativeUnit::Seconds, DerivativeUnit::Minutes]),
+            terms in prop::sample::select(vec!["P", "PI", "PD", "PID"]),
         ) {
             // Parallel gains are never typed as a band or the integral as a time.
             let parallel = form == EquationForm::Parallel;
             prop_assume!(!parallel || (p_as != ProportionalUnit::Band
                 && matches!(i_as, IntegralUnit::PerSecond | IntegralUnit::PerMinute)));
-            let controller = Controller { p_as, i_as, ..controller(form) };
-            let given = standard(kc, ti, part * ti);
+            let controller = Controller { p_as, i_as, d_as, ..controller(form) };
+            let given = Standard {
+                kc,
+                ti_s: terms.contains('I').then_some(ti),
+                td_s: if terms.contains('D') { part * ti } else { 0.0 },
+            };
             let native = controller.native(given).expect("Ti is at least 4 Td");
             let back = controller.terms(native).standard().expect("proportional gain");
             // Near Ti = 4 Td the square root halves the figures.
             prop_assert!((back.kc / given.kc - 1.0).abs() < 1e-7);
-            prop_assert!((back.ti_s.expect("integral") / ti - 1.0).abs() < 1e-7);
+            prop_assert_eq!(back.ti_s.is_some(), given.ti_s.is_some());
+            prop_assert!((back.ti_s.unwrap_or(ti) / ti - 1.0).abs() < 1e-7);
             prop_assert!((back.td_s - given.td_s).abs() < 1e-7 * ti);
+            // And typed numbers come back as typed, the four digits of a faceplate kept.
+            let typed = native.rounded();
+            let again = controller.terms(typed).standard().expect("proportional gain");
+            // At the edge Ti = 4 Td rounding may leave what no series controller is.
+            if let Some(again) = controller.native(again).map(Native::rounded) {
+                let kept = |a: f64, b: f64| (a - b).abs() <= 1e-3 * b.abs();
+                prop_assert!(
+                    part > 0.24 || (kept(again.p, typed.p) && kept(again.i, typed.i) && kept(again.d, typed.d)),
+                    "{typed:?} came back as {again:?}"
+                );
+            }
         }
     }
 }

@@ -122,6 +122,13 @@ fn floors(basis: &Basis) -> Result<Vec<Floor>, Refusal> {
     }
     let others = floors.iter().map(|f| f.need.seconds()).fold(0.0, f64::max);
     let need = limits::robustness(basis, others);
+    if need == Need::NoSettings {
+        return Err(Refusal::NoSolution {
+            text: "No closed-loop time constant satisfies every limit: none gives settings that the form of the \
+                   controller can hold."
+                .to_owned(),
+        });
+    }
     if let Need::Impossible(nearest) = &need {
         let figure = if nearest.ms.is_finite() {
             format!(

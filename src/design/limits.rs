@@ -22,6 +22,8 @@ pub enum Need {
     NotAssessed,
     /// No τc meets it.
     Impossible(Nearest),
+    /// No τc gives settings that the controller's form can hold.
+    NoSettings,
 }
 
 impl Need {
@@ -206,8 +208,9 @@ pub fn robustness(basis: &Basis, others_s: f64) -> Need {
         tau_c /= SEARCH_RATIO;
     }
     match (slower_holds, nearest) {
+        (Some(_), _) => Need::Any,
         (None, Some(nearest)) => Need::Impossible(nearest),
-        _ => Need::Any,
+        (None, None) => Need::NoSettings,
     }
 }
 

@@ -21,7 +21,7 @@ mod tests;
 mod words;
 
 pub use candidate::effective_dead_time_s;
-pub use robustness::{WorstMargins, worst_margins};
+pub use robustness::{WorstMargins, other_models, worst_margins};
 
 /// What the loop is for.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default, Serialize, Deserialize, JsonSchema)]

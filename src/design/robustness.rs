@@ -33,11 +33,18 @@ fn in_words(label: &str) -> String {
 }
 
 /// Every model the design has to be safe for, the fitted one first, named as in a sentence.
-pub fn all_models(model: &Model) -> Vec<(String, ProcessModel)> {
+fn all_models(model: &Model) -> Vec<(String, ProcessModel)> {
     let mut all = vec![(FITTED.to_owned(), model.process())];
-    let members = model.set_models().into_iter();
-    all.extend(members.map(|(label, member)| (in_words(label), member)));
+    all.extend(other_models(model));
     all
+}
+
+/// The models of the set, without the fitted one, named as in a sentence.
+pub fn other_models(model: &Model) -> Vec<(String, ProcessModel)> {
+    let members = model.set_models().into_iter();
+    members
+        .map(|(label, member)| (in_words(label), member))
+        .collect()
 }
 
 /// The worst of each margin over the fitted model and its set.

@@ -3,7 +3,7 @@
 use crate::design::{Aim, DesignBounds};
 use crate::identify::{Model, Reading, Reason, ReasonCode, Step, StepFit, Verdict, VerdictBounds};
 use crate::model::{ProcessModel, State};
-use crate::predict::trial::{Trial, TrialKind};
+use crate::predict::trial::{Band, Trial, TrialKind};
 use crate::predict::{Curve, Margins, Metrics, Predicted, Response};
 use crate::quantity::{Estimate, Span};
 use crate::record::*;
@@ -401,6 +401,9 @@ impl Plan {
             why: "settles and overshoots as predicted".to_owned(),
             oscillation: None,
             curve: absolute,
+            moves: Vec::new(),
+            not_judged: None,
+            band: Band::default(),
         };
         (samples, trial)
     }

@@ -8,16 +8,20 @@ use super::trend::{self, Outline, Trend};
 use super::{Figure, narrate};
 use crate::display::{duration, plain, with_unit};
 use crate::predict::Metrics;
-use crate::predict::trial::{Trial, TrialKind};
+use crate::predict::trial::TrialKind;
 use crate::quantity::Span;
 use crate::record::{Log, Record};
 
 const WIDTH_MM: f64 = 170.0;
-const HEIGHT_MM: f64 = 93.0;
+const HEIGHT_MM: f64 = 86.0;
 /// Measured PV and OP.
 const MEASURED_PT: f64 = 0.6;
 /// Predicted PV and OP.
 const PREDICTED: Stroke = Stroke::dashed(1.3, 4.5, 2.5);
+/// The ends of what the models of the test predict.
+const BAND: Stroke = Stroke::dashed(0.5, 0.8, 2.2);
+/// A band that is nowhere wider than this on paper says nothing that the predicted line does not, pt.
+const BAND_SEEN_PT: f64 = 3.0;
 const SP: Stroke = Stroke::solid(0.6, Ink::Black);
 
 /// Draws the trial; `None` where there is no log of one, or nothing in it to draw.
@@ -69,6 +73,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         &lines.op,
         Stroke::solid(MEASURED_PT, Ink::Black),
     );
+    let band = draw_band(&mut canvas, &trend, record, pv_span);
     let predicted = trend.pv.curve(&mut canvas, &pv, PREDICTED);
     let op_predicted = trend.op.curve(&mut canvas, &op, PREDICTED);
 
@@ -87,12 +92,14 @@ pub fn draw(record: &Record) -> Option<Figure> {
         taken.add_grid(trend.grid());
         taken.add_paths(&set_point);
         taken.add_paths(&measured);
+        taken.add_paths(&band);
         let name = Block::line("predicted", false);
         name_curve(&mut canvas, &mut taken, &predicted, &name, sheet);
         let mut taken = Taken::words_of(&canvas);
         taken.add_grid(trend.grid());
         taken.add_paths(&set_point);
         taken.add_paths(&predicted);
+        taken.add_paths(&band);
         let name = Block::line("measured", false);
         name_curve(&mut canvas, &mut taken, &measured, &name, sheet);
         let frame = trend.op.frame;
@@ -103,24 +110,47 @@ pub fn draw(record: &Record) -> Option<Figure> {
         let name = Block::line("predicted", false);
         name_curve(&mut canvas, &mut taken, &op_predicted, &name, sheet);
     }
-    let caption = match &record.trial {
+    let band = if band.is_empty() {
+        ""
+    } else {
+        "; dotted: the ends of what all models predict"
+    };
+    let caption = match record.trial.as_ref().map(|trial| trial.kind) {
         None => "The trial as logged.".to_owned(),
-        Some(Trial {
-            kind: TrialKind::SetPoint,
-            ..
-        }) => {
-            "The trial as logged (solid), and what the fitted model predicts from the logged set \
-             point (dashed)."
-                .to_owned()
-        }
-        Some(Trial {
-            kind: TrialKind::Load,
-            ..
-        }) => "The trial as logged (solid), and what the fitted model predicts from the load that \
-             fits it best (dashed)."
-            .to_owned(),
+        Some(TrialKind::SetPoint) => format!(
+            "Solid: as logged; dashed: as the fitted model predicts from the logged set point{band}."
+        ),
+        Some(TrialKind::Load) => format!(
+            "Solid: as logged; dashed: as the fitted model predicts from the load that fits best{band}."
+        ),
     };
     Some(Figure::new("trial.svg", &canvas, caption, alt(record, log)))
+}
+
+/// Draws the ends of what the models of the test predict, where they can be told apart; returns them as
+/// drawn.
+fn draw_band(
+    canvas: &mut Canvas,
+    trend: &Trend,
+    record: &Record,
+    pv_span: Span,
+) -> Vec<Vec<Point>> {
+    let Some(trial) = &record.trial else {
+        return Vec::new();
+    };
+    let band = &trial.band;
+    let [low, high] =
+        [&band.pv_low, &band.pv_high].map(|values| trend::engineering(&band.t_s, values, pv_span));
+    let apart = low
+        .iter()
+        .zip(&high)
+        .map(|(low, high)| (trend.pv.at_y(low.1) - trend.pv.at_y(high.1)).abs());
+    if apart.fold(0.0, f64::max) < BAND_SEEN_PT {
+        return Vec::new();
+    }
+    let mut drawn = trend.pv.curve(canvas, &low, BAND);
+    drawn.extend(trend.pv.curve(canvas, &high, BAND));
+    drawn
 }
 
 /// The predicted OP with its jumps where the set point moved: its line holds few points, and one drawn

@@ -284,6 +284,15 @@ impl<'a> RowReader<'a> {
             );
             return None;
         }
+        if p == 0.0 && d.is_some_and(|d| d > 0.0) {
+            self.wrong(
+                d_name,
+                format!(
+                    "{d_name} has no meaning where {p_name} is 0: its filter follows from both"
+                ),
+            );
+            return None;
+        }
         if i.is_none() && self.cell(i_name).is_empty() {
             warnings.push(Problem::warning(
                 self.place(i_name),

@@ -271,6 +271,15 @@ fn cells_that_cannot_be_are_named() {
             "loops.csv, line 2, column \"i as\": i as has to be 1/s or 1/min with the form parallel (its integral setting is a gain), found \"s\""
         ]
     );
+    let (job, _) = read(&format!(
+        "{HEADINGS};found p;found i;found d\nTIC-1;Outlet;degC;0;100;reverse;parallel;gain;1/s;1;0;0.1;2\n"
+    ));
+    assert_eq!(
+        texts(&job.loops[0].as_ref().expect_err("a bad row").problems),
+        [
+            "loops.csv, line 2, column \"found d\": found d has no meaning where found p is 0: its filter follows from both"
+        ]
+    );
 }
 
 #[test]

@@ -139,6 +139,15 @@ fn raised(record: &Record) -> Vec<Caution> {
             ),
         ));
     }
+    if let Some(inner) = &l.inner_loop {
+        list.push(caution(
+            "cascade",
+            format!(
+                "The lag of the inner loop {inner} is part of this process model as the test showed it, with the \
+                 settings that {inner} had then. Once they are changed, test this loop again."
+            ),
+        ));
+    }
     if let Some(text) = few_steps(record) {
         list.push(caution("steps", text));
     }

@@ -169,6 +169,21 @@ fn loops_come_out_as_their_stories_ask() {
         codes(vent)
     );
     assert_eq!(vent.settings.as_left_differs, Some(true));
+    // Everywhere else what was tried agrees with what the models of the test predict, after every move.
+    let tried: Vec<_> = records
+        .values()
+        .filter_map(|r| Some((r, r.trial.as_ref()?)))
+        .collect();
+    assert!(tried.len() >= 6, "{} closed-loop trials", tried.len());
+    for (record, trial) in tried {
+        let agrees = record.control_loop.tag != "TIC-212";
+        assert_eq!(
+            trial.agrees, agrees,
+            "{}: {}",
+            record.control_loop.tag, trial.why
+        );
+        assert!(!trial.moves.is_empty() && !trial.band.t_s.is_empty());
+    }
     // An inner loop that is complete.
     assert_eq!(records["FIC-203"].document.status, Status::ForSignature);
     let preheater = &records["TIC-202"];

@@ -2,13 +2,16 @@
 //! `tests/README.md`.
 
 mod archive;
+mod as_found;
 mod broken;
+mod cascade;
 mod cli;
 mod demo;
 mod errors;
 mod identify;
 mod inspect;
 mod layering;
+mod loops;
 mod new_user;
 mod paper;
 mod plant;
@@ -19,3 +22,4 @@ mod schema;
 mod support;
 mod synthetic;
 mod twins;
+mod withheld;

@@ -11,7 +11,7 @@ use asleft::identify::{
 };
 use asleft::model::Kind;
 use asleft::predict::oscillation::Oscillation;
-use asleft::predict::trial::{Trial, TrialKind};
+use asleft::predict::trial::{Band, Trial, TrialKind, TrialMove};
 use asleft::predict::{Curve, Margins, Metrics, Predicted, Response};
 use asleft::quantity::Estimate;
 use asleft::record::{
@@ -431,6 +431,12 @@ fn trial() -> Trial {
         overshoot_percent: Some(5.0),
         ..Metrics::default()
     };
+    let oscillation = Oscillation {
+        decay_ratio: 0.1,
+        period_s: 200.0,
+        limit_cycle: false,
+        text: "dies out".into(),
+    };
     Trial {
         kind: TrialKind::SetPoint,
         at_s: 10.0,
@@ -440,12 +446,24 @@ fn trial() -> Trial {
         predicted_rmse_percent: 0.2,
         agrees: true,
         why: "settling and overshoot agree".into(),
-        oscillation: Some(Oscillation {
-            decay_ratio: 0.1,
-            period_s: 200.0,
-            limit_cycle: false,
-            text: "dies out".into(),
-        }),
+        oscillation: Some(oscillation.clone()),
         curve: Curve::default(),
+        moves: vec![TrialMove {
+            at_s: 10.0,
+            step_percent: 4.0,
+            measured: metrics,
+            predicted: metrics,
+            settling_time_of_models_s: Some([80.0, 130.0]),
+            overshoot_of_models_percent: Some([3.0, 9.0]),
+            agrees: true,
+            oscillation: Some(oscillation),
+            why: String::new(),
+        }],
+        not_judged: Some("1 set-point move was not judged: too small.".into()),
+        band: Band {
+            t_s: vec![0.0, 10.0],
+            pv_low: vec![49.0, 52.0],
+            pv_high: vec![50.0, 54.0],
+        },
     }
 }

@@ -14,7 +14,7 @@ use crate::identify::{Advice, Reason, ReasonCode, Valve, Verdict, VerdictBounds}
 use crate::model::Kind;
 use crate::predict::Curve;
 use crate::predict::Metrics;
-use crate::predict::trial::{Trial, TrialKind};
+use crate::predict::trial::{Band, Trial, TrialKind};
 use crate::record::{
     AllSettings, Caution, Document, EngineeringGain, LimitsInForce, LogRole, OpenCode, OpenItem,
     PageSize, Provenance, Range, Record, Remark, SCHEMA, Status, Test,
@@ -169,6 +169,9 @@ pub(in crate::document) fn full() -> Record {
             why: "it settles within ±50 % and overshoots within 10 points of the prediction".to_owned(),
             oscillation: None,
             curve: Curve::default(),
+            moves: Vec::new(),
+            not_judged: None,
+            band: Band::default(),
         }),
         cautions: vec![
             Caution {

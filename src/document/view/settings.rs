@@ -9,6 +9,7 @@ use crate::design::{Design, Hardness, Limit, LimitName, LimitOutcome};
 use crate::display::{self, NO_BREAK};
 use crate::predict::Margins;
 use crate::record::SettingsBlock;
+use crate::settings::EquationForm;
 use serde::Serialize;
 
 /// The part.
@@ -269,6 +270,7 @@ fn rules(context: &Context, design: &Design) -> Option<Rules> {
     };
     let unit = TimeUnit::for_all(times().filter_map(|s| s.ti_s));
     let with_derivative = times().any(|s| s.td_s > 0.0);
+    let l = &context.record.control_loop;
     let worst_ms = context.record.limits_in_force.design.worst_ms;
     let row = |name: &str,
                of: crate::settings::Standard,
@@ -307,6 +309,9 @@ fn rules(context: &Context, design: &Design) -> Option<Rules> {
             }
             if !rule.in_range {
                 remarks.push("outside its range".to_owned());
+            }
+            if l.form == EquationForm::Series && rule.settings.series().is_none() {
+                remarks.push("no series form".to_owned());
             }
             row(
                 &tidy(&rule.rule),

@@ -109,6 +109,43 @@ proptest! {
     }
 }
 
+proptest! {
+    #![proptest_config(ProptestConfig {
+            cases: 64,
+            rng_seed: RngSeed::Fixed(2),
+            failure_persistence: None,
+            ..ProptestConfig::default()
+        })]
+
+    /// Settings as they may be found: any gain, terms missing. The count of Nyquist's criterion and the
+    /// simulated loop say the same, but where the edge of stability is nearer than the hold's delay is fair.
+    #[test]
+    fn what_the_count_calls_unstable_grows_and_what_it_calls_stable_dies_away(
+        kind in prop::sample::select(Kind::ALL.to_vec()),
+        theta in 2.0..20.0_f64,
+        ti in prop::option::of(2.0..200.0_f64),
+        td in prop::sample::select(vec![0.0, 3.0, 15.0]),
+        log_kc in -1.5..1.5_f64,
+        form in prop::sample::select(vec!["standard", "series", "integral alone"]),
+    ) {
+        let gain = if kind.integrates() { 1.0 / 60.0 } else { 1.0 };
+        let model = ProcessModel::of_kind(kind, gain, 20.0, 6.0, theta);
+        let controller = controller(0.1, 8.0);
+        let kc = libm::exp(log_kc);
+        let at = |factor: f64| match form {
+            "standard" => Terms::Standard { kc: factor * kc, ti_s: ti, td_s: td },
+            "series" => Terms::Series { kc: factor * kc, ti_s: ti, td_s: td },
+            _ => Terms::Parallel { kp: 0.0, ki_per_s: factor * kc / 40.0, kd_s: 0.0 },
+        };
+        let none = PvFilter::default();
+        let stable = |factor| margins(&model, &at(factor), &controller, none, Action::Reverse).stable;
+        let here = stable(1.0);
+        prop_assume!(stable(0.93) == here && stable(1.07) == here);
+        let growth = growth(&model, &at(1.0), &controller, none);
+        prop_assert_eq!(growth < 1.0, here, "{} by {}", growth, kc);
+    }
+}
+
 #[test]
 fn the_op_stays_in_its_range_and_the_integral_does_not_wind_up() {
     let model = ProcessModel::of_kind(Kind::FirstOrder, 1.0, 30.0, 0.0, 5.0);
