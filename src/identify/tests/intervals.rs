@@ -11,7 +11,6 @@ fn fit_of(test: &Test) -> least_squares::Fit {
         shared: pooled::shared(steps.iter()),
         ..Problem::new(steps.iter().map(|s| pooled::window(&trace, s)).collect())
     };
-    problem.shared = pooled::shared(steps.iter());
     if kind.integrates() {
         for window in &mut problem.windows {
             window.base = least_squares::Base::LevelAndSlope;
