@@ -205,7 +205,7 @@ fn one(problem: Problem) -> Vec<Problem> {
 }
 
 /// What the typesetter warns of. Its own text names file, line and column.
-fn template_warning(text: String) -> Problem {
+pub fn template_warning(text: String) -> Problem {
     Problem {
         severity: Severity::Warning,
         ..Problem::general(format!("the typesetter warns: {text}"))

@@ -334,7 +334,7 @@ pub fn dossier_layout(
 ///
 /// # Errors
 /// As [`typeset_record`].
-pub fn typeset_plan(plan: &Plan, templates: &Templates) -> Result<Vec<u8>, DocumentError> {
+pub fn typeset_plan(plan: &Plan, templates: &Templates) -> Result<Typeset, DocumentError> {
     lay_out_plan(plan, templates)?.export(&plan.number, plan.date, plan.program)
 }
 

@@ -3,6 +3,7 @@
 //! regularly, with jitter, and by exception. `cargo test coverage -- --nocapture` prints the figures.
 
 use super::*;
+use crate::identify::least_squares::Problem;
 
 /// How samples come about.
 #[derive(Debug, Clone, Copy, PartialEq)]
