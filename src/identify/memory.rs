@@ -15,6 +15,9 @@ use std::ops::Range;
 /// Part of the noise that a fit takes up, p parameters of n/F samples that count: below this the
 /// residual's own memory, corrected to first order, is as good as the likelihood's.
 const TAKEN_UP: f64 = 0.02;
+/// Above this the likelihood costs more than the search; a fit that still takes up much of what it leaves
+/// is one of a wrong kind.
+const MOST_ROWS: usize = 10_000;
 /// Bounds of ρ, as its inverse hyperbolic tangent: 0 to 0.998.
 const LOW: f64 = 0.0;
 const HIGH: f64 = 3.5;
@@ -260,7 +263,9 @@ impl Left<'_> {
         let seen = products(self.residual, &lengths, 1) / own;
         let start = seen.clamp(0.0, 0.998);
         let taken_up = self.parameters as f64 / rows * (1.0 + start) / (1.0 - start);
-        let (rho, variance, doubtful) = if taken_up > TAKEN_UP && !self.columns.is_empty() {
+        let by_likelihood =
+            taken_up > TAKEN_UP && self.residual.len() <= MOST_ROWS && !self.columns.is_empty();
+        let (rho, variance, doubtful) = if by_likelihood {
             let (z, above) = self.most_likely(libm::atanh(start));
             let rho = libm::tanh(z);
             let above = libm::tanh(above);
@@ -388,17 +393,25 @@ pub(crate) fn from_residual(brought: &[Vec<f64>]) -> Vec<Vec<f64>> {
 /// JᵀVJ for columns J and noise of variance 1 with these links: the middle of the sandwich (H. White,
 /// Econometrica 48 (1980) 817-838) with the noise's model put in.
 pub(crate) fn filtered(columns: &[Vec<f64>], links: &[f64]) -> Vec<Vec<f64>> {
-    let mut sums = vec![vec![0.0; columns.len()]; columns.len()];
+    let size = columns.len();
+    let mut sums = vec![vec![0.0; size]; size];
     for (j, a) in columns.iter().enumerate() {
-        // Σ over earlier rows of what each has in common with this one.
+        // Σ over earlier rows of what each has in common with this one; half of the row itself.
         let mut earlier = 0.0;
-        for i in 0..links.len() {
-            earlier = links[i] * (earlier + if i > 0 { a[i - 1] } else { 0.0 });
-            for (k, b) in columns.iter().enumerate() {
-                let both = a[i] * b[i] / 2.0;
-                sums[j][k] += earlier * b[i] + both;
-                sums[k][j] += earlier * b[i] + both;
+        let mut before = 0.0;
+        for (i, (&value, &link)) in a.iter().zip(links).enumerate() {
+            earlier = link * (earlier + before);
+            before = value;
+            for (sum, b) in sums[j].iter_mut().zip(columns) {
+                *sum += (earlier + value / 2.0) * b[i];
             }
+        }
+    }
+    // Later rows have as much in common with earlier ones.
+    for j in 0..size {
+        for k in 0..=j {
+            let both = sums[j][k] + sums[k][j];
+            (sums[j][k], sums[k][j]) = (both, both);
         }
     }
     sums
