@@ -5,7 +5,7 @@ use crate::assemble::{self, InnerRecord, LoopInput, PROGRAM};
 use crate::document::{self, Attachment, AttachmentKind, DossierInput, DossierRecord, Templates};
 use crate::figures::{self, Figure};
 use crate::job::{Job, LogCell, LoopRow, schedule_row_csv};
-use crate::notice::Problem;
+use crate::notice::{Problem, Severity};
 use crate::read::{self, FileCache, LogRead, Source};
 use crate::record::{
     Document, GapRecord, LimitsInForce, Log, LogRole, LogSource, Loop, PageSize, Procedure, Range,
@@ -119,9 +119,10 @@ pub fn write(
     let attachments = attachments_of(&record, &json, row);
     let kept = slot.is_none();
     if let Some(slot) = slot {
-        let pdf = document::typeset_record(&record, &figures, &attachments, templates)
+        let typeset = document::typeset_record(&record, &figures, &attachments, templates)
             .map_err(|error| vec![document_problem(job, &error)])?;
-        slot.store(&json, &pdf).map_err(one)?;
+        slot.store(&json, &typeset.pdf).map_err(one)?;
+        notices.extend(typeset.warnings.into_iter().map(template_warning));
     }
     Ok(Recorded {
         record,
@@ -185,21 +186,30 @@ pub fn write_dossier(
                     attachments: &r.attachments,
                 })
                 .collect();
-            let pdf = document::typeset_dossier(
+            let typeset = document::typeset_dossier(
                 &dossier_input(&dossier.document, job, not_recorded),
                 &bound,
                 templates,
             )
             .map_err(|error| vec![document_problem(job, &error)])?;
-            slot.store(&archive::json_text(&dossier), &pdf)
+            slot.store(&archive::json_text(&dossier), &typeset.pdf)
                 .map_err(one)?;
-            Ok((dossier, false, Vec::new()))
+            let warnings = typeset.warnings.into_iter().map(template_warning);
+            Ok((dossier, false, warnings.collect()))
         }
     }
 }
 
 fn one(problem: Problem) -> Vec<Problem> {
     vec![problem]
+}
+
+/// What the typesetter warns of. Its own text names file, line and column.
+pub fn template_warning(text: String) -> Problem {
+    Problem {
+        severity: Severity::Warning,
+        ..Problem::general(format!("the typesetter warns: {text}"))
+    }
 }
 
 /// What kept a document from being typeset, with the job's own templates in mind.

@@ -41,7 +41,6 @@ pub fn plan_sheets(
 ) -> Result<PlanReport, Vec<Problem>> {
     let mut selected = run::select(folder, &options.only)?;
     refuse_clashes(&mut selected.job);
-    let templates = Templates::new(selected.job.template_files()?);
     let records = options
         .records
         .clone()
@@ -62,7 +61,7 @@ pub fn plan_sheets(
                 of: selected.wanted.len(),
                 now: run::tag_of(&selected.job, index).to_owned(),
             });
-            one_loop(&selected, index, &earlier, &out, &templates)
+            one_loop(&selected, index, &earlier, &out, &selected.templates)
         })
         .collect();
     let mut notices = selected.notices.clone();
@@ -114,10 +113,13 @@ fn one_loop(
             let set_aside = set_aside(row, earlier);
             notices.extend(set_aside.iter().cloned());
             let plan = plan_of(job, row, earlier, &set_aside);
-            write(job, &plan, out, templates).map(|pdf| LoopOutcome::Planned {
-                pdf,
-                summary: summary(&plan),
-                plan: Box::new(plan),
+            write(job, &plan, out, templates).map(|(pdf, warnings)| {
+                notices.extend(warnings);
+                LoopOutcome::Planned {
+                    pdf,
+                    summary: summary(&plan),
+                    plan: Box::new(plan),
+                }
             })
         }
     };
@@ -211,20 +213,21 @@ fn log_wanted(job: &Job, row: &LoopRow) -> LogWanted {
     }
 }
 
-/// Typesets a plan and writes it; the name of the file.
+/// Typesets a plan and writes it; the name of the file, and what the typesetter warns of.
 fn write(
     job: &Job,
     plan: &Plan,
     out: &Path,
     templates: &Templates,
-) -> Result<String, Vec<Problem>> {
+) -> Result<(String, Vec<Problem>), Vec<Problem>> {
     let one = |problem: Problem| vec![problem];
     let names = FileNames::of_plan(&plan.number).map_err(one)?;
-    let pdf = document::typeset_plan(plan, templates)
+    let typeset = document::typeset_plan(plan, templates)
         .map_err(|error| vec![pipeline::document_problem(job, &error)])?;
-    let sealed = archive::seal_plan(pdf).map_err(one)?;
+    let sealed = archive::seal_plan(typeset.pdf).map_err(one)?;
     archive::write_plan(out, &names, &sealed).map_err(one)?;
-    Ok(names.pdf())
+    let warnings = typeset.warnings.into_iter().map(pipeline::template_warning);
+    Ok((names.pdf(), warnings.collect()))
 }
 
 /// What the terminal says of a plan.

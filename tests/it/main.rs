@@ -14,6 +14,7 @@ mod inspect;
 mod layering;
 mod loops;
 mod new_user;
+mod paper;
 mod plan;
 mod plant;
 mod predict;
