@@ -32,7 +32,8 @@ const LOOP_INDENT: usize = 4;
 /// Writes what a file holds.
 pub(super) fn write(page: &mut Page, log: &Inspection) {
     page.line(0, &log.file);
-    let loops: usize = log.tables.iter().map(|table| table.loops.len()).sum();
+    let loops = |table: &TableInspection| table.loops.len() + table.further.len();
+    let loops: usize = log.tables.iter().map(loops).sum();
     let mut shown = Shown::default();
     for table in &log.tables {
         write_table(page, table, loops <= LOOPS_IN_FULL, &mut shown);
@@ -199,6 +200,7 @@ fn list_loops(page: &mut Page, table: &TableInspection) {
         .iter()
         .skip(LOOPS_LISTED)
         .filter_map(|one| one.tag.as_deref())
+        .chain(table.further.iter().map(String::as_str))
         .collect();
     if !more.is_empty() {
         let mut text = more[..more.len().min(TAGS_NAMED)].join(", ");

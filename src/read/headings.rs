@@ -193,10 +193,12 @@ fn words(text: &str) -> Vec<String> {
 
 /// Finds `tag` in a heading, whatever separates its parts there: what stands before and after it.
 fn split_at_tag<'a>(text: &'a str, tag: &str) -> Option<(&'a str, &'a str)> {
-    let wanted: Vec<char> = squash(tag).chars().collect();
-    if wanted.is_empty() {
+    let wanted = squash(tag);
+    // Most headings of a wide log are those of other loops, told in one look.
+    if wanted.is_empty() || (wanted.is_ascii() && !squash(text).contains(&wanted)) {
         return None;
     }
+    let wanted: Vec<char> = wanted.chars().collect();
     let letters: Vec<(usize, char)> = text.char_indices().collect();
     for start in 0..letters.len() {
         if start > 0 && letters[start - 1].1.is_alphanumeric() {

@@ -7,7 +7,8 @@ use super::numbers::{DecimalSign, Shape, number, shape};
 use super::proposal::{self, Proposal};
 use super::roles::{self, RoleFound};
 use super::source::FileCache;
-use super::stamp::{DateOrder, stamp};
+use super::stamp::stamp;
+use super::supposed::{Supposition, suppositions};
 use super::table::{Cell, Table};
 use super::tags::{TagFound, tags_in};
 use super::{ColumnNames, FileReference, LogRead, LogRequest, LogRule};
@@ -19,6 +20,8 @@ use std::path::Path;
 
 /// How many cells are looked at to say what the columns hold: fewer rows of a table that is very wide.
 const CELLS_LOOKED_AT: usize = 2_000_000;
+/// How many tags are looked at: every heading is looked at for each of them.
+const LOOPS_READ: usize = 100;
 /// How many columns are tried as the one that is missing.
 const COLUMNS_SUPPOSED: usize = 6;
 /// What a column of measured values holds.
@@ -54,6 +57,8 @@ pub struct TableInspection {
     pub columns: Vec<ColumnFound>,
     /// The loops that can be read.
     pub loops: Vec<LoopInspection>,
+    /// Tags beyond the first hundred, which were not looked at: asked for by name each is.
+    pub further: Vec<String>,
     /// Tags that are no loop: those that have a PV alone or an OP alone.
     pub others: Vec<OtherTag>,
     /// Where no loop can be read: the roles that could be given all the same, and why.
@@ -244,6 +249,7 @@ impl Look<'_> {
             heading_row: None,
             columns: Vec::new(),
             loops: Vec::new(),
+            further: Vec::new(),
             others: Vec::new(),
             roles: Vec::new(),
             undecided: Vec::new(),
@@ -286,6 +292,8 @@ impl Look<'_> {
         tags: &[TagFound],
     ) {
         let mut incomplete = Vec::new();
+        let (tags, further) = tags.split_at(tags.len().min(LOOPS_READ));
+        found.further = further.iter().map(|tag| tag.tag.clone()).collect();
         for tag in tags {
             match self.at_loop(table, rule, Some(&tag.tag), true) {
                 Ok(one) => found.loops.push(one),
@@ -516,51 +524,6 @@ fn range(values: impl Iterator<Item = f64>) -> Option<[f64; 2]> {
             None => Some([value, value]),
             Some([low, high]) => Some([low.min(value), high.max(value)]),
         })
-}
-
-/// What is supposed of a file that does not say it itself.
-#[derive(Default)]
-struct Supposition {
-    /// As it would be written: keys of a `[[log]]` table, or a cell of the schedule.
-    line: String,
-    rules: Vec<LogRule>,
-    columns: ColumnNames,
-}
-
-/// What a `[[log]]` table may say: one list for the dates, one for the decimal sign, one for both.
-fn suppositions(rule: &LogRule) -> [Vec<Supposition>; 3] {
-    let orders = [
-        DateOrder::DayFirst,
-        DateOrder::MonthFirst,
-        DateOrder::YearFirst,
-    ];
-    let signs = [DecimalSign::Point, DecimalSign::Comma];
-    // What the job says is not called into question.
-    let orders = orders.into_iter().filter(|_| rule.dates.is_none());
-    let signs = signs.into_iter().filter(|_| rule.decimal.is_none());
-    let one = |dates: Option<DateOrder>, decimal: Option<DecimalSign>| {
-        let mut line = Vec::new();
-        line.extend(dates.map(|order| format!("dates = \"{}\"", order.word())));
-        line.extend(decimal.map(|sign| format!("decimal = \"{}\"", sign.sign())));
-        Supposition {
-            line: line.join(", "),
-            rules: vec![LogRule {
-                files: Vec::new(),
-                dates: dates.or(rule.dates),
-                decimal: decimal.or(rule.decimal),
-                ..rule.clone()
-            }],
-            columns: ColumnNames::default(),
-        }
-    };
-    [
-        orders.clone().map(|order| one(Some(order), None)).collect(),
-        signs.clone().map(|sign| one(None, Some(sign))).collect(),
-        orders
-            .flat_map(|order| signs.clone().map(move |sign| (order, sign)))
-            .map(|(order, sign)| one(Some(order), Some(sign)))
-            .collect(),
-    ]
 }
 
 /// Every column that has a heading or holds anything.

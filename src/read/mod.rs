@@ -31,6 +31,7 @@ mod series;
 mod sheet;
 pub mod source;
 pub mod stamp;
+mod supposed;
 pub mod table;
 mod tags;
 pub mod text;

@@ -135,3 +135,20 @@ fn a_used_range_of_an_old_workbook_that_no_sheet_has_is_refused() {
         assert!(message.contains("65536 rows"), "{place}: {message}");
     }
 }
+
+#[test]
+fn a_sheet_with_a_loop_in_every_column_is_told_in_time() {
+    let headings: Vec<String> = (0..2000)
+        .map(|k| format!("FIC-{}.{}", 1000 + k / 2, ["PV", "OP"][k % 2]))
+        .collect();
+    let mut text = format!("Time,{}\n", headings.join(","));
+    for second in 0..4 {
+        text.push_str(&format!(
+            "2026-03-14 09:00:0{second}{}\n",
+            ",1".repeat(2000)
+        ));
+    }
+    let text = look("wide.csv", text.as_bytes()).expect("readable");
+    assert!(text.contains("1000 loops"), "{text}");
+    assert!(text.contains("FIC-1000 "), "{text}");
+}
