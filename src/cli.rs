@@ -5,10 +5,10 @@ use std::path::PathBuf;
 
 const EXIT_CODES: &str = "\
 Exit codes:
-  0  done; every loop got its record (one that recommends no settings is a record)
+  0  done; every loop got its record (one that recommends no settings is a record) or its plan
   1  nothing could be done, nothing was written
   2  the command was not understood
-  3  some loops could not be recorded, the others were
+  3  some loops could not be recorded or planned, the others were
 
 inspect ends with 1 where no log could be read, with 3 where some could not";
 
@@ -35,6 +35,23 @@ pub enum Command {
     New {
         /// The folder to make; refused where it holds anything
         folder: PathBuf,
+    },
+    /// Write the sheets to take to the control room before the step tests
+    #[command(
+        after_help = "Examples:\n  asleft plan unit-200\n  asleft plan unit-200 --loop TIC-204 --records ../2019/records"
+    )]
+    Plan {
+        /// The job folder
+        job: PathBuf,
+        /// Only this loop; may be repeated
+        #[arg(long = "loop", value_name = "TAG")]
+        loops: Vec<String>,
+        /// Folder of the plans [default: JOB/plan]
+        #[arg(long, value_name = "DIR")]
+        out: Option<PathBuf>,
+        /// Folder of earlier records of the loops, whose figures are used [default: JOB/records]
+        #[arg(long, value_name = "DIR")]
+        records: Option<PathBuf>,
     },
     /// Tell what a log holds: its columns, clock, gaps, moves of the OP, and the schedule line for it
     #[command(

@@ -12,6 +12,8 @@ pub mod job;
 pub mod model;
 pub mod notice;
 mod pipeline;
+pub mod plan;
+mod planning;
 pub mod predict;
 pub mod quantity;
 pub mod read;
@@ -24,4 +26,5 @@ pub mod steps;
 pub mod trace;
 
 pub use inspect::inspect;
+pub use planning::{PlanOptions, plan_sheets};
 pub use run::{RecordOptions, check, new_job, record};

@@ -60,6 +60,22 @@ fn run(cli: &Cli) -> io::Result<u8> {
             line.clear();
             say(cli, outcome)
         }
+        Command::Plan {
+            job,
+            loops,
+            out,
+            records,
+        } => {
+            let options = asleft::PlanOptions {
+                only: loops.clone(),
+                out: out.clone(),
+                records: records.clone(),
+            };
+            let mut line = ProgressLine::new(cli);
+            let outcome = asleft::plan_sheets(job, &options, &mut |progress| line.show(&progress));
+            line.clear();
+            say(cli, outcome)
+        }
         Command::Schema => {
             io::stdout()
                 .lock()

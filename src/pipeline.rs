@@ -5,7 +5,7 @@ use crate::assemble::{self, InnerRecord, LoopInput, PROGRAM};
 use crate::document::{self, Attachment, AttachmentKind, DossierInput, DossierRecord, Templates};
 use crate::figures::{self, Figure};
 use crate::job::{Job, LogCell, LoopRow, schedule_row_csv};
-use crate::notice::Problem;
+use crate::notice::{Problem, Severity};
 use crate::read::{self, FileCache, LogRead, Source};
 use crate::record::{
     Document, GapRecord, LimitsInForce, Log, LogRole, LogSource, Loop, PageSize, Procedure, Range,
@@ -81,13 +81,7 @@ pub fn engineer(
         test,
         trial,
         limits: limits_of(job, row),
-        site_cautions: job
-            .manifest
-            .cautions
-            .iter()
-            .filter(|caution| caution.loops.is_empty() || caution.loops.contains(&row.tag))
-            .map(|caution| caution.text.clone())
-            .collect(),
+        site_cautions: site_cautions(job, row),
         inner,
     };
     Ok(Engineered {
@@ -125,9 +119,10 @@ pub fn write(
     let attachments = attachments_of(&record, &json, row);
     let kept = slot.is_none();
     if let Some(slot) = slot {
-        let pdf = document::typeset_record(&record, &figures, &attachments, templates)
+        let typeset = document::typeset_record(&record, &figures, &attachments, templates)
             .map_err(|error| vec![document_problem(job, &error)])?;
-        slot.store(&json, &pdf).map_err(one)?;
+        slot.store(&json, &typeset.pdf).map_err(one)?;
+        notices.extend(typeset.warnings.into_iter().map(template_warning));
     }
     Ok(Recorded {
         record,
@@ -191,15 +186,16 @@ pub fn write_dossier(
                     attachments: &r.attachments,
                 })
                 .collect();
-            let pdf = document::typeset_dossier(
+            let typeset = document::typeset_dossier(
                 &dossier_input(&dossier.document, job, not_recorded),
                 &bound,
                 templates,
             )
             .map_err(|error| vec![document_problem(job, &error)])?;
-            slot.store(&archive::json_text(&dossier), &pdf)
+            slot.store(&archive::json_text(&dossier), &typeset.pdf)
                 .map_err(one)?;
-            Ok((dossier, false, Vec::new()))
+            let warnings = typeset.warnings.into_iter().map(template_warning);
+            Ok((dossier, false, warnings.collect()))
         }
     }
 }
@@ -208,7 +204,16 @@ fn one(problem: Problem) -> Vec<Problem> {
     vec![problem]
 }
 
-fn document_problem(job: &Job, error: &document::DocumentError) -> Problem {
+/// What the typesetter warns of. Its own text names file, line and column.
+pub fn template_warning(text: String) -> Problem {
+    Problem {
+        severity: Severity::Warning,
+        ..Problem::general(format!("the typesetter warns: {text}"))
+    }
+}
+
+/// What kept a document from being typeset, with the job's own templates in mind.
+pub fn document_problem(job: &Job, error: &document::DocumentError) -> Problem {
     let problem = Problem::general(error.to_string());
     match (error.hint(), &job.manifest.template) {
         (Some(hint), _) => problem.hint(hint),
@@ -390,7 +395,8 @@ fn job_document(job: &Job) -> Document {
     }
 }
 
-fn document_of(job: &Job, row: &LoopRow) -> Document {
+/// The title block of a loop's document.
+pub fn document_of(job: &Job, row: &LoopRow) -> Document {
     let identity = job.document(row);
     let mut document = job_document(job);
     document.revisions.push(Revision {
@@ -437,7 +443,18 @@ fn dossier_input(document: &Document, job: &Job, not_recorded: &[String]) -> Dos
     }
 }
 
-fn loop_of(job: &Job, row: &LoopRow) -> Loop {
+/// The site's own cautions for a loop.
+pub fn site_cautions(job: &Job, row: &LoopRow) -> Vec<String> {
+    job.manifest
+        .cautions
+        .iter()
+        .filter(|caution| caution.loops.is_empty() || caution.loops.contains(&row.tag))
+        .map(|caution| caution.text.clone())
+        .collect()
+}
+
+/// The loop as its row of the schedule describes it.
+pub fn loop_of(job: &Job, row: &LoopRow) -> Loop {
     let left = row.left.as_ref();
     let particulars = [
         ("controller", &row.controller_name),

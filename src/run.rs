@@ -2,7 +2,7 @@
 
 use crate::archive::{self, FileNames};
 use crate::assemble::{self, InnerRecord};
-use crate::document::Templates;
+use crate::document::{self, Alphabet, Templates};
 use crate::job::{self, Job, LoopRow};
 use crate::notice::{Place, Problem, nearest};
 use crate::pipeline::{self, Engineered, Recorded};
@@ -18,7 +18,7 @@ use std::sync::atomic::{AtomicUsize, Ordering};
 use std::sync::mpsc;
 
 /// Folder of the records in the job folder.
-const RECORDS_FOLDER: &str = "records";
+pub(crate) const RECORDS_FOLDER: &str = "records";
 
 /// What `record` is asked for.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -32,11 +32,12 @@ pub struct RecordOptions {
 }
 
 /// A job with the loops that this run is about.
-struct Selected {
-    job: Job,
-    notices: Vec<Problem>,
+pub(crate) struct Selected {
+    pub job: Job,
+    pub notices: Vec<Problem>,
     /// Places in `job.loops`, in the order of the schedule.
-    wanted: Vec<usize>,
+    pub wanted: Vec<usize>,
+    pub templates: Templates,
 }
 
 /// Lays out a job folder.
@@ -58,9 +59,17 @@ pub fn new_job(folder: &Path) -> Result<NewReport, Vec<Problem>> {
 pub fn check(folder: &Path, only: &[String]) -> Result<CheckReport, Vec<Problem>> {
     let selected = select(folder, only)?;
     let out = folder.join(RECORDS_FOLDER);
-    let outcomes = each_loop(&selected, &mut |_| {}, |_, engineered| {
+    let alphabet = Alphabet::new(&selected.templates);
+    let outcomes = each_loop(&selected, &mut |_| {}, |row, engineered| {
         let record = pipeline::look(&engineered, &out)?;
-        Ok((engineered, record))
+        // What the logs bring in: names of files and sheets, conditions.
+        match alphabet.lacks_for(&record) {
+            Some((character, text)) => Err(vec![
+                Problem::error(row.place.clone(), job::undrawable_message(character, &text))
+                    .hint(document::FONT_HINT),
+            ]),
+            None => Ok((engineered, record)),
+        }
     });
     let dossier = if only.is_empty() {
         check_dossier(&selected, &outcomes, &out)
@@ -136,14 +145,14 @@ pub fn record(
     progress: &mut dyn FnMut(Progress),
 ) -> Result<RunReport, Vec<Problem>> {
     let selected = select(folder, &options.only)?;
-    let templates = Templates::new(selected.job.template_files()?);
+    let templates = &selected.templates;
     let out = options
         .out
         .clone()
         .unwrap_or_else(|| folder.join(RECORDS_FOLDER));
     archive::prepare(&out).map_err(|problem| vec![problem])?;
     let outcomes = each_loop(&selected, progress, |row, engineered| {
-        pipeline::write(&selected.job, row, engineered, &out, &templates)
+        pipeline::write(&selected.job, row, engineered, &out, templates)
     });
     let recorded: Vec<&Recorded> = outcomes.iter().flatten().collect();
     let dossier = (options.dossier && options.only.is_empty() && !recorded.is_empty()).then(|| {
@@ -152,7 +161,7 @@ pub fn record(
             of: selected.wanted.len(),
             now: "the dossier".to_owned(),
         });
-        dossier(&selected, &outcomes, &out, &templates)
+        dossier(&selected, &outcomes, &out, templates)
     });
     let mut notices = selected.notices.clone();
     let register = if options.only.is_empty() && !recorded.is_empty() {
@@ -207,7 +216,7 @@ pub fn record(
     })
 }
 
-fn shown(path: &Path) -> String {
+pub(crate) fn shown(path: &Path) -> String {
     path.display().to_string().replace('\\', "/")
 }
 
@@ -227,7 +236,12 @@ fn next_time(record: &Record) -> Vec<String> {
         .collect()
 }
 
-fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Problem>) -> LoopReport {
+pub(crate) fn loop_report(
+    job: &Job,
+    index: usize,
+    outcome: LoopOutcome,
+    notices: Vec<Problem>,
+) -> LoopReport {
     LoopReport {
         tag: tag_of(job, index).to_owned(),
         outcome,
@@ -235,7 +249,7 @@ fn loop_report(job: &Job, index: usize, outcome: LoopOutcome, notices: Vec<Probl
     }
 }
 
-fn tag_of(job: &Job, index: usize) -> &str {
+pub(crate) fn tag_of(job: &Job, index: usize) -> &str {
     match &job.loops[index] {
         Ok(row) => &row.tag,
         Err(bad) => &bad.tag,
@@ -243,8 +257,14 @@ fn tag_of(job: &Job, index: usize) -> &str {
 }
 
 /// Reads the job and picks the loops asked for.
-fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
-    let (job, notices) = Job::read(folder)?;
+pub(crate) fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
+    let (mut job, notices) = Job::read(folder)?;
+    let templates = Templates::new(job.template_files()?);
+    let alphabet = Alphabet::new(&templates);
+    let undrawable = job.refuse_undrawable(|text| alphabet.lacks(text), document::FONT_HINT);
+    if !undrawable.is_empty() {
+        return Err(undrawable);
+    }
     let tags: Vec<&str> = (0..job.loops.len()).map(|k| tag_of(&job, k)).collect();
     let unknown: Vec<Problem> = only
         .iter()
@@ -275,6 +295,7 @@ fn select(folder: &Path, only: &[String]) -> Result<Selected, Vec<Problem>> {
         job,
         notices,
         wanted,
+        templates,
     };
     refuse_clashes(&mut selected);
     Ok(selected)

@@ -41,7 +41,7 @@ pub fn prepare(folder: &Path) -> Result<(), Problem> {
         };
         Problem::error(
             Place::file(shown(folder)),
-            format!("the records cannot be written to this folder: {why}"),
+            format!("this folder cannot be written to: {why}"),
         )
         .hint("choose another folder with --out")
     })
@@ -122,6 +122,45 @@ pub fn read(path: &Path) -> Result<Option<String>, Problem> {
             Place::file(shown(path)),
             format!("cannot be read: {error}"),
         )),
+    }
+}
+
+/// The bytes of a file, `None` where there is no such file.
+///
+/// # Errors
+/// Where it is there and cannot be read.
+pub fn read_bytes(path: &Path) -> Result<Option<Vec<u8>>, Problem> {
+    match fs::read(path) {
+        Ok(bytes) => Ok(Some(bytes)),
+        Err(error) if error.kind() == io::ErrorKind::NotFound => Ok(None),
+        Err(error) => Err(Problem::error(
+            Place::file(shown(path)),
+            format!("cannot be read: {error}"),
+        )),
+    }
+}
+
+/// Names of what lies in a folder, sorted; none where there is no such folder.
+///
+/// # Errors
+/// Where it is there and cannot be read.
+pub fn names_in(folder: &Path) -> Result<Vec<String>, Problem> {
+    let attempt = || -> io::Result<Vec<String>> {
+        let mut names = Vec::new();
+        for entry in fs::read_dir(folder)? {
+            names.push(entry?.file_name().to_string_lossy().into_owned());
+        }
+        names.sort();
+        Ok(names)
+    };
+    match attempt() {
+        Err(error) if error.kind() == io::ErrorKind::NotFound => Ok(Vec::new()),
+        names => names.map_err(|error| {
+            Problem::error(
+                Place::file(shown(folder)),
+                format!("cannot be read: {error}"),
+            )
+        }),
     }
 }
 

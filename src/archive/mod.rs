@@ -12,11 +12,13 @@
 mod differences;
 mod files;
 mod names;
+mod plans;
 mod seal;
 
 pub use differences::{Difference, between};
 pub use files::prepare;
 pub use names::{FileNames, clashes};
+pub use plans::{EarlierRecords, Unusable, earlier_records, seal_plan, write_plan};
 pub use seal::{json_text, read_record, schema_text, seal, seal_holds, seal_of, sha256};
 
 use crate::notice::{Place, Problem};

@@ -34,17 +34,8 @@ impl FileNames {
             Some("it is empty".to_owned())
         } else if revision_part.is_empty() {
             Some("its revision is empty".to_owned())
-        } else if stem.starts_with('.') {
-            Some("a file whose name begins with a dot is hidden".to_owned())
-        } else if is_device(&stem) {
-            Some(format!("a file named \"{stem}\" stands for a device"))
-        } else if stem.len() > LONGEST_STEM {
-            let length = stem.len();
-            Some(format!(
-                "a name of {length} bytes is longer than {LONGEST_STEM}"
-            ))
         } else {
-            None
+            fault(&stem)
         };
         match fault {
             None => Ok(FileNames { stem }),
@@ -57,6 +48,21 @@ impl FileNames {
         }
     }
 
+    /// The name for the plan of a loop, by the plan's number; it has no revision and no JSON.
+    ///
+    /// # Errors
+    /// As [`FileNames::new`].
+    pub fn of_plan(number: &str) -> Result<Self, Problem> {
+        let stem = as_file_name(number);
+        match fault(&stem) {
+            None => Ok(FileNames { stem }),
+            Some(fault) => Err(Problem::general(format!(
+                "document number \"{number}\" cannot name a file: {fault}"
+            ))
+            .hint("change document in job.toml")),
+        }
+    }
+
     /// Name of the PDF.
     pub fn pdf(&self) -> String {
         format!("{}.pdf", self.stem)
@@ -65,6 +71,22 @@ impl FileNames {
     /// Name of the JSON.
     pub fn json(&self) -> String {
         format!("{}.json", self.stem)
+    }
+}
+
+/// Why a name cannot be that of a file, where it cannot.
+fn fault(stem: &str) -> Option<String> {
+    if stem.starts_with('.') {
+        Some("a file whose name begins with a dot is hidden".to_owned())
+    } else if is_device(stem) {
+        Some(format!("a file named \"{stem}\" stands for a device"))
+    } else if stem.len() > LONGEST_STEM {
+        let length = stem.len();
+        Some(format!(
+            "a name of {length} bytes is longer than {LONGEST_STEM}"
+        ))
+    } else {
+        None
     }
 }
 

@@ -1,4 +1,4 @@
-//! The documents: records and dossiers typeset as PDF.
+//! The documents: records, dossiers and plans typeset as PDF.
 //!
 //! The pages hold only what the record holds: `view` turns it into finished strings, the templates
 //! place them. The same record, figures, attachments and templates give the same bytes.
@@ -10,11 +10,16 @@ mod world;
 #[cfg(test)]
 mod dossier_tests;
 #[cfg(test)]
+mod golden_tests;
+#[cfg(test)]
 mod sample;
 #[cfg(test)]
 mod tests;
+#[cfg(test)]
+mod text_tests;
 
 use crate::figures::Figure;
+use crate::plan::Plan;
 use crate::record::{PageSize, Procedure, Record, Signature};
 use chrono::{Datelike, NaiveDate};
 use std::collections::{BTreeMap, BTreeSet};
@@ -24,9 +29,16 @@ use typst_layout::PagedDocument;
 use typst_pdf::{PdfOptions, PdfStandard, PdfStandards, Timestamp};
 use world::DocumentWorld;
 
+pub use pages::{PageLayout, Placed};
+pub use world::Alphabet;
+
 /// Layout results older than this many documents are forgotten. Kept that long they speed up the
 /// next record by a quarter; kept for ever they fill the memory of a job with hundreds of loops.
 const KEEP_LAYOUTS: usize = 5;
+
+/// What to do about a character that no font has.
+pub const FONT_HINT: &str = "write the text with other characters, or put a font that has it (.otf, .ttf, .otc, .ttc) \
+                             into the folder that job.toml names as its template";
 
 /// Why a document could not be typeset.
 #[derive(Debug, Clone, PartialEq, Eq, Error)]
@@ -71,10 +83,7 @@ impl DocumentError {
     /// What to do about it, where something can be done.
     pub fn hint(&self) -> Option<&'static str> {
         match self {
-            DocumentError::MissingCharacter { .. } => Some(
-                "write the text with other characters, or put a font that has it into the job's \
-                 template folder and name it in rules.typ",
-            ),
+            DocumentError::MissingCharacter { .. } => Some(FONT_HINT),
             DocumentError::TemplateEncoding { .. } => Some("save the file as UTF-8"),
             _ => None,
         }
@@ -82,7 +91,7 @@ impl DocumentError {
 }
 
 /// The site's own templates by file name, each in the place of the project's file of that name.
-/// Fonts (`.otf`, `.ttf`) are added to the project's; `logo.svg` or `logo.png` is printed on the
+/// Fonts (`.otf`, `.ttf`, and collections of them) draw what the project's cannot; `logo.svg` or `logo.png` is printed on the
 /// first page.
 #[derive(Debug, Clone, PartialEq, Eq, Default)]
 pub struct Templates {
@@ -199,6 +208,16 @@ pub struct DossierInput {
     pub program: String,
 }
 
+/// A document typeset.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Typeset {
+    /// The PDF.
+    pub pdf: Vec<u8>,
+    /// What the typesetter warns of, with file, line and column of the template: a font family that is not
+    /// there, a name that is out of use. The project's own templates give none.
+    pub warnings: Vec<String>,
+}
+
 /// Typesets one record: PDF/A-3a and PDF/UA-1, with the attachments in it.
 ///
 /// # Errors
@@ -208,7 +227,7 @@ pub fn typeset_record(
     figures: &[Figure],
     attachments: &[Attachment],
     templates: &Templates,
-) -> Result<Vec<u8>, DocumentError> {
+) -> Result<Typeset, DocumentError> {
     let laid_out = lay_out_record(record, figures, attachments, templates)?;
     let document = &record.document;
     laid_out.export(
@@ -233,6 +252,37 @@ pub fn record_page_texts(
     Ok(texts)
 }
 
+/// Where everything stands on the pages of a record.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn record_layout(
+    record: &Record,
+    figures: &[Figure],
+    templates: &Templates,
+) -> Result<Vec<PageLayout>, DocumentError> {
+    let laid_out = lay_out_record(record, figures, &[], templates)?;
+    let layout = pages::layout(&laid_out.document);
+    comemo::evict(KEEP_LAYOUTS);
+    Ok(layout)
+}
+
+/// The files that a record is typeset from, by name: what Typst needs beside the fonts to make its pages.
+/// `record.typ` is the one to begin with.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn record_sources(
+    record: &Record,
+    figures: &[Figure],
+    attachments: &[Attachment],
+    templates: &Templates,
+) -> Result<BTreeMap<String, Vec<u8>>, DocumentError> {
+    Ok(lay_out_record(record, figures, attachments, templates)?
+        .world
+        .files())
+}
+
 /// Typesets a dossier: cover, register, open items, page for operations, settings to enter, and
 /// every record, inner loops before the loops that cascade to them.
 ///
@@ -242,7 +292,7 @@ pub fn typeset_dossier(
     dossier: &DossierInput,
     records: &[DossierRecord],
     templates: &Templates,
-) -> Result<Vec<u8>, DocumentError> {
+) -> Result<Typeset, DocumentError> {
     lay_out_dossier(dossier, records, templates)?.export(
         &format!("{} revision {}", dossier.number, dossier.revision),
         dossier.date,
@@ -265,10 +315,45 @@ pub fn dossier_page_texts(
     Ok(texts)
 }
 
+/// Where everything stands on the pages of a dossier.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn dossier_layout(
+    dossier: &DossierInput,
+    records: &[DossierRecord],
+    templates: &Templates,
+) -> Result<Vec<PageLayout>, DocumentError> {
+    let laid_out = lay_out_dossier(dossier, records, templates)?;
+    let layout = pages::layout(&laid_out.document);
+    comemo::evict(KEEP_LAYOUTS);
+    Ok(layout)
+}
+
+/// Typesets the plan of a step test: PDF/A-3a and PDF/UA-1; the seal among its keywords is still to be made.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn typeset_plan(plan: &Plan, templates: &Templates) -> Result<Typeset, DocumentError> {
+    lay_out_plan(plan, templates)?.export(&plan.number, plan.date, plan.program)
+}
+
+/// The plain text of each page of a plan.
+///
+/// # Errors
+/// As [`typeset_record`].
+pub fn plan_page_texts(plan: &Plan, templates: &Templates) -> Result<Vec<String>, DocumentError> {
+    let laid_out = lay_out_plan(plan, templates)?;
+    let texts = pages::texts(&laid_out.document);
+    comemo::evict(KEEP_LAYOUTS);
+    Ok(texts)
+}
+
 /// A document laid out, ready to be exported.
 struct LaidOut {
     world: DocumentWorld,
     document: PagedDocument,
+    warnings: Vec<String>,
 }
 
 impl LaidOut {
@@ -276,22 +361,33 @@ impl LaidOut {
         main: &str,
         view: &impl serde::Serialize,
         templates: &Templates,
-        figures: &[&Figure],
+        figures: &[(String, &Figure)],
         mut files: Vec<(String, Bytes)>,
     ) -> Result<Self, DocumentError> {
         let data = serde_json::to_vec(view).map_err(|e| DocumentError::Record(e.to_string()))?;
         files.push(("view.json".to_owned(), Bytes::new(data)));
-        let world = DocumentWorld::new(main, templates, files)?;
-        for figure in figures {
+        let mut world = DocumentWorld::new(main, templates, files)?;
+        for (folder, figure) in figures {
             pages::check_figure(&world, figure)?;
+            // The same few names in every document.
+            world.add_figure(&format!("{folder}/{}", figure.name), &figure.svg)?;
         }
-        let document = world.lay_out()?;
+        let (document, warnings) = world.lay_out()?;
         pages::check_glyphs(&document)?;
-        Ok(LaidOut { world, document })
+        Ok(LaidOut {
+            world,
+            document,
+            warnings,
+        })
     }
 
     /// The PDF, with an identifier and a date that are the document's own.
-    fn export(self, ident: &str, date: NaiveDate, program: &str) -> Result<Vec<u8>, DocumentError> {
+    fn export(
+        mut self,
+        ident: &str,
+        date: NaiveDate,
+        program: &str,
+    ) -> Result<Typeset, DocumentError> {
         let midnight = u8::try_from(date.month())
             .ok()
             .zip(u8::try_from(date.day()).ok())
@@ -308,9 +404,10 @@ impl LaidOut {
         };
         let pdf = typst_pdf::pdf(&self.document, &options)
             .map_err(|diagnostics| DocumentError::Export(self.world.told(&diagnostics)));
+        let warnings = std::mem::take(&mut self.warnings);
         drop(self);
         comemo::evict(KEEP_LAYOUTS);
-        pdf
+        pdf.map(|pdf| Typeset { pdf, warnings })
     }
 }
 
@@ -323,7 +420,6 @@ fn lay_out_record(
     let mut files = Vec::new();
     let mut view = view::record(record, figures, "plots", "record")?;
     view.logo = templates.logo();
-    embed(&mut files, figures, "plots");
     for attachment in attachments {
         view.attach(attachment, attachment.name.clone());
         files.push((
@@ -335,7 +431,7 @@ fn lay_out_record(
         "record.typ",
         &view,
         templates,
-        &figures.iter().collect::<Vec<_>>(),
+        &placed(figures, "plots").collect::<Vec<_>>(),
         files,
     )
 }
@@ -348,6 +444,7 @@ fn lay_out_dossier(
     let mut files = Vec::new();
     let mut names = BTreeSet::new();
     let ordered = view::inner_first(records);
+    let mut figures = Vec::new();
     let mut views = Vec::with_capacity(ordered.len());
     for (index, part) in ordered.iter().enumerate() {
         let folder = format!("plots/{index}");
@@ -358,7 +455,7 @@ fn lay_out_dossier(
             &format!("record-{index}"),
         )?;
         view.logo = templates.logo();
-        embed(&mut files, part.figures, &folder);
+        figures.extend(placed(part.figures, &folder));
         for attachment in part.attachments {
             let mut name = format!(
                 "{}-{}",
@@ -375,18 +472,19 @@ fn lay_out_dossier(
         views.push(view);
     }
     let view = view::dossier(dossier, &ordered, views, templates.logo())?;
-    let figures: Vec<&Figure> = ordered.iter().flat_map(|part| part.figures).collect();
     LaidOut::new("dossier.typ", &view, templates, &figures, files)
 }
 
-/// Puts figures beside the templates, under the same few names in every document.
-fn embed(files: &mut Vec<(String, Bytes)>, figures: &[Figure], folder: &str) {
-    for figure in figures {
-        files.push((
-            format!("{folder}/{}", figure.name),
-            Bytes::from_string(figure.svg.clone()),
-        ));
-    }
+/// Figures with the folder they lie in.
+fn placed<'a>(figures: &'a [Figure], folder: &str) -> impl Iterator<Item = (String, &'a Figure)> {
+    let folder = folder.to_owned();
+    figures.iter().map(move |figure| (folder.clone(), figure))
+}
+
+fn lay_out_plan(plan: &Plan, templates: &Templates) -> Result<LaidOut, DocumentError> {
+    let mut view = view::plan::plan(plan);
+    view.logo = templates.logo();
+    LaidOut::new("plan.typ", &view, templates, &[], Vec::new())
 }
 
 /// A tag as part of a file name.

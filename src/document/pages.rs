@@ -24,13 +24,88 @@ pub(super) fn texts(document: &PagedDocument) -> Vec<String> {
 
 /// Calls `with` for every run of text in a frame, with the place of its baseline on the page.
 fn visit(frame: &Frame, origin: Point, with: &mut impl FnMut(Point, &TextItem)) {
+    visit_items(frame, origin, &mut |at, item| {
+        if let FrameItem::Text(text) = item {
+            with(at, text);
+        }
+    });
+}
+
+/// Calls `with` for everything in a frame that is no frame itself, with its place on the page.
+fn visit_items(frame: &Frame, origin: Point, with: &mut impl FnMut(Point, &FrameItem)) {
     for (at, item) in frame.items() {
         match item {
-            FrameItem::Group(group) => visit(&group.frame, origin + *at, with),
-            FrameItem::Text(text) => with(origin + *at, text),
-            _ => {}
+            FrameItem::Group(group) => visit_items(&group.frame, origin + *at, with),
+            item => with(origin + *at, item),
         }
     }
+}
+
+/// Height of a capital and depth of a descender in sizes of the text, for the boxes of runs.
+const CAPITAL: f64 = 0.67;
+const DESCENDER: f64 = 0.21;
+
+/// What stands on one page, and where.
+#[derive(Debug, Clone, PartialEq)]
+pub struct PageLayout {
+    /// Width of the page, pt.
+    pub width_pt: f64,
+    /// Height of the page, pt.
+    pub height_pt: f64,
+    /// Runs of text and pictures in reading order.
+    pub placed: Vec<Placed>,
+}
+
+/// A run of text or a picture with its box, pt from the upper left corner of the page.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Placed {
+    /// The text; `None` for a picture.
+    pub text: Option<String>,
+    /// Left edge.
+    pub left_pt: f64,
+    /// Upper edge; of text, that of its capitals.
+    pub top_pt: f64,
+    /// Right edge.
+    pub right_pt: f64,
+    /// Lower edge; of text, that of its descenders.
+    pub bottom_pt: f64,
+}
+
+/// Where everything stands.
+pub(super) fn layout(document: &PagedDocument) -> Vec<PageLayout> {
+    let on_page = |frame: &Frame| {
+        let mut placed = Vec::new();
+        visit_items(frame, Point::zero(), &mut |at, item| {
+            let (left, y) = (at.x.to_pt(), at.y.to_pt());
+            match item {
+                FrameItem::Text(text) => {
+                    let size = text.size.to_pt();
+                    placed.push(Placed {
+                        text: Some(text.text.to_string()),
+                        left_pt: left,
+                        top_pt: y - CAPITAL * size,
+                        right_pt: left + text.width().to_pt(),
+                        bottom_pt: y + DESCENDER * size,
+                    });
+                }
+                FrameItem::Image(_, size, _) => placed.push(Placed {
+                    text: None,
+                    left_pt: left,
+                    top_pt: y,
+                    right_pt: left + size.x.to_pt(),
+                    bottom_pt: y + size.y.to_pt(),
+                }),
+                _ => {}
+            }
+        });
+        PageLayout {
+            width_pt: frame.width().to_pt(),
+            height_pt: frame.height().to_pt(),
+            placed,
+        }
+    };
+    let pages = document.pages().iter();
+    pages.map(|page| on_page(&page.frame)).collect()
 }
 
 /// Runs of text joined to lines: a run on the same baseline (or a raised or lowered one that
@@ -90,10 +165,7 @@ pub(super) fn check_figure(world: &DocumentWorld, figure: &Figure) -> Result<(),
     while let Some(open) = rest.find('>') {
         let after = &rest[open + 1..];
         let text = &after[..after.find('<').unwrap_or(after.len())];
-        if let Some(character) = text
-            .chars()
-            .find(|c| !c.is_control() && !world.can_draw(*c))
-        {
+        if let Some(character) = world.undrawable(text) {
             return Err(DocumentError::MissingCharacter {
                 text: text.trim().to_owned(),
                 character,

@@ -5,7 +5,7 @@ use super::*;
 use crate::record::{OpenCode, OpenItem, Status};
 
 /// Page texts with no-break spaces as plain ones and lines joined, to search in.
-fn searchable(texts: &[String]) -> Vec<String> {
+pub(super) fn searchable(texts: &[String]) -> Vec<String> {
     texts
         .iter()
         .map(|text| {
@@ -17,31 +17,24 @@ fn searchable(texts: &[String]) -> Vec<String> {
         .collect()
 }
 
-fn pages_of(record: &Record) -> Vec<String> {
+pub(super) fn pages_of(record: &Record) -> Vec<String> {
     let texts = record_page_texts(record, &sample::figures(), &Templates::default())
         .expect("a record is typeset");
     searchable(&texts)
 }
 
 #[track_caller]
-fn holds(page: &str, texts: &[&str]) {
+pub(super) fn holds(page: &str, texts: &[&str]) {
     for text in texts {
         assert!(page.contains(text), "\"{text}\" is not in: {page}");
     }
 }
 
 #[track_caller]
-fn lacks(pages: &[String], texts: &[&str]) {
+pub(super) fn lacks(pages: &[String], texts: &[&str]) {
     for (page, text) in pages.iter().flat_map(|p| texts.iter().map(move |t| (p, t))) {
         assert!(!page.contains(text), "\"{text}\" is in: {page}");
     }
-}
-
-fn overriding(name: &str, text: &str) -> Templates {
-    Templates::new(BTreeMap::from([(
-        name.to_owned(),
-        text.as_bytes().to_vec(),
-    )]))
 }
 
 #[test]
@@ -225,29 +218,6 @@ fn an_integrating_process_is_told_by_its_slope_and_the_controller_in_its_own_uni
 }
 
 #[test]
-fn text_from_spreadsheets_is_printed_as_it_stands() {
-    let service = "#let x = [*bold* _it_ $m$ @ref <label> \\ ~ `raw` // -- \"q\"";
-    let long = "A very long service description ".repeat(12);
-    let mut record = sample::full();
-    record.control_loop.service = service.to_owned();
-    record.control_loop.conditions = Some(format!("Ms Tan present, {long}"));
-    record.document.plant = "Рафинерия Ωμέγα – Øst, Île, Łódź".to_owned();
-    record.document.signatures[0].name = Some("a\u{7}b\r\nc #panic()".to_owned());
-    record.document.remarks[0].text = "Ms Tan of operations asked for Ms 1.4".to_owned();
-    let pages = pages_of(&record);
-    holds(
-        &pages[0],
-        &[
-            service,
-            "Рафинерия Ωμέγα – Øst, Île, Łódź",
-            "a b c #panic()",
-            "Ms Tan of operations asked for Ms 1.4",
-        ],
-    );
-    holds(&pages.join(" "), &[long.trim()]);
-}
-
-#[test]
 fn a_record_is_a_pdf_with_its_attachments_and_the_same_bytes_twice() {
     let typeset = || {
         typeset_record(
@@ -258,9 +228,11 @@ fn a_record_is_a_pdf_with_its_attachments_and_the_same_bytes_twice() {
         )
         .expect("a record is typeset")
     };
-    let pdf = typeset();
+    let first = typeset();
+    assert_eq!(first.warnings, [""; 0]);
+    let pdf = first.pdf;
     assert!(pdf.starts_with(b"%PDF-1.7"));
-    assert_eq!(pdf, typeset());
+    assert_eq!(pdf, typeset().pdf);
     let has = |needle: &[u8]| pdf.windows(needle.len()).any(|w| w == needle);
     for needle in [
         "record.json",
@@ -272,100 +244,6 @@ fn a_record_is_a_pdf_with_its_attachments_and_the_same_bytes_twice() {
     ] {
         assert!(has(needle.as_bytes()), "{needle} is not in the PDF");
     }
-}
-
-#[test]
-fn a_character_no_font_has_is_named_with_its_text() {
-    let mut record = sample::full();
-    record.control_loop.service = "Column 漢 temperature".to_owned();
-    let error = typeset_record(&record, &sample::figures(), &[], &Templates::default())
-        .expect_err("no font has the character");
-    let DocumentError::MissingCharacter {
-        text,
-        character,
-        place,
-    } = &error
-    else {
-        panic!("another error: {error}");
-    };
-    assert_eq!((*character, place.as_str()), ('漢', "page 1"));
-    assert!(text.contains("漢"), "{text}");
-    assert!(error.to_string().contains("(U+6F22)"), "{error}");
-    assert!(error.hint().is_some());
-
-    let mut figures = sample::figures();
-    figures[0].svg = figures[0].svg.replace("PV, °C", "PV, 漢");
-    let error = typeset_record(&sample::full(), &figures, &[], &Templates::default())
-        .expect_err("no font has the character");
-    assert_eq!(
-        error,
-        DocumentError::MissingCharacter {
-            text: "PV, 漢".to_owned(),
-            character: '漢',
-            place: "figure test.svg".to_owned(),
-        }
-    );
-}
-
-#[test]
-fn a_wrong_template_is_reported_with_file_line_and_hint() {
-    let broken = overriding(
-        "trial.typ",
-        "#import \"rules.typ\": *\n\n  #let trial(t) = t.hedding\n",
-    );
-    let error = typeset_record(&sample::full(), &sample::figures(), &[], &broken)
-        .expect_err("the template asks for what is not there");
-    assert_eq!(
-        error,
-        DocumentError::Template(
-            "trial.typ:3:21: dictionary does not contain key \"hedding\"".to_owned()
-        )
-    );
-    let unclosed = overriding("trial.typ", "#let trial(t) = {\n");
-    let error = typeset_record(&sample::full(), &sample::figures(), &[], &unclosed)
-        .expect_err("the template is not closed");
-    assert!(
-        error
-            .to_string()
-            .starts_with("trial.typ:1:17: unclosed delimiter"),
-        "{error}"
-    );
-    let unknown = overriding("trial.typ", "#let trial(t) = t-heading");
-    let error = typeset_record(&sample::full(), &sample::figures(), &[], &unknown)
-        .expect_err("there is no such name");
-    let text = error.to_string();
-    assert!(
-        text.starts_with(
-            "trial.typ:1:17: unknown variable: t-heading\n    hint: if you meant to use subtraction"
-        ),
-        "{text}"
-    );
-    let not_text = Templates::new(BTreeMap::from([("trial.typ".to_owned(), vec![0xff])]));
-    assert!(matches!(
-        typeset_record(&sample::full(), &sample::figures(), &[], &not_text),
-        Err(DocumentError::TemplateEncoding { .. })
-    ));
-}
-
-#[test]
-fn a_site_may_replace_one_template_and_add_a_logo() {
-    let mut files = BTreeMap::from([(
-        "trial.typ".to_owned(),
-        b"#let trial(t) = [Trial in the words of the site.]".to_vec(),
-    )]);
-    files.insert(
-        "logo.svg".to_owned(),
-        sample::figures()[3].svg.clone().into_bytes(),
-    );
-    let templates = Templates::new(files);
-    let texts = record_page_texts(&sample::full(), &sample::figures(), &templates)
-        .expect("a record is typeset");
-    let pages = searchable(&texts);
-    holds(&pages.join(" "), &["Trial in the words of the site."]);
-    lacks(&pages, &["8 Closed-loop trial"]);
-    let pdf = typeset_record(&sample::full(), &sample::figures(), &[], &templates)
-        .expect("a record with a logo is typeset");
-    assert!(pdf.starts_with(b"%PDF"));
 }
 
 #[test]
@@ -401,7 +279,7 @@ fn the_letter_page_has_the_same_words() {
 }
 
 /// A dossier of every kind of record, the outer loop of a cascade before its inner one.
-fn dossier_records() -> Vec<Record> {
+pub(super) fn dossier_records() -> Vec<Record> {
     let mut outer = sample::full();
     outer.control_loop.tag = "TIC-202".to_owned();
     outer.control_loop.inner_loop = Some("FIC-203".to_owned());
@@ -494,8 +372,10 @@ fn a_dossier_opens_with_what_each_reader_needs() {
     );
     holds(&pages[10], &["TIC-202 Column", "Page 1 of 6"]);
 
-    let pdf = typeset_dossier(&sample::dossier_input(), &parts, &templates)
+    let typeset = typeset_dossier(&sample::dossier_input(), &parts, &templates)
         .expect("a dossier is typeset");
+    assert_eq!(typeset.warnings, [""; 0]);
+    let pdf = typeset.pdf;
     let has = |needle: &[u8]| pdf.windows(needle.len()).any(|w| w == needle);
     assert!(has(b"FIC-203-record.json") && has(b"TIC-202-record.json"));
 }

@@ -2,7 +2,8 @@
 //! own templates over them, and the data of the document. No disk, no clock, no network.
 
 use super::{DocumentError, Templates};
-use std::collections::HashMap;
+use crate::record::Record;
+use std::collections::{BTreeMap, HashMap};
 use std::sync::LazyLock;
 use typst::diag::{FileError, FileResult, SourceDiagnostic};
 use typst::foundations::{Bytes, Datetime, Duration};
@@ -27,6 +28,7 @@ const TEMPLATES: &[(&str, &str)] = &[
     ("basis.typ", include_str!("../../templates/basis.typ")),
     ("pages.typ", include_str!("../../templates/pages.typ")),
     ("record.typ", include_str!("../../templates/record.typ")),
+    ("plan.typ", include_str!("../../templates/plan.typ")),
     ("cover.typ", include_str!("../../templates/cover.typ")),
     ("register.typ", include_str!("../../templates/register.typ")),
     (
@@ -37,13 +39,32 @@ const TEMPLATES: &[(&str, &str)] = &[
     ("dossier.typ", include_str!("../../templates/dossier.typ")),
 ];
 
-/// The text family of every document, upright, bold, italic and both.
-const FONTS: [&[u8]; 4] = [
+/// The text family of every document, upright, bold, italic and both; after it the families that
+/// stand in, in this order, for what it cannot draw.
+const FONTS: [&[u8]; 19] = [
     include_bytes!("../../templates/fonts/SourceSans3-Regular.otf"),
     include_bytes!("../../templates/fonts/SourceSans3-Bold.otf"),
     include_bytes!("../../templates/fonts/SourceSans3-It.otf"),
     include_bytes!("../../templates/fonts/SourceSans3-BoldIt.otf"),
+    include_bytes!("../../templates/fonts/NotoSans-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansArabic-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansArabic-Bold.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansArmenian-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansArmenian-Bold.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansDevanagari-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansDevanagari-Bold.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansGeorgian-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansGeorgian-Bold.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansHebrew-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansHebrew-Bold.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansThai-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansThai-Bold.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansSymbols-Regular.ttf"),
+    include_bytes!("../../templates/fonts/NotoSansMath-Regular.ttf"),
 ];
+
+/// Endings of font files, single ones and collections.
+const FONT_ENDINGS: [&str; 4] = [".otf", ".ttf", ".otc", ".ttc"];
 
 /// What all documents of one process share.
 struct Shared {
@@ -71,6 +92,113 @@ static SHARED: LazyLock<Shared> = LazyLock::new(|| {
             .collect(),
     }
 });
+
+fn is_font(name: &str) -> bool {
+    let name = name.to_lowercase();
+    FONT_ENDINGS.iter().any(|ending| name.ends_with(ending))
+}
+
+/// The first character of the text that none of the fonts can draw.
+fn undrawable(fonts: &[Font], text: &str) -> Option<char> {
+    text.chars().find(|&character| {
+        let drawn = |font: &Font| font.info().coverage.contains(character as u32);
+        !(character.is_control() || is_unseen(character) || fonts.iter().any(drawn))
+    })
+}
+
+/// Whether a character only tells how others are drawn, and is never drawn itself (Unicode's
+/// Default_Ignorable_Code_Point, as far as it is found in text).
+fn is_unseen(character: char) -> bool {
+    matches!(
+        character,
+        '\u{ad}' | '\u{61c}' | '\u{200b}'..='\u{200f}' | '\u{202a}'..='\u{202e}' | '\u{2060}'..='\u{206f}'
+            | '\u{fe00}'..='\u{fe0f}' | '\u{feff}'
+    )
+}
+
+/// The characters that documents with a site's templates can show.
+pub struct Alphabet {
+    /// The site's own fonts; the project's stand before them.
+    site: Vec<Font>,
+}
+
+impl Alphabet {
+    /// That of documents with these templates.
+    pub fn new(templates: &Templates) -> Self {
+        let site = templates
+            .files()
+            .filter(|(name, _)| is_font(name))
+            .flat_map(|(_, bytes)| Font::iter(Bytes::new(bytes.clone())))
+            .collect();
+        Alphabet { site }
+    }
+
+    /// The first character of the text that no font has.
+    pub fn lacks(&self, text: &str) -> Option<char> {
+        undrawable(&SHARED.fonts, text).and_then(|_| {
+            // Rarely asked for: only where the project's own fonts do not do.
+            let all: Vec<Font> = SHARED.fonts.iter().chain(&self.site).cloned().collect();
+            undrawable(&all, text)
+        })
+    }
+
+    /// The first such character among the texts of a record, with its text.
+    pub fn lacks_for(&self, record: &Record) -> Option<(char, String)> {
+        let mut rest = vec![serde_json::to_value(record).ok()?];
+        while let Some(value) = rest.pop() {
+            match value {
+                serde_json::Value::String(text) => {
+                    if let Some(character) = self.lacks(&text) {
+                        return Some((character, text));
+                    }
+                }
+                serde_json::Value::Array(list) => rest.extend(list),
+                serde_json::Value::Object(map) => rest.extend(map.into_iter().map(|(_, v)| v)),
+                _ => {}
+            }
+        }
+        None
+    }
+}
+
+/// A figure with each run of a label that the text family cannot draw given to the first font that can.
+/// The reader of SVG finds a stand-in only where one font has the whole label. (Scripts that join several
+/// characters to one sign, Devanagari and Thai, it still cannot mix with others; the export says so.)
+fn with_stand_ins(fonts: &[Font], svg: &str) -> String {
+    let drawn_by = |character: char| {
+        fonts
+            .iter()
+            .position(|font| font.info().coverage.contains(character as u32))
+    };
+    let mut out = String::with_capacity(svg.len());
+    for part in svg.split_inclusive('>') {
+        let (text, tag) = part.split_at(part.find('<').unwrap_or(part.len()));
+        let mut current = 0;
+        for character in text.chars() {
+            let font = match drawn_by(character) {
+                Some(font) if !(character.is_whitespace() || is_unseen(character)) => font,
+                _ => current,
+            };
+            if font != current {
+                if current != 0 {
+                    out.push_str("</tspan>");
+                }
+                if font != 0 {
+                    out.push_str("<tspan font-family=\"&apos;");
+                    out.push_str(&fonts[font].info().family);
+                    out.push_str("&apos;\">");
+                }
+                current = font;
+            }
+            out.push(character);
+        }
+        if current != 0 {
+            out.push_str("</tspan>");
+        }
+        out.push_str(tag);
+    }
+    out
+}
 
 /// The id of a file below the virtual root. Ids live as long as the process, so every document
 /// uses the same few names.
@@ -120,7 +248,7 @@ impl DocumentWorld {
                     }
                 })?;
                 world.sources.insert(id, Source::new(id, text));
-            } else if name.ends_with(".otf") || name.ends_with(".ttf") {
+            } else if is_font(name) {
                 fonts.extend(Font::iter(data.clone()));
             }
             world.files.insert(id, data);
@@ -136,6 +264,20 @@ impl DocumentWorld {
         Ok(world)
     }
 
+    /// Name and content of every file, templates and data.
+    pub(super) fn files(&self) -> BTreeMap<String, Vec<u8>> {
+        let sources = SHARED
+            .sources
+            .iter()
+            .chain(&self.sources)
+            .map(|(id, source)| (file_name(*id), source.text().as_bytes().to_vec()));
+        let files = self
+            .files
+            .iter()
+            .map(|(id, bytes)| (file_name(*id), bytes.to_vec()));
+        sources.chain(files).collect()
+    }
+
     fn fonts(&self) -> &[Font] {
         match &self.own_fonts {
             Some((fonts, _)) => fonts,
@@ -143,18 +285,38 @@ impl DocumentWorld {
         }
     }
 
-    /// Whether some font of this document can draw the character.
-    pub(super) fn can_draw(&self, character: char) -> bool {
-        self.fonts()
-            .iter()
-            .any(|font| font.info().coverage.contains(character as u32))
+    /// Puts a figure beside the templates.
+    pub(super) fn add_figure(&mut self, name: &str, svg: &str) -> Result<(), DocumentError> {
+        let known = &SHARED.fonts[0].info().coverage;
+        let plain = svg
+            .chars()
+            .all(|c| c.is_ascii() || known.contains(c as u32));
+        let svg = if plain {
+            svg.to_owned()
+        } else {
+            with_stand_ins(self.fonts(), svg)
+        };
+        self.files.insert(file_id(name)?, Bytes::from_string(svg));
+        Ok(())
     }
 
-    /// Lays the document out.
-    pub(super) fn lay_out(&self) -> Result<PagedDocument, DocumentError> {
-        typst::compile::<PagedDocument>(self)
+    /// The first character of the text that no font of this document can draw.
+    pub(super) fn undrawable(&self, text: &str) -> Option<char> {
+        undrawable(self.fonts(), text)
+    }
+
+    /// Lays the document out; with it what Typst warns of.
+    pub(super) fn lay_out(&self) -> Result<(PagedDocument, Vec<String>), DocumentError> {
+        let compiled = typst::compile::<PagedDocument>(self);
+        let document = compiled
             .output
-            .map_err(|diagnostics| DocumentError::Template(self.told(&diagnostics)))
+            .map_err(|diagnostics| DocumentError::Template(self.told(&diagnostics)))?;
+        let warnings = compiled
+            .warnings
+            .iter()
+            .map(|warning| self.told(std::slice::from_ref(warning)))
+            .collect();
+        Ok((document, warnings))
     }
 
     /// Typst's diagnostics as it reports them: file, line, column, message, hints.

@@ -148,6 +148,38 @@ fn plans() -> Vec<(&'static str, Plan)> {
             },
         ),
         (
+            "ten samples",
+            Plan {
+                moves: vec![(0.0, 42.0), (600.0, 47.0)],
+                end_s: 2000.0,
+                interval_s: 200.0,
+                pv: range("degC", -273.0, -250.0),
+                rejected: Vec::new(),
+                ..usual()
+            },
+        ),
+        (
+            "huge",
+            Plan {
+                pv: range("Nm3/h at 15 degC and 1.013 bar", -4.0e7, 9.6e8),
+                op: range("t/h", -2000.0, 125_000.0),
+                moves: vec![(0.0, 40.0), (600.0, 47.0), (2400.0, 40.0)],
+                end_s: 4200.0,
+                rejected: Vec::new(),
+                ..usual()
+            },
+        ),
+        (
+            "nearly nothing",
+            Plan {
+                pv: range("mol/mol", 2.0e-9, 2.1e-9),
+                moves: vec![(0.0, 42.0), (600.0, 47.0), (2400.0, 42.0)],
+                end_s: 4200.0,
+                rejected: vec![(2, ReasonCode::Drift)],
+                ..usual()
+            },
+        ),
+        (
             "pulse",
             Plan {
                 moves: vec![(0.0, 42.0), (600.0, 47.0), (700.0, 42.0)],

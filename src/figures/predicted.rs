@@ -14,7 +14,7 @@ use crate::record::{PageSize, Record};
 const WIDTH_MM: f64 = 170.0;
 const HEIGHT_MM: f64 = 86.0;
 /// On US Letter the figure has to end sooner to stay on the page of its settings.
-const LETTER_HEIGHT_MM: f64 = 78.0;
+const LETTER_HEIGHT_MM: f64 = 69.0;
 /// From the left edge of one half to that of the other, pt.
 const HALVES_PT: f64 = 248.0;
 /// Right of each window, for the names at the line ends, pt.

@@ -7,7 +7,7 @@ use super::trend::{self, Lines, Outline, Trend};
 use super::{Figure, narrate};
 use crate::display::{fixed, with_unit};
 use crate::identify::{Reason, ReasonCode, Step, Verdict};
-use crate::record::{Log, Record, decisive_reasons};
+use crate::record::{Log, PageSize, Record, decisive_reasons};
 
 /// Move of the OP.
 pub const MOVE: Stroke = Stroke::dashed(0.6, 1.4, 1.8);
@@ -24,12 +24,19 @@ const NUMBER_PT: f64 = 9.5;
 /// Room for labels at the line ends, pt.
 pub const RIGHT_PT: f64 = 36.0;
 const WIDTH_MM: f64 = 170.0;
-const HEIGHT_MM: f64 = 110.0;
+/// Least and greatest height: less hides the noise, more only stretches it.
+const HEIGHTS_MM: (f64, f64) = (110.0, 160.0);
+/// What of the page is left for the figure and the table of steps, mm.
+const ROOM_MM: f64 = 215.0;
+/// Letter pages are lower by this, mm.
+const LETTER_LESS_MM: f64 = 17.6;
+/// A line of the table of steps, mm.
+const LINE_MM: f64 = 5.0;
 
 /// Draws the test; `None` where its log holds nothing to draw.
 pub fn draw(record: &Record) -> Option<Figure> {
     let log = record.test_log()?;
-    let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
+    let mut canvas = Canvas::new(WIDTH_MM, height_mm(record));
     let lines = trend::lines(&log.data, canvas.width())?;
     let scale = (canvas.width() - 30.0 - RIGHT_PT) / (lines.time.1 - lines.time.0);
     let marks = Marks::new(&record.steps, &lines, canvas.width(), |step| {
@@ -81,6 +88,17 @@ pub fn draw(record: &Record) -> Option<Figure> {
         caption.push_str(" SP was logged far from PV and is not drawn.");
     }
     Some(Figure::new("test.svg", &canvas, caption, alt(record, log)))
+}
+
+/// Height that fills the page together with the table of steps below it.
+fn height_mm(record: &Record) -> f64 {
+    let told = |step: &&Step| !step.reasons.is_empty();
+    let lines = record.steps.len() + record.steps.iter().filter(told).count();
+    let letter = match record.document.page {
+        PageSize::A4 => 0.0,
+        PageSize::UsLetter => LETTER_LESS_MM,
+    };
+    (ROOM_MM - letter - LINE_MM * lines as f64).clamp(HEIGHTS_MM.0, HEIGHTS_MM.1)
 }
 
 /// Labels the OP's end.

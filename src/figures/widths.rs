@@ -7,6 +7,9 @@
 /// Width of a character the tables do not hold, thousandths of an em: that of a wide capital.
 const UNKNOWN: u16 = 700;
 
+/// Width of the signs of East Asia, which fill a square.
+const SQUARE: u16 = 1000;
+
 /// Width of `words` set at `size_pt`, pt.
 pub fn width_pt(words: &str, size_pt: f64, bold: bool) -> f64 {
     let units: f64 = words.chars().map(|c| f64::from(advance(c, bold))).sum();
@@ -19,6 +22,7 @@ fn advance(character: char, bold: bool) -> u16 {
     let (regular, heavy) = match code {
         0x20..=0x7e => ASCII[code - 0x20],
         0xa0..=0xff => LATIN[code - 0xa0],
+        0x1100..=0x11ff | 0x2e80..=0xd7ff | 0xf900..=0xfaff | 0xff00.. => (SQUARE, SQUARE),
         _ => SIGNS
             .iter()
             .find(|(sign, _, _)| *sign == character)
@@ -293,6 +297,6 @@ mod tests {
         assert_eq!(width_pt("1.50", 10.0, false), 3.0 * 4.97 + 2.49);
         assert_eq!(width_pt("8", 10.0, true), 5.28);
         assert_eq!(width_pt("−", 10.0, false), width_pt("7", 10.0, false));
-        assert_eq!(width_pt("中", 10.0, false), 7.0);
+        assert_eq!(width_pt("中Ж", 10.0, false), 17.0);
     }
 }

@@ -69,7 +69,7 @@ fn known(
         gain: best.fit.gains[0],
         integrates: kind.integrates(),
         lags_s: if has_lag {
-            let sd = covariance::logarithmic(&best.fit, 1.0, 1.0).matrix[1][1];
+            let sd = covariance::logarithmic(&best.fit, 1.0).matrix[1][1];
             let longer = libm::exp(covariance::TWO_SIDED_95 * libm::sqrt(sd.max(0.0)));
             (tau + tau2) * longer.min(MOST_LONGER)
         } else {

@@ -14,6 +14,8 @@ const CLEARLY: f64 = 10.0;
 const UNBENT: f64 = 3.0;
 /// Part of the change of slope that an integrating PV still moves with at the end.
 const STILL_MOVING: f64 = 0.3;
+/// Autocorrelation below this many standard deviations of its estimate from white noise, 1/√n, is none.
+const WHITE: f64 = 2.0;
 /// Mean square residual below which there is nothing left to explain, %².
 const NOTHING_LEFT: f64 = 1e-10;
 
@@ -25,6 +27,8 @@ pub(crate) struct Candidate {
     pub bases: Vec<Base>,
     /// OP at the end of each window less its level before the move, %.
     pub op_end: Vec<f64>,
+    /// BIC less a constant common to the fits of the same samples.
+    pub bic: f64,
 }
 
 impl Candidate {
@@ -44,10 +48,35 @@ impl Candidate {
     }
 }
 
-/// BIC of a fit for a given number of samples that count, less a constant common to all fits.
-fn bic(fit: &Fit, effective: f64) -> f64 {
-    let mean_square = (fit.rss / fit.rows as f64).max(NOTHING_LEFT);
-    effective * libm::log(mean_square) + fit.parameters as f64 * libm::log(effective)
+/// BIC of each fit of the same samples, less a constant common to all.
+///
+/// The likelihood is that of noise with the memory that the best fit leaves, for all fits alike: each
+/// kind is fitted once more to what samples bring beyond the ones before (generalised least squares). A
+/// lag shows in the first samples after a move, where such noise has hardly changed; by plain sums of
+/// squares it drowns. Where the noise has a longer tail than one ρ explains, samples count for less.
+fn evidence(fits: &[(&Problem, &Fit)]) -> Vec<f64> {
+    let least = fits
+        .iter()
+        .map(|(_, fit)| *fit)
+        .min_by(|a, b| a.rss.total_cmp(&b.rss))
+        .expect("there are fits");
+    let memory = &least.memory;
+    let rho = memory.noise_autocorrelation;
+    let rows = least.rows as f64;
+    let counted = least.samples as f64 / memory.tail;
+    let white = rho < WHITE / libm::sqrt(rows);
+    let effective = least.samples as f64 / memory.factor;
+    fits.iter()
+        .map(|(problem, fit)| {
+            let rss = if white {
+                fit.rss
+            } else {
+                search::whitened_rss(problem, fit, rho)
+            };
+            counted * libm::log((rss / rows).max(NOTHING_LEFT))
+                + fit.parameters as f64 * libm::log(effective)
+        })
+        .collect()
 }
 
 fn candidate(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Candidate, FitError> {
@@ -60,6 +89,7 @@ fn candidate(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Candidate
             .iter()
             .map(|w| w.moves.last().map_or(0.0, |m| m.1))
             .collect(),
+        bic: 0.0,
     })
 }
 
@@ -82,11 +112,6 @@ pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
             ..point
         })
     };
-    let better = |level: Candidate, slope: Candidate| {
-        let effective = slope.fit.rows as f64 / slope.fit.memory.factor;
-        let gained = bic(&level.fit, effective) - bic(&slope.fit, effective);
-        if gained > CLEARLY { slope } else { level }
-    };
     let first = candidate(problem, Kind::FirstOrder, &[])?;
     let first_sloped = candidate(&sloped, Kind::FirstOrder, &around(first.fit.point))?;
     let splits = search::split_lags(&[first.fit.point]);
@@ -94,12 +119,29 @@ pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
     let mut splits = search::split_lags(&[first_sloped.fit.point]);
     splits.push(second.fit.point);
     let second_sloped = candidate(&sloped, Kind::SecondOrder, &splits)?;
-    Ok(vec![
-        better(first, first_sloped),
-        better(second, second_sloped),
+    let mut found = vec![
+        first,
+        second,
+        first_sloped,
+        second_sloped,
         candidate(&sloped, Kind::Integrating, &[])?,
         candidate(&sloped, Kind::IntegratingLag, &[])?,
-    ])
+    ];
+    let on = [problem, problem, &sloped, &sloped, &sloped, &sloped];
+    let fits: Vec<(&Problem, &Fit)> = on.into_iter().zip(found.iter().map(|c| &c.fit)).collect();
+    for (bic, candidate) in evidence(&fits).into_iter().zip(&mut found) {
+        candidate.bic = bic;
+    }
+    let integrating = found.split_off(4);
+    let sloped = found.split_off(2);
+    let settling = found.into_iter().zip(sloped).map(|(level, slope)| {
+        if level.bic - slope.bic > CLEARLY {
+            slope
+        } else {
+            level
+        }
+    });
+    Ok(settling.chain(integrating).collect())
 }
 
 /// Fits of all four kinds to several steps; `bases` are those that each step's own fit of a kind
@@ -109,13 +151,18 @@ pub(crate) fn of_steps(
     bases: impl Fn(Kind, usize) -> Base,
     hints: impl Fn(Kind) -> Vec<Point>,
 ) -> Result<Vec<Candidate>, FitError> {
-    Kind::ALL
-        .iter()
-        .map(|&kind| {
-            let problem = with_bases(problem, |k| bases(kind, k));
-            candidate(&problem, kind, &hints(kind))
-        })
-        .collect()
+    let mut found = Vec::new();
+    let mut on = Vec::new();
+    for kind in Kind::ALL {
+        let problem = with_bases(problem, |k| bases(kind, k));
+        found.push(candidate(&problem, kind, &hints(kind))?);
+        on.push(problem);
+    }
+    let fits: Vec<(&Problem, &Fit)> = on.iter().zip(found.iter().map(|c| &c.fit)).collect();
+    for (bic, candidate) in evidence(&fits).into_iter().zip(&mut found) {
+        candidate.bic = bic;
+    }
+    Ok(found)
 }
 
 /// Puts one gain for all windows in the place of one for each; the bases stay.
@@ -164,12 +211,7 @@ pub(crate) fn kind_words(kind: Kind) -> &'static str {
 
 /// Chooses among fits of all four kinds, in the order of [`Kind::ALL`].
 pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Choice {
-    let least = found
-        .iter()
-        .min_by(|a, b| a.fit.rss.total_cmp(&b.fit.rss))
-        .expect("there are four candidates");
-    let effective = least.fit.rows as f64 / least.fit.memory.factor;
-    let bics: Vec<f64> = found.iter().map(|c| bic(&c.fit, effective)).collect();
+    let bics: Vec<f64> = found.iter().map(|c| c.bic).collect();
     // Within a family the simpler one stands unless the richer one is clearly better.
     let richer = |simple: usize| {
         if bics[simple] - bics[simple + 1] > CLEARLY {

@@ -51,106 +51,6 @@ fn scaled(mut matrix: Vec<Vec<f64>>, factor: f64) -> Vec<Vec<f64>> {
     matrix
 }
 
-/// Memory of a residual.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Memory {
-    /// Lag-one autocorrelation as it stands.
-    pub autocorrelation: f64,
-    /// Lag-one autocorrelation of the noise, corrected for what the fit took up of it; not negative.
-    pub noise_autocorrelation: f64,
-    /// How many samples count as one: Σ of the autocorrelation over all lags, at least 1.
-    pub factor: f64,
-}
-
-/// Σ r(i) r(i+lag) over the windows of the residual.
-fn products(residual: &[f64], windows: &[usize], lag: usize) -> f64 {
-    let mut start = 0;
-    let mut sum = 0.0;
-    for &rows in windows {
-        let part = &residual[start..start + rows];
-        if rows > lag {
-            sum += part
-                .iter()
-                .zip(&part[lag..])
-                .map(|(a, b)| a * b)
-                .sum::<f64>();
-        }
-        start += rows;
-    }
-    sum
-}
-
-/// The memory of a residual left by a fit of so many parameters; `windows` are the numbers of
-/// samples of its windows.
-///
-/// A fit takes up the slow part of correlated noise: of p parameters each removes about F = Σρ
-/// samples' worth. For noise of one time constant the residual then shows
-/// ρ̂ = (ρ − cF)/(1 − cF), c = p/n, F = (1+ρ)/(1−ρ), which is solved for ρ. Where the autocorrelation
-/// has a longer tail than that, its sum over lags is used if larger.
-pub(crate) fn memory(residual: &[f64], windows: &[usize], parameters: usize) -> Memory {
-    let rows = residual.len() as f64;
-    let own = products(residual, windows, 0);
-    if own <= 0.0 {
-        return Memory {
-            autocorrelation: 0.0,
-            noise_autocorrelation: 0.0,
-            factor: 1.0,
-        };
-    }
-    let at = |lag: usize| products(residual, windows, lag) / own;
-    let seen = at(1);
-    let c = parameters as f64 / rows;
-    // ρ² − ρ(1 + ρ̂ − c(1 − ρ̂)) + ρ̂ + c(1 − ρ̂) = 0; the root that goes to ρ̂ with c → 0.
-    let sum = 1.0 + seen - c * (1.0 - seen);
-    let under_root = sum * sum / 4.0 - seen - c * (1.0 - seen);
-    let rho = (sum / 2.0 - libm::sqrt(under_root.max(0.0))).clamp(0.0, 0.999);
-    let by_one_lag = (1.0 + rho) / (1.0 - rho);
-
-    // Σ of the autocorrelation by the trapezoid over widening lags until it is lost in its scatter.
-    let mut by_sum = 1.0;
-    let (mut lag, mut before) = (1_usize, 1.0);
-    let mut last_lag = 0_usize;
-    let longest = windows.iter().copied().max().unwrap_or(0) / 4;
-    while lag <= longest {
-        let here = at(lag);
-        if here < 2.0 / libm::sqrt(rows) {
-            break;
-        }
-        // Lags after the last up to this one: the mean of both, twice for both signs.
-        by_sum += (lag - last_lag) as f64 * (before + here) - before + here;
-        (before, last_lag) = (here, lag);
-        lag += 1 + lag / 4;
-    }
-    Memory {
-        autocorrelation: seen.clamp(-1.0, 1.0),
-        noise_autocorrelation: rho,
-        factor: by_one_lag.max(by_sum).min(rows / 4.0).max(1.0),
-    }
-}
-
-/// JᵀVJ for columns J and noise whose autocorrelation falls as ρ^lag within each window: the middle
-/// of the sandwich (H. White, Econometrica 48 (1980) 817-838) with the noise's model put in.
-pub(crate) fn filtered(columns: &[&[f64]], windows: &[usize], rho: f64) -> Vec<Vec<f64>> {
-    let mut sums = vec![vec![0.0; columns.len()]; columns.len()];
-    let mut start = 0;
-    for &rows in windows {
-        for (j, a) in columns.iter().enumerate() {
-            // Σ over earlier rows of ρ^distance, row by row.
-            let mut earlier = 0.0;
-            for i in start..start + rows {
-                for (k, b) in columns.iter().enumerate() {
-                    let both = a[i] * b[i];
-                    sums[j][k] += earlier * b[i] + both / 2.0;
-                    sums[k][j] += earlier * b[i] + both / 2.0;
-                }
-                earlier = rho * (earlier + a[i]);
-            }
-        }
-        start += rows;
-    }
-    sums
-}
-
 /// Two-sided 95 % quantile of Student's t for `degrees` of freedom (not whole), by the expansion of
 /// R.A. Fisher and E.A. Cornish in 1/degrees (Abramowitz and Stegun, 26.7.5).
 pub(crate) fn student_95(degrees: f64) -> f64 {
@@ -167,8 +67,28 @@ pub(crate) fn student_95(degrees: f64) -> f64 {
 pub(crate) struct LogCovariance {
     /// Row by row.
     pub matrix: Vec<Vec<f64>>,
+    /// How far the 95 % interval of each reaches down and up.
+    pub reaches: Vec<(f64, f64)>,
     /// Sampling interval in ln(θ + interval), s.
     pub interval_s: f64,
+}
+
+impl LogCovariance {
+    /// Widens the interval of each parameter by a factor.
+    pub(crate) fn widen(&mut self, factors: &[f64]) {
+        stretch(&mut self.matrix, factors);
+        for (reach, factor) in self.reaches.iter_mut().zip(factors) {
+            *reach = (reach.0 * factor, reach.1 * factor);
+        }
+    }
+
+    /// Adds a doubt about ln K that the samples do not show, as a standard deviation.
+    pub(crate) fn doubt_gain(&mut self, sd: f64) {
+        self.matrix[0][0] += sd * sd;
+        let added = TWO_SIDED_95 * sd;
+        let (down, up) = self.reaches[0];
+        self.reaches[0] = (libm::hypot(down, added), libm::hypot(up, added));
+    }
 }
 
 /// Names of the parameters of [`LogCovariance`], in order.
@@ -185,11 +105,11 @@ pub(crate) fn parameter_names(kind: Kind) -> Vec<String> {
         .collect()
 }
 
-/// (JᵀJ)⁻¹ JᵀVJ (JᵀJ)⁻¹ with the variance of the noise, over relative gain, dead time, m, w.
-fn sandwich(fit: &Fit) -> Vec<Vec<f64>> {
-    let inverse = inverse_information(fit);
-    let n = inverse.len();
+/// (JᵀJ)⁻¹ M (JᵀJ)⁻¹, M the middle: JᵀVJ with the variance of the noise, over relative gain, dead
+/// time, m, w.
+fn sandwich(inverse: &[Vec<f64>], middle: &[Vec<f64>]) -> Vec<Vec<f64>> {
     let product = |a: &[Vec<f64>], b: &[Vec<f64>]| -> Vec<Vec<f64>> {
+        let n = a.len();
         (0..n)
             .map(|j| {
                 (0..n)
@@ -198,26 +118,36 @@ fn sandwich(fit: &Fit) -> Vec<Vec<f64>> {
             })
             .collect()
     };
-    let rho = fit.memory.noise_autocorrelation;
-    // A longer tail of the autocorrelation than ρ has.
-    let tail = (fit.memory.factor * (1.0 - rho) / (1.0 + rho)).max(1.0);
-    let half = product(&inverse, &fit.filtered);
-    // What the fit took up of the noise: by each shape parameter as computed, by each base F.
-    let shapes: f64 = (0..n).map(|k| half[k][k]).sum();
-    let bases = fit.parameters.saturating_sub(n) as f64;
-    let rows = fit.rows as f64;
-    let left =
-        (rows - (shapes * tail).min(n as f64 * fit.memory.factor) - bases * fit.memory.factor)
-            .max((rows - fit.parameters as f64) / 4.0);
-    scaled(product(&half, &inverse), fit.noise_rss / left * tail)
+    product(&product(inverse, middle), inverse)
 }
 
-/// Covariance in logarithms. `repeated` is how often the windows use a sample on average: windows
-/// share the quiet stretch between two moves, which must not count twice.
-pub(crate) fn logarithmic(fit: &Fit, repeated: f64, interval_s: f64) -> LogCovariance {
-    let count = fit.rows as f64 / fit.memory.factor / repeated;
-    let quantile = student_95(count - fit.parameters as f64) / TWO_SIDED_95;
-    let raw = scaled(sandwich(fit), repeated * quantile * quantile);
+/// Covariance in logarithms.
+///
+/// Each variance has the degrees of freedom that its own doubt leaves it (F.E. Satterthwaite,
+/// Biometrics Bulletin 2 (1946) 110-114): 2 v²/Var(v), with the variance of the noise known to 2/(n − p)
+/// and its ρ to what the restricted likelihood says.
+pub(crate) fn logarithmic(fit: &Fit, interval_s: f64) -> LogCovariance {
+    let inverse = inverse_information(fit);
+    let mut raw = sandwich(&inverse, &fit.middle);
+    let doubtful = sandwich(&inverse, &fit.doubtful_middle);
+    let count = fit.samples.saturating_sub(fit.parameters) as f64 / fit.memory.tail;
+    let mut factors: Vec<f64> = (0..raw.len())
+        .map(|k| {
+            let doubt = libm::log(doubtful[k][k] / raw[k][k]);
+            student_95(2.0 / (2.0 / count.max(1.0) + doubt * doubt)) / TWO_SIDED_95
+        })
+        .map(|q| if q.is_finite() { q } else { 1.0 })
+        .collect();
+    // Noise that turns about averages out of the gain, which rests on all samples; dead time and lags rest
+    // on the few after a move, where every look was kept and the noise does not turn.
+    if let Some(middle) = &fit.turning_middle
+        && let Some(factor) = factors.first_mut()
+    {
+        let turning = sandwich(&inverse, middle);
+        *factor *= libm::sqrt((turning[0][0] / raw[0][0]).clamp(0.1, 1.0));
+    }
+    raw = scaled(raw, fit.memory.tail);
+    stretch(&mut raw, &factors);
     // raw: 0 gain, 1 dead time, 2 m, 3 w.
     let sd = |k: usize| libm::sqrt(raw[k][k].max(0.0));
     let theta = fit.point.dead_time_s + interval_s;
@@ -231,14 +161,17 @@ pub(crate) fn logarithmic(fit: &Fit, repeated: f64, interval_s: f64) -> LogCovar
     };
     let size = raw.len();
     let mut rows: Vec<Vec<f64>> = vec![unit(size, 0, 1.0)];
+    let mut by_lag = Vec::new();
     match fit.kind {
         Kind::Integrating => {}
         Kind::FirstOrder | Kind::IntegratingLag => rows.push(unit(size, 2, 1.0)),
         Kind::SecondOrder => {
             for sign in [1.0, -1.0] {
                 let mut row = unit(size, 2, 1.0);
-                row[3] = spread_slope(fit.point.spread, &raw, sign);
+                let lag = spread_of_lag(fit.point.spread, &raw, sign);
+                row[3] = lag.slope;
                 rows.push(row);
+                by_lag.push(lag.reach);
             }
         }
     }
@@ -267,37 +200,104 @@ pub(crate) fn logarithmic(fit: &Fit, repeated: f64, interval_s: f64) -> LogCovar
         })
         .collect();
     stretch(&mut matrix, &cuts);
-    LogCovariance { matrix, interval_s }
+    let mut reaches: Vec<(f64, f64)> = (0..matrix.len())
+        .map(|k| TWO_SIDED_95 * libm::sqrt(matrix[k][k].max(0.0)))
+        .map(|reach| (reach, reach))
+        .collect();
+    for (k, (down, up)) in by_lag.into_iter().enumerate() {
+        let most = TWO_SIDED_95 * MOST_LOG_SD;
+        reaches[1 + k] = (f64::min(down, most), f64::min(up, most));
+    }
+    LogCovariance {
+        matrix,
+        reaches,
+        interval_s,
+    }
 }
 
-/// Weight of w in ln τ = m + √w (`sign` +1) or ln τ₂ = m − √w (−1).
+/// Scatter of the logarithm of a lag of two.
+struct LagSpread {
+    /// Weight of w in it, that of m being 1.
+    slope: f64,
+    /// How far its 95 % interval reaches down and up.
+    reach: (f64, f64),
+}
+
+/// Scatter of ln τ = m + √w (`sign` +1) or ln τ₂ = m − √w (−1).
 ///
-/// The square root has no slope at equal lags, so the chord over the 95 % interval of w is used: of
-/// what w alone does to the lag, with m following it as the data have the two linked, the largest
-/// deviation within the interval. Where equal lags lie within it, that deviation is a bound and no
-/// standard deviation: it is then added to the scatter of m, not squared with it.
-fn spread_slope(w: f64, raw: &[Vec<f64>], sign: f64) -> f64 {
+/// The square root has no slope at equal lags, so the scatter of the lag is worked out from that of m and
+/// w, which is normal but for w ≥ 0, m following w as the data have the two linked. Its interval is what
+/// lies between 2.5 % and 97.5 %; the longer side stands for 1.96 standard deviations.
+fn spread_of_lag(w: f64, raw: &[Vec<f64>], sign: f64) -> LagSpread {
     let variance = raw[3][3];
     if variance <= 0.0 {
-        return 0.0;
+        let reach = TWO_SIDED_95 * libm::sqrt(raw[2][2].max(0.0));
+        return LagSpread {
+            slope: 0.0,
+            reach: (reach, reach),
+        };
     }
     let w = w.max(0.0);
-    let reach = TWO_SIDED_95 * libm::sqrt(variance);
+    let sd_w = libm::sqrt(variance);
     let follow = raw[2][3] / variance;
-    let (low, high) = ((w - reach).max(0.0), w + reach);
-    let deviation = |at: f64| (follow * (at - w) + sign * (libm::sqrt(at) - libm::sqrt(w))).abs();
-    let mut largest = deviation(low).max(deviation(high));
-    // Where following and root pull against each other the largest may lie between.
-    let turn = 1.0 / (4.0 * follow * follow);
-    if follow * sign < 0.0 && turn > low && turn < high {
-        largest = largest.max(deviation(turn));
+    let alone = libm::sqrt((raw[2][2] - follow * raw[2][3]).max(0.0));
+    // What w alone does to the lag, at evenly likely values of it.
+    const POINTS: usize = 101;
+    let shifts: Vec<f64> = (0..POINTS)
+        .map(|k| {
+            let at = (w + sd_w * normal_quantile((k as f64 + 0.5) / POINTS as f64)).max(0.0);
+            follow * (at - w) + sign * (libm::sqrt(at) - libm::sqrt(w))
+        })
+        .collect();
+    let below = |x: f64| -> f64 {
+        let parts = shifts.iter().map(|shift| {
+            if alone > 0.0 {
+                0.5 * libm::erfc((shift - x) / (alone * std::f64::consts::SQRT_2))
+            } else {
+                f64::from(u8::from(*shift <= x))
+            }
+        });
+        parts.sum::<f64>() / POINTS as f64
+    };
+    let furthest = shifts.iter().fold(0.0_f64, |f, s| f.max(s.abs())) + 4.0 * alone;
+    let quantile = |part: f64| {
+        let (mut low, mut high) = (-furthest, furthest);
+        for _ in 0..40 {
+            let middle = (low + high) / 2.0;
+            if below(middle) < part {
+                low = middle;
+            } else {
+                high = middle;
+            }
+        }
+        (low + high) / 2.0
+    };
+    let (mut lo, mut hi) = (quantile(0.025).min(0.0), quantile(0.975).max(0.0));
+    // Equal lags within the interval of w are a bound that many tests end at: from there on it is the
+    // scatter of m alone that the interval has to hold.
+    if w < TWO_SIDED_95 * sd_w {
+        let at_equal = -follow * w - sign * libm::sqrt(w);
+        if sign > 0.0 {
+            lo = lo.min(at_equal - TWO_SIDED_95 * alone);
+        } else {
+            hi = hi.max(at_equal + TWO_SIDED_95 * alone);
+        }
     }
-    let mut sd = largest / TWO_SIDED_95;
-    if low == 0.0 {
-        let alone = libm::sqrt((raw[2][2] - follow * raw[2][3]).max(0.0));
-        sd = libm::sqrt(sd * sd + 2.0 * sd * alone);
+    let sd = hi.max(-lo) / TWO_SIDED_95;
+    LagSpread {
+        slope: sign * libm::sqrt((sd * sd - alone * alone).max(0.0)) / sd_w - follow,
+        reach: (-lo, hi),
     }
-    sign * sd / libm::sqrt(variance) - follow
+}
+
+/// Quantile of the standard normal, to 5e-4 (C. Hastings; Abramowitz and Stegun, 26.2.23).
+fn normal_quantile(part: f64) -> f64 {
+    let tail = part.min(1.0 - part);
+    let t = libm::sqrt(-2.0 * libm::log(tail));
+    let x = t
+        - (2.515_517 + t * (0.802_853 + t * 0.010_328))
+            / (1.0 + t * (1.432_788 + t * (0.189_269 + t * 0.001_308)));
+    libm::copysign(x, part - 0.5)
 }
 
 fn unit(size: usize, place: usize, value: f64) -> Vec<f64> {

@@ -1,7 +1,7 @@
 //! A fit problem laid out for evaluation, and the descent to its nearest least sum of squares.
 
-use super::covariance;
 use super::least_squares::{Base, Fit, Point, Problem, searched};
+use super::memory::{self, Left, Stretch};
 use super::response::{self, Answer};
 use crate::model::Kind;
 use std::ops::Range;
@@ -14,6 +14,14 @@ struct Rows {
     mean_t: f64,
     /// Σ (t − mean)².
     square_t: f64,
+    /// Unit columns that span the base, whitened; none where samples count as they are.
+    whitened_base: Vec<Vec<f64>>,
+}
+
+/// What takes the memory of the noise out of columns.
+struct Whitening {
+    links: Vec<f64>,
+    scales: Vec<f64>,
 }
 
 /// Bounds of the search.
@@ -54,6 +62,9 @@ pub(crate) struct Prepared {
     searched: usize,
     columns: Vec<Vec<f64>>,
     residual: Vec<f64>,
+    /// Median sampling interval, s.
+    usual_s: f64,
+    whitening: Option<Whitening>,
 }
 
 /// What one evaluation found.
@@ -87,12 +98,19 @@ fn dot(a: &[f64], b: &[f64]) -> f64 {
     (sums[0] + sums[1]) + (sums[2] + sums[3]) + tail
 }
 
-/// Takes level and slope out of one window of a column; gives what was taken (mean, slope).
+/// Takes level and slope out of one window of a column; gives what was taken (mean, slope) unless the
+/// column was whitened.
 fn project(window: &Rows, t_s: &[f64], column: &mut [f64]) -> (f64, f64) {
     if window.base == Base::Nothing {
         return (0.0, 0.0);
     }
     let column = &mut column[window.rows.clone()];
+    if !window.whitened_base.is_empty() {
+        for unit in &window.whitened_base {
+            memory::subtract(column, unit);
+        }
+        return (0.0, 0.0);
+    }
     let t_s = &t_s[window.rows.clone()];
     let mean = column.iter().sum::<f64>() / column.len() as f64;
     for value in column.iter_mut() {
@@ -113,8 +131,42 @@ fn project(window: &Rows, t_s: &[f64], column: &mut [f64]) -> (f64, f64) {
     (mean, slope)
 }
 
+fn stretches(windows: &[Rows]) -> Vec<Stretch> {
+    windows
+        .iter()
+        .map(|w| Stretch {
+            rows: w.rows.clone(),
+            base: w.base,
+        })
+        .collect()
+}
+
+/// Median sampling interval, s; 1 where there is none.
+pub(crate) fn usual_interval(problem: &Problem) -> f64 {
+    let mut intervals: Vec<f64> = problem
+        .windows
+        .iter()
+        .flat_map(|w| w.t_s.windows(2).map(|p| p[1] - p[0]))
+        .collect();
+    if intervals.is_empty() {
+        return 1.0;
+    }
+    let middle = intervals.len() / 2;
+    *intervals.select_nth_unstable_by(middle, f64::total_cmp).1
+}
+
 impl Prepared {
     pub(crate) fn new(problem: &Problem, kind: Kind) -> Self {
+        Prepared::laid_out(problem, kind, None)
+    }
+
+    /// The same for noise that has `rho` in common over the usual interval: least squares of what each
+    /// sample brings beyond the one before.
+    pub(crate) fn whitened(problem: &Problem, kind: Kind, rho: f64) -> Self {
+        Prepared::laid_out(problem, kind, Some(rho))
+    }
+
+    fn laid_out(problem: &Problem, kind: Kind, rho: Option<f64>) -> Self {
         let (mut t_s, mut pv, mut windows) = (Vec::new(), Vec::new(), Vec::new());
         for window in &problem.windows {
             let start = t_s.len();
@@ -127,8 +179,20 @@ impl Prepared {
                 base: window.base,
                 mean_t,
                 square_t: window.t_s.iter().map(|t| (t - mean_t) * (t - mean_t)).sum(),
+                whitened_base: Vec::new(),
             });
         }
+        let usual_s = usual_interval(problem);
+        let whitening = rho.map(|rho| {
+            let stretches = stretches(&windows);
+            let links = memory::links(&t_s, &stretches, usual_s, rho);
+            let scales = memory::scales(&links);
+            memory::whiten(&mut pv, &links, &scales);
+            for (window, stretch) in windows.iter_mut().zip(&stretches) {
+                window.whitened_base = memory::whitened_base(stretch, &t_s, &links, &scales).0;
+            }
+            Whitening { links, scales }
+        });
         let pv_base = windows.iter().map(|w| project(w, &t_s, &mut pv)).collect();
         let groups = if problem.gain_per_window {
             windows.iter().map(|w| w.rows.clone()).collect()
@@ -147,6 +211,8 @@ impl Prepared {
             searched: searched(kind),
             columns: vec![vec![0.0; rows]; linear * (1 + searched(kind))],
             residual: vec![0.0; rows],
+            usual_s,
+            whitening,
             t_s,
         }
     }
@@ -182,6 +248,11 @@ impl Prepared {
                     }
                 },
             );
+        }
+        if let Some(Whitening { links, scales }) = &self.whitening {
+            for column in &mut self.columns {
+                memory::whiten(column, links, scales);
+            }
         }
         let mut column_base = Vec::with_capacity(self.windows.len());
         for window in &self.windows {
@@ -289,16 +360,15 @@ impl Prepared {
     }
 
     /// Columns of the Jacobian over relative gain and the searched parameters, from the latest
-    /// evaluation; the one of the gain is made here, in the place of the unit response.
-    fn jacobian(&mut self, evaluation: &Evaluation, fixed_dead_time: bool) -> Vec<&[f64]> {
-        let gain = evaluation.factors[0][0];
-        for value in &mut self.columns[0] {
-            *value *= gain;
+    /// evaluation; none where each window has its own gain.
+    fn jacobian(&self, evaluation: &Evaluation, problem: &Problem) -> Vec<Vec<f64>> {
+        if problem.gain_per_window {
+            return Vec::new();
         }
-        let first = usize::from(fixed_dead_time);
-        (0..=self.searched)
-            .filter(|&k| k == 0 || k > first)
-            .map(|k| self.columns[k].as_slice())
+        let gain = evaluation.factors[0][0];
+        let first = usize::from(problem.fixed_dead_time_s.is_some());
+        std::iter::once(self.columns[0].iter().map(|v| v * gain).collect())
+            .chain((1 + first..=self.searched).map(|k| self.columns[k].clone()))
             .collect()
     }
 
@@ -319,24 +389,46 @@ impl Prepared {
             })
             .collect();
         let parameters = problem.parameters(self.kind);
-        let lengths: Vec<usize> = self.windows.iter().map(|w| w.rows.len()).collect();
-        let memory = match freer {
-            Some(freer) => freer.memory,
-            None => covariance::memory(&self.residual, &lengths, parameters),
-        };
         let gains = (0..self.windows.len()).map(|w| factors(w)[0]).collect();
         let rates = (0..self.windows.len()).map(|w| factors(w)[1]).collect();
-        let (information, filtered) = if problem.gain_per_window {
-            (Vec::new(), Vec::new())
-        } else {
-            let columns = self.jacobian(&evaluation, problem.fixed_dead_time_s.is_some());
-            let information = columns
-                .iter()
-                .map(|a| columns.iter().map(|b| dot(a, b)).collect())
-                .collect();
-            let rho = memory.noise_autocorrelation;
-            (information, covariance::filtered(&columns, &lengths, rho))
+        let jacobian = self.jacobian(&evaluation, problem);
+        let columns: Vec<&[f64]> = jacobian.iter().map(Vec::as_slice).collect();
+        let stretches = stretches(&self.windows);
+        let left = Left {
+            t_s: &self.t_s,
+            windows: &stretches,
+            residual: &self.residual,
+            columns: &columns,
+            parameters,
+            usual_s: self.usual_s,
         };
+        let memory = freer.map_or_else(|| left.memory(), |freer| freer.memory);
+        let information = columns
+            .iter()
+            .map(|a| columns.iter().map(|b| dot(a, b)).collect())
+            .collect();
+        // Memory runs on from one window to the next where they share samples.
+        let merged = memory::merged(&columns, &stretches, &problem.shared);
+        let middle = |rho: f64, variance: f64| -> Vec<Vec<f64>> {
+            let links = memory::links(&self.t_s, &stretches, self.usual_s, rho);
+            let links = memory::merged_links(&links, &stretches, &problem.shared);
+            let mut sums = memory::filtered(&merged, &links);
+            sums.iter_mut().flatten().for_each(|v| *v *= variance);
+            sums
+        };
+        let turning = memory.turning.then(|| {
+            let brought: Vec<Vec<f64>> = columns
+                .iter()
+                .map(|c| c.iter().zip(&self.residual).map(|(x, r)| x * r).collect())
+                .collect();
+            let brought: Vec<&[f64]> = brought.iter().map(Vec::as_slice).collect();
+            let merged = memory::merged(&brought, &stretches, &problem.shared);
+            let mut sums = memory::from_residual(&merged);
+            let rows = self.t_s.len() as f64;
+            let taken_up = rows / (rows - parameters as f64);
+            sums.iter_mut().flatten().for_each(|v| *v *= taken_up);
+            sums
+        });
         Fit {
             kind: self.kind,
             gains,
@@ -344,12 +436,14 @@ impl Prepared {
             point,
             bases,
             rss: evaluation.rss,
-            noise_rss: freer.map_or(evaluation.rss, |f| f.rss),
             rows: self.t_s.len(),
+            samples: self.t_s.len() - problem.shared.iter().sum::<usize>(),
             parameters,
             residual: self.residual.clone(),
             information,
-            filtered,
+            middle: middle(memory.noise_autocorrelation, memory.variance),
+            doubtful_middle: middle(memory.doubtful.0, memory.doubtful.1),
+            turning_middle: turning,
             memory,
         }
     }

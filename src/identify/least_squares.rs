@@ -5,7 +5,7 @@
 //! 413-432) with the Jacobian of L. Kaufman (BIT 15 (1975) 49-57) and the damping of
 //! D.W. Marquardt (J. SIAM 11 (1963) 431-441).
 
-use super::covariance::Memory;
+use super::memory::Memory;
 use super::search;
 use crate::model::{Kind, ProcessModel};
 use thiserror::Error;
@@ -64,12 +64,16 @@ pub struct Problem {
     pub moving_at_start: bool,
     /// Dead time, s, where it is known and not searched.
     pub fixed_dead_time_s: Option<f64>,
+    /// How many first samples of each window are the last of the one before: the quiet stretch between
+    /// two moves is seen twice but measured once.
+    pub shared: Vec<usize>,
 }
 
 impl Problem {
     /// A fit of gain, base, lags and dead time, one gain for all windows, each at rest at its start.
     pub fn new(windows: Vec<Window>) -> Self {
         Problem {
+            shared: vec![0; windows.len()],
             windows,
             gain_per_window: false,
             moving_at_start: false,
@@ -190,10 +194,10 @@ pub struct Fit {
     pub bases: Vec<(f64, f64)>,
     /// Sum of squared residuals, %².
     pub rss: f64,
-    /// The part of it that is noise: all, unless a fit with more freedom left less.
-    pub noise_rss: f64,
-    /// Samples.
+    /// Samples, those of two windows counted twice.
     pub rows: usize,
+    /// Samples, each counted once.
+    pub samples: usize,
     /// Parameters, linear ones counted.
     pub parameters: usize,
     /// Residual of each sample, window after window.
@@ -201,8 +205,12 @@ pub struct Fit {
     /// JᵀJ over gain (relative), dead time, m, w, bases projected out; searched ones only. Empty where
     /// each window has its own gain.
     pub information: Vec<Vec<f64>>,
-    /// The same with the memory of the noise between the two: JᵀVJ for noise of variance 1.
-    pub filtered: Vec<Vec<f64>>,
+    /// The same with the noise between the two: σ²JᵀVJ.
+    pub middle: Vec<Vec<f64>>,
+    /// The same again where the memory of the noise is one standard deviation longer.
+    pub doubtful_middle: Vec<Vec<f64>>,
+    /// The same from the residual itself, where it turns about from sample to sample.
+    pub turning_middle: Option<Vec<Vec<f64>>>,
     /// Memory of the residual.
     pub memory: Memory,
 }

@@ -6,6 +6,7 @@ mod choice;
 pub mod covariance;
 mod descent;
 pub mod least_squares;
+pub mod memory;
 mod noise;
 mod outliers;
 mod pass;

@@ -58,8 +58,8 @@ pub(crate) struct Figures {
 pub(crate) fn figures(fit: &Fit, covariance: &LogCovariance) -> Figures {
     let (tau, tau2) = fit.point.lags(fit.kind);
     let by_factor = |value: f64, k: usize| {
-        let factor = libm::exp(TWO_SIDED_95 * sd(covariance, k));
-        Estimate::new(value, value / factor, value * factor)
+        let (down, up) = covariance.reaches[k];
+        Estimate::new(value, value * libm::exp(-down), value * libm::exp(up))
     };
     let last = covariance.matrix.len() - 1;
     let theta = fit.point.dead_time_s;
@@ -83,8 +83,8 @@ pub(crate) fn step_fit(
     interval_s: f64,
     gain_sd: f64,
 ) -> StepFit {
-    let mut covariance = covariance::logarithmic(&candidate.fit, 1.0, interval_s);
-    covariance.matrix[0][0] += gain_sd * gain_sd;
+    let mut covariance = covariance::logarithmic(&candidate.fit, interval_s);
+    covariance.doubt_gain(gain_sd);
     let figures = figures(&candidate.fit, &covariance);
     let (bias_percent, drift_percent_per_s) = candidate.fit.bases[0];
     StepFit {
@@ -104,19 +104,18 @@ pub(crate) fn step_fit(
     }
 }
 
-/// How often the windows use a sample on average: the quiet stretch before a move also belongs to
-/// the move before.
-pub(crate) fn repetition<'a>(steps: impl Iterator<Item = &'a OpStep>) -> f64 {
-    let mut total = 0;
-    let mut unique = 0;
-    let mut end = 0;
-    for step in steps {
-        let window = &step.window;
-        total += window.len();
-        unique += window.end.saturating_sub(window.start.max(end));
-        end = end.max(window.end);
-    }
-    total as f64 / unique.max(1) as f64
+/// How many first samples of each window are the last of the one before: the quiet stretch before a move
+/// also belongs to the move before.
+pub(crate) fn shared<'a>(steps: impl Iterator<Item = &'a OpStep>) -> Vec<usize> {
+    let mut before = 0..0;
+    steps
+        .map(|step| {
+            let from = step.window.start.max(before.start);
+            let shared = before.end.min(step.window.end).saturating_sub(from);
+            before = step.window.clone();
+            shared
+        })
+        .collect()
 }
 
 /// Single-step figures against the pooled ones.
@@ -141,7 +140,7 @@ fn spread(usable: &[&Fitted], pooled: &Candidate, covariance: &LogCovariance) ->
         .iter()
         .map(|f| {
             let own = f.of(kind);
-            let covariance = covariance::logarithmic(&own.fit, 1.0, interval_s);
+            let covariance = covariance::logarithmic(&own.fit, interval_s);
             (logarithms(own, interval_s), covariance)
         })
         .collect();
@@ -172,7 +171,7 @@ fn gains_disagree(usable: &[&Fitted], kind: Kind, interval_s: f64) -> bool {
     let (mut highest_low, mut lowest_high) = (f64::NEG_INFINITY, f64::INFINITY);
     for fitted in usable {
         let own = fitted.of(kind);
-        let covariance = covariance::logarithmic(&own.fit, 1.0, interval_s);
+        let covariance = covariance::logarithmic(&own.fit, interval_s);
         let reach = TWO_SIDED_95 * sd(&covariance, 0);
         let gain = libm::log(own.fit.gains[0].abs());
         highest_low = highest_low.max(gain - reach);
@@ -199,6 +198,7 @@ fn fit_all(
         .iter()
         .any(|&kind| gains_disagree(usable, kind, interval_s));
     let mut problem = Problem::new(usable.iter().map(|f| f.window.clone()).collect());
+    problem.shared = shared(usable.iter().map(|f| &f.step));
     problem.gain_per_window = apart;
     let bases = |kind: Kind, k: usize| usable[k].of(kind).bases[0];
     let hints = |kind: Kind| usable.iter().map(|f| f.of(kind).fit.point).collect();
@@ -227,11 +227,10 @@ pub(crate) fn model(
     let (candidates, choice) = fit_all(usable, own_kinds, watched_s, interval_s)?;
     let pooled = candidates.iter().find(|c| c.fit.kind == choice.kind)?;
     let fit = &pooled.fit;
-    let repeated = repetition(usable.iter().map(|f| &f.step));
-    let mut covariance = covariance::logarithmic(fit, repeated, interval_s);
+    let mut covariance = covariance::logarithmic(fit, interval_s);
     let spread = spread(usable, pooled, &covariance);
-    covariance::stretch(&mut covariance.matrix, &spread.factors);
-    covariance.matrix[0][0] += gain_sd * gain_sd;
+    covariance.widen(&spread.factors);
+    covariance.doubt_gain(gain_sd);
     let figures = figures(fit, &covariance);
     let gains = usable.iter().map(|f| f.of(fit.kind).fit.gains[0].abs());
     let largest = gains.clone().fold(0.0, f64::max);
@@ -253,7 +252,7 @@ pub(crate) fn model(
         ),
         covariance_of: covariance::parameter_names(fit.kind),
         residual_autocorrelation: fit.memory.autocorrelation,
-        effective_samples: fit.rows as f64 / fit.memory.factor / repeated,
+        effective_samples: fit.samples as f64 / fit.memory.factor,
         widened: spread.widened,
         direction_ratio: None,
         gain_ratio: spread.gains_disagree.then(|| largest / smallest),

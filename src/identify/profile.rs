@@ -352,7 +352,9 @@ pub(crate) fn prepared(
     let reached = steps.iter().flat_map(|s| [s.op_from, s.op_to]);
     let low = reached.clone().fold(f64::INFINITY, f64::min);
     let high = reached.fold(f64::NEG_INFINITY, f64::max);
-    let repeated = pooled::repetition(usable.iter().map(|f| &f.step));
+    let taken: usize = usable.iter().map(|f| f.step.window.len()).sum();
+    let twice: usize = pooled::shared(usable.iter().map(|f| &f.step)).iter().sum();
+    let repeated = taken as f64 / (taken - twice) as f64;
     let rows = problem.rows() as f64;
     let factor = fit.memory.factor * repeated;
     let degrees = (rows - fit.parameters as f64).max(1.0);

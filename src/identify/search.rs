@@ -1,14 +1,15 @@
 //! The search for the best fit: starts from a coarse grid on few samples, then more samples, then
 //! all, then the pieces between which the dead time makes corners.
 
-use super::descent::{Bounds, Prepared};
+use super::descent::{Bounds, Prepared, usual_interval};
 use super::least_squares::{Fit, FitError, Point, Problem, Window};
 use crate::model::Kind;
 
 /// Samples of the coarse grid: enough to tell starts apart.
 const COARSE_ROWS: usize = 240;
-/// Samples of the middle search, after which few rounds over all samples are left to do.
-const MIDDLE_ROWS: usize = 4000;
+/// Samples of the middle search, after which few rounds over all samples are left to do; the first for
+/// many samples, where such a round is costly.
+const MIDDLE_ROWS: [usize; 2] = [4000, 500];
 /// How close a search comes to its end, as the square of a part of a standard deviation: for starts,
 /// for many samples, and for few, where rounds cost nothing.
 const ROUGHLY: f64 = 1e-3;
@@ -20,8 +21,9 @@ const FEW_ROWS: usize = 500;
 const MOST_ROWS_FOR_PIECES: usize = 5000;
 /// With so many starts from other fits of the same data no grid is needed.
 const ENOUGH_HINTS: usize = 2;
-/// Pieces searched to either side of the best dead time.
-const PIECES: usize = 6;
+/// Pieces searched to either side of the best dead time: with few samples, and with more, where one
+/// piece differs from the next by less than a thousandth of the sum.
+const PIECES: [usize; 2] = [6, 2];
 
 /// The times that bound a search.
 struct Scales {
@@ -41,16 +43,10 @@ fn scales(problem: &Problem) -> Option<Scales> {
         })
         .filter(|watched_s| watched_s.is_finite())
         .fold(0.0, f64::max);
-    let mut intervals: Vec<f64> = problem
-        .windows
-        .iter()
-        .flat_map(|w| w.t_s.windows(2).map(|p| p[1] - p[0]))
-        .collect();
-    if intervals.is_empty() || watched_s <= 0.0 {
+    if problem.rows() <= problem.windows.len() || watched_s <= 0.0 {
         return None;
     }
-    let middle = intervals.len() / 2;
-    let interval_s = *intervals.select_nth_unstable_by(middle, f64::total_cmp).1;
+    let interval_s = usual_interval(problem);
     Some(Scales {
         watched_s,
         interval_s,
@@ -287,8 +283,8 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
     }
     let bounds = bounds(problem, &scales);
     let mut starts = coarse(problem, kind, &scales, &bounds, hints);
-    if rows > 2 * MIDDLE_ROWS {
-        let some = thinned(problem, MIDDLE_ROWS);
+    if let Some(middle) = MIDDLE_ROWS.into_iter().find(|middle| rows > 2 * middle) {
+        let some = thinned(problem, middle);
         let mut prepared = Prepared::new(&some, kind);
         let found = starts
             .iter()
@@ -321,6 +317,17 @@ pub(crate) fn fit(problem: &Problem, kind: Kind, hints: &[Point]) -> Result<Fit,
         }
     }
     Ok(all.finish(problem, found.0, None))
+}
+
+/// Sum of squares, % ², of what samples bring beyond the ones before, for noise that has `rho` in common
+/// over the usual interval: the least that one kind leaves near a fit of it.
+pub(crate) fn whitened_rss(problem: &Problem, fit: &Fit, rho: f64) -> f64 {
+    let Some(scales) = scales(problem) else {
+        return fit.rss;
+    };
+    let mut prepared = Prepared::whitened(problem, fit.kind, rho);
+    let bounds = bounds(problem, &scales);
+    prepared.descend(fit.point, &bounds, ROUGHLY).1
 }
 
 /// The fit of one gain for all windows with the dynamics of a fit of one gain for each.
@@ -358,8 +365,9 @@ fn pieces(problem: &Problem, best_s: f64, interval_s: f64) -> Vec<(f64, f64)> {
     corners.sort_by(f64::total_cmp);
     corners.dedup_by(|a, b| (*a - *b).abs() < 1e-6 * interval_s);
     let here = corners.partition_point(|c| *c <= best_s);
-    let low = here.saturating_sub(PIECES + 1);
-    let high = (here + PIECES).min(corners.len());
+    let each = PIECES[usize::from(problem.rows() > FEW_ROWS)];
+    let low = here.saturating_sub(each + 1);
+    let high = (here + each).min(corners.len());
     let mut found: Vec<(f64, f64)> = corners[low..high]
         .windows(2)
         .map(|w| (w[0], w[1]))

@@ -222,7 +222,7 @@ pub(crate) fn judge(step: &OpStep, own: OwnFit, grounds: &Grounds) -> Judged {
 
 /// Whether the gain is known to better than its own half.
 pub(crate) fn stands_out(own: &Candidate) -> bool {
-    let covariance = covariance::logarithmic(&own.fit, 1.0, 1.0);
+    let covariance = covariance::logarithmic(&own.fit, 1.0);
     covariance.matrix[0][0] < 0.25
 }
 

@@ -1,5 +1,6 @@
 //! The job: `job.toml` and the loop schedule, read and checked.
 
+mod characters;
 pub mod headings;
 pub mod manifest;
 mod new;
@@ -15,6 +16,7 @@ use chrono::NaiveDate;
 use std::collections::{BTreeMap, BTreeSet};
 use std::path::{Path, PathBuf};
 
+pub use characters::undrawable_message;
 pub use manifest::{Manifest, Page, Procedure, Revision, Signature, SiteCaution};
 pub use new::new_job;
 pub use row::{Day, Left, LogCell, LoopRow};

@@ -70,6 +70,17 @@ pub struct Left {
     pub entered_by: Option<String>,
 }
 
+/// A cell of the row under its heading.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct CellAsRead {
+    /// Column, 0 for the first of the sheet.
+    pub column: usize,
+    /// Heading, as written.
+    pub heading: String,
+    /// Value, as written.
+    pub value: String,
+}
+
 /// A log of the loop: which files, and what of them.
 #[derive(Debug, Clone, PartialEq)]
 pub struct LogCell {
@@ -91,7 +102,7 @@ pub struct LoopRow {
     /// Row of the schedule.
     pub place: Place,
     /// Headings and values as read, in the order of the sheet; empty cells as empty text.
-    pub as_read: Vec<(String, String)>,
+    pub as_read: Vec<CellAsRead>,
     /// Tag.
     pub tag: String,
     /// Service.

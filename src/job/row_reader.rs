@@ -1,7 +1,7 @@
 //! The cells of one row of the loop schedule, typed, with everything wrong at its place.
 
 use super::headings::HEADINGS;
-use super::row::{Day, LogCell};
+use super::row::{CellAsRead, Day, LogCell};
 use crate::notice::{Place, Problem, nearest};
 use crate::quantity::Span;
 use crate::read::numbers::{DecimalSign, number};
@@ -326,13 +326,14 @@ impl<'a> RowReader<'a> {
         })
     }
 
-    pub(super) fn as_read(&self) -> Vec<(String, String)> {
+    pub(super) fn as_read(&self) -> Vec<CellAsRead> {
         (0..self.table.width())
-            .map(|column| {
-                let heading = self.table.row(0).cell(column).text();
-                (heading, self.row.cell(column).text())
+            .map(|column| CellAsRead {
+                column,
+                heading: self.table.row(0).cell(column).text(),
+                value: self.row.cell(column).text(),
             })
-            .filter(|(heading, value)| !(heading.is_empty() && value.is_empty()))
+            .filter(|cell| !(cell.heading.is_empty() && cell.value.is_empty()))
             .collect()
     }
 }

@@ -308,8 +308,8 @@ pub fn schedule_row_csv(row: &LoopRow) -> Vec<u8> {
     let headings = row
         .as_read
         .iter()
-        .map(|(heading, _)| spreadsheet_cell(heading));
-    let values = row.as_read.iter().map(|(_, value)| spreadsheet_cell(value));
+        .map(|cell| spreadsheet_cell(&cell.heading));
+    let values = row.as_read.iter().map(|cell| spreadsheet_cell(&cell.value));
     writer
         .write_record(headings)
         .and_then(|()| writer.write_record(values))

@@ -99,7 +99,28 @@ fn is_timed_alike(row: Row<'_>, sample: Row<'_>) -> bool {
             .collect()
     };
     let at = times(row);
-    !at.is_empty() && at == times(sample) && row.width() == sample.width()
+    let is_alike = if at.is_empty() {
+        is_counted_alike(row, sample)
+    } else {
+        at == times(sample)
+    };
+    is_alike && row.width() == sample.width()
+}
+
+/// The same where times are plain numbers: the first number stands where the sample has it, and text where
+/// the sample has text, as the tags of a long table.
+fn is_counted_alike(row: Row<'_>, sample: Row<'_>) -> bool {
+    let looks = |row: Row<'_>| row.cells().map(look).collect::<Vec<Look>>();
+    let (row, sample) = (looks(row), looks(sample));
+    let first = |looks: &[Look]| looks.iter().position(|look| *look == Look::Number);
+    let text_stays = row
+        .iter()
+        .zip(&sample)
+        .all(|(row, sample)| *sample != Look::Text || *row == Look::Text);
+    sample.contains(&Look::Text)
+        && text_stays
+        && first(&row).is_some()
+        && first(&row) == first(&sample)
 }
 
 /// Finds headings and data; `None` where no rows look like samples. `counted` is a log without a clock,

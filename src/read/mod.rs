@@ -10,6 +10,7 @@ mod cells;
 pub mod clock;
 mod collect;
 mod columns;
+mod compound;
 mod dates;
 mod delimited;
 mod extract;
@@ -38,6 +39,7 @@ mod times;
 mod tracks;
 pub mod units;
 pub mod values;
+mod weight;
 mod workbook;
 
 use crate::notice::{Place, Problem};

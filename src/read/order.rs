@@ -67,7 +67,7 @@ pub fn order(
             ..Ordered::default()
         });
     }
-    let newest_first = is_newest_first(&t_us);
+    let newest_first = is_newest_first(&t_us, scale);
     let interval = usual_interval(&t_us, newest_first);
     let mut ordered = Ordered {
         newest_first,
@@ -175,10 +175,21 @@ fn is_fold(back_us: i64, interval_us: i64, scale: Scale) -> bool {
         && (back_us - (HOUR_US - interval_us)).abs() <= interval_us.max(MICROSECONDS)
 }
 
-/// Whether rows stand newest first: nearly every step goes back.
-fn is_newest_first(t_us: &[i64]) -> bool {
-    let back = t_us.windows(2).filter(|pair| pair[1] < pair[0]).count();
-    let forth = t_us.windows(2).filter(|pair| pair[1] > pair[0]).count();
+/// Whether rows stand newest first: nearly every step goes back. At midnight a time of day steps the other
+/// way, by most of a day.
+fn is_newest_first(t_us: &[i64], scale: Scale) -> bool {
+    let wraps = matches!(scale, Scale::TimeOfDay { .. });
+    let (mut back, mut forth) = (0, 0);
+    for pair in t_us.windows(2) {
+        let step = pair[1] - pair[0];
+        let step = if wraps && step.abs() > DAY_US / 2 {
+            -step
+        } else {
+            step
+        };
+        back += usize::from(step < 0);
+        forth += usize::from(step > 0);
+    }
     back > 2 && back > 20 * forth
 }
 

@@ -7,6 +7,9 @@ use std::collections::HashMap;
 
 /// Texts that come again are kept once, so many different ones of a sheet.
 const TEXTS_REMEMBERED: usize = 1024;
+/// Rows and columns of the largest sheet that there is (ECMA-376 part 1, 18.3.1.73 and 18.3.1.13).
+const ROWS_MOST: u32 = 1_048_576;
+const COLUMNS_MOST: u32 = 16_384;
 /// A list that is full grows by its own length over this.
 const GROWTH: usize = 4;
 
@@ -111,6 +114,8 @@ pub(super) enum Refused {
     OutOfOrder,
     /// The texts of the sheet do not fit their places.
     TooLarge,
+    /// It stands where no sheet has cells.
+    BeyondSheet,
 }
 
 /// The cells of a sheet in rows that hold anything.
@@ -135,6 +140,9 @@ impl SheetBuilder {
     /// Adds a cell; rows come in order, a second cell at a place takes the first one's. Positions
     /// count from 0 at A1.
     pub fn push(&mut self, row: u32, column: u32, cell: &NewCell<'_>) -> Result<(), Refused> {
+        if row >= ROWS_MOST || column >= COLUMNS_MOST {
+            return Err(Refused::BeyondSheet);
+        }
         let column = column as usize;
         if self.row.is_some_and(|last| row < last) {
             return Err(Refused::OutOfOrder);

@@ -292,7 +292,7 @@ fn number_token(
             let time = time_of_day(first, ':', cursor)?;
             return stamp.time_us.replace(time).is_none().then_some(());
         }
-        Some('.') if stamp.date.is_some() && stamp.time_us.is_none() => {
+        Some('.') if stamp.date.is_some() && stamp.time_us.is_none() && first.len() <= 2 => {
             stamp.time_us = Some(time_of_day(first, '.', cursor)?);
             return Some(());
         }

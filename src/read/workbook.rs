@@ -3,6 +3,7 @@
 use super::guard::guarded;
 use super::sheet::{ERRORS, NewCell, Refused, SheetBuilder, SheetCells};
 use super::table::{Table, too_large};
+use super::weight::too_heavy;
 use crate::notice::{Place, Problem};
 use calamine::{Data, DataRef, ExcelDateTime, Reader, Sheets};
 use std::io::Cursor;
@@ -26,6 +27,8 @@ impl std::fmt::Debug for Workbook {
 /// The reading library refuses the file (its own words are of no use to who exported it), or the cells
 /// themselves are at fault.
 enum Failure {
+    /// It would not fit the memory, or has no end.
+    Heavy(String),
     Library,
     Cells(Refused),
 }
@@ -42,7 +45,10 @@ impl Workbook {
     /// # Errors
     /// Where the bytes are none of that kind.
     pub fn open(bytes: Vec<u8>, name: &str, ending: &str) -> Result<Self, Problem> {
-        let opened = guard(|| open(bytes, ending));
+        let opened = guard(|| match too_heavy(&bytes, ending) {
+            Some(reason) => Err(Failure::Heavy(reason)),
+            None => open(bytes, ending),
+        });
         let book = opened.map_err(|failure| told(failure, name, ending))?;
         Ok(Workbook {
             book,
@@ -86,6 +92,16 @@ fn told(failure: Failure, name: &str, ending: &str) -> Problem {
             format!("the file is not a whole .{ending} workbook: it was cut short or damaged on the way, or is of another kind"),
         )
         .hint("copy it again from where it was exported, or open it in a spreadsheet program and save it again"),
+        Failure::Heavy(reason) => Problem::error(
+            Place::file(name),
+            format!("the workbook was not opened: {reason}"),
+        )
+        .hint("export a shorter time, or open it in a spreadsheet program and save it again"),
+        Failure::Cells(Refused::BeyondSheet) => Problem::error(
+            Place::file(name),
+            "the workbook is damaged: a cell stands beyond the last column or row of any sheet",
+        )
+        .hint("open it in a spreadsheet program and save it again"),
         Failure::Cells(_) => too_large(name),
     }
 }

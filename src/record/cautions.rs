@@ -97,7 +97,7 @@ fn engineering(value: f64, width: f64) -> String {
 }
 
 /// "LM-SP-014, Permit to work, and LM-SP-021, Management of change".
-fn named_procedures(procedures: &[Procedure]) -> String {
+pub fn named_procedures(procedures: &[Procedure]) -> String {
     let named: Vec<String> = procedures
         .iter()
         .map(|p| format!("{}, {}", p.reference, p.title))

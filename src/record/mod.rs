@@ -3,6 +3,7 @@
 pub mod cautions;
 pub mod open_items;
 
+pub use cautions::named_procedures;
 pub use open_items::decisive_reasons;
 
 use crate::design::{Aim, Design, DesignBounds};

@@ -3,6 +3,7 @@
 mod page;
 
 use crate::notice::{Problem, Severity};
+use crate::plan::Plan;
 use crate::record::Status;
 use serde::{Serialize, Serializer};
 use std::fmt::{self, Display};
@@ -80,6 +81,15 @@ pub enum LoopOutcome {
         /// Whether it was issued before and was left as it is.
         kept: bool,
     },
+    /// Planned: a sheet for its test was written.
+    Planned {
+        /// Name of the PDF in the folder of the plans.
+        pdf: String,
+        /// What it proposes and from what, in words.
+        summary: String,
+        /// The plan.
+        plan: Box<Plan>,
+    },
     /// No record could be made.
     Failed {
         /// Why, all of it.
@@ -153,12 +163,26 @@ pub struct RunReport {
     pub register: Option<String>,
 }
 
+/// What `plan` did.
+#[derive(Debug, Clone, PartialEq, Serialize)]
+pub struct PlanReport {
+    /// The job folder.
+    pub job: String,
+    /// The folder of the plans.
+    pub out: String,
+    /// What concerns no single loop.
+    pub notices: Vec<Problem>,
+    /// Every loop, in the order of the schedule.
+    pub loops: Vec<LoopReport>,
+}
+
 /// How many loops came out how.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
 struct Tally {
     for_signature: usize,
     draft: usize,
     withheld: usize,
+    planned: usize,
     kept: usize,
     failed: usize,
 }
@@ -170,6 +194,10 @@ impl Tally {
             let status = match &report.outcome {
                 LoopOutcome::Failed { .. } => {
                     tally.failed += 1;
+                    continue;
+                }
+                LoopOutcome::Planned { .. } => {
+                    tally.planned += 1;
                     continue;
                 }
                 LoopOutcome::Ready { status, .. } => status,
@@ -192,7 +220,7 @@ impl Tally {
     }
 
     fn exit_code(self) -> u8 {
-        match (self.failed, self.recorded()) {
+        match (self.failed, self.recorded() + self.planned) {
             (0, _) => DONE,
             (_, 0) => NOTHING_DONE,
             _ => SOME_FAILED,
@@ -256,6 +284,16 @@ impl Report for RunReport {
 
     fn failures(&self) -> Option<String> {
         failures(&self.loops, self.dossier.as_ref())
+    }
+}
+
+impl Report for PlanReport {
+    fn exit_code(&self) -> u8 {
+        Tally::of(&self.loops).exit_code()
+    }
+
+    fn failures(&self) -> Option<String> {
+        failures(&self.loops, None)
     }
 }
 
@@ -325,6 +363,33 @@ impl Display for RunReport {
             0,
             &if written {
                 format!("The records are in {}", self.out)
+            } else {
+                "Nothing was written.".to_owned()
+            },
+        );
+        f.write_str(page.text())
+    }
+}
+
+impl Display for PlanReport {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let mut page = Page::new(&self.loops);
+        page.problems(0, &self.notices);
+        page.loops(&self.loops);
+        page.blank();
+        let tally = Tally::of(&self.loops);
+        page.line(
+            0,
+            &format!(
+                "{}; {} failed.",
+                counted(tally.planned, "plan"),
+                counted(tally.failed, "loop")
+            ),
+        );
+        page.line(
+            0,
+            &if tally.planned > 0 {
+                format!("The plans are in {}", self.out)
             } else {
                 "Nothing was written.".to_owned()
             },

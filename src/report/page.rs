@@ -157,6 +157,10 @@ impl Page {
                 self.entries(indent, "open", open_items);
                 self.entries(indent, "advice", next_time);
             }
+            LoopOutcome::Planned { pdf, summary, .. } => {
+                self.row(&report.tag, "planned", pdf);
+                self.line(indent, summary);
+            }
             LoopOutcome::Failed { problems } => {
                 self.row(&report.tag, "failed", "");
                 self.problems(indent, problems);

@@ -1,17 +1,19 @@
 //! How long the parts of a run take: `cargo bench`, see `tests/README.md`.
 
+mod alone;
+
+use alone::Alone;
 use asleft::archive;
 use asleft::document::{self, Templates};
 use asleft::figures;
-use asleft::identify::least_squares::{self, Base, Problem, Window};
 use asleft::job::Job;
-use asleft::model::{Kind, ProcessModel};
 use asleft::read::{self, FileCache, LogRequest};
 use asleft::record::{LogRole, Record};
 use asleft::{RecordOptions, record};
 use divan::Bencher;
 use std::path::{Path, PathBuf};
 use std::sync::OnceLock;
+use std::time::Instant;
 use tempfile::TempDir;
 
 fn main() {
@@ -69,49 +71,44 @@ fn read_all_logs(bencher: Bencher) {
     });
 }
 
-/// 100,000 samples of a second each, seven moves up and down; the noise is a fixed pattern.
-fn long_test(kind: Kind) -> Problem {
-    const SAMPLES: usize = 100_000;
-    let model = ProcessModel::of_kind(
-        kind,
-        if kind.integrates() { 0.002 } else { 1.3 },
-        400.0,
-        120.0,
-        60.0,
-    );
-    let t_s: Vec<f64> = (0..SAMPLES).map(|k| k as f64).collect();
-    let moves: Vec<(f64, f64)> = (1..8)
-        .map(|k| {
-            (
-                12_000.0 * f64::from(k),
-                [5.0, 0.0, -5.0, 0.0][(k as usize - 1) % 4],
-            )
+/// Pairs of runs that are compared, and how much longer a record may take than its typesetting.
+const PAIRS: usize = 21;
+const MOST_TIMES_THE_TYPESETTER: f64 = 1.33;
+
+/// A record beside Typst alone on the same files: view, figures, layout and PDF against layout and PDF. Both in
+/// turn, nothing remembered, so that what else the machine does meets both alike.
+#[divan::bench(sample_count = 1, sample_size = 1)]
+#[expect(clippy::print_stderr, reason = "the ratio is what is measured")]
+fn a_record_beside_the_typesetter_alone() {
+    let record = typesettable();
+    let figures = figures::draw(record);
+    let templates = Templates::default();
+    let sources = document::record_sources(record, &figures, &[], &templates).expect("sources");
+    let alone = Alone::new(sources);
+    let mut ratios: Vec<f64> = (0..PAIRS)
+        .map(|_| {
+            comemo::evict(0);
+            let start = Instant::now();
+            let figures = figures::draw(record);
+            let whole = document::typeset_record(record, &figures, &[], &templates).expect("a PDF");
+            let whole_s = start.elapsed().as_secs_f64();
+            drop(whole);
+            comemo::evict(0);
+            let start = Instant::now();
+            let pages = alone.pdf();
+            let alone_s = start.elapsed().as_secs_f64();
+            drop(pages);
+            whole_s / alone_s
         })
         .collect();
-    let answer = model.response_to_held(&moves, &t_s);
-    let pv = answer
-        .iter()
-        .enumerate()
-        // The fractional parts of multiples of the golden ratio fill an interval evenly.
-        .map(|(k, pv)| 50.0 + pv + 0.2 * ((k as f64 * 0.618_033_988_749_895).fract() - 0.5))
-        .collect();
-    Problem::new(vec![Window {
-        t_s,
-        pv,
-        moves,
-        base: Base::Level,
-    }])
-}
-
-/// One fit of 100,000 samples of each kind.
-#[divan::bench(
-    args = [Kind::FirstOrder, Kind::SecondOrder, Kind::Integrating, Kind::IntegratingLag],
-    sample_count = 10,
-    sample_size = 1
-)]
-fn fit_100_000_samples(bencher: Bencher, kind: Kind) {
-    let problem = long_test(kind);
-    bencher.bench(|| least_squares::fit(&problem, kind).expect("a fit"));
+    ratios.sort_by(f64::total_cmp);
+    let median = ratios[PAIRS / 2];
+    eprintln!(
+        "a record takes {median:.2} times as long as the typesetter alone (of {PAIRS} pairs {:.2} to {:.2})",
+        ratios[PAIRS / 4],
+        ratios[3 * PAIRS / 4]
+    );
+    assert!(median < MOST_TIMES_THE_TYPESETTER, "{median}");
 }
 
 /// FIC-203 of the demo job with its samples, for typesetting alone.

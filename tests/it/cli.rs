@@ -2,7 +2,7 @@
 
 use crate::support::{asleft, folder};
 
-const COMMANDS: [&str; 5] = ["new", "inspect", "check", "record", "schema"];
+const COMMANDS: [&str; 6] = ["new", "plan", "inspect", "check", "record", "schema"];
 
 #[test]
 fn every_command_has_help_with_an_example() {
@@ -44,7 +44,7 @@ fn a_job_that_is_not_there_ends_with_1_and_names_it() {
     let folder = folder();
     let job = folder.path().join("no-such-job");
     let job = job.to_str().expect("a plain path");
-    for command in ["check", "record"] {
+    for command in ["plan", "check", "record"] {
         let run = asleft(&[command, job]).ends_with(1);
         assert!(run.err.contains("no-such-job"), "{}", run.err);
         assert!(run.out.is_empty(), "{}", run.out);

@@ -76,7 +76,7 @@ pub fn records() -> &'static BTreeMap<String, Record> {
 }
 
 /// The same with the samples, read anew from the logs.
-fn with_samples() -> &'static BTreeMap<String, Record> {
+pub fn with_samples() -> &'static BTreeMap<String, Record> {
     static RECORDS: OnceLock<BTreeMap<String, Record>> = OnceLock::new();
     RECORDS.get_or_init(|| {
         let (job, warnings) = Job::read(&demo().folder).expect("a job");

@@ -29,12 +29,16 @@ const MAY_IMPORT: &[(&str, &[&[&str]])] = &[
     ("design", &[GROUND, &["steps", "identify", "predict"]]),
     // What they came to, and what is made of it.
     ("record", &[GROUND, STAGES]),
+    ("plan", &[GROUND, STAGES, &["record"]]),
     ("figures", &[GROUND, STAGES, &["record"]]),
-    ("document", &[GROUND, STAGES, &["record", "figures"]]),
-    ("archive", &[GROUND, STAGES, &["record"]]),
+    (
+        "document",
+        &[GROUND, STAGES, &["record", "plan", "figures"]],
+    ),
+    ("archive", &[GROUND, STAGES, &["record", "plan"]]),
     ("register", &[GROUND, STAGES, &["record"]]),
     // Assembly.
-    ("report", &[GROUND, &["record"]]),
+    ("report", &[GROUND, &["record", "plan"]]),
     ("job", &[GROUND, STAGES, &["record", "archive"]]),
     ("assemble", &[GROUND, STAGES, &["record"]]),
     (
@@ -56,6 +60,15 @@ const MAY_IMPORT: &[(&str, &[&[&str]])] = &[
             &[
                 "record", "document", "archive", "register", "report", "job", "assemble",
                 "pipeline",
+            ],
+        ],
+    ),
+    (
+        "planning",
+        &[
+            GROUND,
+            &[
+                "plan", "document", "archive", "report", "job", "assemble", "pipeline", "run",
             ],
         ],
     ),
@@ -103,6 +116,7 @@ const RESERVED: &[(&[&str], &[&str])] = &[
     (&["plotters::"], &["figures/"]),
     (&["calamine::"], &["read/workbook"]),
     (&["csv::Reader"], &[]),
+    (&["zip::"], &["read/weight"]),
     (&["csv::Writer"], &["job/schedule", "register.rs"]),
     (&["rust_xlsxwriter::"], &["job/"]),
 ];

@@ -8,6 +8,8 @@ mod native;
 mod numbers;
 mod open;
 mod operations;
+pub(super) mod plan;
+mod plan_words;
 mod process;
 mod settings;
 mod step_tests;

@@ -158,7 +158,7 @@ fn settings_table(context: &Context) -> Table {
     let each = |make: &dyn Fn(&SettingsBlock) -> Cell| {
         blocks.iter().map(|(_, b)| make(b)).collect::<Vec<_>>()
     };
-    let mut heads = vec![String::new()];
+    let mut heads = vec!["Setting, margin".to_owned()];
     heads.extend(blocks.iter().map(|(head, _)| (*head).to_owned()));
 
     let mut rows = vec![Row::group(format!(

@@ -228,7 +228,7 @@ fn changed(context: &Context) -> Changed {
     let l = &context.record.control_loop;
     let found = &context.record.settings.as_found;
     let beside = beside(context);
-    let mut heads = vec![String::new(), "As found".to_owned()];
+    let mut heads = vec!["Setting".to_owned(), "As found".to_owned()];
     heads.extend(beside.map(|(head, _, _)| head.to_owned()));
 
     let before = native::settings(l, found.native);

@@ -172,7 +172,7 @@ fn table(context: &Context, trial: &Trial) -> Table {
         let judged = shape_rows(trial.kind, [&m.measured, &m.predicted], Some(m));
         rows.extend(judged.into_iter().filter(|row| row.label != rise_time()));
     }
-    let heads = ["", "Measured", "Predicted", "Models of the test"];
+    let heads = ["Measure", "Measured", "Predicted", "Models of the test"];
     Table {
         heads: heads.map(str::to_owned).to_vec(),
         rows,

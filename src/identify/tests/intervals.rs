@@ -3,12 +3,13 @@
 use super::*;
 
 /// The pooled fit of a test in its true kind, from starts near the truth.
-fn fit_of(test: &Test) -> (least_squares::Fit, f64) {
+fn fit_of(test: &Test) -> least_squares::Fit {
     let trace = Trace::new(&test.samples(), full(), full()).expect("a trace");
     let steps = crate::steps::find(&trace, 1.0).expect("steps");
     let kind = test.model.kind();
     let mut problem =
         least_squares::Problem::new(steps.iter().map(|s| pooled::window(&trace, s)).collect());
+    problem.shared = pooled::shared(steps.iter());
     if kind.integrates() {
         for window in &mut problem.windows {
             window.base = least_squares::Base::LevelAndSlope;
@@ -19,8 +20,7 @@ fn fit_of(test: &Test) -> (least_squares::Fit, f64) {
         let tau2 = test.model.second_time_constant_s();
         least_squares::Point::new(test.model.dead_time_s(), tau, tau2)
     };
-    let fit = search::fit(&problem, kind, &[start(1.1), start(1.6)]).expect("a fit");
-    (fit, pooled::repetition(steps.iter()))
+    search::fit(&problem, kind, &[start(1.1), start(1.6)]).expect("a fit")
 }
 
 /// Runs a test with many seeds and holds the share of 95 % intervals that contain the truth.
@@ -31,11 +31,11 @@ fn assert_covers(test: &Test) {
     const RUNS: u64 = 100;
     let mut held = [0; 4];
     for seed in 1..=RUNS {
-        let (fit, repeated) = fit_of(&Test {
+        let fit = fit_of(&Test {
             seed,
             ..test.clone()
         });
-        let covariance = covariance::logarithmic(&fit, repeated, test.interval_s);
+        let covariance = covariance::logarithmic(&fit, test.interval_s);
         let found = pooled::figures(&fit, &covariance);
         let pairs = [
             (Some(found.gain), Some(test.model.gain())),

@@ -1,5 +1,6 @@
 //! Tests of identification on simulated step tests.
 
+mod coverage;
 mod intervals;
 mod kinds;
 mod scenarios;

@@ -129,28 +129,37 @@ fn an_analyser_is_thinned_to_its_refreshes() {
         noise: 0.0,
         ..Test::new(first_order(1.0, 300.0, 400.0), &op, 9000.0)
     };
-    let mut samples = test.samples();
-    let mut random = Random::new(3);
-    for k in 0..samples.pv.len() {
-        samples.pv[k] = if k % 12 == 0 {
-            samples.pv[k] + 0.05 * random.normal()
-        } else {
-            samples.pv[k - 1]
-        };
-    }
+    let refreshed = |seed: u64| {
+        let mut samples = test.samples();
+        let mut random = Random::new(seed);
+        for k in 0..samples.pv.len() {
+            samples.pv[k] = if k % 12 == 0 {
+                samples.pv[k] + 0.05 * random.normal()
+            } else {
+                samples.pv[k - 1]
+            };
+        }
+        samples
+    };
+    let samples = refreshed(3);
     let trace = Trace::new(&samples, full(), full()).expect("a trace");
     assert_eq!(
         trace.refreshes().expect("refreshes").len(),
         // The first value is held from an unknown refresh.
         samples.pv.len() / 12 - 1
     );
-    let model = identify_samples_of(&samples, full())
-        .model
-        .expect("a model");
-    let tau = model.time_constant_s.expect("τ");
-    assert!(tau.low < 300.0 && tau.high > 300.0, "{tau:?}");
-    let theta = model.dead_time_s;
-    assert!(theta.low < 400.0 && theta.high > 400.0, "{theta:?}");
+    let mut held = [0, 0];
+    for seed in 1..=20 {
+        let model = identify_samples_of(&refreshed(seed), full())
+            .model
+            .expect("a model");
+        let tau = model.time_constant_s.expect("τ");
+        let theta = model.dead_time_s;
+        held[0] += i32::from(tau.low < 300.0 && tau.high > 300.0);
+        held[1] += i32::from(theta.low < 400.0 && theta.high > 400.0);
+    }
+    // Of twenty intervals of 95 % three are missed once in a dozen, four once in sixty.
+    assert!(held.iter().all(|h| *h >= 17), "{held:?}");
     // A ramp that climbs digit by digit is no analyser.
     let mut ramp = test.samples();
     for (k, pv) in ramp.pv.iter_mut().enumerate() {

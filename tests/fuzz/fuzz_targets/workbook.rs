@@ -11,7 +11,20 @@ use zip::write::{SimpleFileOptions, ZipWriter};
 /// Stands between the parts; a control sign that no XML holds.
 const APART: &[u8] = b"\n\x1f\n";
 
-/// What the parts are called in each kind of workbook, in order.
+/// What tells a reader that it is a workbook at all; the same in each.
+const USUAL: [(&str, &str); 3] = [
+    (
+        "_rels/.rels",
+        "<Relationships><Relationship Id=\"rId1\" Type=\"http://schemas.openxmlformats.org/officeDocument/2006/relationships/officeDocument\" Target=\"xl/workbook.xml\"/></Relationships>",
+    ),
+    (
+        "META-INF/manifest.xml",
+        "<manifest:manifest xmlns:manifest=\"urn:oasis:names:tc:opendocument:xmlns:manifest:1.0\"/>",
+    ),
+    ("mimetype", "application/vnd.oasis.opendocument.spreadsheet"),
+];
+
+/// What the other parts are called in each kind of workbook, in order.
 const KINDS: [(&str, &[&str]); 3] = [
     (
         "xlsx",
@@ -24,7 +37,7 @@ const KINDS: [(&str, &[&str]); 3] = [
             "[Content_Types].xml",
         ],
     ),
-    ("ods", &["content.xml", "mimetype"]),
+    ("ods", &["content.xml"]),
     (
         "xlsb",
         &[
@@ -50,6 +63,10 @@ fuzz_target!(
 fn zipped(names: &[&str], mut rest: &[u8]) -> Vec<u8> {
     let mut archive = ZipWriter::new(Cursor::new(Vec::new()));
     let options = SimpleFileOptions::default().compression_method(zip::CompressionMethod::Stored);
+    for (name, part) in USUAL {
+        archive.start_file(name, options).expect("a part");
+        archive.write_all(part.as_bytes()).expect("written");
+    }
     for name in names {
         let end = rest.windows(APART.len()).position(|window| window == APART);
         let part = &rest[..end.unwrap_or(rest.len())];
