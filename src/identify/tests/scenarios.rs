@@ -208,7 +208,13 @@ fn a_test_that_began_before_the_pv_was_at_rest_is_used_from_where_it_was() {
     }
     let found = identify_samples_of(&samples, full());
     let first = &found.steps[0];
-    assert_eq!(first.verdict, Verdict::Rejected, "{:?} {:?}", first.reasons, first.fit);
+    assert_eq!(
+        first.verdict,
+        Verdict::Rejected,
+        "{:?} {:?}",
+        first.reasons,
+        first.fit
+    );
     assert!(
         first.reasons.iter().any(|r| r.code == ReasonCode::Drift),
         "{:?}",
