@@ -1,5 +1,6 @@
 //! Places in files, and the problems found there.
 
+use serde::{Serialize, Serializer};
 use std::fmt;
 
 /// A column as a person finds it: by letter in a sheet, by heading in a text file.
@@ -163,6 +164,39 @@ impl fmt::Display for Problem {
             write!(f, "\n    {hint}")?;
         }
         Ok(())
+    }
+}
+
+/// A problem as JSON: its place in parts and as a person reads it.
+impl Serialize for Problem {
+    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        #[derive(Serialize)]
+        struct Plain<'a> {
+            severity: &'static str,
+            place: Option<String>,
+            file: Option<&'a str>,
+            sheet: Option<&'a str>,
+            row: Option<usize>,
+            column: Option<usize>,
+            message: &'a str,
+            hint: Option<&'a str>,
+        }
+        let place = self.place.as_ref();
+        Plain {
+            severity: match self.severity {
+                Severity::Warning => "warning",
+                Severity::Error => "error",
+            },
+            place: place.map(ToString::to_string),
+            file: place.map(|place| place.file.as_str()),
+            sheet: place.and_then(|place| place.sheet.as_deref()),
+            row: place.and_then(|place| place.row),
+            // Counted from 1, as rows are.
+            column: place.and_then(|place| place.column.as_ref().map(|column| column.index + 1)),
+            message: &self.message,
+            hint: self.hint.as_deref(),
+        }
+        .serialize(serializer)
     }
 }
 

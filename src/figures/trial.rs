@@ -10,10 +10,12 @@ use crate::display::{duration, plain, with_unit};
 use crate::predict::Metrics;
 use crate::predict::trial::TrialKind;
 use crate::quantity::Span;
-use crate::record::{Log, Record};
+use crate::record::{Log, PageSize, Record};
 
 const WIDTH_MM: f64 = 170.0;
 const HEIGHT_MM: f64 = 86.0;
+/// Letter pages are lower, and the trial still stands on one page with the published rules.
+const LETTER_HEIGHT_MM: f64 = 75.0;
 /// Measured PV and OP.
 const MEASURED_PT: f64 = 0.6;
 /// Predicted PV and OP.
@@ -30,7 +32,11 @@ pub fn draw(record: &Record) -> Option<Figure> {
     let control_loop = &record.control_loop;
     let pv_span = Span::new(control_loop.pv.low, control_loop.pv.high).ok()?;
     let op_span = Span::new(control_loop.op.low, control_loop.op.high).ok()?;
-    let mut canvas = Canvas::new(WIDTH_MM, HEIGHT_MM);
+    let (height, op_height) = match record.document.page {
+        PageSize::A4 => (HEIGHT_MM, 68.0),
+        PageSize::UsLetter => (LETTER_HEIGHT_MM, 56.0),
+    };
+    let mut canvas = Canvas::new(WIDTH_MM, height);
     let lines = trend::lines(&log.data, canvas.width())?;
     let (pv, op) = record
         .trial
@@ -55,7 +61,7 @@ pub fn draw(record: &Record) -> Option<Figure> {
         also_op: axis::range(op.iter().map(|p| p.1)),
         top: 22.0,
         between: 32.0,
-        op_height: 68.0,
+        op_height,
         right: 40.0,
         most_ticks: [6, 5],
     };

@@ -408,11 +408,8 @@ pub(crate) fn filtered(columns: &[Vec<f64>], links: &[f64]) -> Vec<Vec<f64>> {
         }
     }
     // Later rows have as much in common with earlier ones.
-    for j in 0..size {
-        for k in 0..=j {
-            let both = sums[j][k] + sums[k][j];
-            (sums[j][k], sums[k][j]) = (both, both);
-        }
-    }
-    sums
+    let both = |j: usize, k: usize| sums[j][k] + sums[k][j];
+    (0..size)
+        .map(|j| (0..size).map(|k| both(j, k)).collect())
+        .collect()
 }

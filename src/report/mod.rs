@@ -2,10 +2,10 @@
 
 mod page;
 
-use crate::notice::{Problem, Severity};
+use crate::notice::Problem;
 use crate::plan::Plan;
 use crate::record::Status;
-use serde::{Serialize, Serializer};
+use serde::Serialize;
 use std::fmt::{self, Display};
 
 pub use page::{Page, WIDTH};
@@ -436,39 +436,6 @@ fn failures(loops: &[LoopReport], dossier: Option<&DossierOutcome>) -> Option<St
         page.dossier(dossier);
     }
     (!page.text().is_empty()).then(|| page.text().to_owned())
-}
-
-/// A problem as JSON: its place in parts and as a person reads it.
-impl Serialize for Problem {
-    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
-        #[derive(Serialize)]
-        struct Plain<'a> {
-            severity: &'static str,
-            place: Option<String>,
-            file: Option<&'a str>,
-            sheet: Option<&'a str>,
-            row: Option<usize>,
-            column: Option<usize>,
-            message: &'a str,
-            hint: Option<&'a str>,
-        }
-        let place = self.place.as_ref();
-        Plain {
-            severity: match self.severity {
-                Severity::Warning => "warning",
-                Severity::Error => "error",
-            },
-            place: place.map(ToString::to_string),
-            file: place.map(|place| place.file.as_str()),
-            sheet: place.and_then(|place| place.sheet.as_deref()),
-            row: place.and_then(|place| place.row),
-            // Counted from 1, as rows are.
-            column: place.and_then(|place| place.column.as_ref().map(|column| column.index + 1)),
-            message: &self.message,
-            hint: self.hint.as_deref(),
-        }
-        .serialize(serializer)
-    }
 }
 
 #[cfg(test)]

@@ -116,7 +116,7 @@ const RESERVED: &[(&[&str], &[&str])] = &[
     (&["plotters::"], &["figures/"]),
     (&["calamine::"], &["read/workbook"]),
     (&["csv::Reader"], &[]),
-    (&["zip::"], &["read/weight"]),
+    (&["zip::"], &["read/weight", "read/tests"]),
     (&["csv::Writer"], &["job/schedule", "register.rs"]),
     (&["rust_xlsxwriter::"], &["job/"]),
 ];
@@ -344,6 +344,14 @@ fn says(line: &str, word: &str) -> bool {
         let before = line[..at].chars().next_back();
         word.starts_with('.') || !before.is_some_and(|sign| sign.is_alphanumeric() || sign == '_')
     })
+}
+
+#[test]
+fn the_fuzzer_takes_in_all_that_the_reader_needs() {
+    let taken = fs::read_to_string(root().join("tests/fuzz/src/lib.rs")).expect("text");
+    for module in GROUND.iter().chain(&["read", "steps"]) {
+        assert!(taken.contains(&format!("pub mod {module};")), "{module}");
+    }
 }
 
 #[test]
