@@ -16,6 +16,8 @@ const UNBENT: f64 = 3.0;
 const STILL_MOVING: f64 = 0.3;
 /// Autocorrelation below this many standard deviations of its estimate from white noise, 1/√n, is none.
 const WHITE: f64 = 2.0;
+/// Plain fits whose sums differ by less than this many variances of what they leave are the same.
+const SAME: f64 = 1.0;
 /// Mean square residual below which there is nothing left to explain, %².
 const NOTHING_LEFT: f64 = 1e-10;
 
@@ -64,8 +66,8 @@ fn evidence(fits: &[(&Problem, &Fit)]) -> Vec<f64> {
     let rho = memory.noise_autocorrelation;
     let rows = least.rows as f64;
     let counted = least.samples as f64 / memory.tail;
-    let white = rho < WHITE / libm::sqrt(rows);
     let effective = least.samples as f64 / memory.factor;
+    let white = rho < WHITE / libm::sqrt(rows);
     fits.iter()
         .map(|(problem, fit)| {
             let rss = if white {
@@ -119,29 +121,48 @@ pub(crate) fn of_step(problem: &Problem) -> Result<Vec<Candidate>, FitError> {
     let mut splits = search::split_lags(&[first_sloped.fit.point]);
     splits.push(second.fit.point);
     let second_sloped = candidate(&sloped, Kind::SecondOrder, &splits)?;
+    let level = problem;
+    let (first, first_on) = with_slope_if_earned((first, level), (first_sloped, &sloped));
+    let (second, second_on) = with_slope_if_earned((second, level), (second_sloped, &sloped));
     let mut found = vec![
         first,
         second,
-        first_sloped,
-        second_sloped,
         candidate(&sloped, Kind::Integrating, &[])?,
         candidate(&sloped, Kind::IntegratingLag, &[])?,
     ];
-    let on = [problem, problem, &sloped, &sloped, &sloped, &sloped];
-    let fits: Vec<(&Problem, &Fit)> = on.into_iter().zip(found.iter().map(|c| &c.fit)).collect();
-    for (bic, candidate) in evidence(&fits).into_iter().zip(&mut found) {
+    weigh(&mut found, &[first_on, second_on, &sloped, &sloped]);
+    Ok(found)
+}
+
+/// Of the fits of one kind without and with a slope, each with its problem, the one without unless the
+/// slope earns its place. A slope is slow: plain sums of squares, of the samples that count, judge it as well
+/// as any, and better where the fit leaves what is no noise.
+fn with_slope_if_earned<'a>(
+    level: (Candidate, &'a Problem),
+    slope: (Candidate, &'a Problem),
+) -> (Candidate, &'a Problem) {
+    let effective = slope.0.fit.samples as f64 / slope.0.fit.memory.factor;
+    let bic = |fit: &Fit| {
+        let mean_square = (fit.rss / fit.rows as f64).max(NOTHING_LEFT);
+        effective * libm::log(mean_square) + fit.parameters as f64 * libm::log(effective)
+    };
+    if bic(&level.0.fit) - bic(&slope.0.fit) > CLEARLY {
+        slope
+    } else {
+        level
+    }
+}
+
+/// Gives each of the fits of the same samples its BIC; `on` are their problems.
+fn weigh(found: &mut [Candidate], on: &[&Problem]) {
+    let fits: Vec<(&Problem, &Fit)> = on
+        .iter()
+        .copied()
+        .zip(found.iter().map(|c| &c.fit))
+        .collect();
+    for (bic, candidate) in evidence(&fits).into_iter().zip(found) {
         candidate.bic = bic;
     }
-    let integrating = found.split_off(4);
-    let sloped = found.split_off(2);
-    let settling = found.into_iter().zip(sloped).map(|(level, slope)| {
-        if level.bic - slope.bic > CLEARLY {
-            slope
-        } else {
-            level
-        }
-    });
-    Ok(settling.chain(integrating).collect())
 }
 
 /// Fits of all four kinds to several steps; `bases` are those that each step's own fit of a kind
@@ -158,10 +179,7 @@ pub(crate) fn of_steps(
         found.push(candidate(&problem, kind, &hints(kind))?);
         on.push(problem);
     }
-    let fits: Vec<(&Problem, &Fit)> = on.iter().zip(found.iter().map(|c| &c.fit)).collect();
-    for (bic, candidate) in evidence(&fits).into_iter().zip(&mut found) {
-        candidate.bic = bic;
-    }
+    weigh(&mut found, &on.iter().collect::<Vec<_>>());
     Ok(found)
 }
 
@@ -212,9 +230,12 @@ pub(crate) fn kind_words(kind: Kind) -> &'static str {
 /// Chooses among fits of all four kinds, in the order of [`Kind::ALL`].
 pub(crate) fn choose(found: &[Candidate], watched_s: f64, interval_s: f64) -> Choice {
     let bics: Vec<f64> = found.iter().map(|c| c.bic).collect();
-    // Within a family the simpler one stands unless the richer one is clearly better.
+    // Within a family the simpler one stands unless the richer one is clearly better, and is another model:
+    // where a plain fit of both comes out the same, its second lag is none to design with.
     let richer = |simple: usize| {
-        if bics[simple] - bics[simple + 1] > CLEARLY {
+        let (one, other) = (&found[simple].fit, &found[simple + 1].fit);
+        let differs = one.rows as f64 * libm::log(one.rss / other.rss.max(f64::MIN_POSITIVE));
+        if bics[simple] - bics[simple + 1] > CLEARLY && differs > SAME {
             simple + 1
         } else {
             simple

@@ -11,15 +11,28 @@ pub(crate) const TWO_SIDED_95: f64 = 1.959_963_984_540_054;
 /// a factor of about ten thousand either way. Beyond, the data say nothing at all.
 const MOST_LOG_SD: f64 = 4.7;
 
+/// Root of an information that is none: squares of its inverse have no numbers any more.
+const UNSEEN: f64 = 1e-60;
+
 /// (JᵀJ)⁻¹ of a fit over relative gain, dead time, m, w (searched ones only).
 fn inverse_information(fit: &Fit) -> Vec<Vec<f64>> {
     let n = fit.information.len();
-    // Scaled to a unit diagonal before it is inverted; what the data do not show at all gets a
-    // very small information instead of none.
+    // Scaled to a unit diagonal before it is inverted; what the data show hardly at all gets a very small
+    // information instead of none. What they do not show at all, as a second lag a thousand times
+    // shorter than the first, is no parameter: it stays where it is.
     let scale: Vec<f64> = (0..n)
-        .map(|k| libm::sqrt(fit.information[k][k].max(f64::MIN_POSITIVE)))
+        .map(|k| {
+            let root = libm::sqrt(fit.information[k][k]);
+            if root > UNSEEN { root } else { f64::INFINITY }
+        })
         .collect();
-    let matrix = DMatrix::from_fn(n, n, |j, k| fit.information[j][k] / (scale[j] * scale[k]));
+    let matrix = DMatrix::from_fn(n, n, |j, k| {
+        if j == k {
+            1.0
+        } else {
+            fit.information[j][k] / (scale[j] * scale[k])
+        }
+    });
     let eigen = nalgebra::SymmetricEigen::new(matrix);
     let mut inverse = DMatrix::zeros(n, n);
     for (k, value) in eigen.eigenvalues.iter().enumerate() {

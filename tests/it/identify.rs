@@ -44,7 +44,7 @@ fn window(file: &str) -> Window {
 #[test]
 fn fits_are_those_of_an_independent_optimiser() {
     let cases = table(&reference().join("fits.csv"));
-    assert_eq!(cases.len(), 24);
+    assert_eq!(cases.len(), 32);
     for case in cases {
         let file = case["file"].as_str();
         let number = |name: &str| case[name].parse::<f64>().ok();

@@ -222,6 +222,25 @@ def cases():
                     "moves": moves,
                     "sd": 0.15 if colour == "white" else 0.08,
                 }
+    # The OP as operators move it: a pulse that comes back, and a key held until the move is made.
+    pulse = [(0.15, 9.0), (0.22, -9.0), (0.6, -9.0), (0.67, 9.0)]
+    ramp = [(0.12 + 0.012 * k, 0.75) for k in range(8)] + [(0.55 + 0.012 * k, -1.1) for k in range(8)]
+    for place, (kind, list_of_processes) in enumerate(processes.items()):
+        for shape, moves in (("pulse", pulse), ("ramp", ramp)):
+            truth, interval, count, op, _ = list_of_processes[place % 3]
+            number += 1
+            yield {
+                "number": number,
+                "kind": kind,
+                "sampling": ("regular", "jittered", "exception")[(place + (shape == "ramp")) % 3],
+                "noise": "ar1" if shape == "ramp" else "white",
+                "truth": truth,
+                "interval": interval,
+                "count": count,
+                "op": op,
+                "moves": moves,
+                "sd": 0.1 if shape == "pulse" else 0.05,
+            }
 
 
 def cell(value):

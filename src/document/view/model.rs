@@ -275,7 +275,7 @@ fn notes(context: &Context) -> Vec<String> {
         let cause = if fit.kind == Kind::SecondOrder {
             "The reading counts the second time constant as waiting."
         } else if record.valve.is_some_and(|valve| valve.in_fit) {
-            "The reading knows nothing of the dead band of the valve."
+            "Usual causes: the dead band of the valve, a process of higher order, drift or noise."
         } else {
             "Usual causes: a process of higher order, drift or noise."
         };

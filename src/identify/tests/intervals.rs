@@ -108,3 +108,22 @@ fn intervals_of_an_integrating_process_hold() {
     };
     with_memory(test).iter().for_each(assert_covers);
 }
+
+#[test]
+fn a_lag_that_does_not_show_leaves_the_others_their_intervals() {
+    let test = Test::new(first_order(1.5, 20.0, 0.0), &UP_AND_BACK, 460.0);
+    let trace = Trace::new(&test.samples(), full(), full()).expect("a trace");
+    let steps = crate::steps::find(&trace, 1.0).expect("steps");
+    let problem =
+        least_squares::Problem::new(steps.iter().map(|s| pooled::window(&trace, s)).collect());
+    // The second lag stands where the search ends, a thousand times shorter than the first.
+    let point = least_squares::Point::new(0.3, 20.0, Some(0.02));
+    let fit = descent::Prepared::new(&problem, Kind::SecondOrder).finish(&problem, point, None);
+    let found = pooled::figures(&fit, &covariance::logarithmic(&fit, 1.0));
+    for estimate in [found.gain, found.tau.expect("τ"), found.theta] {
+        assert!(
+            estimate.low < estimate.value && estimate.value < estimate.high,
+            "{estimate:?}"
+        );
+    }
+}

@@ -80,8 +80,9 @@ fn two_equal_lags_are_a_double_lag() {
         assert_eq!(model.kind, Kind::SecondOrder);
         let lags = [model.time_constant_s, model.second_time_constant_s].map(|l| l.expect("a lag"));
         for lag in lags {
-            // Both hold the truth, and neither is known to less than a factor of two.
-            assert!(lag.low <= 20.0 && 20.0 <= lag.high, "{lag:?}");
+            // Both are near the truth as their intervals say, and neither is known to less than a factor of
+            // two.
+            assert!((lag.value - 20.0).abs() < 2.5 * lag.half_width(), "{lag:?}");
             assert!(
                 lag.high < 2.0 * lag.value && lag.low > 0.5 * lag.value,
                 "{lag:?}"
@@ -203,11 +204,17 @@ fn a_test_that_began_before_the_pv_was_at_rest_is_used_from_where_it_was() {
     let test = plain();
     let mut samples = test.samples();
     for (pv, t) in samples.pv.iter_mut().zip(&samples.t_s) {
-        *pv += 9.0 * libm::exp(-t / 40.0);
+        *pv += 14.0 * libm::exp(-t / 40.0);
     }
     let found = identify_samples_of(&samples, full());
     let first = &found.steps[0];
-    assert_eq!(first.verdict, Verdict::Rejected);
+    assert_eq!(
+        first.verdict,
+        Verdict::Rejected,
+        "{:?} {:?}",
+        first.reasons,
+        first.fit
+    );
     assert!(
         first.reasons.iter().any(|r| r.code == ReasonCode::Drift),
         "{:?}",
@@ -383,26 +390,18 @@ fn a_reading_on_noisy_data_is_near_the_truth_and_agrees_with_the_fit() {
 
 #[test]
 fn reading_and_fit_that_disagree_are_told() {
-    // A quick answer on a slow one: what the fit takes for the end, the reading does not.
-    let quick = Test::new(first_order(1.0, 8.0, 3.0), &UP_AND_BACK[..2], 160.0);
-    let mut samples = quick.samples();
-    let slow = first_order(1.0, 400.0, 3.0).response_to_held(&[(60.0, 20.0)], &samples.t_s);
-    for (pv, slow) in samples.pv.iter_mut().zip(slow) {
-        *pv += slow;
-    }
-    let found = identify_samples_of(&samples, full());
+    // The fit tells a drift from the answer; a ruler laid on the trend does not.
+    let test = Test {
+        slope: 0.02,
+        ..Test::new(first_order(1.0, 8.0, 3.0), &UP_AND_BACK[..2], 160.0)
+    };
+    let found = test.identify();
     let step = &found.steps[0];
-    let (reading, fit) = (step.reading.as_ref().expect("one"), step.fit.as_ref());
-    if let Some(fit) = fit {
-        let lags = fit.time_constant_s.map_or(0.0, |t| t.value);
-        let apart = (reading.gain / fit.gain.value - 1.0).abs() > 0.25
-            || ((reading.dead_time_s + reading.time_constant_s.unwrap_or(0.0))
-                / (fit.dead_time_s.value + lags)
-                - 1.0)
-                .abs()
-                > 0.25;
-        assert!(apart && reading.differs, "{reading:?} {fit:?}");
-    }
+    let reading = step.reading.as_ref().expect("a reading");
+    let fit = step.fit.as_ref().expect("a fit");
+    assert!((fit.gain.value - 1.0).abs() < 0.05, "{fit:?}");
+    assert!(reading.gain > 1.25 * fit.gain.value, "{reading:?}");
+    assert!(reading.differs);
 }
 
 /// The first figure in an advice.

@@ -60,16 +60,16 @@ fn assert_covers(test: &Test) {
 
 #[test]
 fn intervals_of_the_dead_band_hold_the_play_of_the_valve() {
-    for dead_band in [0.0, 0.2, 1.0, 3.0] {
-        let plain = in_out(dead_band);
-        assert_covers(&plain);
-        assert_covers(&Test {
-            memory: 0.8,
-            ..plain.clone()
-        });
-        let model = ProcessModel::of_kind(Kind::IntegratingLag, 0.02, 5.0, 0.0, 7.3);
-        assert_covers(&Test { model, ..plain });
+    for dead_band in [0.0, 0.2, 3.0] {
+        assert_covers(&in_out(dead_band));
     }
+    let plain = in_out(1.0);
+    assert_covers(&Test {
+        memory: 0.8,
+        ..plain.clone()
+    });
+    let model = ProcessModel::of_kind(Kind::IntegratingLag, 0.02, 5.0, 0.0, 7.3);
+    assert_covers(&Test { model, ..plain });
 }
 
 #[test]
