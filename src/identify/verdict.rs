@@ -3,6 +3,7 @@
 use super::choice::Candidate;
 use super::covariance;
 use super::noise::{Noise, line};
+use super::reading;
 use super::words::{against, bound, figure, time_text};
 use super::{Check, Reason, ReasonCode, Verdict, VerdictBounds};
 use crate::steps::OpStep;
@@ -254,6 +255,15 @@ fn change_and_drift(
             let bend = own.fit.gains[0].abs() * grounds.change_op.abs();
             Some(100.0 * (slope - grounds.explained_slope).abs() / bend)
         } else {
+            // A PV on its way from before the log bends a fit to a gain that it does not have: what was seen
+            // of the change counts where it is less.
+            let (from, to) = reading::ends(trace, step);
+            let seen = if step.pulse {
+                change
+            } else {
+                (to - from).abs()
+            };
+            let change = change.min(seen).max(f64::MIN_POSITIVE);
             Some(100.0 * slope.abs() * (t_s[t_s.len() - 1] - t_s[0]) / change)
         }
     };
