@@ -11,6 +11,11 @@ pub(crate) const TWO_SIDED_95: f64 = 1.959_963_984_540_054;
 /// a factor of about ten thousand either way. Beyond, the data say nothing at all.
 const MOST_LOG_SD: f64 = 4.7;
 
+/// Least information along any axis, as part of that of its parameters: below, rounding would be all there is.
+const LEAST_INFORMATION: f64 = 1e-9;
+/// Lags further apart than a factor of about seven, as (ln(τ/τ₂)/2)², are each what they are: the bend of
+/// their scatter lies at equal lags.
+const FAR_APART: f64 = 1.0;
 /// Root of an information that is none: squares of its inverse have no numbers any more.
 const UNSEEN: f64 = 1e-60;
 
@@ -37,7 +42,7 @@ fn inverse_information(fit: &Fit) -> Vec<Vec<f64>> {
     let mut inverse = DMatrix::zeros(n, n);
     for (k, value) in eigen.eigenvalues.iter().enumerate() {
         let axis = eigen.eigenvectors.column(k);
-        inverse += axis * axis.transpose() / value.max(1e-13);
+        inverse += axis * axis.transpose() / value.max(LEAST_INFORMATION);
     }
     (0..n)
         .map(|j| {
@@ -142,6 +147,11 @@ fn sandwich(inverse: &[Vec<f64>], middle: &[Vec<f64>]) -> Vec<Vec<f64>> {
 pub(crate) fn logarithmic(fit: &Fit, interval_s: f64) -> LogCovariance {
     let inverse = inverse_information(fit);
     let mut raw = sandwich(&inverse, &fit.middle);
+    // Where two parameters can hardly be told apart rounding may eat the sandwich: the plain covariance
+    // then says how little is known.
+    if (0..raw.len()).any(|k| raw[k][k].is_nan() || raw[k][k] <= 0.0) {
+        raw = scaled(inverse.clone(), fit.memory.variance);
+    }
     let doubtful = sandwich(&inverse, &fit.doubtful_middle);
     let count = fit.samples.saturating_sub(fit.parameters) as f64 / fit.memory.tail;
     let mut factors: Vec<f64> = (0..raw.len())
@@ -243,14 +253,20 @@ struct LagSpread {
 /// lies between 2.5 % and 97.5 %; the longer side stands for 1.96 standard deviations.
 fn spread_of_lag(w: f64, raw: &[Vec<f64>], sign: f64) -> LagSpread {
     let variance = raw[3][3];
-    if variance <= 0.0 {
-        let reach = TWO_SIDED_95 * libm::sqrt(raw[2][2].max(0.0));
+    let w = w.max(0.0);
+    if variance <= 0.0 || w > FAR_APART {
+        let slope = if variance > 0.0 {
+            sign / (2.0 * libm::sqrt(w))
+        } else {
+            0.0
+        };
+        let both = raw[2][2] + 2.0 * slope * raw[2][3] + slope * slope * variance;
+        let reach = TWO_SIDED_95 * libm::sqrt(both.max(0.0));
         return LagSpread {
-            slope: 0.0,
+            slope,
             reach: (reach, reach),
         };
     }
-    let w = w.max(0.0);
     let sd_w = libm::sqrt(variance);
     let follow = raw[2][3] / variance;
     let alone = libm::sqrt((raw[2][2] - follow * raw[2][3]).max(0.0));
