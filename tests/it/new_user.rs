@@ -80,7 +80,8 @@ fn a_new_folder_becomes_a_job_of_ones_own() {
         "inspect",
         job.join("logs/jacket.csv").to_str().expect("plain"),
     ]);
-    let _: Value = serde_json::from_str(&run.ends_with(0).out).expect("one JSON document");
+    // Its headings are a person's own, so no loop is found without the schedule's help.
+    let _: Value = serde_json::from_str(&run.ends_with(1).out).expect("one JSON document");
     let run = asleft(&["record", typed]).ends_with(0);
     assert!(run.out.contains("TIC-7 "), "{}", run.out);
     assert_eq!(
