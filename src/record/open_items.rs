@@ -155,7 +155,7 @@ fn draft_items(record: &Record, circumstances: &Circumstances) -> Vec<OpenItem> 
                     OpenCode::AsLeftMargins,
                     format!(
                         "With the settings as left the worst Ms is {} ({}); at most {} is allowed.",
-                        plain(worst.ms.unwrap_or(f64::INFINITY), 3),
+                        told_from(worst.ms.unwrap_or(f64::INFINITY), bound),
                         left.worst_model.as_deref().unwrap_or("fitted model"),
                         plain(bound, 3)
                     ),
@@ -400,4 +400,12 @@ pub fn status(items: &[OpenItem]) -> Status {
     } else {
         Status::Draft
     }
+}
+
+/// A figure with as many digits, three at least, as tell it from the bound that it breaks.
+fn told_from(value: f64, bound: f64) -> String {
+    (3..=6)
+        .map(|digits| plain(value, digits))
+        .find(|text| *text != plain(bound, 3))
+        .unwrap_or_else(|| format!("just above {}", plain(bound, 3)))
 }
